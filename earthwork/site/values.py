@@ -1,0 +1,125 @@
+"""Types of the values in a site file: numbers in the site's units, or strings that carry their own unit.
+
+Every type turns its value into SI while the file is checked; the unit system travels in the validation context.
+"""
+
+from __future__ import annotations
+
+import math
+from typing import Annotated, Any
+
+from pydantic import BeforeValidator, Field, ValidationInfo, WithJsonSchema
+
+from earthwork.units import METRIC, UnitSystem, parse_quantity
+
+#: A dry density in this range [kg/m³] is believed; outside it, the likely slip of unit is named.
+_DENSITY_RANGE_KG_M3 = (500.0, 3500.0)
+
+
+def _number(value: Any) -> float | None:
+    """The finite float of a TOML number, None for anything else."""
+    if isinstance(value, bool) or not isinstance(value, int | float):
+        return None
+    if not math.isfinite(value):
+        raise ValueError("it must be a finite number")
+    return float(value)
+
+
+def _converter(dimension: str, low: float | None = None, high: float | None = None, above: float | None = None):
+    def convert(value: Any, info: ValidationInfo) -> float:
+        units: UnitSystem = (info.context or {}).get("units", METRIC)
+        number = _number(value)
+        if number is not None:
+            si = units.to_si(number, dimension)
+        elif isinstance(value, str):
+            si = parse_quantity(value, dimension)
+        else:
+            raise ValueError(f"it must be a number in {units.label(dimension)}, or a string with its unit")
+        for bound, broken, word in (
+            (low, low is not None and si < low, "at least"),
+            (high, high is not None and si > high, "at most"),
+            (above, above is not None and si <= above, "more than"),
+        ):
+            if broken and bound is not None:
+                raise ValueError(f"it must be {word} {units.from_si(bound, dimension):g} {units.label(dimension)}")
+        return si
+
+    return convert
+
+
+def _quantity(dimension: str, what: str, **bounds: float | None) -> Any:
+    schema = {
+        "anyOf": [{"type": "number"}, {"type": "string"}],
+        "description": f"{what}: a number in the site's unit ({METRIC.unit(dimension)} or its US counterpart), "
+        'or a string with its own unit',
+    }
+    return Annotated[float, BeforeValidator(_converter(dimension, **bounds)), WithJsonSchema(schema)]
+
+
+Elevation = _quantity("length", "Elevation")
+Shift = _quantity("length", "Vertical shift, + up")
+Thickness = _quantity("length", "Thickness or depth, 0 or more", low=0.0)
+Length = _quantity("length", "Length, more than 0", above=0.0)
+Distance = _quantity("length", "Distance, 0 or more", low=0.0)
+SoilVolume = _quantity("soil_volume", "Soil volume")
+PositiveSoilVolume = _quantity("soil_volume", "Soil volume, more than 0", above=0.0)
+GroundArea = _quantity("area", "Area, 0 or more", low=0.0)
+Mass = _quantity("mass", "Mass, more than 0", above=0.0)
+WaterVolume = _quantity("water_volume", "Volume of water, 0 or more", low=0.0)
+PositiveWaterVolume = _quantity("water_volume", "Volume of water, more than 0", above=0.0)
+WaterDepth = _quantity("water_depth", "Water on an area, 0 or more", low=0.0)
+Flow = _quantity("flow", "Flow, 0 or more", low=0.0)
+PositiveFlow = _quantity("flow", "Flow, more than 0", above=0.0)
+Speed = _quantity("speed", "Speed, more than 0", above=0.0)
+Evaporation = _quantity("evaporation", "Evaporation, 0 to 30 mm/day", low=0.0, high=30.0)
+Minutes = _quantity("minutes", "Duration in minutes, 0 or more", low=0.0)
+PositiveHours = _quantity("hours", "Duration in hours, more than 0 and at most 24", above=0.0, high=24.0)
+Percent = _quantity("percent", "Percent, 0 to 100", low=0.0, high=100.0)
+AnyPercent = _quantity("percent", "Percent")
+
+
+def _density(value: Any, info: ValidationInfo) -> float:
+    units: UnitSystem = (info.context or {}).get("units", METRIC)
+    si = _converter("density", above=0.0)(value, info)
+    low, high = _DENSITY_RANGE_KG_M3
+    if low <= si <= high:
+        return si
+    rule = f"it must be {units.from_si(low, 'density'):.0f} to {units.from_si(high, 'density'):.0f} {units.label('density')}"
+    number = _number(value)
+    if number is not None:
+        for other, unit in (("lb/ft3", "lb/ft³"), ("kg/m3", "kg/m³"), ("t/m3", "t/m³"), ("kN/m3", "kN/m³")):
+            if low <= parse_quantity(f"{number} {other}", "density") <= high and other != units.unit("density"):
+                rule += f'; the number looks like {unit}: then write "{number:g} {other}"'
+                break
+    raise ValueError(rule)
+
+
+def _water_content(value: Any, info: ValidationInfo) -> float:
+    si = _converter("percent", low=0.0, high=300.0)(value, info)
+    number = _number(value)
+    if number is not None and 0 < number < 0.5:
+        raise ValueError(
+            "it must be percent of dry mass, and looks like a fraction: "
+            f'write {number * 100:g} (or "{number:g} %" if it really is that dry)'
+        )
+    return si
+
+
+_DENSITY_SCHEMA = {
+    "anyOf": [{"type": "number"}, {"type": "string"}],
+    "description": "Density: a number in kg/m³ (metric) or lb/ft³ (us), or a string with its own unit",
+}
+_WATER_SCHEMA = {
+    "anyOf": [{"type": "number"}, {"type": "string"}],
+    "description": "Water content, percent of dry mass",
+}
+Density = Annotated[float, BeforeValidator(_density), WithJsonSchema(_DENSITY_SCHEMA)]
+WaterContent = Annotated[float, BeforeValidator(_water_content), WithJsonSchema(_WATER_SCHEMA)]
+
+Text = Annotated[str, Field(strict=True, min_length=1)]
+Whole = Annotated[int, Field(strict=True, ge=1)]
+Coordinate = Annotated[float, Field(allow_inf_nan=False)]
+Point = tuple[Coordinate, Coordinate]
+Number = Annotated[float, Field(allow_inf_nan=False)]
+PositiveNumber = Annotated[float, Field(gt=0, allow_inf_nan=False)]
+NotNegative = Annotated[float, Field(ge=0, allow_inf_nan=False)]
