@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 import difflib
 import tomllib
 from collections.abc import Callable, Iterator
@@ -17,7 +18,7 @@ from earthwork.site.model import Section, SiteModel
 from earthwork.site.rules import cross_faults
 from earthwork.units import FOOT_M, UnitSystem
 
-_UNION_TAGS = {"raster", "level", "plane", "constrained-str", "function-before", "literal"}
+_SURFACE_KINDS = ("raster", "level", "plane")
 
 
 @dataclass(frozen=True)
@@ -90,14 +91,36 @@ def check_site(
         foot = foot_of(document, directory)
     units = UnitSystem("us" if system == "us" else "metric", foot)
     where = str(path) if path else "site"
-    try:
-        model = SiteModel.model_validate(document, context={"units": units})
-    except ValidationError as error:
-        raise SiteFileError(_message(where, [_fault(e, document) for e in error.errors()])) from None
-    faults = list(cross_faults(model))
-    if faults:
+    model, faults = _validate(document, units)
+    if model is None and faults:
+        repaired, _ = _validate(_without_faulty(document, units), units)
+        faults += list(cross_faults(repaired)) if repaired else []
+    elif model is not None:
+        faults += list(cross_faults(model))
+    if faults or model is None:
         raise SiteFileError(_message(where, faults))
     return Site(model, units, directory, path)
+
+
+def _validate(document: dict[str, Any], units: UnitSystem) -> tuple[SiteModel | None, list[str]]:
+    try:
+        return SiteModel.model_validate(document, context={"units": units}), []
+    except ValidationError as error:
+        return None, [_fault(e, document) for e in error.errors()]
+
+
+def _without_faulty(document: dict[str, Any], units: UnitSystem) -> dict[str, Any]:
+    """A copy without the faulty keys, so that the rules between tables can be checked in the same go."""
+    rest = copy.deepcopy(document)
+    try:
+        SiteModel.model_validate(document, context={"units": units})
+    except ValidationError as error:
+        for fault in error.errors():
+            location = _without_tags(fault["loc"], document)
+            parent = _at(rest, location[:-1])
+            if isinstance(parent, dict):
+                parent.pop(location[-1], None)
+    return rest
 
 
 def _message(where: str, faults: list[str]) -> str:
@@ -107,7 +130,7 @@ def _message(where: str, faults: list[str]) -> str:
 
 def _fault(error: ErrorDetails, document: dict[str, Any]) -> str:
     """One line for one fault: the key, the value, the rule, and the nearest known key."""
-    location = [part for part in error["loc"] if part not in _UNION_TAGS or _holds(document, error["loc"], part)]
+    location = _without_tags(error["loc"], document)
     key = _dotted(location)
     kind = error["type"]
     if kind == "extra_forbidden":
@@ -122,6 +145,8 @@ def _fault(error: ErrorDetails, document: dict[str, Any]) -> str:
     rule = error["msg"].removeprefix("Value error, ")
     if kind in ("literal_error", "enum"):
         rule = "it must be " + error.get("ctx", {}).get("expected", rule)
+    elif rule.startswith("Input should be"):
+        rule = "it must be" + rule.removeprefix("Input should be")
     elif not rule.startswith(("it must", "give ")):
         rule = rule[0].lower() + rule[1:]
     value = error["input"]
@@ -130,17 +155,15 @@ def _fault(error: ErrorDetails, document: dict[str, Any]) -> str:
     return f"{key} = {_shown(value)}: {rule}"
 
 
-def _holds(document: Any, location: tuple[int | str, ...], part: int | str) -> bool:
-    """Whether a part of a location that looks like a union tag is really a key of the document."""
-    here = document
-    for step in location:
-        if isinstance(here, dict) and step in here:
-            if step == part:
-                return True
-            here = here[step]
-        elif isinstance(here, list) and isinstance(step, int) and step < len(here):
-            here = here[step]
-    return False
+def _without_tags(location: tuple[int | str, ...], document: Any) -> list[int | str]:
+    """A location without the names of union members, which stand in it though they are no keys of the document."""
+    kept: list[int | str] = []
+    for i, step in enumerate(location):
+        is_tag = step in _SURFACE_KINDS and len(location) > i + 1
+        if is_tag and (step == "raster" or location[i + 1] == step or step not in (_at(document, kept) or ())):
+            continue
+        kept.append(step)
+    return kept
 
 
 def _at(document: Any, location: list[int | str]) -> Any:

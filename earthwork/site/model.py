@@ -237,7 +237,7 @@ class Proctor(Section):
 
 class Oversize(Section):
     percent: Percent = 0.0
-    specific_gravity: Annotated[float, Field(ge=2.0, le=4.0)] = 2.65
+    specific_gravity: Annotated[float, Field(strict=True, ge=2.0, le=4.0)] = 2.65
     water_content: Percent = 1.0
 
 
@@ -249,7 +249,7 @@ class FillState(Section):
 
 class Material(Section):
     use: Literal["fill", "rock", "topsoil", "waste"]
-    specific_gravity: Annotated[float, Field(ge=2.0, le=4.0)] | None = None
+    specific_gravity: Annotated[float, Field(strict=True, ge=2.0, le=4.0)] | None = None
     bank: BankState = BankState()
     loose: LooseState = LooseState()
     proctor: Proctor | None = None
@@ -264,13 +264,13 @@ class Material(Section):
 class ByDepth(Section):
     below: Length
     measured_from: Literal["finished", "subgrade"] = "finished"
-    relative_compaction: Annotated[float, Field(ge=50, le=120)]
-    expected_compaction: Annotated[float, Field(ge=50, le=120)] | None = None
+    relative_compaction: Annotated[float, Field(strict=True, ge=50, le=120)]
+    expected_compaction: Annotated[float, Field(strict=True, ge=50, le=120)] | None = None
 
 
 class Fill(Section):
-    relative_compaction: Annotated[float, Field(ge=50, le=120)] = Field(description="required, % of maximum")
-    expected_compaction: Annotated[float, Field(ge=50, le=120)] | None = None
+    relative_compaction: Annotated[float, Field(strict=True, ge=50, le=120)] = Field(description="required, % of maximum")
+    expected_compaction: Annotated[float, Field(strict=True, ge=50, le=120)] | None = None
     water_content_offset: Number = Field(default=0.0, description="target, points from optimum")
     water_content_window: tuple[Number, Number] | None = None
     lift_thickness: Length | None = Field(default=None, description="compacted")
@@ -310,7 +310,7 @@ class WaterTruck(Section):
     bays: Whole = 1
     travel_time: Minutes = Field(description="minutes, out and back")
     spread_time: Minutes
-    efficiency: Annotated[float, Field(gt=0, le=1)] = 1.0
+    efficiency: Annotated[float, Field(strict=True, gt=0, le=1)] = 1.0
 
 
 class Water(Section):
@@ -363,7 +363,7 @@ class Pads(Section):
     differential_fill: Length = 3.0
     transition_share: Percent = 2.0
     blanket: Thickness = 0.9
-    blanket_ratio: Annotated[float, Field(ge=0, le=1)] = 0.33
+    blanket_ratio: Annotated[float, Field(strict=True, ge=0, le=1)] = 0.33
     settlement_percent: tuple[Percent, Percent] | None = None
     distortion_limit: PositiveNumber = 500
     gauge_length: Length = 6.0

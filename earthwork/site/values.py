@@ -118,8 +118,8 @@ WaterContent = Annotated[float, BeforeValidator(_water_content), WithJsonSchema(
 
 Text = Annotated[str, Field(strict=True, min_length=1)]
 Whole = Annotated[int, Field(strict=True, ge=1)]
-Coordinate = Annotated[float, Field(allow_inf_nan=False)]
+Coordinate = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 Point = tuple[Coordinate, Coordinate]
-Number = Annotated[float, Field(allow_inf_nan=False)]
-PositiveNumber = Annotated[float, Field(gt=0, allow_inf_nan=False)]
-NotNegative = Annotated[float, Field(ge=0, allow_inf_nan=False)]
+Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
+PositiveNumber = Annotated[float, Field(strict=True, gt=0, allow_inf_nan=False)]
+NotNegative = Annotated[float, Field(strict=True, ge=0, allow_inf_nan=False)]
