@@ -1,6 +1,7 @@
 """Types of the values in a site file: numbers in the site's units, or strings that carry their own unit.
 
-Every type turns its value into SI while the file is checked; the unit system travels in the validation context.
+Every type turns its value into SI while the file is checked; the unit system travels in the validation
+context.
 """
 
 from __future__ import annotations
@@ -10,7 +11,7 @@ from typing import Annotated, Any
 
 from pydantic import BeforeValidator, Field, ValidationInfo, WithJsonSchema
 
-from earthwork.units import METRIC, UnitSystem, parse_quantity
+from earthwork.units import METRIC, US, UnitSystem, parse_quantity
 
 #: A dry density in this range [kg/m³] is believed; outside it, the likely slip of unit is named.
 _DENSITY_RANGE_KG_M3 = (500.0, 3500.0)
@@ -25,7 +26,9 @@ def _number(value: Any) -> float | None:
     return float(value)
 
 
-def _converter(dimension: str, low: float | None = None, high: float | None = None, above: float | None = None):
+def _converter(
+    dimension: str, low: float | None = None, high: float | None = None, above: float | None = None
+):
     def convert(value: Any, info: ValidationInfo) -> float:
         units: UnitSystem = (info.context or {}).get("units", METRIC)
         number = _number(value)
@@ -41,7 +44,9 @@ def _converter(dimension: str, low: float | None = None, high: float | None = No
             (above, above is not None and si <= above, "more than"),
         ):
             if broken and bound is not None:
-                raise ValueError(f"it must be {word} {units.from_si(bound, dimension):g} {units.label(dimension)}")
+                raise ValueError(
+                    f"it must be {word} {units.from_si(bound, dimension):g} {units.label(dimension)}"
+                )
         return si
 
     return convert
@@ -50,8 +55,8 @@ def _converter(dimension: str, low: float | None = None, high: float | None = No
 def _quantity(dimension: str, what: str, **bounds: float | None) -> Any:
     schema = {
         "anyOf": [{"type": "number"}, {"type": "string"}],
-        "description": f"{what}: a number in the site's unit ({METRIC.unit(dimension)} or its US counterpart), "
-        'or a string with its own unit',
+        "description": what,
+        "x-unit": [METRIC.unit(dimension), US.unit(dimension)],
     }
     return Annotated[float, BeforeValidator(_converter(dimension, **bounds)), WithJsonSchema(schema)]
 
@@ -84,11 +89,14 @@ def _density(value: Any, info: ValidationInfo) -> float:
     low, high = _DENSITY_RANGE_KG_M3
     if low <= si <= high:
         return si
-    rule = f"it must be {units.from_si(low, 'density'):.0f} to {units.from_si(high, 'density'):.0f} {units.label('density')}"
+    least, most = units.from_si(low, "density"), units.from_si(high, "density")
+    rule = f"it must be {least:.0f} to {most:.0f} {units.label('density')}"
     number = _number(value)
     if number is not None:
         for other, unit in (("lb/ft3", "lb/ft³"), ("kg/m3", "kg/m³"), ("t/m3", "t/m³"), ("kN/m3", "kN/m³")):
-            if low <= parse_quantity(f"{number} {other}", "density") <= high and other != units.unit("density"):
+            if low <= parse_quantity(f"{number} {other}", "density") <= high and other != units.unit(
+                "density"
+            ):
                 rule += f'; the number looks like {unit}: then write "{number:g} {other}"'
                 break
     raise ValueError(rule)
@@ -107,16 +115,24 @@ def _water_content(value: Any, info: ValidationInfo) -> float:
 
 _DENSITY_SCHEMA = {
     "anyOf": [{"type": "number"}, {"type": "string"}],
-    "description": "Density: a number in kg/m³ (metric) or lb/ft³ (us), or a string with its own unit",
+    "description": "Density, 500 to 3500 kg/m³",
+    "x-unit": [METRIC.unit("density"), US.unit("density")],
 }
 _WATER_SCHEMA = {
     "anyOf": [{"type": "number"}, {"type": "string"}],
     "description": "Water content, percent of dry mass",
+    "x-unit": ["%", "%"],
 }
 Density = Annotated[float, BeforeValidator(_density), WithJsonSchema(_DENSITY_SCHEMA)]
 WaterContent = Annotated[float, BeforeValidator(_water_content), WithJsonSchema(_WATER_SCHEMA)]
 
+
+class InputFile:
+    """Marks a value as the name of a file that the site reads (:func:`earthwork.site.inputs.named_files`)."""
+
+
 Text = Annotated[str, Field(strict=True, min_length=1)]
+FileName = Annotated[str, Field(strict=True, min_length=1), InputFile()]
 Whole = Annotated[int, Field(strict=True, ge=1)]
 Coordinate = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 Point = tuple[Coordinate, Coordinate]

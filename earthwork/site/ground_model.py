@@ -1,0 +1,135 @@
+"""Tables of the site file that say where the ground lies, and what is taken from it or laid on it."""
+
+from __future__ import annotations
+
+from typing import Literal
+
+from pydantic import Field, model_validator
+
+from earthwork.site.base import Area, Section, SurfaceSpec
+from earthwork.site.values import Distance, Length, Point, PositiveNumber, SoilVolume, Text, Thickness
+
+_DISTURBED = "where; default: the disturbed area"
+
+
+class SiteSection(Section):
+    """What the site is called, and the units of its numbers."""
+
+    name: Text = Field(description="name of the site, as printed on everything")
+    units: Literal["metric", "us"] = Field(description="units of plain numbers here and of what is printed")
+    crs: Text | None = Field(
+        default=None,
+        description='such as "EPSG:32611"; only where a surface carries no coordinate reference system',
+    )
+
+
+class Ground(Section):
+    """The two surfaces and the ground between them that counts."""
+
+    existing: SurfaceSpec = Field(description="ground as surveyed")
+    finished: SurfaceSpec | None = Field(
+        default=None, description="proposed finished grade; required where there is no [design]"
+    )
+    limits: Area | None = Field(
+        default=None, description="only ground inside counts; default: where both surfaces have data"
+    )
+    disturbed: Area | None = Field(
+        default=None,
+        description="bounds stripping and the grade shift; default: pads and slopes of a design, else where "
+        "the surfaces differ by more than 1 cm, with the areas of sections and over-excavations",
+    )
+    cell: Length | None = Field(
+        default=None,
+        description="side of the analysis cell; default: that of the finer raster, on its own grid",
+    )
+    ground_scale: PositiveNumber | Literal["auto"] = Field(
+        default="auto", description='ground length / map length; "auto": from the CRS and the mean elevation'
+    )
+
+
+class Design(Section):
+    """Instead of ground.finished: pads built with side slopes that daylight on the existing ground."""
+
+    pads: Area = Field(description="polygons of the pads")
+    name: Text = Field(default="name", description="attribute with the pad's name")
+    elevation: Text = Field(
+        default="elevation", description="attribute with its elevation, in the site's unit"
+    )
+    elevation_is: Literal["finished", "subgrade"] = Field(description="which surface those elevations give")
+    cut_slope: PositiveNumber = Field(description="horizontal run per unit of height, in cut")
+    fill_slope: PositiveNumber = Field(description="horizontal run per unit of height, in fill")
+
+
+class Zones(Section):
+    """Any partition to report by: phases, lots, bid items. Zones must not overlap."""
+
+    area: Area = Field(description="polygons of the zones")
+    name: Text = Field(default="name", description="attribute with the zone's name; equal names are one zone")
+
+
+class Strip(Section):
+    """What is stripped before the earthwork: topsoil, or removed pavement. Not part of cut."""
+
+    material: Text = Field(description="material that is stripped")
+    depth: Thickness = Field(description="depth of stripping")
+    area: Area | None = Field(default=None, description=_DISTURBED)
+
+
+class LaidSection(Section):
+    """What is laid on the subgrade: pavement, slab and base, respread topsoil."""
+
+    name: Text = Field(description="name of the section")
+    thickness: Thickness = Field(description="whole thickness, from subgrade to finished grade")
+    area: Area | None = Field(default=None, description=_DISTURBED)
+    source: Text = Field(default="imported", description='"imported", or a material of the site')
+
+
+class OverExcavation(Section):
+    """Ground dug out below the lower surface and refilled. Where several overlap, the deepest counts."""
+
+    name: Text = Field(description="name of the over-excavation")
+    depth: Thickness | None = Field(default=None, description="its depth")
+    bottom: SurfaceSpec | None = Field(default=None, description="or its bottom as a surface")
+    measured_from: Literal["lower", "subgrade", "stripped"] = Field(
+        default="lower",
+        description="the depth is measured from the lower of stripped ground and subgrade, or from one",
+    )
+    spread: Distance = Field(default=0.0, description="how far it goes beyond the area, horizontally")
+    area: Area | None = Field(default=None, description=_DISTURBED)
+
+    @model_validator(mode="after")
+    def _depth_or_bottom(self) -> OverExcavation:
+        if (self.depth is None) == (self.bottom is None):
+            raise ValueError("give either depth or bottom")
+        return self
+
+
+class Scarify(Section):
+    """Ground loosened and recompacted in place; it costs depth × (1 − shrinkage factor) of compacted soil."""
+
+    depth: Thickness = Field(description="depth that is loosened")
+    area: Area | None = Field(default=None, description="where; default: under fill")
+
+
+class Allowance(Section):
+    """Soil that no surface shows: trench, footing and pool spoil, demolition, a neighbour's import."""
+
+    name: Text = Field(description="name of the allowance")
+    material: Text = Field(description="its material")
+    volume: SoilVolume = Field(description="+ adds soil to the site, − takes it")
+    state: Literal["bank", "loose", "compacted"] = Field(default="bank", description="state of the volume")
+    at: Point | None = Field(default=None, description="easting and northing where it lies, in CRS units")
+
+
+class Stratum(Section):
+    """A layer of the ground, listed from the existing ground down; the last one has no bottom."""
+
+    material: Text = Field(description="its material")
+    bottom: SurfaceSpec | None = Field(default=None, description="its lower boundary as a surface")
+    thickness: Thickness | None = Field(default=None, description="or its thickness below the stratum above")
+
+    @model_validator(mode="after")
+    def _not_both(self) -> Stratum:
+        if self.bottom is not None and self.thickness is not None:
+            raise ValueError("give bottom or thickness, not both")
+        return self

@@ -1,0 +1,180 @@
+"""Tables of the site file that plan the work: balance, water, haul and pads."""
+
+from __future__ import annotations
+
+from typing import Annotated, Literal
+
+from pydantic import Field
+
+from earthwork.site.base import Area, Section
+from earthwork.site.values import (
+    Distance,
+    Evaporation,
+    Flow,
+    GroundArea,
+    Length,
+    Mass,
+    Minutes,
+    NotNegative,
+    Number,
+    Percent,
+    Point,
+    PositiveFlow,
+    PositiveHours,
+    PositiveNumber,
+    PositiveSoilVolume,
+    PositiveWaterVolume,
+    Shift,
+    SoilVolume,
+    Text,
+    Thickness,
+    WaterDepth,
+    WaterVolume,
+    Whole,
+)
+
+
+class Balance(Section):
+    """What the balance aims at, and what ground may move for it."""
+
+    target_surplus: SoilVolume = Field(default=0.0, description="compacted volume wanted in hand at the end")
+    step: Length = Field(default=0.01, description="the grade shift is rounded to this")
+    shift_area: Area | None = Field(
+        default=None, description="ground that may move; default: the disturbed area"
+    )
+    shift_range: tuple[Shift, Shift] = Field(
+        default=(-3.0, 3.0), description="lowest and highest shift, + up"
+    )
+
+
+class Dust(Section):
+    """Water sprayed to hold dust down."""
+
+    area: GroundArea = Field(description="area sprayed")
+    rate: WaterDepth = Field(description="water on the area in one pass")
+    passes_per_day: NotNegative = Field(description="passes in a day")
+
+
+class Supply(Section):
+    """The standpipe, hydrant or well."""
+
+    flow: Flow = Field(description="flow while it is open")
+    hours: PositiveHours = Field(default=24.0, description="hours in a day that it is open")
+
+
+class Tank(Section):
+    """Storage between the supply and the trucks."""
+
+    volume: PositiveWaterVolume = Field(description="what it holds")
+    at_start: WaterVolume | None = Field(
+        default=None, description="what it holds before the first day; default: full"
+    )
+
+
+class WaterTruck(Section):
+    """The water trucks, all alike."""
+
+    capacity: PositiveWaterVolume = Field(description="water in a full truck")
+    fill_flow: PositiveFlow | None = Field(
+        default=None, description="flow into a truck; default: the supply's"
+    )
+    bays: Whole = Field(default=1, description="trucks that can fill at one time")
+    travel_time: Minutes = Field(description="minutes, out and back")
+    spread_time: Minutes = Field(description="minutes to empty a truck")
+    efficiency: Annotated[float, Field(strict=True, gt=0, le=1)] = Field(
+        default=1.0, description="share of the work hours that trucks run"
+    )
+
+
+class Water(Section):
+    """Compaction water: how fast soil is placed, what dries, and what supply there is."""
+
+    placing_rate: PositiveSoilVolume = Field(description="compacted volume placed in a working day")
+    work_hours: PositiveHours = Field(default=10.0, description="hours of a working day")
+    evaporation: Evaporation = Field(default=0.0, description="evaporation from open ground in a day")
+    open_area: GroundArea | None = Field(
+        default=None, description="ground that dries at one time; default: the day's volume / lift thickness"
+    )
+    waste_percent: Percent = Field(default=0.0, description="spilt and drifted, % of the water applied")
+    dust: Dust | None = Field(default=None, description="dust control")
+    supply: Supply = Field(description="where the water comes from")
+    tank: Tank | None = Field(default=None, description="storage on site")
+    truck: WaterTruck | None = Field(default=None, description="the water trucks")
+
+
+class HaulTruck(Section):
+    """The hauling trucks, all alike."""
+
+    heaped_volume: PositiveSoilVolume = Field(description="loose volume of a heaped load")
+    payload: Mass = Field(description="greatest mass of a load, moist")
+
+
+class Haul(Section):
+    """How earth is moved on the site."""
+
+    block: Length = Field(default=50.0, description="side of a haul block")
+    barriers: Area | None = Field(default=None, description="what trucks cannot cross")
+    truck: HaulTruck | None = Field(
+        default=None, description="the hauling trucks; loads are counted where given"
+    )
+    cost: NotNegative = Field(default=1.0, description="money per t·km of dry mass (us: per ton·mile)")
+
+
+class Borrow(Section):
+    """A place that soil can be bought from."""
+
+    name: Text = Field(description="name of the place")
+    at: Point = Field(description="easting and northing, in CRS units")
+    material: Text = Field(description="material that it gives")
+    capacity: PositiveSoilVolume | None = Field(
+        default=None, description="most that it gives, bank; default: no limit"
+    )
+    price: Number = Field(default=0.0, description="money per unit of price_per")
+    price_per: Literal["bank", "loose", "mass"] = Field(
+        default="bank", description="what the price is for: bank volume, loose volume, or mass"
+    )
+
+
+class Disposal(Section):
+    """A place that soil can be brought to."""
+
+    name: Text = Field(description="name of the place")
+    at: Point = Field(description="easting and northing, in CRS units")
+    accepts: tuple[Text, ...] | None = Field(
+        default=None, description="materials that it takes; default: any"
+    )
+    capacity: PositiveSoilVolume | None = Field(
+        default=None, description="most that it takes, loose; default: no limit"
+    )
+    price: Number = Field(default=0.0, description="money per loose volume")
+
+
+class Pads(Section):
+    """What each building pad stands on, and the rules it is judged by."""
+
+    area: Area = Field(description="polygons of the pads")
+    name: Text = Field(default="name", description="attribute with the pad's name")
+    building: Area | None = Field(
+        default=None, description="buildings; where given, pads are judged under them"
+    )
+    building_margin: Distance = Field(default=1.5, description="judged this far around a building")
+    deep_fill: Length = Field(
+        default=6.0, description="95th percentile of fill thickness at and over which fill is deep"
+    )
+    differential_fill: Length = Field(default=3.0, description="difference in fill thickness that is flagged")
+    transition_share: Percent = Field(
+        default=2.0, description="both cut and fill over this share: a transition pad"
+    )
+    blanket: Thickness = Field(
+        default=0.9, description="least fill under the whole footprint that mends a transition"
+    )
+    blanket_ratio: Annotated[float, Field(strict=True, ge=0, le=1)] = Field(
+        default=0.33, description="or this share of the greatest thickness, whichever is more"
+    )
+    settlement_percent: tuple[Percent, Percent] | None = Field(
+        default=None, description="settlement after construction, low and high, % of fill thickness"
+    )
+    distortion_limit: PositiveNumber = Field(
+        default=500, description="x of the allowable angular distortion, 1 in x"
+    )
+    gauge_length: Length = Field(default=6.0, description="length over which distortion is measured")
