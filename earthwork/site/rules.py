@@ -13,6 +13,7 @@ def cross_faults(model: SiteModel) -> Iterator[str]:
     yield from _surfaces(model)
     yield from _materials(model)
     yield from _strata(model)
+    yield from _soils(model)
     yield from _fill(model)
     yield from _names(model)
     low, high = model.balance.shift_range
@@ -43,6 +44,31 @@ def _materials(model: SiteModel) -> Iterator[str]:
             close = difflib.get_close_matches(name, model.material, n=1)
             hint = f"did you mean {close[0]!r}?" if close else f"known: {', '.join(model.material)}"
             yield f'{key} = "{name}": there is no [material.{name}]; {hint}'
+
+
+def _soils(model: SiteModel) -> Iterator[str]:
+    """What a material becomes as fill is said in one way only."""
+    for name, material in model.material.items():
+        ways = {
+            "proctor": material.proctor is not None,
+            "fill.dry_density": material.fill is not None,
+            "shrink_percent_of_bank": material.shrink_percent_of_bank is not None,
+        }
+        given = [key for key, there in ways.items() if there]
+        if len(given) > 1:
+            yield f"material.{name}: {' and '.join(given)} are given; keep one, each says what it becomes as fill"
+        if material.use == "rock" and material.proctor is not None:
+            yield (
+                f"material.{name}.proctor: rock has no compaction test; give fill.dry_density or "
+                'shrink_percent_of_bank, or write use = "fill"'
+            )
+        if material.shrink_percent_of_bank is not None:
+            low, high = material.shrink_percent_of_bank
+            if not low <= high < 100:
+                yield (
+                    f"material.{name}.shrink_percent_of_bank = [{low:g}, {high:g}]: the first must be the lower "
+                    "one, and both below 100"
+                )
 
 
 def _strata(model: SiteModel) -> Iterator[str]:

@@ -23,6 +23,16 @@ class BankState(Section):
     )
     tests: FileName | None = Field(default=None, description="or a CSV of in-place density tests")
 
+    @model_validator(mode="after")
+    def _one_way(self) -> BankState:
+        ways = ("dry_density", "moist_density", "tests")
+        given = [name for name in ways if getattr(self, name) is not None]
+        if len(given) > 1:
+            raise ValueError(f"give one of dry_density, moist_density and tests, not {' and '.join(given)}")
+        if self.moist_density is not None and self.water_content is None:
+            raise ValueError("give water_content with moist_density: only a dry density converts volume")
+        return self
+
 
 class LooseState(Section):
     """Soil as it lies in a truck or a stockpile."""
@@ -48,6 +58,15 @@ class Proctor(Section):
         default=None, description="optimum water content, % of dry mass"
     )
     tests: FileName | None = Field(default=None, description="or a CSV of the points of the curve")
+
+    @model_validator(mode="after")
+    def _figures_or_tests(self) -> Proctor:
+        figures = [self.max_dry_density is not None, self.optimum_water_content is not None]
+        if self.tests is not None and any(figures):
+            raise ValueError("give tests, or max_dry_density and optimum_water_content, not both")
+        if self.tests is None and not all(figures):
+            raise ValueError("give max_dry_density and optimum_water_content, or tests")
+        return self
 
 
 class Oversize(Section):
