@@ -49,6 +49,15 @@ from earthwork.site.soil_model import (
     Oversize,
     Proctor,
 )
+from earthwork.site.work_model import (
+    Calendar,
+    Drying,
+    Moisture,
+    Plant,
+    Roller,
+    Surface,
+    Weather,
+)
 
 
 class SiteModel(Section):
@@ -70,6 +79,11 @@ class SiteModel(Section):
     fill: Fill | None = Field(default=None, description="how the fill is compacted")
     balance: Balance = Field(default=Balance(), description="what the balance aims at")
     water: Water | None = Field(default=None, description="compaction water")
+    calendar: Calendar = Field(default=Calendar(), description="which days are worked")
+    weather: Weather | None = Field(default=None, description="weather that dries the ground and stops work")
+    moisture: Moisture = Field(default=Moisture(), description="how soil comes to its target water content")
+    plant: Plant = Field(default=Plant(), description="digging and hauling plant")
+    roller: tuple[Roller, ...] = Field(default=(), description="rollers")
     haul: Haul | None = Field(default=None, description="how earth is moved")
     borrow: tuple[Borrow, ...] = Field(default=(), description="places that give soil")
     disposal: tuple[Disposal, ...] = Field(default=(), description="places that take soil")
@@ -77,9 +91,10 @@ class SiteModel(Section):
 
 
 __all__ = [
-    "Allowance", "Area", "AreaSpec", "Balance", "BankState", "Borrow", "ByDepth", "Design", "Disposal",
-    "Dust", "Fill", "FillState", "Ground", "Haul", "HaulTruck", "LaidSection", "LevelSurface",
-    "LooseState", "Material", "OverExcavation", "Oversize", "Pads", "Plane", "PlaneSurface", "Proctor",
-    "RasterSurface", "Scarify", "Section", "SiteModel", "SiteSection", "Stratum", "Strip", "Supply",
-    "SurfaceSpec", "Tank", "Water", "WaterTruck", "Zones",
+    "Allowance", "Area", "AreaSpec", "Balance", "BankState", "Borrow", "ByDepth", "Calendar", "Design",
+    "Disposal", "Drying", "Dust", "Fill", "FillState", "Ground", "Haul", "HaulTruck", "LaidSection",
+    "LevelSurface", "LooseState", "Material", "Moisture", "OverExcavation", "Oversize", "Pads", "Plane",
+    "PlaneSurface", "Plant", "Proctor", "RasterSurface", "Roller", "Scarify", "Section", "SiteModel",
+    "SiteSection", "Stratum", "Strip", "Supply", "Surface", "SurfaceSpec", "Tank", "Water", "WaterTruck",
+    "Weather", "Zones",
 ]  # fmt: skip

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, Literal
 
-from pydantic import Field
+from pydantic import Field, model_validator
 
 from earthwork.site.base import Area, Section
 from earthwork.site.values import (
@@ -32,6 +32,7 @@ from earthwork.site.values import (
     WaterVolume,
     Whole,
 )
+from earthwork.site.work_model import Clock
 
 
 class Balance(Section):
@@ -60,6 +61,8 @@ class Supply(Section):
 
     flow: Flow = Field(description="flow while it is open")
     hours: PositiveHours = Field(default=24.0, description="hours in a day that it is open")
+    start: Clock | None = Field(default=None, description="when it opens, local time; default: with the shift")
+    count: Whole = Field(default=1, description="standpipes of this flow")
 
 
 class Tank(Section):
@@ -84,6 +87,17 @@ class WaterTruck(Section):
     efficiency: Annotated[float, Field(strict=True, gt=0, le=1)] = Field(
         default=1.0, description="share of the work hours that trucks run"
     )
+    payload: Mass | None = Field(default=None, description="greatest mass of water that the truck is built for")
+    empty_mass: Mass | None = Field(default=None, description="mass of the empty truck")
+    road_limit: Mass | None = Field(default=None, description="greatest gross mass allowed on the roads used")
+
+    @model_validator(mode="after")
+    def _both_masses(self) -> WaterTruck:
+        if (self.empty_mass is None) != (self.road_limit is None):
+            raise ValueError("give empty_mass and road_limit together: the road limit is of the gross mass")
+        if self.empty_mass is not None and self.road_limit is not None and self.empty_mass >= self.road_limit:
+            raise ValueError("road_limit must be more than empty_mass")
+        return self
 
 
 class Water(Section):
@@ -91,7 +105,9 @@ class Water(Section):
 
     placing_rate: PositiveSoilVolume = Field(description="compacted volume placed in a working day")
     work_hours: PositiveHours = Field(default=10.0, description="hours of a working day")
-    evaporation: Evaporation = Field(default=0.0, description="evaporation from open ground in a day")
+    evaporation: Evaporation | None = Field(
+        default=None, description="evaporation from open ground in a day; default: from [weather], else 0"
+    )
     open_area: GroundArea | None = Field(
         default=None, description="ground that dries at one time; default: the day's volume / lift thickness"
     )

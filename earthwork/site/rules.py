@@ -6,6 +6,7 @@ import difflib
 from collections.abc import Iterator
 
 from earthwork.site.model import SiteModel
+from earthwork.site.work_rules import work_faults
 
 
 def cross_faults(model: SiteModel) -> Iterator[str]:
@@ -16,6 +17,7 @@ def cross_faults(model: SiteModel) -> Iterator[str]:
     yield from _soils(model)
     yield from _fill(model)
     yield from _names(model)
+    yield from work_faults(model)
     low, high = model.balance.shift_range
     if low > high:
         yield f"balance.shift_range = [{low:g}, {high:g}] m: the first must be the lower one"

@@ -76,11 +76,23 @@ WaterDepth = _quantity("water_depth", "Water on an area, 0 or more", low=0.0)
 Flow = _quantity("flow", "Flow, 0 or more", low=0.0)
 PositiveFlow = _quantity("flow", "Flow, more than 0", above=0.0)
 Speed = _quantity("speed", "Speed, more than 0", above=0.0)
-Evaporation = _quantity("evaporation", "Evaporation, 0 to 30 mm/day", low=0.0, high=30.0)
 Minutes = _quantity("minutes", "Duration in minutes, 0 or more", low=0.0)
 PositiveHours = _quantity("hours", "Duration in hours, more than 0 and at most 24", above=0.0, high=24.0)
 Percent = _quantity("percent", "Percent, 0 to 100", low=0.0, high=100.0)
 AnyPercent = _quantity("percent", "Percent")
+
+
+def _evaporation(value: Any, info: ValidationInfo) -> float:
+    try:
+        return _converter("evaporation", low=0.0, high=30.0)(value, info)
+    except ValueError as error:
+        units: UnitSystem = (info.context or {}).get("units", METRIC)
+        number = _number(value)
+        if number is not None and units.name == "us" and 0 < number <= 30:
+            raise ValueError(
+                f'{error}; the number looks like mm/day: then write "{number:g} mm/day"'
+            ) from None
+        raise
 
 
 def _density(value: Any, info: ValidationInfo) -> float:
@@ -118,11 +130,17 @@ _DENSITY_SCHEMA = {
     "description": "Density, 500 to 3500 kg/m³",
     "x-unit": [METRIC.unit("density"), US.unit("density")],
 }
+_EVAPORATION_SCHEMA = {
+    "anyOf": [{"type": "number"}, {"type": "string"}],
+    "description": "Evaporation, 0 to 30 mm/day",
+    "x-unit": [METRIC.unit("evaporation"), US.unit("evaporation")],
+}
 _WATER_SCHEMA = {
     "anyOf": [{"type": "number"}, {"type": "string"}],
     "description": "Water content, percent of dry mass",
     "x-unit": ["%", "%"],
 }
+Evaporation = Annotated[float, BeforeValidator(_evaporation), WithJsonSchema(_EVAPORATION_SCHEMA)]
 Density = Annotated[float, BeforeValidator(_density), WithJsonSchema(_DENSITY_SCHEMA)]
 WaterContent = Annotated[float, BeforeValidator(_water_content), WithJsonSchema(_WATER_SCHEMA)]
 

@@ -24,7 +24,10 @@ def test_the_day_at_uccle_gives_the_printed_evaporation():
     depth = ev.reference_evaporation_day(
         vapour_kpa=vapour,
         wind_2m=wind,
-        **{k: uccle[k] for k in ("maximum_c", "minimum_c", "solar_mj_m2", "latitude_deg", "elevation_m", "day_of_year")},
+        **{
+            k: uccle[k]
+            for k in ("maximum_c", "minimum_c", "solar_mj_m2", "latitude_deg", "elevation_m", "day_of_year")
+        },
     )
     assert depth == pytest.approx(uccle["printed_mm_day"], abs=0.05)
     assert depth == pytest.approx(uccle["recomputed_mm_day"], rel=2e-3)

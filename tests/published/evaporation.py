@@ -1,9 +1,9 @@
 """Published worked examples of reference evaporation.
 
-[fao56] Allen et al. (1998), FAO Irrigation and Drainage Paper 56. [asce-ewri] ASCE-EWRI (2005), The ASCE standardized
-reference evapotranspiration equation, appendix C. Figures of examples 2 to 18 and of appendix C were read as reprinted
-in the tests of other open projects; those of example 19 likewise, with all of its terms. Tolerance: half a unit of
-the last digit printed, unless a row says more.
+[fao56] Allen et al. (1998), FAO Irrigation and Drainage Paper 56. [asce-ewri] ASCE-EWRI (2005), The ASCE
+standardized reference evapotranspiration equation, appendix C. Figures of examples 2 to 18 and of appendix C
+were read as reprinted in the tests of other open projects; those of example 19 likewise, with all of its
+terms. Tolerance: half a unit of the last digit printed, unless a row says more.
 """
 
 #: quantity, arguments, printed value, tolerance, where
@@ -25,22 +25,28 @@ FAO56_VALUES = [
 ]
 
 #: example 18: Uccle, 6 July
-UCCLE = {"maximum_c": 21.5, "minimum_c": 12.3, "humidity": (84.0, 63.0), "wind_10m": 2.78, "solar_mj_m2": 22.07,
-         "latitude_deg": 50.8, "elevation_m": 100.0, "day_of_year": 187, "printed_mm_day": 3.9, "wind_2m": 2.078,
+UCCLE = {"maximum_c": 21.5, "minimum_c": 12.3, "humidity": (84.0, 63.0), "wind_10m": 2.78,
+         "solar_mj_m2": 22.07,
+         "latitude_deg": 50.8, "elevation_m": 100.0, "day_of_year": 187, "printed_mm_day": 3.9,
+         "wind_2m": 2.078,
          "extraterrestrial": 41.09, "net_radiation": 13.28, "recomputed_mm_day": 3.88}  # fmt: skip
 
 #: example 19: N'Diaye, 16.22 °N 16.25 °W, 8 m, 1 October, clock of the zone at 15 °W; printed terms
 NDIAYE = {"latitude_deg": 16.0 + 13.0 / 60.0, "longitude_deg": -16.25, "elevation_m": 8.0, "day_of_year": 274}
-NDIAYE_NIGHT = {"temperature_c": 28.0, "humidity": 90.0, "wind": 1.9, "solar": 0.0, "utc": 3.5, "clearness": 0.8,
+NDIAYE_NIGHT = {"temperature_c": 28.0, "humidity": 90.0, "wind": 1.9, "solar": 0.0, "utc": 3.5,
+                "clearness": 0.8,
                 "slope": 0.220, "gamma": 0.0673, "saturation": 3.780, "vapour": 3.402, "angle": -2.46,
                 "extraterrestrial": 0.0, "longwave": 0.100, "net": -0.100, "mm": 0.00}  # fmt: skip
-NDIAYE_DAY = {"temperature_c": 38.0, "humidity": 52.0, "wind": 3.3, "solar": 2.450, "utc": 15.5, "clearness": 0.922,
+NDIAYE_DAY = {"temperature_c": 38.0, "humidity": 52.0, "wind": 3.3, "solar": 2.450, "utc": 15.5,
+              "clearness": 0.922,
               "slope": 0.358, "gamma": 0.0673, "saturation": 6.625, "vapour": 3.445, "angle": 0.682,
-              "extraterrestrial": 3.543, "clear_sky": 2.658, "longwave": 0.137, "net": 1.749, "mm": 0.63}  # fmt: skip
+              "extraterrestrial": 3.543, "clear_sky": 2.658, "longwave": 0.137, "net": 1.749,
+              "mm": 0.63}  # fmt: skip
 
-#: [asce-ewri] appendix C, hourly example: Greeley, 40.41 °N (0.7053 rad), 104.78 °W (as the printed hour angles have it), 1462.4 m, zone meridian 105 °W,
-#: from 1 July 16:00 (end of the hour) to 2 July 21:00. Columns: temperature °C, vapour kPa, solar MJ/m²h, wind m/s,
-#: printed: extraterrestrial, clear-sky, net long-wave, net radiation, short-reference evaporation mm/h
+#: [asce-ewri] appendix C, hourly example: Greeley, 40.41 °N (0.7053 rad), 104.78 °W (as the printed hour
+#: angles have it), 1462.4 m, zone meridian 105 °W, from 1 July 16:00 (end of the hour) to 2 July 21:00.
+#: Columns: temperature °C, vapour kPa, solar MJ/m²h, wind m/s, printed: extraterrestrial, clear-sky, net
+#: long-wave, net radiation, short-reference evaporation mm/h
 GREELEY = {"latitude_rad": 0.7053, "longitude_deg": -104.78, "elevation_m": 1462.4, "first_end_hour": 16}
 GREELEY_HOURS = [
     (30.9, 1.09, 2.24, 3.74, 3.26, 2.54, 0.284, 1.440, 0.61),
