@@ -2,11 +2,25 @@
 
 from __future__ import annotations
 
-from typing import Protocol, runtime_checkable
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Protocol, runtime_checkable
 
 import numpy as np
 
-from earthwork.ground.grid import Window
+from earthwork.errors import GroundError
+from earthwork.files.rasters import RasterInfo, RasterReader, RasterSource
+from earthwork.ground.grid import Grid, Window
+from earthwork.ground.resample import Taps, apply_taps, axis_taps, worth_compiling
+
+if TYPE_CHECKING:
+    from earthwork.ground.meet import SurfaceSet
+    from earthwork.site.load import Site
+
+#: A raster is read as it is when none of its cells lies further than this from the grid's [cells].
+ALIGNED_WITHIN = 1e-3
+
+#: Source cells read at once when many of them make one cell of the grid [cells].
+_READ_AT_ONCE = 4_000_000
 
 
 @runtime_checkable
@@ -27,6 +41,285 @@ class Surface(Protocol):
 
     dtype: np.dtype  #: float32 or float64, of what the readers give
     block: tuple[int, int] | None  #: (rows, columns) that the file decodes at once; None where it does not matter
+    block_start: tuple[int, int]  #: (row, column) of the grid where a block begins; others follow at every ``block``
     resampling: str  #: "none", "bilinear", "average", "nodes" or "exact": how the file came onto the grid
 
     def reader(self) -> SurfaceReader: ...
+
+
+def open_ground(site: Site) -> SurfaceSet:
+    """The surfaces of a site on one grid; see :func:`earthwork.ground.meet.open_ground`."""
+    from earthwork.ground.meet import open_ground as meet
+
+    return meet(site)
+
+
+# --- without a file ------------------------------------------------------------------------------------------------
+
+
+@dataclass(frozen=True)
+class LevelGround:
+    """One elevation everywhere [m]."""
+
+    elevation_m: float
+    dtype: np.dtype = np.dtype(np.float64)
+    block: tuple[int, int] | None = None
+    block_start: tuple[int, int] = (0, 0)
+    resampling: str = "exact"
+
+    def reader(self) -> LevelGround:
+        return self
+
+    def read(self, window: Window) -> np.ndarray:
+        """The level in each cell.
+
+        >>> LevelGround(102.5).read(Window(0, 0, 1, 2))
+        array([[102.5, 102.5]])
+        """
+        return np.full((window.height, window.width), self.elevation_m)
+
+    def close(self) -> None:
+        """Nothing is held."""
+
+
+@dataclass(frozen=True)
+class PlaneGround:
+    """A tilted plane: its elevation at the centre of each cell, which is also its mean over the cell.
+
+    Args:
+        grid: the grid that it is read on.
+        at: (easting, northing) of a point of the plane [CRS unit].
+        elevation_m: its elevation [m].
+        slope: rise per unit east and per unit north, on the ground.
+    """
+
+    grid: Grid
+    at: tuple[float, float]
+    elevation_m: float
+    slope: tuple[float, float]
+    dtype: np.dtype = np.dtype(np.float64)
+    block: tuple[int, int] | None = None
+    block_start: tuple[int, int] = (0, 0)
+    resampling: str = "exact"
+
+    def reader(self) -> PlaneGround:
+        return self
+
+    def read(self, window: Window) -> np.ndarray:
+        """Elevations at the centres.
+
+        >>> grid = Grid(1, 2, 0.0, 1.0, 1.0, 1.0)
+        >>> PlaneGround(grid, (0.0, 0.0), 10.0, (0.5, 0.0)).read(Window(0, 0, 1, 2))
+        array([[10.25, 10.75]])
+        """
+        row, column = self.grid.cell(*self.at)
+        east = (np.arange(window.column, window.column + window.width) + 0.5 - column) * self.grid.cell_east_m
+        north = (row - np.arange(window.row, window.row + window.height) - 0.5) * self.grid.cell_north_m
+        return (self.elevation_m + self.slope[1] * north)[:, None] + (self.slope[0] * east)[None, :]
+
+    def close(self) -> None:
+        """Nothing is held."""
+
+
+# --- rasters ---------------------------------------------------------------------------------------------------------
+
+
+@dataclass(frozen=True)
+class AlignedRaster:
+    """A raster whose cells are the grid's: read as it is, never resampled.
+
+    Args:
+        source: the file.
+        row, column: row and column of the file (north up) at the grid's (0, 0); negative where the grid begins first.
+    """
+
+    source: RasterSource
+    row: int
+    column: int
+    resampling: str = "none"
+
+    @property
+    def dtype(self) -> np.dtype:
+        return self.source.dtype
+
+    @property
+    def block(self) -> tuple[int, int] | None:
+        return self.source.info.block
+
+    @property
+    def block_start(self) -> tuple[int, int]:
+        return _block_start(self.source.info, self.row, self.column)
+
+    def reader(self) -> _AlignedReader:
+        return _AlignedReader(self)
+
+
+class _AlignedReader:
+    def __init__(self, surface: AlignedRaster) -> None:
+        self._surface = surface
+        self._file = surface.source.reader()
+
+    def read(self, window: Window) -> np.ndarray:
+        info = self._surface.source.info
+        row, column = window.row + self._surface.row, window.column + self._surface.column
+        if row >= 0 and column >= 0 and row + window.height <= info.rows and column + window.width <= info.columns:
+            return self._file.read(row, column, window.height, window.width)
+        values = np.full((window.height, window.width), np.nan, self._surface.dtype)
+        top, left = max(row, 0), max(column, 0)
+        bottom, right = min(row + window.height, info.rows), min(column + window.width, info.columns)
+        if bottom > top and right > left:
+            inside = np.s_[top - row : bottom - row, left - column : right - column]
+            values[inside] = self._file.read(top, left, bottom - top, right - left)
+        return values
+
+    def close(self) -> None:
+        self._file.close()
+
+
+@dataclass(frozen=True)
+class ResampledRaster:
+    """A north-up raster in the grid's CRS brought onto its cells by weights along each axis."""
+
+    source: RasterSource
+    north: Taps
+    east: Taps
+    resampling: str
+    block: tuple[int, int] | None
+    block_start: tuple[int, int] = (0, 0)
+    compiled: bool = False
+    dtype: np.dtype = np.dtype(np.float64)
+
+    def reader(self) -> _ResampledReader:
+        return _ResampledReader(self)
+
+
+class _ResampledReader:
+    def __init__(self, surface: ResampledRaster) -> None:
+        self._surface = surface
+        self._file = surface.source.reader()
+
+    def read(self, window: Window) -> np.ndarray:
+        values = np.full((window.height, window.width), np.nan)
+        north = self._surface.north.part(window.row, window.row + window.height)
+        east = self._surface.east.part(window.column, window.column + window.width)
+        if len(north) and len(east):
+            self._fill(values[north.first : north.stop, east.first : east.stop], north, east)
+        return values
+
+    def _fill(self, out: np.ndarray, north: Taps, east: Taps) -> None:
+        """Write the cells of two runs of taps into ``out``; in halves when they take too many source cells at once."""
+        (top, bottom), (left, right) = north.reach, east.reach
+        high, wide = len(north), len(east)
+        if (bottom - top) * (right - left) > _READ_AT_ONCE and (high > 1 or wide > 1):
+            if high > 1:
+                for rows in (slice(0, high // 2), slice(high // 2, high)):
+                    self._fill(out[rows], _run(north, rows), east)
+            else:
+                for columns in (slice(0, wide // 2), slice(wide // 2, wide)):
+                    self._fill(out[:, columns], north, _run(east, columns))
+            return
+        values = self._file.read(top, left, bottom - top, right - left)
+        near_north = Taps(0, north.index - top, north.weight, north.averaged)
+        near_east = Taps(0, east.index - left, east.weight, east.averaged)
+        out[...] = apply_taps(values, near_north, near_east, compiled=self._surface.compiled)
+
+    def close(self) -> None:
+        self._file.close()
+
+
+def _run(taps: Taps, cut: slice) -> Taps:
+    return Taps(0, taps.index[cut], taps.weight[cut], taps.averaged)
+
+
+def raster_on_grid(source: RasterSource, grid: Grid, *, nodes: bool = False) -> AlignedRaster | ResampledRaster:
+    """A north-up raster in the grid's CRS as a surface on the grid: as it is where the cells agree, else resampled.
+
+    Args:
+        source: the file.
+        grid: in the same CRS.
+        nodes: the raster's values are points of the ground (else each stands for its cell).
+
+    Raises:
+        GroundError: rotated, sheared, or without a place.
+    """
+    info = source.info
+    require_north_up(info, source.what)
+    offset = aligned_offset(info, grid)
+    if offset is not None and not nodes:
+        return AlignedRaster(source, *offset)
+    north, east = raster_taps(info, grid, nodes=nodes)
+    averaged = north.averaged or east.averaged
+    resampling = "average" if averaged else "nodes" if nodes else "bilinear"
+    start_row = (grid.north - info.north) / info.cell_north
+    start_column = (grid.west - info.west) / info.cell_east
+    ratio = (grid.cell_north / info.cell_north, grid.cell_east / info.cell_east)
+    block = (max(1, round(info.block[0] / ratio[0])), max(1, round(info.block[1] / ratio[1])))
+    first = _block_start(info, round(start_row), round(start_column))
+    block_start = (round(first[0] / ratio[0]) % block[0], round(first[1] / ratio[1]) % block[1])
+    compiled = worth_compiling(grid.rows * grid.columns)
+    return ResampledRaster(source, north, east, resampling, block, block_start, compiled)
+
+
+def raster_taps(info: RasterInfo, grid: Grid, *, nodes: bool = False) -> tuple[Taps, Taps]:
+    """Taps along north and east that bring a north-up raster of the grid's CRS onto the grid."""
+    north = axis_taps(
+        -info.north, info.cell_north, info.rows, -grid.north, grid.cell_north, grid.rows, nodes=nodes
+    )
+    east = axis_taps(info.west, info.cell_east, info.columns, grid.west, grid.cell_east, grid.columns, nodes=nodes)
+    return north, east
+
+
+def aligned_offset(info: RasterInfo, grid: Grid) -> tuple[int, int] | None:
+    """(row, column) of the raster at the grid's (0, 0) when its cells are the grid's everywhere, else None."""
+    shifts = []
+    for start, mine, theirs, cells in (
+        ((info.north - grid.north) / grid.cell_north, info.cell_north, grid.cell_north, grid.rows),
+        ((grid.west - info.west) / grid.cell_east, info.cell_east, grid.cell_east, grid.columns),
+    ):
+        # the place of the first and the last edge of the grid, in cells of the file
+        first = start * theirs / mine
+        last = first + cells * theirs / mine
+        shift = round(first)
+        if abs(first - shift) > ALIGNED_WITHIN or abs(last - shift - cells) > ALIGNED_WITHIN:
+            return None
+        shifts.append(shift)
+    return shifts[0], shifts[1]
+
+
+def require_north_up(info: RasterInfo, what: str) -> None:
+    """Raise a GroundError for a raster that is rotated or sheared, or that lies nowhere."""
+    if info.rotated:
+        a, b, _, d, e, _ = info.transform
+        raise GroundError(
+            f"{what}: {info.name}: its grid is rotated or sheared (one column is {a:g} east and {d:g} north, one row "
+            f"{b:g} east and {e:g} north); rows must run east. Resample it to a north-up grid first: "
+            "gdalwarp -r bilinear in.tif out.tif"
+        )
+    if not info.placed:
+        raise GroundError(
+            f"{what}: {info.name}: it carries no georeference; where it lies and how large its cells are must be known. "
+            "Add them, for example with a world file"
+        )
+
+
+def _block_start(info: RasterInfo, row: int, column: int) -> tuple[int, int]:
+    """(row, column) of the grid where a block of the file begins, for a grid that begins at a row and column of it."""
+    high, wide = info.block
+    first_row = info.rows % high if info.south_up else 0
+    first_column = info.columns % wide if info.east_first else 0
+    return (first_row - row) % high, (first_column - column) % wide
+
+
+__all__ = [
+    "AlignedRaster",
+    "LevelGround",
+    "PlaneGround",
+    "RasterReader",
+    "ResampledRaster",
+    "Surface",
+    "SurfaceReader",
+    "aligned_offset",
+    "open_ground",
+    "raster_on_grid",
+    "require_north_up",
+]

@@ -1,0 +1,238 @@
+"""Brings a raster of another CRS onto the grid: the centre of each cell is found in the file, and interpolated there."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+import numpy as np
+import shapely
+from pyproj import CRS, Transformer
+
+from earthwork.crs import transformer
+from earthwork.errors import GroundError
+from earthwork.files.rasters import RasterSource
+from earthwork.ground.grid import Grid, Window
+from earthwork.ground.resample import AVERAGE_FROM
+
+#: Places between control points may be wrong by this part of a source cell; the spacing is chosen by it [cells].
+_PLACE_ERROR = 1e-3
+
+#: Spacings of control points that are tried, in cells of the grid.
+_SPACINGS = (64, 32, 16, 8, 4, 2, 1)
+
+#: Source cells read at once [cells].
+_READ_AT_ONCE = 4_000_000
+
+#: Two places closer than this are one [source cells].
+_SNAP = 1e-6
+
+
+@dataclass(frozen=True)
+class WarpedRaster:
+    """A raster in another CRS, on the cells of the grid.
+
+    Bilinear between the four source samples around the centre of a cell, valid only where all four are. Where the source
+    is finer, ``parts`` × ``parts`` points of the cell are averaged.
+
+    Args:
+        source: the file, north up in its own CRS.
+        crs: its CRS.
+        grid: the grid.
+        spacing: cells between control points, at which places are transformed; between them they are interpolated.
+        parts: points per cell along each axis.
+    """
+
+    source: RasterSource
+    crs: CRS
+    grid: Grid
+    spacing: int
+    parts: int
+    block: tuple[int, int] | None = None
+    block_start: tuple[int, int] = (0, 0)
+    dtype: np.dtype = np.dtype(np.float64)
+
+    @property
+    def resampling(self) -> str:
+        return "average" if self.parts > 1 else "bilinear"
+
+    def reader(self) -> _WarpedReader:
+        return _WarpedReader(self)
+
+
+def warped_raster(source: RasterSource, crs: CRS, grid: Grid) -> WarpedRaster:
+    """A raster of another CRS as a surface on the grid, with control points as close as 1/1000 cell asks for.
+
+    Raises:
+        GroundError: places of the grid cannot be expressed in the file's CRS.
+    """
+    rough = WarpedRaster(source, crs, grid, 1, 1)
+    to_file = transformer(grid.crs, crs)
+    rows = np.linspace(0.5, grid.rows - 0.5, 5)
+    columns = np.linspace(0.5, grid.columns - 0.5, 5)
+    row, column = (a.ravel() for a in np.meshgrid(rows, columns, indexing="ij"))
+    here = _places(rough, to_file, row, column)
+    if not np.isfinite(here).all():
+        raise GroundError(
+            f"{source.what}: {source.info.name}: the site cannot be expressed in its CRS ({crs.name}); check both CRS"
+        )
+    beside = _places(rough, to_file, row, column + 1.0) - here
+    below = _places(rough, to_file, row + 1.0, column) - here
+    ratio = max(np.hypot(*beside).max(), np.hypot(*below).max())
+    spacing = next((s for s in _SPACINGS if _bend(rough, to_file, row, column, s) < _PLACE_ERROR), 1)
+    parts = math.ceil(ratio - 1e-6) if ratio >= AVERAGE_FROM else 1
+    return replace(rough, spacing=spacing, parts=parts)
+
+
+def _places(surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column: np.ndarray) -> np.ndarray:
+    """(row, column) in samples of the file (sample 0 at the centre of the first cell), shape (2, …), of grid places."""
+    grid, info = surface.grid, surface.source.info
+    east, north = to_file.transform(grid.west + column * grid.cell_east, grid.north - row * grid.cell_north)
+    return np.stack([(info.north - north) / info.cell_north - 0.5, (east - info.west) / info.cell_east - 0.5])
+
+
+def _bend(surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column: np.ndarray, spacing: int) -> float:
+    """The greatest error of interpolated places between control points ``spacing`` cells apart [source cells]."""
+    if spacing == 1:
+        return 0.0
+    corner = [_places(surface, to_file, row + i * spacing, column + j * spacing) for i in (0, 1) for j in (0, 1)]
+    middle = _places(surface, to_file, row + spacing / 2, column + spacing / 2)
+    along = _places(surface, to_file, row, column + spacing / 2)
+    down = _places(surface, to_file, row + spacing / 2, column)
+    errors = (
+        np.abs(middle - sum(corner) / 4).max(),
+        np.abs(along - (corner[0] + corner[1]) / 2).max(),
+        np.abs(down - (corner[0] + corner[2]) / 2).max(),
+    )
+    return float(max(errors)) if np.isfinite(errors).all() else math.inf
+
+
+class _WarpedReader:
+    def __init__(self, surface: WarpedRaster) -> None:
+        self._surface = surface
+        self._file = surface.source.reader()
+        self._to_file = transformer(surface.grid.crs, surface.crs)
+
+    def read(self, window: Window) -> np.ndarray:
+        values = np.zeros((window.height, window.width))
+        self._add(values, window)
+        values /= self._surface.parts**2
+        return values
+
+    def close(self) -> None:
+        self._file.close()
+
+    def _add(self, out: np.ndarray, window: Window) -> None:
+        """Add the samples of each cell of a window to ``out``; in halves when they take too many source cells."""
+        info, parts = self._surface.source.info, self._surface.parts
+        control = self._control(window)
+        reach = self._reach(control)
+        if (reach[1] - reach[0]) * (reach[3] - reach[2]) > _READ_AT_ONCE and max(window.height, window.width) > 1:
+            for part, cut in _halves(window):
+                self._add(out[cut], part)
+            return
+        top, bottom = max(reach[0], 0), min(reach[1], info.rows)
+        left, right = max(reach[2], 0), min(reach[3], info.columns)
+        if bottom <= top or right <= left:
+            out[...] = np.nan
+            return
+        source = self._file.read(top, left, bottom - top, right - left)
+        for i in range(parts):
+            for j in range(parts):
+                row = self._between(control[0], window, (i + 0.5) / parts - 0.5, (j + 0.5) / parts - 0.5)
+                column = self._between(control[1], window, (i + 0.5) / parts - 0.5, (j + 0.5) / parts - 0.5)
+                out += bilinear(source, row - top, column - left)
+
+    def _control(self, window: Window) -> np.ndarray:
+        """Places in the file of the control points around a window; they lie on the same cells for every window."""
+        step = self._surface.spacing
+        rows = np.arange(window.row // step, (window.row + window.height - 1) // step + 2) * step + 0.5
+        columns = np.arange(window.column // step, (window.column + window.width - 1) // step + 2) * step + 0.5
+        row, column = np.meshgrid(rows, columns, indexing="ij")
+        return _places(self._surface, self._to_file, row, column)
+
+    def _between(self, control: np.ndarray, window: Window, down: float, along: float) -> np.ndarray:
+        """One coordinate for each cell of a window, at an offset from its centre [cells], between control points."""
+        step = self._surface.spacing
+        rows = np.arange(window.row, window.row + window.height)
+        columns = np.arange(window.column, window.column + window.width)
+        i, j = rows // step - window.row // step, columns // step - window.column // step
+        u = ((rows % step + down) / step)[:, None]
+        v = ((columns % step + along) / step)[None, :]
+        coarse = control[i] * (1 - u) + control[i + 1] * u
+        return coarse[:, j] * (1 - v) + coarse[:, j + 1] * v
+
+    @staticmethod
+    def _reach(control: np.ndarray) -> tuple[int, int, int, int]:
+        """(top, bottom, left, right) of the source samples that a window can take, from its control points."""
+        if not np.isfinite(control).any():
+            return 0, 0, 0, 0
+        low = np.floor(np.nanmin(np.where(np.isfinite(control), control, np.nan), axis=(1, 2))) - 1
+        high = np.ceil(np.nanmax(np.where(np.isfinite(control), control, np.nan), axis=(1, 2))) + 2
+        return int(low[0]), int(high[0]), int(low[1]), int(high[1])
+
+
+def _halves(window: Window) -> list[tuple[Window, tuple[slice, slice]]]:
+    """A window cut in two across its longer side, each half with its place in the whole."""
+    everything = slice(None)
+    if window.height >= window.width:
+        half = window.height // 2
+        return [
+            (replace(window, height=half), (slice(0, half), everything)),
+            (replace(window, row=window.row + half, height=window.height - half), (slice(half, None), everything)),
+        ]
+    half = window.width // 2
+    return [
+        (replace(window, width=half), (everything, slice(0, half))),
+        (replace(window, column=window.column + half, width=window.width - half), (everything, slice(half, None))),
+    ]
+
+
+def bilinear(values: np.ndarray, row: np.ndarray, column: np.ndarray) -> np.ndarray:
+    """Values between samples, float64; NaN where a sample that is needed is missing or lies outside.
+
+    Args:
+        values: samples, shape (rows, columns).
+        row, column: places in samples, (0, 0) is the first sample itself.
+
+    >>> bilinear(np.array([[0.0, 1.0], [2.0, 3.0]]), np.array([0.5]), np.array([0.25]))
+    array([1.25])
+    """
+    row, column = _snapped(row), _snapped(column)
+    inside = (row >= 0) & (row <= values.shape[0] - 1) & (column >= 0) & (column <= values.shape[1] - 1)
+    row, column = np.where(inside, row, 0.0), np.where(inside, column, 0.0)
+    i, j = np.floor(row).astype(np.intp), np.floor(column).astype(np.intp)
+    u, v = row - i, column - j
+    below, right = i + (u > 0), j + (v > 0)
+    upper = values[i, j] * (1 - v) + values[i, right] * v
+    lower = values[below, j] * (1 - v) + values[below, right] * v
+    return np.where(inside, upper * (1 - u) + lower * u, np.nan)
+
+
+def _snapped(place: np.ndarray) -> np.ndarray:
+    near = np.rint(place)
+    return np.where(np.abs(place - near) < _SNAP, near, place)
+
+
+def footprint(source: RasterSource, crs: CRS, grid_crs: CRS, *, points: int = 64) -> shapely.Polygon:
+    """The ground that a raster covers, as a polygon in another CRS: the rectangle of its sample centres.
+
+    Raises:
+        GroundError: the rectangle cannot be expressed in the other CRS.
+    """
+    info = source.info
+    west, south, east, north = info.bounds
+    half_east, half_north = info.cell_east / 2, info.cell_north / 2
+    west, east, south, north = west + half_east, east - half_east, south + half_north, north - half_north
+    along = np.linspace(0.0, 1.0, points)[:-1]
+    ring_east = np.concatenate([west + (east - west) * along, np.full(points - 1, east)])
+    ring_east = np.concatenate([ring_east, east - (east - west) * along, np.full(points - 1, west)])
+    ring_north = np.concatenate([np.full(points - 1, south), south + (north - south) * along])
+    ring_north = np.concatenate([ring_north, np.full(points - 1, north), north - (north - south) * along])
+    xs, ys = transformer(crs, grid_crs).transform(ring_east, ring_north)
+    polygon = shapely.Polygon(np.column_stack([xs, ys])) if np.isfinite(xs).all() and np.isfinite(ys).all() else None
+    if polygon is None or polygon.is_empty or not polygon.is_valid:
+        raise GroundError(
+            f"{source.what}: {info.name}: its extent cannot be expressed in the CRS of the grid; cut it to the site first"
+        )
+    return polygon
