@@ -1,0 +1,263 @@
+"""Walks the analysis grid once, tile by tile, and lets tallies count.
+
+The grid is cut into bands of rows that follow the blocks of the files; a band is read from west to east. Cells at the
+edge of what is read wait for their neighbours: the last columns are carried to the next tile, and the two rows on each
+side of a band's edge are kept until both bands are known (a *seam*). So every block of a file is decoded once, and what
+is counted depends neither on the number of threads nor on their order: each band and each seam counts for itself,
+and the counts are merged from north to south.
+"""
+
+from __future__ import annotations
+
+import os
+import threading
+from collections import deque
+from collections.abc import Callable, Sequence
+from concurrent.futures import ThreadPoolExecutor
+from typing import Protocol
+
+import numpy as np
+
+from earthwork.ground.grid import Grid, Window
+from earthwork.ground.stack import Arrays, Stack, StackReader
+from earthwork.quantities.tile import Tile
+
+Progress = Callable[[int, int], None]
+
+_BAND_ROWS = 256  #: least rows of a band of tiled files
+_STRIP_ROWS = 128  #: rows of a band of striped files: GDAL's cache holds them across the tiles of the band
+
+
+class Tally(Protocol):
+    """A question about the ground. Merging is associative, and always done from north to south."""
+
+    def empty(self) -> Tally:
+        """The same question with nothing counted."""
+
+    def add(self, tile: Tile) -> None:
+        """Count a tile; called by one thread at a time for each instance."""
+
+    def merge(self, other: Tally) -> None:
+        """Take over what another instance, of ground further on, has counted."""
+
+
+def walk(
+    stack: Stack,
+    tallies: Sequence[Tally],
+    *,
+    threads: int | None = None,
+    progress: Progress | None = None,
+    tile_cells: int | None = None,
+    band_rows: int | None = None,
+) -> None:
+    """Read the ground once and let every tally count it.
+
+    Args:
+        stack: the surfaces and layers of the site.
+        tallies: counted into in place.
+        threads: default: one a processor, at most 4.
+        progress: called with (bands done, bands in all), from any thread, one call at a time.
+        tile_cells, band_rows: size of a tile and of a band; the result does not depend on them beyond rounding.
+
+    Raises:
+        FileError: a file cannot be read; KeyboardInterrupt passes through after the threads have stopped.
+    """
+    count = threads or min(os.cpu_count() or 1, 4)
+    _Walk(stack, tallies, progress, tile_cells or stack.tile_cells, band_rows).run(count)
+
+
+def band_edges(rows: int, block: tuple[int, int] | None, offset: int = 0, band_rows: int | None = None) -> list[int]:
+    """Row edges of the bands: on block edges of the files, no band under three rows.
+
+    >>> band_edges(700, (256, 256), offset=100)
+    [0, 156, 412, 700]
+    """
+    block_rows = block[0] if block else _BAND_ROWS
+    height = band_rows or (
+        -(-_BAND_ROWS // block_rows) * block_rows if block_rows >= 16 else _STRIP_ROWS // block_rows * block_rows
+    )
+    first = height - offset % block_rows if block_rows >= 16 else height
+    edges = [0, *range(first if first >= 3 else first + height, rows, max(height, 3)), rows]
+    if len(edges) > 2 and edges[-1] - edges[-2] < max(3, min(height // 4, 64)):
+        del edges[-2]
+    return edges
+
+
+class _Walk:
+    """The state of one walk: bands waiting, seams half known, counts waiting to be merged in order."""
+
+    def __init__(
+        self, stack: Stack, tallies: Sequence[Tally], progress: Progress | None, tile_cells: int, band_rows: int | None
+    ) -> None:
+        self.stack = stack
+        self.tallies = tallies
+        self.progress = progress
+        self.grid: Grid = stack.grid
+        self.edges = band_edges(self.grid.rows, stack.block, stack.block_offset[0], band_rows)
+        self.tile_cells = tile_cells
+        self.lock = threading.Lock()
+        self.merging = threading.Lock()
+        self.stop = threading.Event()
+        self.rims: dict[tuple[int, str], Arrays] = {}
+        self.counted: dict[int, list[Tally]] = {}
+        self.next_unit = 0
+        self.done = 0
+
+    @property
+    def bands(self) -> int:
+        return len(self.edges) - 1
+
+    def run(self, threads: int) -> None:
+        threads = max(1, min(threads, self.bands))
+        # Each thread starts on a run of neighbouring bands, so that blocks cut by a band edge are still in GDAL's
+        # cache; who is done first helps the others from the far end.
+        share = -(-self.bands // threads)
+        queues = [deque(range(k * share, min((k + 1) * share, self.bands))) for k in range(threads)]
+        if threads == 1:
+            self._thread(0, queues)
+            return
+        with ThreadPoolExecutor(threads) as pool:
+            try:
+                futures = [pool.submit(self._thread, k, queues) for k in range(threads)]
+                for future in futures:
+                    future.result()
+            except BaseException:
+                self.stop.set()
+                raise
+
+    def _thread(self, k: int, queues: list[deque[int]]) -> None:
+        reader = self.stack.reader()
+        try:
+            while not self.stop.is_set():
+                band = self._take(k, queues)
+                if band is None:
+                    return
+                self._band(reader, band)
+        except BaseException:
+            self.stop.set()
+            raise
+        finally:
+            reader.close()
+
+    def _take(self, k: int, queues: list[deque[int]]) -> int | None:
+        with self.lock:
+            if queues[k]:
+                return queues[k].popleft()
+            longest = max(queues, key=len)
+            return longest.pop() if longest else None
+
+    def _band(self, reader: StackReader, band: int) -> None:
+        """Read a band from west to east, count its inner cells, and hand its edge rows to the seams."""
+        row, stop = self.edges[band], self.edges[band + 1]
+        first, last = band == 0, band == self.bands - 1
+        counts = [tally.empty() for tally in self.tallies]
+        edges_north: list[Arrays] = []
+        edges_south: list[Arrays] = []
+        carried: Arrays | None = None
+        columns = self._column_edges(stop - row)
+        for left, right in zip(columns, columns[1:], strict=False):
+            if self.stop.is_set():
+                return
+            arrays = reader.read(Window(row, left, stop - row, right - left))
+            if not first:
+                edges_north.append({name: a[:2].copy() for name, a in _unique(arrays)})
+            if not last:
+                edges_south.append({name: a[-2:].copy() for name, a in _unique(arrays)})
+            west = left if carried is None else left - 1
+            east = right if right == self.grid.columns else right - 1
+            rimmed = _rim(carried, arrays, north=first, south=last, east=right == self.grid.columns)
+            if right < self.grid.columns:
+                carried = {name: a[:, -2:].copy() for name, a in _unique(arrays)}
+            inner = row if first else row + 1
+            height = (stop if last else stop - 1) - inner
+            if height > 0 and east > west:
+                self._count(counts, rimmed, Window(inner, west, height, east - west))
+        self._finish(2 * band, counts)
+        if not first:
+            self._seam(band - 1, "south", _side_by_side(edges_north))
+        if not last:
+            self._seam(band, "north", _side_by_side(edges_south))
+        with self.lock:
+            self.done += 1
+            if self.progress:
+                self.progress(self.done, self.bands)
+
+    def _column_edges(self, height: int) -> list[int]:
+        block_columns = self.stack.block[1] if self.stack.block else 256
+        width = max(self.tile_cells // max(height, 1), 3)
+        offset = self.stack.block_offset[1]
+        if block_columns <= width:
+            width = width // block_columns * block_columns
+            first = width - offset % block_columns
+        else:
+            first = width
+        edges = [0, *range(first if first >= 3 else first + width, self.grid.columns, width), self.grid.columns]
+        if len(edges) > 2 and edges[-1] - edges[-2] < 3:
+            del edges[-2]
+        return edges
+
+    def _seam(self, above: int, side: str, rows: Arrays) -> None:
+        """Keep the two rows on one side of a seam; count its two rows of cells when both sides are known."""
+        other = "north" if side == "south" else "south"
+        with self.lock:
+            waiting = self.rims.pop((above, other), None)
+            if waiting is None:
+                self.rims[above, side] = rows
+                return
+        north, south = (waiting, rows) if side == "south" else (rows, waiting)
+        arrays = {name: _padded(np.concatenate([north[name], south[name]]), west=True, east=True) for name in north}
+        counts = [tally.empty() for tally in self.tallies]
+        self._count(counts, arrays, Window(self.edges[above + 1] - 1, 0, 2, self.grid.columns))
+        self._finish(2 * above + 1, counts)
+
+    def _count(self, counts: list[Tally], arrays: Arrays, window: Window) -> None:
+        tile = Tile(self.stack, window, arrays)
+        for tally in counts:
+            tally.add(tile)
+
+    def _finish(self, unit: int, counts: list[Tally]) -> None:
+        """Merge what is counted from north to south, as far as it is known without a gap."""
+        with self.merging:
+            self.counted[unit] = counts
+            while self.next_unit in self.counted:
+                for tally, part in zip(self.tallies, self.counted.pop(self.next_unit), strict=True):
+                    tally.merge(part)
+                self.next_unit += 1
+
+
+def _unique(arrays: Arrays) -> list[tuple[str, np.ndarray]]:
+    return list(arrays.items())
+
+
+def _padded(array: np.ndarray, *, north=False, south=False, west=False, east=False) -> np.ndarray:
+    """The array with a row or column of NaN on the sides where the grid ends."""
+    if not (north or south or west or east):
+        return array
+    rows, columns = array.shape
+    padded = np.full((rows + north + south, columns + west + east), np.nan, array.dtype)
+    padded[int(north) : int(north) + rows, int(west) : int(west) + columns] = array
+    return padded
+
+
+def _rim(carried: Arrays | None, arrays: Arrays, *, north: bool, south: bool, east: bool) -> Arrays:
+    """Arrays of a tile with its rim: carried columns or the edge in the west, the edge elsewhere where asked."""
+    rimmed: Arrays = {}
+    for name, array in arrays.items():
+        rows, columns = array.shape
+        before = 1 if carried is None else 2
+        whole = np.empty((rows + north + south, before + columns + east), array.dtype)
+        if north:
+            whole[0] = np.nan
+        if south:
+            whole[-1] = np.nan
+        if east:
+            whole[:, -1] = np.nan
+        inner = whole[int(north) : int(north) + rows]
+        inner[:, :before] = np.nan if carried is None else carried[name]
+        inner[:, before : before + columns] = array
+        rimmed[name] = whole
+    return rimmed
+
+
+def _side_by_side(pieces: list[Arrays]) -> Arrays:
+    return {name: np.concatenate([piece[name] for piece in pieces], axis=1) for name in pieces[0]}

@@ -1,0 +1,165 @@
+"""A tile: a window of the grid with all surfaces, and what follows from them cell by cell."""
+
+from __future__ import annotations
+
+from functools import cached_property
+
+import numpy as np
+from numba import njit
+
+from earthwork.ground.grid import Window
+from earthwork.ground.stack import DISTURBED_OVER_M, Arrays, Stack
+from earthwork.quantities.split import split_depths
+
+
+class Tile:
+    """Cells of one window, each counted once in a walk.
+
+    Args:
+        stack: the site's surfaces and layers.
+        window: the cells of the tile.
+        arrays: fields with a one-cell rim, each (height + 2, width + 2); NaN outside the grid.
+    """
+
+    def __init__(self, stack: Stack, window: Window, arrays: Arrays) -> None:
+        self.stack = stack
+        self.grid = stack.grid
+        self.window = window
+        self.arrays = arrays
+
+    def core(self, name: str) -> np.ndarray:
+        """A field without its rim, shape (height, width)."""
+        return self.arrays[name][1:-1, 1:-1]
+
+    @property
+    def existing(self) -> np.ndarray:
+        """Existing ground [m], (height, width)."""
+        return self.core("existing")
+
+    @property
+    def stripped(self) -> np.ndarray:
+        """Stripped ground [m], (height, width)."""
+        return self.stack.stripped(self.arrays)[1:-1, 1:-1]
+
+    @property
+    def subgrade(self) -> np.ndarray:
+        """Subgrade [m], (height, width)."""
+        return self.stack.subgrade(self.arrays)[1:-1, 1:-1]
+
+    @property
+    def finished(self) -> np.ndarray:
+        """Finished ground [m], (height, width)."""
+        return self.core("finished")
+
+    @cached_property
+    def removal_bottom(self) -> np.ndarray:
+        """What the fill rests on [m], (height, width)."""
+        return self.stack.removal_bottom({name: a[1:-1, 1:-1] for name, a in self.arrays.items()})
+
+    @cached_property
+    def depth(self) -> np.ndarray:
+        """Subgrade − stripped [m], + fill, with a one-cell rim: (height + 2, width + 2)."""
+        return self.stack.subgrade(self.arrays) - self.stack.stripped(self.arrays)
+
+    @cached_property
+    def weight(self) -> np.ndarray | None:
+        """Share of each cell inside the limits, (height, width); None where all of the grid counts."""
+        if self.stack.limits is None:
+            return None
+        return self.stack.coverage(self.stack.limits, self.window)
+
+    @cached_property
+    def cells(self) -> np.ndarray:
+        """Cut, fill [mean m over the cell], cut share, fill share: (4, height, width), 0 where no data."""
+        cells = np.empty((4, self.window.height, self.window.width))
+        split_depths(self.depth, cells, np.zeros(8))
+        return cells
+
+    @property
+    def cut(self) -> np.ndarray:
+        """Cut, mean over each cell [m], (height, width)."""
+        return self.cells[0]
+
+    @property
+    def fill(self) -> np.ndarray:
+        """Fill, mean over each cell [m], (height, width)."""
+        return self.cells[1]
+
+    @property
+    def refill(self) -> np.ndarray:
+        """Over-excavation [m], (height, width): dug under the lower of stripped ground and subgrade, and refilled."""
+        if not self.stack.excavations:
+            return np.zeros((self.window.height, self.window.width))
+        return np.minimum(self.stripped, self.subgrade) - self.removal_bottom
+
+    @cached_property
+    def disturbed(self) -> np.ndarray:
+        """Share of each cell that is disturbed, (height, width)."""
+        if "disturbed" in self.arrays:
+            return self.core("disturbed")
+        if self.stack.disturbed is not None:
+            return self.stack.coverage(self.stack.disturbed, self.window)
+        return (np.abs(self.depth[1:-1, 1:-1]) > DISTURBED_OVER_M).astype(np.float64)
+
+    def shifted(self, shift_m: float) -> Tile:
+        """The same tile with its grade raised where it may move."""
+        return Tile(self.stack, self.window, self.stack.shifted(self.arrays, shift_m))
+
+    def stratum_bottoms(self) -> np.ndarray:
+        """Bottoms of all strata but the last [m], (strata − 1, height, width)."""
+        count = max(len(self.stack.strata) - 1, 0)
+        bottoms = np.empty((count, self.window.height, self.window.width))
+        for i in range(count):
+            bottoms[i] = self.core(f"stratum{i}")
+        return bottoms
+
+    @cached_property
+    def cut_by_stratum(self) -> np.ndarray:
+        """Cut of each stratum, mean over the cell [m], (strata, height, width); they add up to the cut."""
+        lower = np.minimum(self.stripped, self.subgrade)
+        return _by_stratum(self.stratum_bottoms(), self.stripped, lower, self.cut)
+
+    @cached_property
+    def excavated_by_stratum(self) -> np.ndarray:
+        """Over-excavation of each stratum, mean over the cell [m], (strata, height, width)."""
+        lower = np.minimum(self.stripped, self.subgrade)
+        return _by_stratum(self.stratum_bottoms(), lower, self.removal_bottom, np.nan_to_num(self.refill))
+
+    @cached_property
+    def stratum_at_bottom(self) -> np.ndarray:
+        """Index of the stratum at the removal bottom, (height, width)."""
+        return (self.removal_bottom < self.stratum_bottoms()).sum(axis=0)
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _by_stratum(bottoms, top, low, amount):
+    """Share the amount of each cell out to the strata by how much of the column low..top lies in each.
+
+    A cell whose column is empty but whose amount is not (its plane crosses zero beside the centre) takes the stratum
+    that lies at the top of the column. The last stratum with thickness takes the rest, so the parts add up exactly.
+    """
+    strata = bottoms.shape[0] + 1
+    h, w = amount.shape
+    out = np.zeros((strata, h, w))
+    for i in range(h):
+        for j in range(w):
+            left = amount[i, j]
+            if not left > 0.0:
+                continue
+            column = top[i, j] - low[i, j]
+            here = top[i, j]
+            for k in range(strata):
+                if k == strata - 1:
+                    out[k, i, j] = left
+                    break
+                bottom = bottoms[k, i, j]
+                if here <= bottom:
+                    continue
+                if bottom <= low[i, j] or not column > 0.0:
+                    out[k, i, j] = left
+                    break
+                part = amount[i, j] * (here - bottom) / column
+                out[k, i, j] = part
+                left -= part
+                here = bottom
+    return out

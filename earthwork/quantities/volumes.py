@@ -1,0 +1,359 @@
+"""Cut and fill between stripped ground and subgrade, by zone and material: ``earthwork.volumes(site)``."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from earthwork.errors import GroundError, Warning
+from earthwork.quantities.coverage import polygon_share
+from earthwork.quantities.engine import Progress, Tally, walk
+from earthwork.quantities.fields import Sums, field_names, field_values
+from earthwork.quantities.site_ground import SiteGround, open_site
+from earthwork.quantities.tile import Tile
+from earthwork.results import Result
+from earthwork.site import Site, load_site
+
+if TYPE_CHECKING:
+    import pandas
+
+
+class VolumesTally:
+    """Sums of all fields over the site, over each zone, and over what is outside all zones."""
+
+    def __init__(self, ground: SiteGround) -> None:
+        self.ground = ground
+        self.total = Sums.none(ground.stack)
+        self.outside = Sums.none(ground.stack)
+        self.zones: dict[int, Sums] = {}
+        self.missing = 0.0
+        self.missing_rows = (np.inf, -np.inf)
+        self.missing_columns = (np.inf, -np.inf)
+
+    def empty(self) -> VolumesTally:
+        return VolumesTally(self.ground)
+
+    def add(self, tile: Tile) -> None:
+        stack = self.ground.stack
+        if not stack.layered and stack.limits is None and stack.disturbed is None and not self.ground.zone_names:
+            before = self.total.values[0]
+            self.total.add_plain(tile)
+            if self.total.values[0] - before < tile.window.height * tile.window.width:
+                self._note_missing(tile)
+            return
+        if tile.weight is not None and not tile.weight.any():
+            return
+        fields = field_values(tile)
+        self.total.add(tile, fields, tile.weight)
+        if self.ground.zone_names:
+            self._add_zones(tile, fields)
+        if fields[0].sum() < tile.window.height * tile.window.width:
+            self._note_missing(tile)
+
+    def merge(self, other: VolumesTally) -> None:
+        self.total.merge(other.total)
+        self.outside.merge(other.outside)
+        for index, sums in other.zones.items():
+            if index in self.zones:
+                self.zones[index].merge(sums)
+            else:
+                self.zones[index] = sums
+        self.missing += other.missing
+        self.missing_rows = _hull(self.missing_rows, other.missing_rows)
+        self.missing_columns = _hull(self.missing_columns, other.missing_columns)
+
+    def _add_zones(self, tile: Tile, fields: np.ndarray) -> None:
+        window = tile.window
+        outside = np.ones((window.height, window.width)) if tile.weight is None else tile.weight.copy()
+        rings = self.ground.zones
+        assert rings is not None
+        for zone in rings.touching(window):
+            found = polygon_share(rings, zone, window)
+            if found is None:
+                continue
+            part, share = found
+            row, column = part.row - window.row, part.column - window.column
+            outside[row : row + part.height, column : column + part.width] -= share
+            sums = self.zones.setdefault(zone, Sums.none(tile.stack))
+            sums.add(tile, fields, share, row, column)
+        # What subtraction leaves of a cell that zones cover whole is rounding.
+        outside[outside < 1e-9] = 0.0
+        self.outside.add(tile, fields, outside)
+
+    def _note_missing(self, tile: Tile) -> None:
+        lost = ~np.isfinite(tile.depth[1:-1, 1:-1])
+        if tile.weight is not None:
+            self.missing += float(tile.weight[lost].sum())
+            lost &= tile.weight > 0
+        else:
+            self.missing += float(lost.sum())
+        if lost.any():
+            rows, columns = np.flatnonzero(lost.any(axis=1)), np.flatnonzero(lost.any(axis=0))
+            window = tile.window
+            self.missing_rows = _hull(self.missing_rows, (window.row + rows[0], window.row + rows[-1] + 1))
+            self.missing_columns = _hull(
+                self.missing_columns, (window.column + columns[0], window.column + columns[-1] + 1)
+            )
+
+
+def _hull(a: tuple[float, float], b: tuple[float, float]) -> tuple[float, float]:
+    return (min(a[0], b[0]), max(a[1], b[1]))
+
+
+@dataclass(frozen=True)
+class AreaVolumes:
+    """Volumes of one zone, of what is outside all zones, or of the whole site; ground quantities."""
+
+    zone: str | None
+    area_m2: float
+    cut_m3: float
+    fill_m3: float
+    cut_area_m2: float
+    fill_area_m2: float
+    max_cut_m: float
+    max_fill_m: float
+    missing_area_m2: float
+    strip_m3: float
+    section_m3: float
+    over_excavation_m3: float
+    scarify_m3: float
+    strips: dict[str, float]  #: by material [m³ bank]
+    sections: dict[str, float]  #: by name [m³]
+    cut_by_material: dict[str, float]  #: [m³ bank]
+    over_excavation_by_material: dict[str, float]  #: [m³ bank]
+    scarify_by_material: dict[str, float]  #: [m³ compacted]
+    bands_m3: tuple[float, ...]  #: compacted volume in each by_depth row
+    disturbed_area_m2: float
+    unsplit_cut_m3: float
+    unsplit_fill_m3: float
+
+    @property
+    def cut_minus_fill_m3(self) -> float:
+        """Geometric difference, bank less compacted: not a balance."""
+        return self.cut_m3 - self.fill_m3
+
+    @property
+    def mean_depth_m(self) -> float | None:
+        """Mean of subgrade − stripped over the area with data."""
+        return -self.cut_minus_fill_m3 / self.area_m2 if self.area_m2 > 0 else None
+
+    @property
+    def refill_and_fill_m3(self) -> float:
+        """Compacted volume to be placed: fill and over-excavation refill."""
+        return self.fill_m3 + self.over_excavation_m3
+
+    def to_dict(self) -> dict[str, Any]:
+        """The keys of the JSON document."""
+        keys = ("area_m2", "cut_m3", "fill_m3", "cut_minus_fill_m3", "cut_area_m2", "fill_area_m2", "max_cut_m",
+                "max_fill_m", "mean_depth_m", "missing_area_m2", "strip_m3", "section_m3", "over_excavation_m3",
+                "scarify_m3")  # fmt: skip
+        row: dict[str, Any] = {} if self.zone is None else {"zone": self.zone}
+        row.update({key: getattr(self, key) for key in keys})
+        row["materials"] = [
+            {"material": name, "cut_m3": cut} for name, cut in self.cut_by_material.items()
+        ]
+        return row
+
+
+def area_volumes(ground: SiteGround, sums: Sums, zone: str | None, missing_area_m2: float) -> AreaVolumes:
+    """Turn sums in cells into ground areas and volumes."""
+    stack = ground.stack
+    cell = stack.grid.cell_area_m2
+    at = {name: float(value) * cell for name, value in zip(field_names(stack), sums.values, strict=True)}
+    strips: dict[str, float] = {}
+    for i, strip in enumerate(stack.strips):
+        strips[strip.material] = strips.get(strip.material, 0.0) + at[f"strip{i}"]
+    cut, dug, scarified = ({name: 0.0 for name in stack.materials} for _ in range(3))
+    for k, stratum in enumerate(stack.strata):
+        cut[stratum.material] += at[f"cut:{k}"]
+        dug[stratum.material] += at.get(f"over_excavation:{k}", 0.0)
+        scarified[stratum.material] += at.get(f"scarify:{k}", 0.0)
+    return AreaVolumes(
+        zone=zone,
+        area_m2=at["area"],
+        cut_m3=at["cut"],
+        fill_m3=at["fill"],
+        cut_area_m2=at["cut_area"],
+        fill_area_m2=at["fill_area"],
+        max_cut_m=max(0.0, -sums.low_m) if np.isfinite(sums.low_m) else 0.0,
+        max_fill_m=max(0.0, sums.high_m) if np.isfinite(sums.high_m) else 0.0,
+        missing_area_m2=missing_area_m2,
+        strip_m3=sum(strips.values()),
+        section_m3=sum(at[f"section{i}"] for i in range(len(stack.sections))),
+        over_excavation_m3=at.get("over_excavation", 0.0),
+        scarify_m3=at.get("scarify", 0.0),
+        strips=strips,
+        sections={s.name: at[f"section{i}"] for i, s in enumerate(stack.sections)},
+        cut_by_material=cut,
+        over_excavation_by_material=dug,
+        scarify_by_material=scarified,
+        bands_m3=tuple(at[f"band{i}"] for i in range(len(stack.bands_below_m))),
+        disturbed_area_m2=at["disturbed"],
+        unsplit_cut_m3=at["plain_cut"],
+        unsplit_fill_m3=at["plain_fill"],
+    )
+
+
+@dataclass(frozen=True, kw_only=True)
+class VolumesResult(Result):
+    """Cut and fill of a site; see the JSON of ``volumes``."""
+
+    total: AreaVolumes
+    zones: tuple[AreaVolumes, ...]
+    outside_zones: AreaVolumes | None
+    ground: SiteGround
+
+    @property
+    def disturbed_area_m2(self) -> float:
+        return self.total.disturbed_area_m2
+
+    @property
+    def materials(self) -> list[dict[str, Any]]:
+        """Bank volumes by material, strata first, then what only strips name."""
+        total = self.total
+        names = dict.fromkeys([*total.cut_by_material, *total.strips])
+        return [
+            {
+                "material": name,
+                "cut_m3": total.cut_by_material.get(name, 0.0),
+                "strip_m3": total.strips.get(name, 0.0),
+                "over_excavation_m3": total.over_excavation_by_material.get(name, 0.0),
+            }
+            for name in names
+        ]
+
+    def to_dict(self) -> dict[str, Any]:
+        grid = self.ground.stack.grid
+        total = self.total
+        return {
+            "grid": {
+                "crs": self.ground.crs_name,
+                "cell_m": [grid.cell_east_m, grid.cell_north_m]
+                if abs(grid.cell_east - grid.cell_north) > 1e-9 * grid.cell_east
+                else grid.cell_east_m,
+                "rows": grid.rows,
+                "columns": grid.columns,
+                "ground_scale": grid.ground_scale,
+                "sample": self.ground.sample,
+                "resampling": self.ground.resampling,
+            },
+            "total": total.to_dict(),
+            "zones": [zone.to_dict() for zone in self.zones],
+            "outside_zones": self.outside_zones.to_dict() if self.outside_zones else None,
+            "disturbed_area_m2": total.disturbed_area_m2,
+            "materials": self.materials,
+            "strip_m3": total.strip_m3,
+            "section_m3": total.section_m3,
+            "sections": [{"section": n, "section_m3": v} for n, v in total.sections.items()],
+            "over_excavation_m3": total.over_excavation_m3,
+            "scarify_m3": total.scarify_m3,
+            "unsplit": {"cut_m3": total.unsplit_cut_m3, "fill_m3": total.unsplit_fill_m3},
+        }
+
+    def tables(self) -> dict[str, pandas.DataFrame]:
+        import pandas as pd
+
+        rows = [{"zone": "whole site", **_plain(self.total)}]
+        rows += [_plain(zone) for zone in self.zones]
+        if self.outside_zones:
+            rows.append({"zone": "outside all zones", **_plain(self.outside_zones)})
+        tables = {"volumes": pd.DataFrame(rows)}
+        if self.materials:
+            tables["materials"] = pd.DataFrame(self.materials)
+        return tables
+
+
+def _plain(area: AreaVolumes) -> dict[str, Any]:
+    row = area.to_dict()
+    row.pop("materials")
+    return row
+
+
+def volumes(
+    site: Site | str | Path,
+    *,
+    threads: int | None = None,
+    progress: Progress | None = None,
+    tallies: Sequence[Tally] = (),
+) -> VolumesResult:
+    """Cut and fill volumes between stripped ground and subgrade, by zone and material.
+
+    Args:
+        site: a checked site, or the path of its file.
+        threads: default: one a processor, at most 4; the result is the same for any number.
+        progress: called with (bands done, bands in all).
+        tallies: further questions to count in the same pass.
+
+    Raises:
+        EarthworkError: bad input; the message says what, where and how to mend it.
+    """
+    site = site if isinstance(site, Site) else load_site(site)
+    return count_volumes(site, open_site(site), threads=threads, progress=progress, tallies=tallies)
+
+
+def count_volumes(
+    site: Site,
+    ground: SiteGround,
+    *,
+    threads: int | None = None,
+    progress: Progress | None = None,
+    tallies: Sequence[Tally] = (),
+    tile_cells: int | None = None,
+    band_rows: int | None = None,
+) -> VolumesResult:
+    """As :func:`volumes`, on a ground that is already open."""
+    tally = VolumesTally(ground)
+    walk(ground.stack, [tally, *tallies], threads=threads, progress=progress, tile_cells=tile_cells, band_rows=band_rows)
+    return volumes_result(site, ground, tally)
+
+
+def volumes_result(site: Site, ground: SiteGround, tally: VolumesTally) -> VolumesResult:
+    """The result of a tally that has seen all of the ground."""
+    cell = ground.stack.grid.cell_area_m2
+    counted = float(tally.total.values[0]) * cell
+    if counted == 0.0:
+        raise GroundError(
+            f"{site.name}: no cell has data in all surfaces"
+            + (" inside the limits" if ground.stack.limits else "")
+            + "; check the nodata values and that the surfaces cover the same ground"
+        )
+    missing = tally.missing * cell
+    if ground.limits_area_m2 is not None:
+        missing = max(ground.limits_area_m2 - counted, 0.0)
+    missing = missing if missing > 1e-9 * counted else 0.0
+    total = area_volumes(ground, tally.total, None, missing)
+    zones = tuple(
+        area_volumes(ground, tally.zones.get(i, Sums.none(ground.stack)), name, _zone_missing(ground, tally, i))
+        for i, name in enumerate(ground.zone_names)
+    )
+    outside = None
+    if zones:
+        outside_missing = max(missing - sum(zone.missing_area_m2 for zone in zones), 0.0)
+        outside = area_volumes(ground, tally.outside, None, outside_missing if outside_missing > 1e-6 else 0.0)
+    warnings = (*ground.warnings, *_missing_warning(site, ground, tally, missing))
+    return VolumesResult(
+        units=site.units, warnings=warnings, total=total, zones=zones, outside_zones=outside, ground=ground
+    )
+
+
+def _zone_missing(ground: SiteGround, tally: VolumesTally, zone: int) -> float:
+    area = ground.zone_areas_m2[zone]
+    counted = float(tally.zones[zone].values[0]) * ground.stack.grid.cell_area_m2 if zone in tally.zones else 0.0
+    lost = area - counted
+    return lost if lost > 1e-9 * max(area, 1.0) else 0.0
+
+
+def _missing_warning(site: Site, ground: SiteGround, tally: VolumesTally, missing_m2: float) -> list[Warning]:
+    if missing_m2 <= 0:
+        return []
+    text = f"{site.units.from_si(missing_m2, 'area'):,.0f} {site.units.label('area')} of the site have no data"
+    if tally.missing > 0:
+        grid = ground.stack.grid
+        west, north = grid.point(tally.missing_rows[0], tally.missing_columns[0])
+        east, south = grid.point(tally.missing_rows[1], tally.missing_columns[1])
+        text += f", within easting {west:.2f} to {east:.2f}, northing {south:.2f} to {north:.2f}"
+    return [Warning("missing-data", text + "; they count neither as cut nor as fill")]
