@@ -32,7 +32,14 @@ def field_names(stack: Stack) -> list[str]:
     if stack.excavations:
         names += [f"over_excavation:{k}" for k in strata]
     names += [f"band{i}" for i in range(len(stack.bands_below_m))]
-    return names
+    return names + ["move"] if stack.moving else names
+
+
+def fields_of(tile: Tile) -> np.ndarray:
+    """The fields of a tile, worked out once however many tallies ask; see :func:`field_values`."""
+    if tile.fields is None:
+        tile.fields = field_values(tile)
+    return tile.fields
 
 
 def field_values(tile: Tile) -> np.ndarray:
@@ -64,6 +71,8 @@ def field_values(tile: Tile) -> np.ndarray:
         for k, part in enumerate(tile.cut_by_stratum):
             at[f"cut:{k}"][...] = part
     _bands(tile, at, valid)
+    if stack.moving:
+        np.multiply(valid, tile.core("move"), out=at["move"])
     return values
 
 

@@ -26,6 +26,7 @@ class Tile:
         self.grid = stack.grid
         self.window = window
         self.arrays = arrays
+        self.fields: np.ndarray | None = None  #: set by :func:`earthwork.quantities.fields.fields_of`
 
     def core(self, name: str) -> np.ndarray:
         """A field without its rim, shape (height, width)."""
@@ -100,6 +101,12 @@ class Tile:
         if self.stack.disturbed is not None:
             return self.stack.coverage(self.stack.disturbed, self.window)
         return (np.abs(self.depth[1:-1, 1:-1]) > DISTURBED_OVER_M).astype(np.float64)
+
+    def part(self, row: int, column: int, height: int, width: int) -> Tile:
+        """A part of the tile, with its own rim; row and column count from the tile's first cell."""
+        window = Window(self.window.row + row, self.window.column + column, height, width)
+        rows, columns = slice(row, row + height + 2), slice(column, column + width + 2)
+        return Tile(self.stack, window, {name: a[rows, columns] for name, a in self.arrays.items()})
 
     def shifted(self, shift_m: float) -> Tile:
         """The same tile with its grade raised where it may move."""

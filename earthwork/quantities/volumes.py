@@ -12,7 +12,7 @@ import numpy as np
 from earthwork.errors import GroundError, Warning
 from earthwork.quantities.coverage import polygon_share
 from earthwork.quantities.engine import Progress, Tally, walk
-from earthwork.quantities.fields import Sums, field_names, field_values
+from earthwork.quantities.fields import Sums, field_names, fields_of
 from earthwork.quantities.site_ground import SiteGround, open_site
 from earthwork.quantities.tile import Tile
 from earthwork.results import Result
@@ -47,7 +47,7 @@ class VolumesTally:
             return
         if tile.weight is not None and not tile.weight.any():
             return
-        fields = field_values(tile)
+        fields = fields_of(tile)
         self.total.add(tile, fields, tile.weight)
         if self.ground.zone_names:
             self._add_zones(tile, fields)
@@ -128,6 +128,7 @@ class AreaVolumes:
     scarify_by_material: dict[str, float]  #: [m³ compacted]
     bands_m3: tuple[float, ...]  #: compacted volume in each by_depth row
     disturbed_area_m2: float
+    move_area_m2: float  #: what a grade shift moves; 0 where that was not asked
     unsplit_cut_m3: float
     unsplit_fill_m3: float
 
@@ -193,6 +194,7 @@ def area_volumes(ground: SiteGround, sums: Sums, zone: str | None, missing_area_
         scarify_by_material=scarified,
         bands_m3=tuple(at[f"band{i}"] for i in range(len(stack.bands_below_m))),
         disturbed_area_m2=at["disturbed"],
+        move_area_m2=at.get("move", 0.0),
         unsplit_cut_m3=at["plain_cut"],
         unsplit_fill_m3=at["plain_fill"],
     )
