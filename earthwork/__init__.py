@@ -16,6 +16,7 @@ _HOME = {
     "Site": "earthwork.site",
     "volumes": "earthwork.quantities.volumes",
     "soil": "earthwork.soils.card",
+    "check": "earthwork.plan.check",
     "balance": "earthwork.plan.balance",
     "EarthworkError": "earthwork.errors",
 }

@@ -97,12 +97,10 @@ class Stack:
         return (max(b[0] for b in blocks), max(b[1] for b in blocks)) if blocks else None
 
     @property
-    def block_offset(self) -> tuple[int, int]:
-        """(row, column) of the first grid cell within its block of the file with the larger blocks."""
+    def block_start(self) -> tuple[int, int]:
+        """(row, column) of the grid where a block of the file with the larger blocks begins."""
         files = [s for s in (self.existing, self.finished) if s.block]
-        if not files:
-            return (0, 0)
-        return max(files, key=lambda s: s.block[0] if s.block else 0).block_offset
+        return max(files, key=lambda s: s.block or (0, 0)).block_start if files else (0, 0)
 
     @property
     def tile_cells(self) -> int:

@@ -12,6 +12,7 @@ from earthwork.quantities.volumes import AreaVolumes
 from earthwork.site.model import SiteModel
 from earthwork.soils.card import SoilCard
 
+
 @dataclass(frozen=True)
 class MaterialAccount:
     """What the site's own ground gives of one material."""

@@ -8,8 +8,8 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from earthwork.errors import SiteFileError, Warning
-from earthwork.plan.grade_shift import Root, ShiftTally, find_shift, trial_shifts
 from earthwork.plan.account import Account, MaterialAccount, account, unlayered_material
+from earthwork.plan.grade_shift import Root, ShiftTally, find_shift, trial_shifts
 from earthwork.plan.movements import LedgerRow, Movement, Settlement, settle
 from earthwork.quantities.engine import Progress, Tally, walk
 from earthwork.quantities.site_ground import SiteGround, open_site
@@ -184,9 +184,7 @@ def balance(
 class _Seen:
     """Every shift that was evaluated, with its volumes and its surplus."""
 
-    def __init__(
-        self, model: SiteModel, cards: dict[str, SoilCard], ground: SiteGround, threads: int | None
-    ) -> None:
+    def __init__(self, model: SiteModel, cards: dict[str, SoilCard], ground: SiteGround, threads: int | None) -> None:
         self.model = model
         self.cards = cards
         self.ground = ground

@@ -93,7 +93,7 @@ def polygon_share(rings: Rings, polygon: int, window: Window) -> tuple[Window, n
         The part of the window that the polygon's bounding box touches, and the shares there (height, width) in
         [0, 1]; None when it touches nothing.
     """
-    west, north, east, south = rings.bounds[polygon]
+    west, north, east, south = rings.bounds[polygon]  # first and last column and row
     row = max(int(np.floor(north)), window.row)
     stop_row = min(int(np.ceil(south)), window.row + window.height)
     column = max(int(np.floor(west)), window.column)
@@ -106,10 +106,21 @@ def polygon_share(rings: Rings, polygon: int, window: Window) -> tuple[Window, n
     return Window(row, column, stop_row - row, stop_column - column), acc[:, :-2]
 
 
+def touching(rings: Rings, window: Window) -> np.ndarray:
+    """Indices of the polygons whose bounding box touches a window."""
+    west, north, east, south = rings.bounds.T
+    return np.flatnonzero(
+        (west < window.column + window.width)
+        & (east > window.column)
+        & (north < window.row + window.height)
+        & (south > window.row)
+    )
+
+
 def area_share(rings: Rings, window: Window) -> np.ndarray:
     """Share of each cell of a window inside an area: polygons that do not overlap; shape (height, width) in [0, 1]."""
     share = np.zeros((window.height, window.width))
-    for polygon in range(len(rings.bounds)):
+    for polygon in touching(rings, window):
         found = polygon_share(rings, polygon, window)
         if found:
             part, values = found

@@ -66,17 +66,17 @@ def walk(
     _Walk(stack, tallies, progress, tile_cells or stack.tile_cells, band_rows).run(count)
 
 
-def band_edges(rows: int, block: tuple[int, int] | None, offset: int = 0, band_rows: int | None = None) -> list[int]:
+def band_edges(rows: int, block: tuple[int, int] | None, start: int = 0, band_rows: int | None = None) -> list[int]:
     """Row edges of the bands: on block edges of the files, no band under three rows.
 
-    >>> band_edges(700, (256, 256), offset=100)
+    >>> band_edges(700, (256, 256), start=156)
     [0, 156, 412, 700]
     """
     block_rows = block[0] if block else _BAND_ROWS
     height = band_rows or (
         -(-_BAND_ROWS // block_rows) * block_rows if block_rows >= 16 else _STRIP_ROWS // block_rows * block_rows
     )
-    first = height - offset % block_rows if block_rows >= 16 else height
+    first = (start % block_rows or height) if block_rows >= 16 else height
     edges = [0, *range(first if first >= 3 else first + height, rows, max(height, 3)), rows]
     if len(edges) > 2 and edges[-1] - edges[-2] < max(3, min(height // 4, 64)):
         del edges[-2]
@@ -93,7 +93,7 @@ class _Walk:
         self.tallies = tallies
         self.progress = progress
         self.grid: Grid = stack.grid
-        self.edges = band_edges(self.grid.rows, stack.block, stack.block_offset[0], band_rows)
+        self.edges = band_edges(self.grid.rows, stack.block, stack.block_start[0], band_rows)
         self.tile_cells = tile_cells
         self.lock = threading.Lock()
         self.merging = threading.Lock()
@@ -185,10 +185,10 @@ class _Walk:
     def _column_edges(self, height: int) -> list[int]:
         block_columns = self.stack.block[1] if self.stack.block else 256
         width = max(self.tile_cells // max(height, 1), 3)
-        offset = self.stack.block_offset[1]
+        start = self.stack.block_start[1]
         if block_columns <= width:
             width = width // block_columns * block_columns
-            first = width - offset % block_columns
+            first = start % block_columns or width
         else:
             first = width
         edges = [0, *range(first if first >= 3 else first + width, self.grid.columns, width), self.grid.columns]

@@ -114,8 +114,8 @@ def _add_weighted(fields, depth, share, row, column, sums):
                 part += fields[f, row + i, column + j] * share[i, j]
             total += part
         sums[f] += total
-    high = -np.inf
-    low = np.inf
+    high = 0.0
+    low = 0.0
     for i in range(height):
         for j in range(width):
             x = np.float64(depth[row + i + 1, column + j + 1])
@@ -127,11 +127,11 @@ def _add_weighted(fields, depth, share, row, column, sums):
 
 @dataclass
 class Sums:
-    """Sums of all fields over one area, with the extremes of depth [m] in it."""
+    """Sums of all fields over one area, with its greatest fill and (negative) greatest cut [m]."""
 
     values: np.ndarray
-    high_m: float = -np.inf
-    low_m: float = np.inf
+    high_m: float = 0.0
+    low_m: float = 0.0
 
     @classmethod
     def none(cls, stack: Stack) -> Sums:
@@ -148,8 +148,10 @@ class Sums:
         if share is None:
             self.values += fields.sum(axis=(1, 2))
             depth = tile.depth[1:-1, 1:-1]
-            if np.isfinite(depth).any():
-                self._widen(float(np.nanmax(depth)), float(np.nanmin(depth)))
+            self._widen(
+                float(np.fmax.reduce(depth, axis=None, initial=0.0)),
+                float(np.fmin.reduce(depth, axis=None, initial=0.0)),
+            )
         else:
             self._widen(*_add_weighted(fields, tile.depth, share, row, column, self.values))
 

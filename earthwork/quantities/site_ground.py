@@ -2,10 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import Any
-
-import shapely
 
 from earthwork.errors import GroundError, Warning
 from earthwork.files.vectors import NamedPolygon, read_polygons
@@ -37,7 +35,6 @@ class SiteGround:
     zone_areas_m2: tuple[float, ...] = ()
     limits_area_m2: float | None = None
     warnings: tuple[Warning, ...] = ()
-    inputs: tuple[str, ...] = field(default=())
 
     @property
     def sample(self) -> str:
@@ -64,31 +61,25 @@ class _Opener:
         self.surfaces = open_ground(site)
         self.grid = self.surfaces.grid
         self.warnings: list[Warning] = list(self.surfaces.warnings)
-        self._read: dict[AreaSpec, list[NamedPolygon]] = {}
+        self._read: dict[tuple[AreaSpec, str | None], list[NamedPolygon]] = {}
 
-    def polygons(self, spec: AreaSpec, name: str | None = None) -> list[NamedPolygon]:
-        if name is None and spec in self._read:
-            return self._read[spec]
-        found, warnings = read_polygons(spec, self.site.directory, crs=self.grid.crs, name=name)
-        self.warnings += [w for w in warnings if w not in self.warnings]
-        if name is None:
-            self._read[spec] = found
-        return found
+    def polygons(self, spec: AreaSpec, what: str, name: str | None = None) -> list[NamedPolygon]:
+        key = (spec, name)
+        if key not in self._read:
+            self._read[key] = read_polygons(
+                spec, self.site.directory, crs=self.grid.crs, name=name, what=what, warnings=self.warnings
+            )
+        return self._read[key]
 
-    def shape(self, spec: AreaSpec) -> Any:
-        """The union of an area's polygons, one shape."""
-        return areas.union_area(self.polygons(spec))
+    def shape(self, spec: AreaSpec, what: str, spread_m: float = 0.0) -> Any:
+        """The union of an area's polygons and all ground within a distance of it, one shape."""
+        return areas.spread(areas.union_area(self.polygons(spec, what)), spread_m, self.grid)
 
-    def rings(self, spec: AreaSpec | None, spread_m: float = 0.0) -> Rings | None:
+    def rings(self, spec: AreaSpec | None, what: str, spread_m: float = 0.0) -> Rings | None:
         if spec is None:
             return None
-        shape = self.shape(spec)
-        if spread_m:
-            shape = areas.spread(shape, spread_m, self.grid)
-        return areas.rings([shape], self.grid)
-
-    def area_m2(self, shape: Any) -> float:
-        return float(shapely.area(shape)) * (self.grid.unit_m * self.grid.ground_scale) ** 2
+        shape = self.shape(spec, what, spread_m)
+        return areas.rings_on(self.grid, [shape])
 
 
 def open_site(site: Site, *, moving: bool = False) -> SiteGround:
@@ -105,34 +96,29 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
     model = site.model
     if opener.surfaces.finished is None:
         raise GroundError(f"{site.name}: [design] gives no finished surface here; give ground.finished")
-    limits = opener.shape(model.ground.limits) if model.ground.limits else None
+    limits = opener.shape(model.ground.limits, "ground.limits") if model.ground.limits else None
     worked = _worked(opener)
     stack = Stack(
         grid=opener.grid,
         existing=opener.surfaces.existing,
         finished=opener.surfaces.finished,
         coverage=area_share,
-        limits=areas.rings([limits], opener.grid) if limits is not None else None,
-        disturbed=opener.rings(model.ground.disturbed),
+        limits=areas.rings_on(opener.grid, [limits]) if limits is not None else None,
+        disturbed=opener.rings(model.ground.disturbed, "ground.disturbed"),
         worked=worked,
-        move=opener.rings(model.balance.shift_area) if moving else None,
+        move=opener.rings(model.balance.shift_area, "balance.shift_area") if moving else None,
         moving=moving,
         bands_below_m=tuple((row.below, row.measured_from) for row in model.fill.by_depth) if model.fill else (),
         **_layers(opener),
     )
-    ground = SiteGround(
+    zones = _zones(opener, limits)
+    return SiteGround(
         stack=stack,
         surfaces=opener.surfaces,
-        limits_area_m2=opener.area_m2(limits) if limits is not None else None,
-        **_zones(opener, limits),
+        limits_area_m2=areas.ground_area_m2(limits, opener.grid) if limits is not None else None,
+        warnings=tuple(dict.fromkeys(opener.warnings)),
+        **zones,
     )
-    return _with_warnings(ground, opener.warnings)
-
-
-def _with_warnings(ground: SiteGround, warnings: list[Warning]) -> SiteGround:
-    from dataclasses import replace
-
-    return replace(ground, warnings=tuple(warnings))
 
 
 def _worked(opener: _Opener) -> Rings | None:
@@ -140,35 +126,32 @@ def _worked(opener: _Opener) -> Rings | None:
     model = opener.site.model
     if model.ground.disturbed is not None:
         return None
-    shapes = [opener.shape(s.area) for s in model.section if s.area]
-    shapes += [
-        areas.spread(opener.shape(o.area), o.spread, opener.grid) for o in model.over_excavation if o.area
-    ]
-    return areas.rings([shapely.union_all(shapes)], opener.grid) if shapes else None
+    shapes = [opener.shape(s.area, f'section "{s.name}"') for s in model.section if s.area]
+    shapes += [opener.shape(o.area, f'over_excavation "{o.name}"', o.spread) for o in model.over_excavation if o.area]
+    return areas.rings_on(opener.grid, [areas.union_area(shapes)]) if shapes else None
 
 
 def _layers(opener: _Opener) -> dict[str, Any]:
-    model, surface = opener.site.model, opener.surfaces.surface
+    model, surface, rings = opener.site.model, opener.surfaces.surface, opener.rings
+    strips = [StripLayer(s.material, s.depth, rings(s.area, f'strip "{s.material}"')) for s in model.strip]
+    sections = [
+        SectionLayer(s.name, s.source, s.thickness, rings(s.area, f'section "{s.name}"')) for s in model.section
+    ]
+    excavations = []
+    for o in model.over_excavation:
+        what = f'over_excavation "{o.name}"'
+        bottom = surface(o.bottom, f"{what} bottom") if o.bottom else None
+        excavations.append(ExcavationLayer(o.name, o.depth, bottom, o.measured_from, rings(o.area, what, o.spread)))
+    strata = []
+    for stratum in model.stratum:
+        bottom = surface(stratum.bottom, f'stratum "{stratum.material}" bottom') if stratum.bottom else None
+        strata.append(StratumLayer(stratum.material, bottom, stratum.thickness))
     return {
-        "strips": tuple(StripLayer(s.material, s.depth, opener.rings(s.area)) for s in model.strip),
-        "sections": tuple(SectionLayer(s.name, s.source, s.thickness, opener.rings(s.area)) for s in model.section),
-        "excavations": tuple(
-            ExcavationLayer(
-                o.name,
-                o.depth,
-                surface(o.bottom, f'over_excavation "{o.name}" bottom') if o.bottom else None,
-                o.measured_from,
-                opener.rings(o.area, o.spread),
-            )
-            for o in model.over_excavation
-        ),
-        "scarifies": tuple(ScarifyLayer(s.depth, opener.rings(s.area)) for s in model.scarify),
-        "strata": tuple(
-            StratumLayer(
-                s.material, surface(s.bottom, f'stratum "{s.material}" bottom') if s.bottom else None, s.thickness
-            )
-            for s in model.stratum
-        ),
+        "strips": tuple(strips),
+        "sections": tuple(sections),
+        "excavations": tuple(excavations),
+        "scarifies": tuple(ScarifyLayer(s.depth, rings(s.area, "scarify")) for s in model.scarify),
+        "strata": tuple(strata),
     }
 
 
@@ -176,13 +159,14 @@ def _zones(opener: _Opener, limits: Any) -> dict[str, Any]:
     zones = opener.site.model.zones
     if zones is None:
         return {}
-    polygons = opener.polygons(zones.area, zones.name)
-    polygons, warnings = areas.check_overlaps(polygons, opener.grid)
+    polygons, warnings = areas.check_overlaps(
+        opener.polygons(zones.area, "zones", zones.name), square_m=areas.square_metres(opener.grid)
+    )
     opener.warnings += warnings
-    shapes = [p.shape if limits is None else shapely.intersection(p.shape, limits) for p in polygons]
+    shapes = [p.geometry if limits is None else areas.only_polygons(p.geometry & limits) for p in polygons]
     return {
         "zone_names": tuple(p.name for p in polygons),
         "zone_shapes": tuple(shapes),
-        "zones": areas.rings(shapes, opener.grid),
-        "zone_areas_m2": tuple(opener.area_m2(s) for s in shapes),
+        "zones": areas.rings_on(opener.grid, shapes),
+        "zone_areas_m2": tuple(areas.ground_area_m2(s, opener.grid) for s in shapes),
     }

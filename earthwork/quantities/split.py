@@ -19,7 +19,6 @@ _FAST = {"reassoc", "nsz", "contract", "arcp"}
 
 
 VALID, CUT, FILL, CUT_AREA, FILL_AREA, PLAIN_CUT, PLAIN_FILL, DISTURBED = range(8)
-_DISTURBED_OVER_M = DISTURBED_OVER_M
 
 
 @njit(cache=True, nogil=True, error_model="numpy", inline="always")
@@ -60,6 +59,79 @@ def _plane_above_zero(h, a, b):
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+def _flat_row(up, row, down, flat, mixed, sums):
+    """One row of cells: depths of those that the zero line does not cross, and marks of those that it may.
+
+    Kept in the type of the depths, so that it runs in vectors: counts of a row are exact in float32 too.
+    """
+    zero = flat.dtype.type(0)
+    one = flat.dtype.type(1)
+    half = flat.dtype.type(0.5)
+    disturbed_over = flat.dtype.type(DISTURBED_OVER_M)
+    marks = zero
+    valid = zero
+    fills = zero
+    cuts = zero
+    disturbed = zero
+    for j in range(flat.size):
+        x = row[j + 1]
+        a = x - row[j]
+        b = row[j + 2] - x
+        c = x - up[j + 1]
+        d = down[j + 1] - x
+        near = (min(abs(a), abs(b)) if a * b > zero else zero) + (min(abs(c), abs(d)) if c * d > zero else zero)
+        holes = (a + b) + (c + d)
+        ok = x == x
+        crossed = ok & ((holes != holes) | (abs(x) < half * near))
+        depth = x if ok else zero
+        alone = zero if crossed else depth
+        flat[j] = alone
+        mixed[j] = one if crossed else zero
+        marks += one if crossed else zero
+        valid += one if ok else zero
+        fills += one if alone > zero else zero
+        cuts += one if alone < zero else zero
+        disturbed += one if abs(depth) > disturbed_over else zero
+    fill = 0.0
+    cut = 0.0
+    for j in range(flat.size):
+        depth64 = np.float64(flat[j])
+        fill += max(depth64, 0.0)
+        cut -= min(depth64, 0.0)
+    sums[VALID] += valid
+    sums[CUT] += cut
+    sums[FILL] += fill
+    sums[CUT_AREA] += cuts
+    sums[FILL_AREA] += fills
+    sums[PLAIN_CUT] += cut
+    sums[PLAIN_FILL] += fill
+    sums[DISTURBED] += disturbed
+    return marks > zero
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+def _extremes(flat, high, low):
+    """(greatest, least) of a row and the values so far."""
+    row_high = flat.dtype.type(0)
+    row_low = flat.dtype.type(0)
+    for j in range(flat.size):
+        row_high = max(row_high, flat[j])
+        row_low = min(row_low, flat[j])
+    return max(high, np.float64(row_high)), min(low, np.float64(row_low))
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+def _keep_row(flat, cells, i):
+    """Store the cells of a row that the zero line does not cross."""
+    for j in range(flat.size):
+        x = np.float64(flat[j])
+        cells[0, i, j] = -min(x, 0.0)
+        cells[1, i, j] = max(x, 0.0)
+        cells[2, i, j] = 1.0 if x < 0.0 else 0.0
+        cells[3, i, j] = 1.0 if x > 0.0 else 0.0
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def split_depths(depth, cells, sums):
     """Split every cell of a tile at the zero line.
 
@@ -70,86 +142,46 @@ def split_depths(depth, cells, sums):
             [cells, cell·m].
 
     Returns:
-        (greatest depth, least depth) over the cells with data [m]; (−inf, inf) without any.
+        (greatest fill, least depth) [m]: (0, 0) where there is neither fill nor cut.
     """
     h = depth.shape[0] - 2
     w = depth.shape[1] - 2
     keep = cells.shape[1] > 0
-    flag = np.empty(w, np.uint8)
-    high = -np.inf
-    low = np.inf
+    flat = np.empty(w, depth.dtype)
+    mixed = np.empty(w, depth.dtype)
+    high = 0.0
+    low = 0.0
     for i in range(h):
-        row = depth[i + 1]
         up = depth[i]
+        row = depth[i + 1]
         down = depth[i + 2]
-        valid = 0.0
-        cut = 0.0
-        fill = 0.0
-        cut_area = 0.0
-        fill_area = 0.0
-        disturbed = 0.0
-        flagged = 0
-        for j in range(w):
-            x = row[j + 1]
-            a = x - row[j]
-            b = row[j + 2] - x
-            c = x - up[j + 1]
-            d = down[j + 1] - x
-            near = (min(abs(a), abs(b)) if a * b > 0 else 0.0) + (min(abs(c), abs(d)) if c * d > 0 else 0.0)
-            hole = a + b + c + d
-            ok = x == x
-            mixed = ok and (hole != hole or abs(x) < 0.5 * near)
-            flag[j] = 1 if mixed else 0
-            flagged += 1 if mixed else 0
-            plain = np.float64(x) if (ok and not mixed) else 0.0
-            valid += 1.0 if ok else 0.0
-            fill += max(plain, 0.0)
-            cut += max(-plain, 0.0)
-            fill_area += 1.0 if plain > 0.0 else 0.0
-            cut_area += 1.0 if plain < 0.0 else 0.0
-            disturbed += 1.0 if abs(x) > _DISTURBED_OVER_M else 0.0
-        if valid > 0.0:
-            for j in range(w):
-                x = np.float64(row[j + 1])
-                high = max(high, x if x == x else -np.inf)
-                low = min(low, x if x == x else np.inf)
+        any_mixed = _flat_row(up, row, down, flat, mixed, sums)
+        high, low = _extremes(flat, high, low)
         if keep:
-            for j in range(w):
-                x = np.float64(row[j + 1])
-                cells[0, i, j] = max(-x, 0.0) if x == x else 0.0
-                cells[1, i, j] = max(x, 0.0) if x == x else 0.0
-                cells[2, i, j] = 1.0 if x < 0.0 else 0.0
-                cells[3, i, j] = 1.0 if x > 0.0 else 0.0
-        plain_cut = cut
-        plain_fill = fill
-        if flagged > 0:
-            for j in range(w):
-                if flag[j] == 0:
-                    continue
-                x = np.float64(row[j + 1])
-                a = _half_slope(np.float64(row[j]), x, np.float64(row[j + 2]))
-                b = _half_slope(np.float64(up[j + 1]), x, np.float64(down[j + 1]))
-                mean, share = _plane_above_zero(x, a, b)
-                cut_share = 1.0 - share if a + b > 0.0 else (1.0 if x < 0.0 else 0.0)
-                fill += mean
-                cut += mean - x
-                fill_area += share
-                cut_area += cut_share
-                plain_fill += max(x, 0.0)
-                plain_cut += max(-x, 0.0)
-                if keep:
-                    cells[0, i, j] = mean - x
-                    cells[1, i, j] = mean
-                    cells[2, i, j] = cut_share
-                    cells[3, i, j] = share
-        sums[0] += valid
-        sums[1] += cut
-        sums[2] += fill
-        sums[3] += cut_area
-        sums[4] += fill_area
-        sums[5] += plain_cut
-        sums[6] += plain_fill
-        sums[7] += disturbed
+            _keep_row(flat, cells, i)
+        if not any_mixed:
+            continue
+        for j in range(w):
+            if mixed[j] == 0:
+                continue
+            x = np.float64(row[j + 1])
+            a = _half_slope(np.float64(row[j]), x, np.float64(row[j + 2]))
+            b = _half_slope(np.float64(up[j + 1]), x, np.float64(down[j + 1]))
+            fill, fill_share = _plane_above_zero(x, a, b)
+            cut_share = 1.0 - fill_share if a + b > abs(x) else (1.0 if x < 0.0 else 0.0)
+            high = max(high, x)
+            low = min(low, x)
+            sums[CUT] += fill - x
+            sums[FILL] += fill
+            sums[CUT_AREA] += cut_share
+            sums[FILL_AREA] += fill_share
+            sums[PLAIN_CUT] -= min(x, 0.0)
+            sums[PLAIN_FILL] += max(x, 0.0)
+            if keep:
+                cells[0, i, j] = fill - x
+                cells[1, i, j] = fill
+                cells[2, i, j] = cut_share
+                cells[3, i, j] = fill_share
     return high, low
 
 

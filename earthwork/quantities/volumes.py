@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from earthwork.errors import GroundError, Warning
-from earthwork.quantities.coverage import polygon_share
+from earthwork.quantities.coverage import polygon_share, touching
 from earthwork.quantities.engine import Progress, Tally, walk
 from earthwork.quantities.fields import Sums, field_names, fields_of
 from earthwork.quantities.site_ground import SiteGround, open_site
@@ -71,7 +71,7 @@ class VolumesTally:
         outside = np.ones((window.height, window.width)) if tile.weight is None else tile.weight.copy()
         rings = self.ground.zones
         assert rings is not None
-        for zone in rings.touching(window):
+        for zone in touching(rings, window):
             found = polygon_share(rings, zone, window)
             if found is None:
                 continue
@@ -154,9 +154,7 @@ class AreaVolumes:
                 "scarify_m3")  # fmt: skip
         row: dict[str, Any] = {} if self.zone is None else {"zone": self.zone}
         row.update({key: getattr(self, key) for key in keys})
-        row["materials"] = [
-            {"material": name, "cut_m3": cut} for name, cut in self.cut_by_material.items()
-        ]
+        row["materials"] = [{"material": name, "cut_m3": cut} for name, cut in self.cut_by_material.items()]
         return row
 
 
@@ -168,7 +166,7 @@ def area_volumes(ground: SiteGround, sums: Sums, zone: str | None, missing_area_
     strips: dict[str, float] = {}
     for i, strip in enumerate(stack.strips):
         strips[strip.material] = strips.get(strip.material, 0.0) + at[f"strip{i}"]
-    cut, dug, scarified = ({name: 0.0 for name in stack.materials} for _ in range(3))
+    cut, dug, scarified = (dict.fromkeys(stack.materials, 0.0) for _ in range(3))
     for k, stratum in enumerate(stack.strata):
         cut[stratum.material] += at[f"cut:{k}"]
         dug[stratum.material] += at.get(f"over_excavation:{k}", 0.0)
@@ -180,8 +178,8 @@ def area_volumes(ground: SiteGround, sums: Sums, zone: str | None, missing_area_
         fill_m3=at["fill"],
         cut_area_m2=at["cut_area"],
         fill_area_m2=at["fill_area"],
-        max_cut_m=max(0.0, -sums.low_m) if np.isfinite(sums.low_m) else 0.0,
-        max_fill_m=max(0.0, sums.high_m) if np.isfinite(sums.high_m) else 0.0,
+        max_cut_m=max(-sums.low_m, 0.0),
+        max_fill_m=max(sums.high_m, 0.0),
         missing_area_m2=missing_area_m2,
         strip_m3=sum(strips.values()),
         section_m3=sum(at[f"section{i}"] for i in range(len(stack.sections))),
@@ -309,7 +307,9 @@ def count_volumes(
 ) -> VolumesResult:
     """As :func:`volumes`, on a ground that is already open."""
     tally = VolumesTally(ground)
-    walk(ground.stack, [tally, *tallies], threads=threads, progress=progress, tile_cells=tile_cells, band_rows=band_rows)
+    walk(
+        ground.stack, [tally, *tallies], threads=threads, progress=progress, tile_cells=tile_cells, band_rows=band_rows
+    )
     return volumes_result(site, ground, tally)
 
 
