@@ -78,7 +78,8 @@ def placed_density_kg_m3(card: SoilCard, bands_m3: tuple[float, ...], placed_m3:
         placed_m3: all compacted volume, that above the bands included.
 
     >>> from types import SimpleNamespace as N
-    >>> placed_density_kg_m3(N(fill_dry_density_kg_m3=1700.0, bands=(N(fill_dry_density_kg_m3=1800.0),)), (25.0,), 100.0)
+    >>> card = N(fill_dry_density_kg_m3=1700.0, bands=(N(fill_dry_density_kg_m3=1800.0),))
+    >>> placed_density_kg_m3(card, (25.0,), 100.0)
     1725.0
     """
     density = card.fill_dry_density_kg_m3

@@ -230,7 +230,8 @@ def _result(
         warnings.append(
             Warning(
                 "cut-material-assumed",
-                f"no [[stratum]] is given: all cut is taken for {unlayered_material(model)}, the first borrow's material",
+                f"no [[stratum]] is given: all cut is taken for {unlayered_material(model)}, "
+                "the material of the first borrow site",
             )
         )
     return BalanceResult(

@@ -60,7 +60,7 @@ def check(site: Site | str | Path, *, threads: int | None = None, progress: Prog
         threads, progress: as for :func:`earthwork.volumes`; the ground is read once, so that every block is tried.
 
     Raises:
-        EarthworkError: the first thing that is wrong; the faults of the site file, and of the soils, in one message each.
+        EarthworkError: the first thing that is wrong; all faults of the site file, or of the soils, in one message.
     """
     site = site if isinstance(site, Site) else load_site(site)
     cards = soil_cards(site) if site.model.material and site.model.fill else {}

@@ -8,6 +8,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
@@ -122,7 +123,7 @@ def find_shift(curve: dict[float, float], target: float, step_m: float, evaluate
 def _bracket(curve: dict[float, float], target: float) -> tuple[float, float] | None:
     """The neighbouring shifts between which the surplus crosses the target, nearest to zero shift."""
     shifts = sorted(curve)
-    pairs = [(a, b) for a, b in zip(shifts, shifts[1:], strict=False) if (curve[a] - target) * (curve[b] - target) <= 0]
+    pairs = [(a, b) for a, b in pairwise(shifts) if (curve[a] - target) * (curve[b] - target) <= 0]
     return min(pairs, key=lambda p: min(abs(p[0]), abs(p[1])), default=None)
 
 

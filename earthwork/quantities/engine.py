@@ -14,6 +14,7 @@ import threading
 from collections import deque
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
+from itertools import pairwise
 from typing import Protocol
 
 import numpy as np
@@ -155,19 +156,19 @@ class _Walk:
         edges_south: list[Arrays] = []
         carried: Arrays | None = None
         columns = self._column_edges(stop - row)
-        for left, right in zip(columns, columns[1:], strict=False):
+        for left, right in pairwise(columns):
             if self.stop.is_set():
                 return
             arrays = reader.read(Window(row, left, stop - row, right - left))
             if not first:
-                edges_north.append({name: a[:2].copy() for name, a in _unique(arrays)})
+                edges_north.append({name: a[:2].copy() for name, a in arrays.items()})
             if not last:
-                edges_south.append({name: a[-2:].copy() for name, a in _unique(arrays)})
+                edges_south.append({name: a[-2:].copy() for name, a in arrays.items()})
             west = left if carried is None else left - 1
             east = right if right == self.grid.columns else right - 1
             rimmed = _rim(carried, arrays, north=first, south=last, east=right == self.grid.columns)
             if right < self.grid.columns:
-                carried = {name: a[:, -2:].copy() for name, a in _unique(arrays)}
+                carried = {name: a[:, -2:].copy() for name, a in arrays.items()}
             inner = row if first else row + 1
             height = (stop if last else stop - 1) - inner
             if height > 0 and east > west:
@@ -223,10 +224,6 @@ class _Walk:
                 for tally, part in zip(self.tallies, self.counted.pop(self.next_unit), strict=True):
                     tally.merge(part)
                 self.next_unit += 1
-
-
-def _unique(arrays: Arrays) -> list[tuple[str, np.ndarray]]:
-    return list(arrays.items())
 
 
 def _padded(array: np.ndarray, *, north=False, south=False, west=False, east=False) -> np.ndarray:

@@ -89,7 +89,7 @@ def _bands(tile: Tile, at: dict[str, np.ndarray], valid: np.ndarray) -> None:
     bands = tile.stack.bands_below_m
     if not bands:
         return
-    amount = at["fill"] + (at["over_excavation"] if "over_excavation" in at else 0.0)
+    amount = at["fill"] + at.get("over_excavation", 0.0)
     bottom, top = tile.removal_bottom, tile.subgrade
     height = np.where(valid & (top > bottom), top - bottom, 1.0)
     deeper = np.zeros_like(amount)

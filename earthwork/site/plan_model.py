@@ -39,7 +39,9 @@ class Balance(Section):
     """What the balance aims at, and what ground may move for it."""
 
     target_surplus: SoilVolume = Field(default=0.0, description="compacted volume wanted in hand at the end")
-    step: Length = Field(default=0.01, description="the grade shift is rounded to this")
+    step: Length | None = Field(
+        default=None, description="the grade shift is rounded to this; default: 0.01 of the site's length unit"
+    )
     shift_area: Area | None = Field(
         default=None, description="ground that may move; default: the disturbed area"
     )
