@@ -17,7 +17,7 @@ from earthwork.ground.stack import (
     StratumLayer,
     StripLayer,
 )
-from earthwork.ground.surfaces import SurfaceSet, open_ground
+from earthwork.ground.meet import SurfaceSet, open_ground
 from earthwork.quantities.coverage import area_share
 from earthwork.site import Site
 from earthwork.site.model import AreaSpec
@@ -96,7 +96,8 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
     model = site.model
     if opener.surfaces.finished is None:
         raise GroundError(f"{site.name}: [design] gives no finished surface here; give ground.finished")
-    limits = opener.shape(model.ground.limits, "ground.limits") if model.ground.limits else None
+    # Without limits the site is what all surfaces cover: in another CRS that is not a whole rectangle of cells.
+    limits = opener.shape(model.ground.limits, "ground.limits") if model.ground.limits else opener.surfaces.footprint
     worked = _worked(opener)
     stack = Stack(
         grid=opener.grid,
@@ -140,11 +141,12 @@ def _layers(opener: _Opener) -> dict[str, Any]:
     excavations = []
     for o in model.over_excavation:
         what = f'over_excavation "{o.name}"'
-        bottom = surface(o.bottom, f"{what} bottom") if o.bottom else None
+        bottom = surface(o.bottom, f"{what} bottom", warnings=opener.warnings) if o.bottom else None
         excavations.append(ExcavationLayer(o.name, o.depth, bottom, o.measured_from, rings(o.area, what, o.spread)))
     strata = []
     for stratum in model.stratum:
-        bottom = surface(stratum.bottom, f'stratum "{stratum.material}" bottom') if stratum.bottom else None
+        what = f'stratum "{stratum.material}" bottom'
+        bottom = surface(stratum.bottom, what, warnings=opener.warnings) if stratum.bottom else None
         strata.append(StratumLayer(stratum.material, bottom, stratum.thickness))
     return {
         "strips": tuple(strips),
