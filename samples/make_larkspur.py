@@ -198,10 +198,7 @@ class Plan:
 
 def areas_of_plan(existing: np.ndarray) -> Plan:
     return Plan(
-        pads={
-            name: rectangle(here(*centre), length, width, turn)
-            for name, centre, length, width, turn, _ in PADS
-        },
+        pads={name: rectangle(here(*centre), length, width, turn) for name, centre, length, width, turn, _ in PADS},
         court=rectangle(here(*COURT[1]), *COURT[2:5]),
         basin=rectangle(here(*BASIN[1]), *BASIN[2:5]).buffer(9).buffer(-2),
         drives=campus_drives(existing),
@@ -288,9 +285,7 @@ def phases(limits: Polygon) -> list[tuple[Polygon, dict]]:
 
 def no_go() -> dict[str, Polygon]:
     """Ground that haul trucks keep off."""
-    oaks = smooth_line(
-        there([(232, 330), (262, 352), (268, 392), (246, 420), (216, 398), (214, 356), (232, 330)]), 3
-    )
+    oaks = smooth_line(there([(232, 330), (262, 352), (268, 392), (246, 420), (216, 398), (214, 356), (232, 330)]), 3)
     creek = smooth_line(there([(408, 196), (432, 166), (470, 130)]), 3)
     return {"bur oak stand": Polygon(oaks.coords), "creek and its banks": creek.buffer(11, quad_segs=3)}
 

@@ -49,9 +49,7 @@ class Lattice:
 
     @property
     def outline(self) -> Polygon:
-        return box(
-            self.west, self.north - self.rows * self.cell, self.west + self.columns * self.cell, self.north
-        )
+        return box(self.west, self.north - self.rows * self.cell, self.west + self.columns * self.cell, self.north)
 
 
 # --- natural ground ---
@@ -144,9 +142,7 @@ def level(elevation: float) -> Callable[[np.ndarray], np.ndarray]:
     return lambda places: np.full(len(places), elevation)
 
 
-def tilted(
-    at: tuple[float, float], elevation: float, slope: tuple[float, float]
-) -> Callable[[np.ndarray], np.ndarray]:
+def tilted(at: tuple[float, float], elevation: float, slope: tuple[float, float]) -> Callable[[np.ndarray], np.ndarray]:
     """Grade of a plane; ``slope`` is rise per unit east and per unit north."""
     return lambda places: elevation + (places[:, 0] - at[0]) * slope[0] + (places[:, 1] - at[1]) * slope[1]
 
@@ -174,9 +170,7 @@ def grade_into(existing: np.ndarray, lattice: Lattice, platforms: Iterable[Platf
     highest = np.full(len(points), np.inf)
     inside = np.full(len(points), np.nan)
     for platform in platforms:
-        nearest = shapely.get_coordinates(shapely.shortest_line(platform.area, points)).reshape(-1, 2, 2)[
-            :, 0
-        ]
+        nearest = shapely.get_coordinates(shapely.shortest_line(platform.area, points)).reshape(-1, 2, 2)[:, 0]
         away = shapely.distance(platform.area, points)
         grade = platform.grade(nearest)
         lowest = np.maximum(lowest, grade - away / platform.fill_slope)
@@ -186,9 +180,7 @@ def grade_into(existing: np.ndarray, lattice: Lattice, platforms: Iterable[Platf
     return np.where(np.isnan(inside), finished, inside).reshape(existing.shape)
 
 
-def changed_area(
-    existing: np.ndarray, finished: np.ndarray, lattice: Lattice, *, margin: float
-) -> shapely.Geometry:
+def changed_area(existing: np.ndarray, finished: np.ndarray, lattice: Lattice, *, margin: float) -> shapely.Geometry:
     """Outline of the ground that changes by more than 1 cm, with a working margin, holes closed."""
     changed = (np.abs(finished - existing) > 0.01).astype(np.uint8)
     parts = [shape(outline) for outline, _ in outlines_of(changed, changed == 1, transform=lattice.transform)]
@@ -206,9 +198,7 @@ def rectangle(centre: tuple[float, float], length: float, width: float, turn: fl
 # --- files ---
 
 
-def write_raster(
-    path: Path, elevation: np.ndarray, lattice: Lattice, *, crs: str, unit: str, title: str
-) -> None:
+def write_raster(path: Path, elevation: np.ndarray, lattice: Lattice, *, crs: str, title: str, unit: str = "") -> None:
     """A tiled, compressed float32 GeoTIFF with its vertical unit."""
     profile_ = {
         "driver": "GTiff", "width": lattice.columns, "height": lattice.rows, "count": 1, "dtype": "float32",
@@ -217,7 +207,8 @@ def write_raster(
     }  # fmt: skip
     with rasterio.open(path, "w", **profile_) as target:
         target.write(np.where(np.isnan(elevation), -9999.0, elevation).astype(np.float32), 1)
-        target.set_band_unit(1, unit)
+        if unit:
+            target.set_band_unit(1, unit)
         target.set_band_description(1, title)
 
 
