@@ -47,6 +47,7 @@ class Built:
     """A window of a design: all arrays (height, width)."""
 
     z: np.ndarray  #: finished grade [m]
+    ground: np.ndarray  #: existing ground [m]
     kind: np.ndarray  #: int8: UNTOUCHED, FILL_SLOPE, CUT_SLOPE or INSIDE
     owner: np.ndarray  #: int32: index of the element that gives the grade, −1 for existing ground
     #: int32: index of an element whose cut slope runs through another's fill slope here, −1 for none
@@ -136,10 +137,8 @@ class DesignReader:
         """The built grade of a window, with what gave it."""
         ground = self.existing.read(window).astype(np.float64)
         shape = ground.shape
-        whole = Built(
-            ground, np.zeros(shape, np.int8), np.full(shape, -1, np.int32),
-            np.full(shape, -1, np.int32), np.zeros(shape),
-        )  # fmt: skip
+        kind, owner = np.zeros(shape, np.int8), np.full(shape, -1, np.int32)
+        whole = Built(ground.copy(), ground, kind, owner, np.full(shape, -1, np.int32), np.zeros(shape))
         for key in _tiles_of(window):
             if key not in self.design.slopes and key not in self.design.inside:
                 continue
@@ -150,9 +149,9 @@ class DesignReader:
         return whole
 
     def _build(self, key: TileKey, window: Window, built: Built) -> None:
-        """Write the design into one window that lies in one tile; ``built.z`` holds the existing ground."""
+        """Write the design into one window that lies in one tile; ``built.z`` starts as existing ground."""
         design, lattice = self.design, self.design.lattice
-        ground = built.z.copy()
+        ground = built.ground
         fill, cut = np.full(ground.shape, -np.inf), np.full(ground.shape, np.inf)
         filler, cutter = np.full(ground.shape, -1, np.int32), np.full(ground.shape, -1, np.int32)
         tile = lattice.tile(key)
@@ -258,7 +257,7 @@ def check_pads(grid: Grid, pads: Sequence[PadShape], roads: Sequence[RoadShape] 
         GroundError: any of these.
     """
     faults = []
-    names = [shape.name for shape in (*pads, *roads)]
+    names = [pad.name for pad in pads] + [road.name for road in roads]
     for name in sorted({n for n in names if names.count(n) > 1}):
         faults.append(
             f'the name "{name}" is given {names.count(name)} times; names of pads and roads must be unique'
