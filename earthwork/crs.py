@@ -1,13 +1,14 @@
-"""What a coordinate reference system says: its length unit, its vertical datum, and whether two are the same place.
+"""What a CRS says: its length unit, its vertical datum, and whether two CRS are the same place.
 
-A CRS in US survey feet is not one in feet: at 2,000,000 ft the two lie 4 ft apart [FR-2020-21902]. The vertical part of
-a compound CRS is kept apart from the horizontal one throughout.
+A CRS in US survey feet is not one in feet: at 2,000,000 ft the two lie 4 ft apart [FR-2020-21902]. The
+vertical part of a compound CRS is kept apart from the horizontal one throughout.
 """
 
 from __future__ import annotations
 
 import math
 from dataclasses import dataclass
+from functools import lru_cache
 
 from pyproj import CRS, Proj, Transformer
 from pyproj.exceptions import CRSError
@@ -41,7 +42,9 @@ def parse_crs(text: str) -> CRS:
     try:
         return CRS.from_user_input(text)
     except CRSError:
-        raise ValueError(f'"{text}" is not a CRS; write an authority code such as "EPSG:32611", or WKT') from None
+        raise ValueError(
+            f'"{text}" is not a CRS; write an authority code such as "EPSG:32611", or WKT'
+        ) from None
 
 
 def snap_unit(metres: float) -> float:
@@ -90,7 +93,7 @@ def horizontal_unit_m(crs: CRS | None) -> float | None:
 
 @dataclass(frozen=True)
 class VerticalReference:
-    """The vertical part of a CRS: its name, its datum, metres of its unit, and whether heights count upwards."""
+    """The vertical part of a CRS: name, datum, metres of its unit, and whether heights count upwards."""
 
     name: str
     datum: str
@@ -149,14 +152,16 @@ def describe(crs: CRS | None) -> str:
 
 
 def transformer(source: CRS, target: CRS) -> Transformer:
-    """Transformation of (easting, northing) or (longitude, latitude) between the horizontal parts of two CRS."""
+    """Transformation of (easting, northing), or (longitude, latitude), between two horizontal CRS."""
     return Transformer.from_crs(horizontal(source), horizontal(target), always_xy=True)
 
 
+@lru_cache(maxsize=64)
 def same_place(a: CRS, b: CRS, bounds: tuple[float, float, float, float], tolerance_m: float = 1e-4) -> bool:
     """True when coordinates of one CRS can be used in the other within a rectangle.
 
-    Files spell one CRS in many ways, so names decide nothing: corners and centre are transformed and compared.
+    Files spell one CRS in many ways, so names decide nothing: corners and centre are transformed and
+    compared.
 
     Args:
         bounds: (west, south, east, north) in ``a`` [CRS unit].

@@ -1,4 +1,4 @@
-"""Reads elevations from raster files: what a file says of itself, and windows of it in metres with NaN for no data."""
+"""Reads elevations from raster files: what a file says of itself, and windows in metres, NaN for no data."""
 
 from __future__ import annotations
 
@@ -24,7 +24,8 @@ from earthwork.units import FOOT_M, US_SURVEY_FOOT_M
 #: GDAL's block cache [bytes]. Its default, 5 % of memory, makes streamed reads three times slower.
 CACHE_BYTES = 64 * 2**20
 
-#: Settings under which every raster is opened; the vertical part of a compound CRS is dropped without the second.
+#: Settings under which every raster is opened; the vertical part of a compound CRS is dropped without the
+#: second.
 _GDAL = {"GDAL_CACHEMAX": CACHE_BYTES, "GTIFF_REPORT_COMPD_CS": True}
 
 #: Integer types that float32 holds exactly.
@@ -160,7 +161,9 @@ def _raster_in_zip(path: Path, what: str) -> str | None:
     if path.suffix.lower() != ".zip" or not zipfile.is_zipfile(path):
         return None
     with zipfile.ZipFile(path) as archive:
-        members = [m for m in archive.namelist() if not m.endswith("/") and Path(m).suffix.lower() not in _SIDECARS]
+        members = [
+            m for m in archive.namelist() if not m.endswith("/") and Path(m).suffix.lower() not in _SIDECARS
+        ]
     found = []
     for member in members:
         name = f"/vsizip/{path}/{member}"
@@ -170,7 +173,9 @@ def _raster_in_zip(path: Path, what: str) -> str | None:
             continue
         found.append(name)
     if len(found) > 1:
-        raise FileError(f"{what}: {path}: the zip holds {len(found)} rasters; name one of them: {', '.join(found)}")
+        raise FileError(
+            f"{what}: {path}: the zip holds {len(found)} rasters; name one of them: {', '.join(found)}"
+        )
     return found[0] if found else None
 
 
@@ -209,13 +214,19 @@ def _facts(dataset: Any, name: str, band: int, what: str) -> RasterInfo:
         raise FileError(f"{where}: not one raster; {hint}")
     if not 1 <= band <= dataset.count:
         bands = "1 band" if dataset.count == 1 else f"{dataset.count} bands"
-        raise FileError(f"{where}: band is {band}; it must be 1 to {dataset.count}, since the file has {bands}")
+        raise FileError(
+            f"{where}: band is {band}; it must be 1 to {dataset.count}, since the file has {bands}"
+        )
     dtype = str(dataset.dtypes[band - 1])
     if dtype.startswith("complex"):
-        raise FileError(f"{where}: band {band} holds complex numbers ({dtype}); elevations must be real numbers")
+        raise FileError(
+            f"{where}: band {band} holds complex numbers ({dtype}); elevations must be real numbers"
+        )
     a, b, c, d, e, f = tuple(dataset.transform)[:6]
     if a * e - b * d == 0 or not all(math.isfinite(v) for v in (a, b, c, d, e, f)):
-        raise FileError(f"{where}: the size of its cells is {a:g} × {e:g}; it must not be zero. Repair its georeference")
+        raise FileError(
+            f"{where}: the size of its cells is {a:g} × {e:g}; it must not be zero. Repair its georeference"
+        )
     flags = dataset.mask_flag_enums[band - 1]
     wkt = dataset.crs.to_wkt(version="WKT2_2019") if dataset.crs else ""
     return RasterInfo(
@@ -302,11 +313,13 @@ class RasterReader:
             values += info.offset
             values *= self.source.unit_m
         if info.south_up or info.east_first:
-            values = np.ascontiguousarray(values[:: -1 if info.south_up else 1, :: -1 if info.east_first else 1])
+            values = np.ascontiguousarray(
+                values[:: -1 if info.south_up else 1, :: -1 if info.east_first else 1]
+            )
         return values
 
     def _damage(self, window: FileWindow, error: Exception) -> str:
-        """Message for a failed read: the first block of the window that cannot be decoded, and where it lies."""
+        """Message for a failed read: the first block that cannot be decoded, and where it lies."""
         info = self.source.info
         high, wide = info.block
         rows = range(window.row_off // high, (window.row_off + window.height - 1) // high + 1)
@@ -322,7 +335,8 @@ class RasterReader:
         a, b, c, d, e, f = info.transform
         place = f"easting {a * left + b * top + c:.10g}, northing {d * left + e * top + f:.10g}"
         return (
-            f"{self.source.what}: {info.name}: data are damaged or cut off in the block at row {top}, column {left} "
+            f"{self.source.what}: {info.name}: data are damaged or cut off in the block at row {top}, column "
+            f"{left} "
             f"({place}): {reason}. Copy the file anew"
         )
 
@@ -361,8 +375,8 @@ def _blank(values: np.ndarray, missing: list[Any], mask: np.ndarray | None) -> N
 def foot_of_site(document: dict[str, Any], directory: Path) -> float:
     """The foot of a site in US units [m]: US survey where the CRS's unit is that foot, else international.
 
-    The CRS is that of the existing raster, else of the finished one, else ``[site] crs``. Nothing is raised: files that
-    are missing are reported when they are opened.
+    The CRS is that of the existing raster, else of the finished one, else ``[site] crs``. Nothing is raised:
+    files that are missing are reported when they are opened.
 
     Args:
         document: the parsed site file, unchecked.

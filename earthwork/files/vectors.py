@@ -1,4 +1,4 @@
-"""Reads polygons and lines from vector files (GeoPackage, GeoJSON, Shapefile, …) into the CRS of the surfaces."""
+"""Reads polygons and lines of vector files (GeoPackage, GeoJSON, Shapefile, …) into the surfaces' CRS."""
 
 from __future__ import annotations
 
@@ -19,8 +19,8 @@ from earthwork.files.paths import nearest, require_file
 if TYPE_CHECKING:
     from earthwork.site.model import AreaSpec
 
-#: Edges are cut into pieces no longer than this before they are reprojected [m]: a straight line of one CRS is a curve in
-#: another, but over 50 m the two part by less than 0.1 mm.
+#: Edges are cut into pieces no longer than this before they are reprojected [m]: a straight line of one CRS
+#: is a curve in another, but over 50 m the two part by less than 0.1 mm.
 _EDGE_M = 50.0
 _METRES_PER_DEGREE = 111_320.0
 
@@ -35,7 +35,8 @@ class Feature:
     Attributes:
         name: value of the name attribute as text; ``"feature 3"`` where no attribute was asked for.
         geometry: its shape without heights.
-        heights: the same shape with the heights that the file carries, in the file's unit; None where it has none.
+        heights: the same shape with the heights that the file carries, in the file's unit; None where it has
+            none.
         attributes: all its attributes.
         where: what the feature is to the user, for messages.
     """
@@ -85,9 +86,10 @@ def read_polygons(
         warnings: a list to which doubts are added.
 
     Raises:
-        FileError: no such file, layer or attribute (with the nearest), not a vector file, a filter that cannot be read,
-            or that nothing passes, or a layer without features.
-        GroundError: a feature that is no polygon, or one that crosses itself (with its name, the reason and the place).
+        FileError: no such file, layer or attribute (with the nearest), not a vector file, a filter that
+            cannot be read, or that nothing passes, or a layer without features.
+        GroundError: a feature that is no polygon, or one that crosses itself (with its name, the reason and
+            the place).
     """
     features = _read(spec, directory, crs, name, what, warnings, _POLYGONS, "a polygon")
     return [NamedPolygon(**f) for f in features]
@@ -128,8 +130,12 @@ def _read(
         raise FileError(f"{where}: there is no attribute {name!r}; {nearest(name, fields)}")
     if len(shapes) == 0:
         passed = f"no feature passes where = {spec.where!r}" if spec.where else "the layer holds no feature"
-        raise FileError(f"{where}: {passed}; it must hold at least one. Check the file, its layer and the filter")
-    attributes = [dict(zip(fields, row, strict=True)) for row in zip(*columns, strict=True)] or [{}] * len(shapes)
+        raise FileError(
+            f"{where}: {passed}; it must hold at least one. Check the file, its layer and the filter"
+        )
+    attributes = [dict(zip(fields, row, strict=True)) for row in zip(*columns, strict=True)] or [{}] * len(
+        shapes
+    )
     names = [_name(attributes[i], name, int(fids[i]), where) for i in range(len(shapes))]
     shapes = shapely.from_wkb(shapes)
     kept = _kept(shapes, names, where, kinds, kind, warnings)
@@ -162,7 +168,9 @@ def _layer(spec: AreaSpec, path: Path, what: str) -> str | None:
         raise FileError(f"{what}: {path}: not a vector file, or damaged ({_line(error)})") from None
     if spec.layer is not None:
         if spec.layer not in layers:
-            raise FileError(f"{what}: {path}: there is no layer {spec.layer!r}; {nearest(spec.layer, layers)}")
+            raise FileError(
+                f"{what}: {path}: there is no layer {spec.layer!r}; {nearest(spec.layer, layers)}"
+            )
         return spec.layer
     if len(layers) > 1:
         raise FileError(
@@ -174,7 +182,9 @@ def _layer(spec: AreaSpec, path: Path, what: str) -> str | None:
     return layers[0]
 
 
-def _table(path: Path, layer: str | None, where_sql: str | None, where: str) -> tuple[dict, Any, Any, list[Any]]:
+def _table(
+    path: Path, layer: str | None, where_sql: str | None, where: str
+) -> tuple[dict, Any, Any, list[Any]]:
     """Facts, feature numbers, shapes (WKB) and attribute columns of a layer."""
     import pyogrio.raw
     from pyogrio.errors import DataLayerError, DataSourceError
@@ -182,12 +192,15 @@ def _table(path: Path, layer: str | None, where_sql: str | None, where: str) -> 
     try:
         with python_warnings.catch_warnings():
             python_warnings.simplefilter("ignore")
-            meta, fids, shapes, columns = pyogrio.raw.read(path, layer=layer, where=where_sql, return_fids=True)
+            meta, fids, shapes, columns = pyogrio.raw.read(
+                path, layer=layer, where=where_sql, return_fids=True
+            )
     except (ValueError, DataLayerError, DataSourceError) as error:
         if where_sql is not None:
             fields = ", ".join(map(str, pyogrio.read_info(path, layer=layer)["fields"]))
             raise FileError(
-                f'{where}: where = "{where_sql}" cannot be used ({_line(error)}); write it like "phase = 1" or '
+                f'{where}: where = "{where_sql}" cannot be used ({_line(error)}); write it like "phase = 1" '
+                "or "
                 f"\"kind = 'road'\". Attributes are: {fields}"
             ) from None
         raise FileError(f"{where}: cannot be read ({_line(error)})") from None
@@ -208,7 +221,8 @@ def _name(attributes: dict[str, Any], name: str | None, fid: int, where: str) ->
     missing = value is None or (isinstance(value, float | np.floating) and np.isnan(value))
     if missing or not str(value).strip():
         raise FileError(
-            f"{where}: feature {fid} has no value in {name!r}; each one must have a name. Fill it in, or leave the feature "
+            f"{where}: feature {fid} has no value in {name!r}; each one must have a name. Fill it in, or "
+            "leave the feature "
             f'out with where = "{name} IS NOT NULL"'
         )
     if isinstance(value, float | np.floating) and float(value).is_integer():
@@ -226,7 +240,8 @@ def _kept(
             empty.append(names[i])
         elif shape.geom_type not in kinds:
             raise GroundError(
-                f"{where}: {names[i]!r} is a {shape.geom_type}; it must be {kind}. Take it out of the layer, or filter it "
+                f"{where}: {names[i]!r} is a {shape.geom_type}; it must be {kind}. Take it out of the layer, "
+                "or filter it "
                 "with where"
             )
         else:
@@ -249,7 +264,8 @@ def _refuse_invalid(shapes: np.ndarray, names: list[str], where: str) -> None:
         faults.append(f"{names[i]!r}: {reason.strip()}" + (f" at ({at})" if at else ""))
     more = f"; and {bad.size - 5} more" if bad.size > 5 else ""
     raise GroundError(
-        f"{where}: {'; '.join(faults)}{more}. Polygons must not cross themselves; repair them in your GIS or CAD"
+        f"{where}: {'; '.join(faults)}{more}. Polygons must not cross themselves; repair them in your GIS or "
+        "CAD"
     )
 
 
@@ -265,21 +281,23 @@ def _file_crs(
         except ValueError:
             there = None
     if there is not None and there.is_geographic and path.suffix.lower() in (".geojson", ".json"):
-        # a GeoJSON without a CRS counts as degrees by its standard; many programs write map coordinates all the same
+        # a GeoJSON without a CRS counts as degrees by its standard; many programs write map coordinates all
+        # the same
         west, south, east, north = shapely.total_bounds(shapes)
         if west < -360 or east > 360 or south < -90 or north > 90:
             there = None
     if there is not None and crs is not None:
         return there
     if there is None and crs is not None:
-        message = f"{where}: the file names no CRS; its coordinates are taken to be in that of the surfaces, {describe(crs)}"
+        message = f"{where}: the file names no CRS; that of the surfaces, {describe(crs)}, is taken"
         warnings.append(Warning("crs-missing", message))
     if there is not None and crs is None and not there.is_geographic:
         message = f"{where}: its CRS {describe(there)} is left aside, since the surfaces name none"
         warnings.append(Warning("crs-missing", message))
     if there is not None and crs is None and there.is_geographic:
         raise GroundError(
-            f"{where}: its coordinates are in degrees ({describe(there)}), and the surfaces name no CRS to bring them to. "
+            f"{where}: its coordinates are in degrees ({describe(there)}), and the surfaces name no CRS to "
+            "bring them to. "
             "Name the CRS of the surfaces in [site] crs"
         )
     return None
@@ -296,7 +314,9 @@ def _reprojected(shapes: np.ndarray, there: CRS | None, crs: CRS | None, where: 
     points = shapely.get_coordinates(pieces, include_z=True)
     east, north = forward.transform(points[:, 0], points[:, 1])
     if not (np.isfinite(east).all() and np.isfinite(north).all()):
-        raise GroundError(f"{where}: its coordinates cannot be brought from {describe(there)} to {describe(crs)}")
+        raise GroundError(
+            f"{where}: its coordinates cannot be brought from {describe(there)} to {describe(crs)}"
+        )
     has_z = shapely.has_z(pieces)
     flat = np.column_stack([east, north])
     out = shapely.set_coordinates(shapely.force_2d(pieces), flat)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from typing import TypeAlias
 
 import numpy as np
 import shapely
@@ -12,7 +13,7 @@ from earthwork.errors import GroundError, Warning
 from earthwork.files.vectors import NamedPolygon
 from earthwork.ground.grid import Grid
 
-Area = shapely.Polygon | shapely.MultiPolygon
+Area: TypeAlias = shapely.Polygon | shapely.MultiPolygon
 
 #: Overlaps under this ground area [m²], or this part of the smaller polygon, are slips of the pen.
 _SLIVER_M2 = 0.01
@@ -37,7 +38,7 @@ def square_metres(grid: Grid) -> float:
 def check_overlaps(
     polygons: Sequence[NamedPolygon], *, square_m: float = 1.0
 ) -> tuple[list[NamedPolygon], tuple[Warning, ...]]:
-    """Zones that share no ground: features of one name become one zone, slivers go to the first, overlaps are refused.
+    """Zones that share no ground: one for each name; slivers go to the first, overlaps are refused.
 
     Args:
         polygons: zones in the order of the file.
@@ -64,18 +65,26 @@ def check_overlaps(
         return zones, ()
     worst = sliver[np.argmax(shared[sliver])]
     message = (
-        f"zones overlap by slivers in {sliver.size} place{'s' if sliver.size > 1 else ''}, {shared[sliver].sum():.2g} m² in "
+        f"zones overlap by slivers in {sliver.size} place{'s' if sliver.size > 1 else ''}, "
+        f"{shared[sliver].sum():.2g} m² in "
         f"all, the largest {shared[worst]:.2g} m² between {zones[pairs[worst, 0]].name!r} and "
         f"{zones[pairs[worst, 1]].name!r}; they are given to the first zone of each pair"
     )
-    return [replace(z, geometry=s) for z, s in zip(zones, shapes, strict=True)], (Warning("zone-slivers", message),)
+    return [replace(z, geometry=s) for z, s in zip(zones, shapes, strict=True)], (
+        Warning("zone-slivers", message),
+    )
 
 
-def _refuse_overlaps(zones: list[NamedPolygon], pairs: np.ndarray, shared: np.ndarray, bad: np.ndarray) -> None:
+def _refuse_overlaps(
+    zones: list[NamedPolygon], pairs: np.ndarray, shared: np.ndarray, bad: np.ndarray
+) -> None:
     worst = np.flatnonzero(bad)[np.argsort(-shared[bad], kind="stable")]
     if worst.size == 0:
         return
-    lines = [f"{zones[pairs[k, 0]].name!r} and {zones[pairs[k, 1]].name!r} by {shared[k]:.6g} m²" for k in worst[:5]]
+    lines = [
+        f"{zones[pairs[k, 0]].name!r} and {zones[pairs[k, 1]].name!r} by {shared[k]:.6g} m²"
+        for k in worst[:5]
+    ]
     more = f", and {worst.size - 5} more pairs" if worst.size > 5 else ""
     where = zones[0].where.rpartition(", ")[0] or "zones"
     raise GroundError(
@@ -135,8 +144,9 @@ def ground_area_m2(area: Area, grid: Grid) -> float:
 class Rings:
     """Closed rings of polygons in cells of a grid, for exact shares of cells by signed areas.
 
-    Outer rings run so that their western side goes down the rows (counter-clockwise on the map), holes the other way: the
-    sum over edges of ``Δrow`` × (share of the cell east of the edge) is + inside and cancels in holes.
+    Outer rings run so that their western side goes down the rows (counter-clockwise on the map), holes the
+    other way: the sum over edges of ``Δrow`` × (share of the cell east of the edge) is + inside and cancels
+        in holes.
 
     Attributes:
         xs, ys: column and row of each vertex [cells]; the last vertex of a ring repeats its first.
@@ -166,7 +176,10 @@ def rings_on(grid: Grid, polygons: Sequence[NamedPolygon | Area]) -> Rings:
     if not shapes:
         none = np.zeros(0)
         return Rings(none, none, np.zeros(1, np.int64), np.zeros(1, np.int64), np.zeros((0, 4)))
-    many = [s if isinstance(s, shapely.MultiPolygon) else shapely.MultiPolygon([s] if not s.is_empty else []) for s in shapes]
+    many = [
+        s if isinstance(s, shapely.MultiPolygon) else shapely.MultiPolygon([s] if not s.is_empty else [])
+        for s in shapes
+    ]
     _, points, (ring_offsets, part_offsets, polygon_parts) = shapely.to_ragged_array(shapely.force_2d(many))
     ring_offsets, part_offsets = ring_offsets.astype(np.int64), part_offsets.astype(np.int64)
     order = _oriented(points, ring_offsets, part_offsets)

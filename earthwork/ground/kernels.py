@@ -1,4 +1,4 @@
-"""Compiled inner loops of the ground; imported only for large grids, since loading them costs half a second."""
+"""Compiled inner loops; imported for large grids only, since loading them takes half a second."""
 
 from __future__ import annotations
 
@@ -17,8 +17,8 @@ def weigh(
 ) -> None:
     """``out[i, j] = Σ_l v_jl Σ_k u_ik z_kl``, in the order of :func:`earthwork.ground.resample.apply_taps`.
 
-    Row sums are taken once for each source column and reused by every cell that takes that column. Without fast-math,
-    so that no term is reordered or fused and the digits are those of the array code.
+    Row sums are taken once for each source column and reused by every cell that takes that column. Without
+    fast-math, so that no term is reordered or fused and the digits are those of the array code.
     """
     samples = values.shape[1]
     sums = np.empty(samples, np.float64)

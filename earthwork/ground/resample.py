@@ -1,8 +1,8 @@
-"""Brings raster values onto the cells of another north-up grid: weights along each axis, applied one axis at a time.
+"""Brings raster values onto the cells of another north-up grid by weights, one axis at a time.
 
-Every rule used here is separable: the value of a cell is ``Σ_i Σ_j u_i v_j z_ij`` with weights u along north and v along
-east. :class:`Taps` holds the weights of one axis. A cell is valid only where every sample that it takes is: nothing is
-filled in, and no weight is spread over the rest.
+Every rule used here is separable: the value of a cell is ``Σ_i Σ_j u_i v_j z_ij`` with weights u along north
+and v along east. :class:`Taps` holds the weights of one axis. A cell is valid only where every sample that it
+takes is: nothing is filled in, and no weight is spread over the rest.
 """
 
 from __future__ import annotations
@@ -14,8 +14,9 @@ import numpy as np
 #: Two places along an axis closer than this part of a source cell are one [cells].
 _SNAP = 1e-6
 
-#: A source counts as finer than the cell, and is averaged, from this ratio on. Below it the weights of averaging and of
-#: bilinear interpolation agree (both are (1 − f, f) for equal cells), and interpolation keeps the file's detail.
+#: A source counts as finer than the cell, and is averaged, from this ratio on. Below it the weights of
+#: averaging and of bilinear interpolation agree (both are (1 − f, f) for equal cells), and interpolation
+#: keeps the file's detail.
 AVERAGE_FROM = 1.05
 
 #: Grids of more cells than this are worth loading compiled kernels for [cells]; the digits are the same.
@@ -24,7 +25,7 @@ _COMPILED_FROM = 4_000_000
 
 @dataclass(frozen=True)
 class Taps:
-    """Samples and weights along one axis for cells ``first`` to ``first + len(index)``; outside there is no data.
+    """Samples and weights along one axis, for the run of target cells that have all their samples.
 
     Attributes:
         first: the first target cell that has all its samples.
@@ -59,7 +60,14 @@ class Taps:
 
 
 def axis_taps(
-    source_start: float, source_cell: float, samples: int, start: float, cell: float, cells: int, *, nodes: bool = False
+    source_start: float,
+    source_cell: float,
+    samples: int,
+    start: float,
+    cell: float,
+    cells: int,
+    *,
+    nodes: bool = False,
 ) -> Taps:
     """Taps of one axis; places are measured along it, from west to east or from north to south.
 
@@ -68,14 +76,14 @@ def axis_taps(
         source_cell: side of a source cell, > 0.
         samples: source cells along the axis; each has its sample at its centre.
         start, cell, cells: outer edge of the first target cell, side, count.
-        nodes: the samples are points of a surface that runs straight between them (else each stands for its cell); it
-            matters only where the source is finer and is averaged.
+        nodes: the samples are points of a surface that runs straight between them (else each stands for its
+            cell); it matters only where the source is finer and is averaged.
 
     >>> taps = axis_taps(0.0, 1.0, 4, 0.5, 1.0, 3)     # cells half a cell further: the mean of two neighbours
     >>> taps.first, taps.index.tolist(), taps.weight.tolist()
     (0, [[0, 1], [1, 2], [2, 3]], [[0.5, 0.5], [0.5, 0.5], [0.5, 0.5]])
     >>> axis_taps(0.0, 1.0, 4, 0.0, 2.0, 2).weight.tolist()     # cells of two: their mean
-    [[0.5, 0.5, 0.0], [0.5, 0.5, 0.0]]
+    [[0.5, 0.5], [0.5, 0.5]]
     """
     edges = (start - source_start + np.arange(cells + 1) * cell) / source_cell
     if cell / source_cell < AVERAGE_FROM:

@@ -1,4 +1,4 @@
-"""A cheap look at a surface before the main pass: its mean elevation, and values that mark missing data unsaid."""
+"""A cheap look at a surface before the main pass: its mean elevation, and undeclared markers of no data."""
 
 from __future__ import annotations
 
@@ -22,7 +22,9 @@ _MARKERS = (-9999.0, -10000.0, -32767.0, -32768.0, -99999.0, 9999.0, 32767.0, 99
 _ABSURD_M = 1e5
 
 
-def sampled_elevation(surface: Surface, grid: Grid, what: str, source: RasterSource | None = None) -> float | None:
+def sampled_elevation(
+    surface: Surface, grid: Grid, what: str, source: RasterSource | None = None
+) -> float | None:
     """Mean elevation [m] of a surface over a few windows; None when they hold no data.
 
     The windows lie at the corners, along the edges and in the middle, the same ones each time.
@@ -65,6 +67,7 @@ def _refuse_markers(values: np.ndarray, what: str, source: RasterSource) -> None
         marker = float(stored[np.argmax(np.abs(values))])
     if marker is not None:
         raise GroundError(
-            f"{what}: {source.info.name}: it holds the value {marker:.10g}, which is no elevation; it looks like a marker of "
+            f"{what}: {source.info.name}: it holds the value {marker:.10g}, which is no elevation; it looks "
+            "like a marker of "
             f"missing data that the file does not declare. State it: {{ file = …, nodata = {marker:.10g} }}"
         )

@@ -23,6 +23,10 @@ ALIGNED_WITHIN = 1e-3
 _READ_AT_ONCE = 4_000_000
 
 
+#: What surfaces give that are computed, not read as they are.
+FLOAT64 = np.dtype(np.float64)
+
+
 @runtime_checkable
 class SurfaceReader(Protocol):
     """One thread's way to a surface: it holds its own file handles, and is used by that thread alone."""
@@ -39,10 +43,21 @@ class SurfaceReader(Protocol):
 class Surface(Protocol):
     """Elevations on one grid. A constant or a plane has no extent of its own: it is known everywhere."""
 
-    dtype: np.dtype  #: float32 or float64, of what the readers give
-    block: tuple[int, int] | None  #: (rows, columns) that the file decodes at once; None where it does not matter
-    block_start: tuple[int, int]  #: (row, column) of the grid where a block begins; others follow at every ``block``
-    resampling: str  #: "none", "bilinear", "average", "nodes" or "exact": how the file came onto the grid
+    @property
+    def dtype(self) -> np.dtype:
+        """float32 or float64, of what the readers give."""
+
+    @property
+    def block(self) -> tuple[int, int] | None:
+        """(rows, columns) of the grid that the file decodes at once; None where it does not matter."""
+
+    @property
+    def block_start(self) -> tuple[int, int]:
+        """(row, column) of the grid where a block begins; others follow at every ``block``."""
+
+    @property
+    def resampling(self) -> str:
+        """How it came onto the grid: "none", "bilinear", "average", "nodes", or "exact" without a file."""
 
     def reader(self) -> SurfaceReader: ...
 
@@ -54,7 +69,8 @@ def open_ground(site: Site) -> SurfaceSet:
     return meet(site)
 
 
-# --- without a file ------------------------------------------------------------------------------------------------
+# --- without a file
+# ------------------------------------------------------------------------------------------------
 
 
 @dataclass(frozen=True)
@@ -62,7 +78,7 @@ class LevelGround:
     """One elevation everywhere [m]."""
 
     elevation_m: float
-    dtype: np.dtype = np.dtype(np.float64)
+    dtype: np.dtype = FLOAT64
     block: tuple[int, int] | None = None
     block_start: tuple[int, int] = (0, 0)
     resampling: str = "exact"
@@ -97,7 +113,7 @@ class PlaneGround:
     at: tuple[float, float]
     elevation_m: float
     slope: tuple[float, float]
-    dtype: np.dtype = np.dtype(np.float64)
+    dtype: np.dtype = FLOAT64
     block: tuple[int, int] | None = None
     block_start: tuple[int, int] = (0, 0)
     resampling: str = "exact"
@@ -121,7 +137,8 @@ class PlaneGround:
         """Nothing is held."""
 
 
-# --- rasters ---------------------------------------------------------------------------------------------------------
+# --- rasters
+# ---------------------------------------------------------------------------------------------------------
 
 
 @dataclass(frozen=True)
@@ -130,7 +147,8 @@ class AlignedRaster:
 
     Args:
         source: the file.
-        row, column: row and column of the file (north up) at the grid's (0, 0); negative where the grid begins first.
+        row, column: row and column of the file (north up) at the grid's (0, 0); negative where the grid
+            begins first.
     """
 
     source: RasterSource
@@ -162,7 +180,12 @@ class _AlignedReader:
     def read(self, window: Window) -> np.ndarray:
         info = self._surface.source.info
         row, column = window.row + self._surface.row, window.column + self._surface.column
-        if row >= 0 and column >= 0 and row + window.height <= info.rows and column + window.width <= info.columns:
+        if (
+            row >= 0
+            and column >= 0
+            and row + window.height <= info.rows
+            and column + window.width <= info.columns
+        ):
             return self._file.read(row, column, window.height, window.width)
         values = np.full((window.height, window.width), np.nan, self._surface.dtype)
         top, left = max(row, 0), max(column, 0)
@@ -187,7 +210,7 @@ class ResampledRaster:
     block: tuple[int, int] | None
     block_start: tuple[int, int] = (0, 0)
     compiled: bool = False
-    dtype: np.dtype = np.dtype(np.float64)
+    dtype: np.dtype = FLOAT64
 
     def reader(self) -> _ResampledReader:
         return _ResampledReader(self)
@@ -207,7 +230,7 @@ class _ResampledReader:
         return values
 
     def _fill(self, out: np.ndarray, north: Taps, east: Taps) -> None:
-        """Write the cells of two runs of taps into ``out``; in halves when they take too many source cells at once."""
+        """Write the cells of two runs of taps into ``out``; in halves when they take too many samples."""
         (top, bottom), (left, right) = north.reach, east.reach
         high, wide = len(north), len(east)
         if (bottom - top) * (right - left) > _READ_AT_ONCE and (high > 1 or wide > 1):
@@ -231,8 +254,10 @@ def _run(taps: Taps, cut: slice) -> Taps:
     return Taps(0, taps.index[cut], taps.weight[cut], taps.averaged)
 
 
-def raster_on_grid(source: RasterSource, grid: Grid, *, nodes: bool = False) -> AlignedRaster | ResampledRaster:
-    """A north-up raster in the grid's CRS as a surface on the grid: as it is where the cells agree, else resampled.
+def raster_on_grid(
+    source: RasterSource, grid: Grid, *, nodes: bool = False
+) -> AlignedRaster | ResampledRaster:
+    """A raster in the grid's CRS as a surface on the grid: as it is where the cells agree, else resampled.
 
     Args:
         source: the file.
@@ -265,12 +290,14 @@ def raster_taps(info: RasterInfo, grid: Grid, *, nodes: bool = False) -> tuple[T
     north = axis_taps(
         -info.north, info.cell_north, info.rows, -grid.north, grid.cell_north, grid.rows, nodes=nodes
     )
-    east = axis_taps(info.west, info.cell_east, info.columns, grid.west, grid.cell_east, grid.columns, nodes=nodes)
+    east = axis_taps(
+        info.west, info.cell_east, info.columns, grid.west, grid.cell_east, grid.columns, nodes=nodes
+    )
     return north, east
 
 
 def aligned_offset(info: RasterInfo, grid: Grid) -> tuple[int, int] | None:
-    """(row, column) of the raster at the grid's (0, 0) when its cells are the grid's everywhere, else None."""
+    """(row, column) of the raster at the grid's (0, 0) when its cells are the grid's, else None."""
     shifts = []
     for start, mine, theirs, cells in (
         ((info.north - grid.north) / grid.cell_north, info.cell_north, grid.cell_north, grid.rows),
@@ -291,19 +318,21 @@ def require_north_up(info: RasterInfo, what: str) -> None:
     if info.rotated:
         a, b, _, d, e, _ = info.transform
         raise GroundError(
-            f"{what}: {info.name}: its grid is rotated or sheared (one column is {a:g} east and {d:g} north, one row "
+            f"{what}: {info.name}: its grid is rotated or sheared (one column is {a:g} east and {d:g} north, "
+            "one row "
             f"{b:g} east and {e:g} north); rows must run east. Resample it to a north-up grid first: "
             "gdalwarp -r bilinear in.tif out.tif"
         )
     if not info.placed:
         raise GroundError(
-            f"{what}: {info.name}: it carries no georeference; where it lies and how large its cells are must be known. "
+            f"{what}: {info.name}: it carries no georeference; where it lies and how large its cells are "
+            "must be known. "
             "Add them, for example with a world file"
         )
 
 
 def _block_start(info: RasterInfo, row: int, column: int) -> tuple[int, int]:
-    """(row, column) of the grid where a block of the file begins, for a grid that begins at a row and column of it."""
+    """(row, column) where a block begins, of a grid that begins at a row and column of the file."""
     high, wide = info.block
     first_row = info.rows % high if info.south_up else 0
     first_column = info.columns % wide if info.east_first else 0

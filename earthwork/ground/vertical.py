@@ -44,7 +44,8 @@ def vertical_facts(
 ) -> tuple[VerticalFacts, tuple[Warning, ...]]:
     """Unit and datum of a raster's elevations; the first that speaks of the unit is believed.
 
-    Order: ``vertical_unit`` of the site file, the band's unit, the vertical CRS, the horizontal CRS, the site's units.
+    Order: ``vertical_unit`` of the site file, the band's unit, the vertical CRS, the horizontal CRS, the
+        site's units.
 
     Args:
         spec: the surface in the site file.
@@ -59,7 +60,8 @@ def vertical_facts(
     reference = vertical_reference(crs)
     if reference is not None and not reference.upwards:
         raise GroundError(
-            f"{what}: {info.name}: its vertical CRS {reference.name!r} counts depths downwards; it must give elevations "
+            f"{what}: {info.name}: its vertical CRS {reference.name!r} counts depths downwards; it must give "
+            "elevations "
             "upwards. Turn the sign and name the right vertical CRS"
         )
     unit, source = _unit(spec, info, crs, units, what)
@@ -68,7 +70,8 @@ def vertical_facts(
     if source in ("site file", "site units") or unit in expected:
         return facts, ()
     message = (
-        f"{what}: {info.name}: elevations are in {facts.unit}, as the {source} says, and the site's units are "
+        f"{what}: {info.name}: elevations are in {facts.unit}, as the {source} says, and the site's units "
+        "are "
         f'"{units.name}"; they are converted. If that is wrong, state vertical_unit for this surface'
     )
     return facts, (Warning("vertical-unit", message),)
@@ -83,7 +86,8 @@ def _unit(
         metres = unit_from_text(info.unit)
         if metres is None:
             raise GroundError(
-                f"{what}: {info.name}: the unit of its band is {info.unit!r}; it must be a unit of length. If the band holds "
+                f"{what}: {info.name}: the unit of its band is {info.unit!r}; it must be a unit of length. "
+                "If the band holds "
                 'elevations, state vertical_unit = "m", "ft" or "ftUS" for this surface'
             )
         return metres, "band"
@@ -95,18 +99,21 @@ def _unit(
         return units.factor("length"), "site units"
     if flat not in (1.0, *_FEET):
         raise GroundError(
-            f"{what}: {info.name}: its CRS counts in units of {flat:g} m, and nothing says in what its elevations are; "
+            f"{what}: {info.name}: its CRS counts in units of {flat:g} m, and nothing says in what its "
+            "elevations are; "
             'state vertical_unit = "m", "ft" or "ftUS" for this surface'
         )
     return flat, "horizontal CRS"
 
 
 def refuse_other_datum(facts: Sequence[VerticalFacts]) -> None:
-    """Raise a GroundError when two surfaces name different vertical datums; one that names none is let pass."""
+    """Raise a GroundError when two surfaces name different vertical datums; none named is let pass."""
     named = [f for f in facts if f.datum is not None]
     for other in named[1:]:
         if other.datum != named[0].datum:
             raise GroundError(
-                f"{named[0].surface} is in the vertical datum {named[0].datum!r}, {other.surface} in {other.datum!r}; they "
-                "must be the same, since datums differ by decimetres to tens of metres. Transform one of the two first"
+                f"{named[0].surface} is in the vertical datum {named[0].datum!r}, {other.surface} in "
+                f"{other.datum!r}; they "
+                "must be the same, since datums differ by decimetres to tens of metres. Transform one of the "
+                "two first"
             )

@@ -1,12 +1,12 @@
-"""Brings a raster of another CRS onto the grid: the centre of each cell is found in the file, and interpolated there."""
+"""Brings a raster of another CRS onto the grid: each cell's centre is found in the file and interpolated."""
 
 from __future__ import annotations
 
 import math
 from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING
 
 import numpy as np
-import shapely
 from pyproj import CRS, Transformer
 
 from earthwork.crs import transformer
@@ -15,7 +15,11 @@ from earthwork.files.rasters import RasterSource
 from earthwork.ground.grid import Grid, Window
 from earthwork.ground.resample import AVERAGE_FROM
 
-#: Places between control points may be wrong by this part of a source cell; the spacing is chosen by it [cells].
+if TYPE_CHECKING:
+    import shapely
+
+#: Places between control points may be wrong by this part of a source cell; the spacing is chosen by it
+#: [cells].
 _PLACE_ERROR = 1e-3
 
 #: Spacings of control points that are tried, in cells of the grid.
@@ -27,19 +31,22 @@ _READ_AT_ONCE = 4_000_000
 #: Two places closer than this are one [source cells].
 _SNAP = 1e-6
 
+FLOAT64 = np.dtype(np.float64)
+
 
 @dataclass(frozen=True)
 class WarpedRaster:
     """A raster in another CRS, on the cells of the grid.
 
-    Bilinear between the four source samples around the centre of a cell, valid only where all four are. Where the source
-    is finer, ``parts`` × ``parts`` points of the cell are averaged.
+    Bilinear between the four source samples around the centre of a cell, valid only where all four are. Where
+    the source is finer, ``parts`` × ``parts`` points of the cell are averaged.
 
     Args:
         source: the file, north up in its own CRS.
         crs: its CRS.
         grid: the grid.
-        spacing: cells between control points, at which places are transformed; between them they are interpolated.
+        spacing: cells between control points, at which places are transformed; between them they are
+            interpolated.
         parts: points per cell along each axis.
     """
 
@@ -50,7 +57,7 @@ class WarpedRaster:
     parts: int
     block: tuple[int, int] | None = None
     block_start: tuple[int, int] = (0, 0)
-    dtype: np.dtype = np.dtype(np.float64)
+    dtype: np.dtype = FLOAT64
 
     @property
     def resampling(self) -> str:
@@ -74,7 +81,8 @@ def warped_raster(source: RasterSource, crs: CRS, grid: Grid) -> WarpedRaster:
     here = _places(rough, to_file, row, column)
     if not np.isfinite(here).all():
         raise GroundError(
-            f"{source.what}: {source.info.name}: the site cannot be expressed in its CRS ({crs.name}); check both CRS"
+            f"{source.what}: {source.info.name}: the site cannot be expressed in its CRS ({crs.name}); check "
+            "both CRS"
         )
     beside = _places(rough, to_file, row, column + 1.0) - here
     below = _places(rough, to_file, row + 1.0, column) - here
@@ -85,17 +93,21 @@ def warped_raster(source: RasterSource, crs: CRS, grid: Grid) -> WarpedRaster:
 
 
 def _places(surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column: np.ndarray) -> np.ndarray:
-    """(row, column) in samples of the file (sample 0 at the centre of the first cell), shape (2, …), of grid places."""
+    """(row, column) of grid places in samples of the file, (0, 0) at its first centre; shape (2, …)."""
     grid, info = surface.grid, surface.source.info
     east, north = to_file.transform(grid.west + column * grid.cell_east, grid.north - row * grid.cell_north)
     return np.stack([(info.north - north) / info.cell_north - 0.5, (east - info.west) / info.cell_east - 0.5])
 
 
-def _bend(surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column: np.ndarray, spacing: int) -> float:
-    """The greatest error of interpolated places between control points ``spacing`` cells apart [source cells]."""
+def _bend(
+    surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column: np.ndarray, spacing: int
+) -> float:
+    """The greatest error of places between control points ``spacing`` cells apart [source cells]."""
     if spacing == 1:
         return 0.0
-    corner = [_places(surface, to_file, row + i * spacing, column + j * spacing) for i in (0, 1) for j in (0, 1)]
+    corner = [
+        _places(surface, to_file, row + i * spacing, column + j * spacing) for i in (0, 1) for j in (0, 1)
+    ]
     middle = _places(surface, to_file, row + spacing / 2, column + spacing / 2)
     along = _places(surface, to_file, row, column + spacing / 2)
     down = _places(surface, to_file, row + spacing / 2, column)
@@ -123,11 +135,13 @@ class _WarpedReader:
         self._file.close()
 
     def _add(self, out: np.ndarray, window: Window) -> None:
-        """Add the samples of each cell of a window to ``out``; in halves when they take too many source cells."""
+        """Add the points of each cell of a window to ``out``; in halves when they take too many samples."""
         info, parts = self._surface.source.info, self._surface.parts
         control = self._control(window)
         reach = self._reach(control)
-        if (reach[1] - reach[0]) * (reach[3] - reach[2]) > _READ_AT_ONCE and max(window.height, window.width) > 1:
+        if (reach[1] - reach[0]) * (reach[3] - reach[2]) > _READ_AT_ONCE and max(
+            window.height, window.width
+        ) > 1:
             for part, cut in _halves(window):
                 self._add(out[cut], part)
             return
@@ -144,15 +158,17 @@ class _WarpedReader:
                 out += bilinear(source, row - top, column - left)
 
     def _control(self, window: Window) -> np.ndarray:
-        """Places in the file of the control points around a window; they lie on the same cells for every window."""
+        """Places in the file of the control points around a window; the same cells for every window."""
         step = self._surface.spacing
         rows = np.arange(window.row // step, (window.row + window.height - 1) // step + 2) * step + 0.5
-        columns = np.arange(window.column // step, (window.column + window.width - 1) // step + 2) * step + 0.5
+        columns = (
+            np.arange(window.column // step, (window.column + window.width - 1) // step + 2) * step + 0.5
+        )
         row, column = np.meshgrid(rows, columns, indexing="ij")
         return _places(self._surface, self._to_file, row, column)
 
     def _between(self, control: np.ndarray, window: Window, down: float, along: float) -> np.ndarray:
-        """One coordinate for each cell of a window, at an offset from its centre [cells], between control points."""
+        """One coordinate for each cell of a window, at an offset from its centre [cells]."""
         step = self._surface.spacing
         rows = np.arange(window.row, window.row + window.height)
         columns = np.arange(window.column, window.column + window.width)
@@ -164,7 +180,7 @@ class _WarpedReader:
 
     @staticmethod
     def _reach(control: np.ndarray) -> tuple[int, int, int, int]:
-        """(top, bottom, left, right) of the source samples that a window can take, from its control points."""
+        """(top, bottom, left, right) of the source samples that a window can take."""
         if not np.isfinite(control).any():
             return 0, 0, 0, 0
         low = np.floor(np.nanmin(np.where(np.isfinite(control), control, np.nan), axis=(1, 2))) - 1
@@ -179,12 +195,18 @@ def _halves(window: Window) -> list[tuple[Window, tuple[slice, slice]]]:
         half = window.height // 2
         return [
             (replace(window, height=half), (slice(0, half), everything)),
-            (replace(window, row=window.row + half, height=window.height - half), (slice(half, None), everything)),
+            (
+                replace(window, row=window.row + half, height=window.height - half),
+                (slice(half, None), everything),
+            ),
         ]
     half = window.width // 2
     return [
         (replace(window, width=half), (everything, slice(0, half))),
-        (replace(window, column=window.column + half, width=window.width - half), (everything, slice(half, None))),
+        (
+            replace(window, column=window.column + half, width=window.width - half),
+            (everything, slice(half, None)),
+        ),
     ]
 
 
@@ -220,6 +242,8 @@ def footprint(source: RasterSource, crs: CRS, grid_crs: CRS, *, points: int = 64
     Raises:
         GroundError: the rectangle cannot be expressed in the other CRS.
     """
+    import shapely
+
     info = source.info
     west, south, east, north = info.bounds
     half_east, half_north = info.cell_east / 2, info.cell_north / 2
@@ -230,9 +254,14 @@ def footprint(source: RasterSource, crs: CRS, grid_crs: CRS, *, points: int = 64
     ring_north = np.concatenate([np.full(points - 1, south), south + (north - south) * along])
     ring_north = np.concatenate([ring_north, np.full(points - 1, north), north - (north - south) * along])
     xs, ys = transformer(crs, grid_crs).transform(ring_east, ring_north)
-    polygon = shapely.Polygon(np.column_stack([xs, ys])) if np.isfinite(xs).all() and np.isfinite(ys).all() else None
+    polygon = (
+        shapely.Polygon(np.column_stack([xs, ys]))
+        if np.isfinite(xs).all() and np.isfinite(ys).all()
+        else None
+    )
     if polygon is None or polygon.is_empty or not polygon.is_valid:
         raise GroundError(
-            f"{source.what}: {info.name}: its extent cannot be expressed in the CRS of the grid; cut it to the site first"
+            f"{source.what}: {info.name}: its extent cannot be expressed in the CRS of the grid; cut it to "
+            "the site first"
         )
     return polygon

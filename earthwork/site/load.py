@@ -209,3 +209,41 @@ def _models_in(annotation: Any) -> Iterator[type[Section]]:
         yield annotation
     for inner in getattr(annotation, "__args__", ()):
         yield from _models_in(inner)
+
+
+def site_from_files(
+    existing: str | Path,
+    finished: str | Path,
+    *,
+    limits: str | Path | None = None,
+    zones: str | Path | None = None,
+    zone_name: str | None = None,
+    nodata: float | None = None,
+    units: str = "metric",
+) -> Site:
+    """A site of two rasters without a site file; paths are relative to the current folder.
+
+    Args:
+        existing, finished: raster files.
+        limits: polygons; only ground inside counts.
+        zones: polygons to report by.
+        zone_name: attribute with the name of a zone.
+        nodata: value of missing data in both rasters, beside what they tag.
+        units: "metric" or "us".
+
+    Raises:
+        SiteFileError: unknown units, or a zone name without zones.
+    """
+    if zone_name is not None and zones is None:
+        raise SiteFileError(f'zone name is "{zone_name}", but no zones are given; give their file too')
+    ground: dict[str, Any] = {"existing": {"file": str(existing)}, "finished": {"file": str(finished)}}
+    if nodata is not None:
+        for surface in ground.values():
+            surface["nodata"] = float(nodata)
+    if limits is not None:
+        ground["limits"] = str(limits)
+    name = f"{Path(existing).stem} to {Path(finished).stem}"
+    document: dict[str, Any] = {"site": {"name": name, "units": units}, "ground": ground}
+    if zones is not None:
+        document["zones"] = {"area": str(zones)} | ({"name": zone_name} if zone_name is not None else {})
+    return check_site(document, Path())
