@@ -238,8 +238,8 @@ def _solve_network(
 def _with_limits(supply: Array, need: Array) -> tuple[Array, Array]:
     """Replace amounts without limit by ones that can never be reached."""
     all_supply, all_need = math.fsum(supply[np.isfinite(supply)]), math.fsum(need[np.isfinite(need)])
-    supply = np.where(np.isinf(supply), all_need, supply)
-    return supply, np.where(np.isinf(need), all_supply, need)
+    supply = np.where(np.isinf(supply), 1.25 * all_need, supply)
+    return supply, np.where(np.isinf(need), 1.25 * all_supply, need)
 
 
 def solve_balanced(supply: Array, need: Array, costs: Costs) -> Network:
@@ -261,27 +261,62 @@ def solve_balanced(supply: Array, need: Array, costs: Costs) -> Network:
     units, unit = (to_units(supply, total), to_units(need, total)), total / _UNITS
     if costs.shape[0] * costs.shape[1] <= DENSE_MOVES:
         rows, columns, flow, u, v = solve_dense(*units, costs, unit=unit)
-        # Dual-feasible to rounding: each price becomes the highest that the other side leaves.
-        v = _column_prices(costs, u, v)
-        u = _column_prices(costs.transposed, v, u)
-        method = "network simplex over all moves"
+        method, column_prices = "network simplex over all moves", _column_prices
     else:
-        from earthwork.plan.transport_sparse import solve_with_candidates
+        from earthwork.plan.transport_sparse import column_prices, solve_with_candidates
 
         rows, columns, flow, u, v, method = solve_with_candidates(*units, costs, unit=unit)
     keep = ~_dust(rows, columns, flow, *units)
     rows, columns = rows[keep], columns[keep]
+    flow, u, v = _along(costs, rows, columns, supply, need, u, v)
+    # Dual-feasible to rounding: each price becomes the highest that the other side leaves.
+    v = column_prices(costs, u, v)
+    u = column_prices(costs.transposed, v, u)
     return Network(
         costs=costs,
         supply=supply,
         need=need,
         rows=rows,
         columns=columns,
-        flow=_closed(rows, flow[keep] * unit, supply),
+        flow=flow,
         row_price=u,
         column_price=v,
         method=method,
     )
+
+
+def _along(
+    costs: Costs, rows: Array, columns: Array, supply: Array, need: Array, u: Array, v: Array
+) -> tuple[Array, Array, Array]:
+    """Flows and prices worked out anew along the moves of a plan, free of what the solver rounded.
+
+    The moves of a plan make trees: from the leaves inward each amount leaves one flow open, and from one price of
+    each tree (its largest amount, where rounding of the sums ends) u(i) + v(j) = cost(i, j) gives the others.
+    """
+    from scipy.sparse import csr_array
+    from scipy.sparse.csgraph import breadth_first_order, connected_components
+
+    n, m = costs.shape
+    moves = csr_array((np.ones(len(rows), np.int8), (rows, n + columns)), shape=(n + m + 1, n + m + 1))
+    part = connected_components(moves, directed=False)[1][: n + m]
+    largest = np.argsort(-np.concatenate([supply, need]), kind="stable")
+    anchors = largest[np.unique(part[largest], return_index=True)[1]]
+    root = np.full(len(anchors), n + m)
+    moves = moves + csr_array((np.ones(len(anchors), np.int8), (root, anchors)), shape=moves.shape)
+    order, before = breadth_first_order(moves, n + m, directed=False)
+    order = order[before[order] < n + m][1:]
+    towards = before[order]
+    ends = np.sort(np.column_stack([order, towards]), axis=1)
+    price, left, flow = np.concatenate([u, v]).tolist(), np.concatenate([supply, need]).tolist(), {}
+    cost = costs.pairs(ends[:, 0], ends[:, 1] - n).tolist()
+    for k, (node, other) in enumerate(zip(order.tolist(), towards.tolist(), strict=True)):
+        price[node] = cost[k] - price[other]
+    for node, other in zip(order[::-1].tolist(), towards[::-1].tolist(), strict=True):
+        amount = max(0.0, left[node])
+        left[other] -= amount
+        flow[min(node, other), max(node, other)] = amount
+    flows = np.array([flow[i, n + j] for i, j in zip(rows.tolist(), columns.tolist(), strict=True)])
+    return flows, np.array(price[:n]), np.array(price[n:])
 
 
 def to_units(amounts: Array, total: float) -> Array:
@@ -368,12 +403,6 @@ def _dust(rows: Array, columns: Array, flow: Array, supply: Array, need: Array) 
     column."""
     least = np.minimum(supply[rows], need[columns])
     return (flow <= len(supply) + len(need)) & (flow <= 1e-6 * least)
-
-
-def _closed(rows: Array, flow: Array, supply: Array) -> Array:
-    """Scale the moves of each row so that they add up to its supply to rounding."""
-    sums = np.bincount(rows, flow, len(supply))
-    return flow * np.divide(supply, sums, out=np.ones(len(supply)), where=sums > 0)[rows]
 
 
 def _plan(network: Network, certificate: Certificate, by_row: Array, by_column: Array) -> TransportPlan:

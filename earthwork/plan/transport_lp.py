@@ -73,8 +73,8 @@ def _with_limits(supply: Array, need: Array, weight: Array) -> tuple[Array, Arra
     """Replace amounts without limit by ones that can never be reached."""
     real = weight[np.isfinite(weight) & (weight > 0)]
     finite = np.isfinite(supply)
-    supply = np.where(finite, supply, need[np.isfinite(need)].sum() / real.min())
-    return supply, np.where(np.isfinite(need), need, supply.sum() * real.max())
+    supply = np.where(finite, supply, 1.25 * need[np.isfinite(need)].sum() / real.min())
+    return supply, np.where(np.isfinite(need), need, 1.25 * supply.sum() * real.max())
 
 
 def _highest(costs: Costs) -> float:

@@ -41,8 +41,6 @@ def solve_with_candidates(
         new = pricing.moves(u, v, _CANDIDATES, below=-_TOLERANCE * highest)
         new = np.setdiff1d(new, key, assume_unique=True)
         if not new.size:
-            v = pricing.column_prices(u)
-            u = pricing.row_prices(v)
             used = flow > 0
             method = f"network simplex over {len(key)} candidate moves, {turn} rounds, priced over all moves"
             return key[used] // columns, key[used] % columns, flow[used], u, v, method
@@ -190,6 +188,11 @@ def _deal(pair_i, pair_j, flow, order_r, start_r, order_c, start_c, supply, need
             if need[j] <= 0:
                 at_c[b] += 1
     return out[:count]
+
+
+def column_prices(costs: Costs, u: Array, otherwise: Array | None = None) -> Array:
+    """The highest prices of columns that those of the rows allow."""
+    return _Pricing(costs).column_prices(u)
 
 
 class _Pricing:
