@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import os
 import warnings
 import zipfile
 from dataclasses import dataclass
@@ -22,10 +23,12 @@ from earthwork.files.paths import is_virtual, require_file
 from earthwork.units import FOOT_M, US_SURVEY_FOOT_M
 
 #: GDAL's block cache [bytes]. Its default, 5 % of memory, makes streamed reads three times slower.
-CACHE_BYTES = 64 * 2**20
+CACHE_BYTES = 32 * 2**20
 
-#: Settings under which every raster is opened; the vertical part of a compound CRS is dropped without the
-#: second.
+# GDAL reads the size of its block cache once, at its first use in the process, whatever a later Env says.
+os.environ.setdefault("GDAL_CACHEMAX", str(CACHE_BYTES))
+
+#: Settings under which every raster is opened; the vertical part of a compound CRS is dropped without the second.
 _GDAL = {"GDAL_CACHEMAX": CACHE_BYTES, "GTIFF_REPORT_COMPD_CS": True}
 
 #: Integer types that float32 holds exactly.

@@ -16,8 +16,9 @@ from earthwork.ground.grid import Grid, Window
 from earthwork.ground.surfaces import Surface, SurfaceReader
 
 #: Fields of a window by name, each (height, width); elevations and depths in m, shares in [0, 1], NaN = no data.
-#: ``existing``, ``finished``; with layers also ``stripped``, ``subgrade``, ``disturbed``, ``move``, and numbered
-#: ``strip0`` (depth), ``section0`` (thickness), ``excavation0`` (share), ``scarify0`` (depth), ``stratum0`` (bottom).
+#: ``depth`` (subgrade − stripped), ``existing``, ``finished``; with layers also ``stripped``, ``subgrade``,
+#: ``disturbed``, ``move``, and numbered ``strip0`` (depth), ``section0`` (thickness), ``excavation0`` (share),
+#: ``scarify0`` (depth), ``stratum0`` (bottom).
 Arrays = dict[str, np.ndarray]
 
 #: Finished and existing ground that differ by more than this are disturbed [m].
@@ -106,7 +107,7 @@ class Stack:
     def tile_cells(self) -> int:
         """Cells of a tile: fewer when more fields are held at once."""
         fields = 4 + 2 * (len(self.strips) + len(self.sections) + len(self.excavations) + 2 * len(self.strata))
-        return 2**19 if not self.layered and self.limits is None else max(2**15, 2**21 // (fields + 8))
+        return 2**18 if not self.layered and self.limits is None else max(2**15, 2**21 // (fields + 8))
 
     @property
     def materials(self) -> list[str]:
@@ -129,11 +130,13 @@ class Stack:
                 finished += np.where(arrays[f"excavation{i}"] > 0, 0.0 * arrays[f"excavation_bottom{i}"], 0.0)
         arrays["stripped"] = existing - sum(arrays[f"strip{i}"] for i in range(len(self.strips)))
         arrays["subgrade"] = finished - sum(arrays[f"section{i}"] for i in range(len(self.sections)))
+        arrays["depth"] = arrays["subgrade"] - arrays["stripped"]
 
     def shifted(self, arrays: Arrays, shift_m: float) -> Arrays:
         """The arrays with finished ground and subgrade raised where they may move."""
         lift = arrays["move"] * shift_m
-        return {**arrays, "finished": arrays["finished"] + lift, "subgrade": arrays["subgrade"] + lift}
+        raised = {name: arrays[name] + lift for name in ("finished", "subgrade", "depth")}
+        return {**arrays, **raised}
 
     def removal_bottom(self, arrays: Arrays) -> np.ndarray:
         """What the fill rests on [m]: min(stripped, subgrade) less over-excavation, the deepest where they overlap."""
@@ -182,11 +185,17 @@ class StackReader:
         for reader in (self.existing, self.finished, *self.bottoms.values()):
             reader.close()
 
+    def read_depth(self, window: Window) -> Arrays:
+        """The depth alone, of a site without layers."""
+        existing, finished = self.existing.read(window), self.finished.read(window)
+        return {"depth": np.subtract(finished, existing, out=finished if finished.dtype >= existing.dtype else None)}
+
     def read(self, window: Window) -> Arrays:
         """All fields of a window, see :data:`Arrays`; the base surfaces alone when the site has no layers."""
         stack = self.stack
         arrays: Arrays = {"existing": self.existing.read(window), "finished": self.finished.read(window)}
         if not stack.layered:
+            arrays["depth"] = arrays["finished"] - arrays["existing"]
             return arrays
         disturbed = self._disturbed(arrays, window)
         arrays["disturbed"] = disturbed

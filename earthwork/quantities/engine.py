@@ -26,11 +26,15 @@ from earthwork.quantities.tile import Tile
 Progress = Callable[[int, int], None]
 
 _BAND_ROWS = 256  #: least rows of a band of tiled files
-_STRIP_ROWS = 128  #: rows of a band of striped files: GDAL's cache holds them across the tiles of the band
+_STRIP_ROWS = 64  #: rows of a band of striped files: GDAL's cache holds them across the tiles of the band
 
 
 class Tally(Protocol):
-    """A question about the ground. Merging is associative, and always done from north to south."""
+    """A question about the ground. Merging is associative, and always done from north to south.
+
+    A tally that asks only for the depth of a site without layers may say ``depth_only = True``: when all do, the
+    surfaces are not kept.
+    """
 
     def empty(self) -> Tally:
         """The same question with nothing counted."""
@@ -94,6 +98,7 @@ class _Walk:
         self.tallies = tallies
         self.progress = progress
         self.grid: Grid = stack.grid
+        self.depth_only = not stack.layered and all(getattr(tally, "depth_only", False) for tally in tallies)
         self.edges = band_edges(self.grid.rows, stack.block, stack.block_start[0], band_rows)
         self.tile_cells = tile_cells
         self.lock = threading.Lock()
@@ -159,7 +164,8 @@ class _Walk:
         for left, right in pairwise(columns):
             if self.stop.is_set():
                 return
-            arrays = reader.read(Window(row, left, stop - row, right - left))
+            window = Window(row, left, stop - row, right - left)
+            arrays = reader.read_depth(window) if self.depth_only else reader.read(window)
             if not first:
                 edges_north.append({name: a[:2].copy() for name, a in arrays.items()})
             if not last:

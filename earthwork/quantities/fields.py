@@ -11,7 +11,7 @@ import numpy as np
 from numba import njit
 
 from earthwork.ground.stack import Stack
-from earthwork.quantities.split import split_depths
+from earthwork.quantities.split import split
 from earthwork.quantities.tile import Tile
 
 _FAST = {"reassoc", "nsz", "contract", "arcp"}
@@ -158,7 +158,7 @@ class Sums:
     def add_plain(self, tile: Tile) -> None:
         """Count a whole tile without layers, without holding its fields."""
         sums = np.zeros(8)
-        self._widen(*split_depths(tile.depth, np.empty((4, 0, 0)), sums))
+        self._widen(*split(tile.depth, np.empty((4, 0, 0)), sums))
         # The kernel's order is that of the base fields.
         self.values += sums
 

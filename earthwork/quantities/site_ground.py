@@ -9,6 +9,7 @@ from earthwork.errors import GroundError, Warning
 from earthwork.files.vectors import NamedPolygon, read_polygons
 from earthwork.ground import areas
 from earthwork.ground.areas import Rings
+from earthwork.ground.meet import SurfaceSet, open_ground
 from earthwork.ground.stack import (
     ExcavationLayer,
     ScarifyLayer,
@@ -17,7 +18,6 @@ from earthwork.ground.stack import (
     StratumLayer,
     StripLayer,
 )
-from earthwork.ground.meet import SurfaceSet, open_ground
 from earthwork.quantities.coverage import area_share
 from earthwork.site import Site
 from earthwork.site.model import AreaSpec

@@ -109,15 +109,22 @@ def _flat_row(up, row, down, flat, mixed, sums):
     return marks > zero
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
-def _extremes(flat, high, low):
-    """(greatest, least) of a row and the values so far."""
-    row_high = flat.dtype.type(0)
-    row_low = flat.dtype.type(0)
-    for j in range(flat.size):
-        row_high = max(row_high, flat[j])
-        row_low = min(row_low, flat[j])
-    return max(high, np.float64(row_high)), min(low, np.float64(row_low))
+@njit(cache=True, nogil=True, error_model="numpy")
+def _extremes(bits):
+    """Greatest and least of a row of depths without NaN, as the integers of their bits: these compare in vectors.
+
+    Positive floats order as their bits do; a negative one has a negative integer that is the greater the lower it is.
+    """
+    zero = bits.dtype.type(0)
+    lowest = bits.dtype.type(np.iinfo(bits.dtype).min)
+    high = zero
+    low = lowest
+    for j in range(bits.size):
+        here = bits[j]
+        high = here if here > high else high
+        below = here if here < zero else lowest
+        low = below if below > low else low
+    return high, low
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
@@ -131,8 +138,7 @@ def _keep_row(flat, cells, i):
         cells[3, i, j] = 1.0 if x > 0.0 else 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
-def split_depths(depth, cells, sums):
+def split(depth: np.ndarray, cells: np.ndarray, sums: np.ndarray) -> tuple[float, float]:
     """Split every cell of a tile at the zero line.
 
     Args:
@@ -144,19 +150,31 @@ def split_depths(depth, cells, sums):
     Returns:
         (greatest fill, least depth) [m]: (0, 0) where there is neither fill nor cut.
     """
+    width = depth.shape[1] - 2
+    flat, mixed = np.empty(width, depth.dtype), np.empty(width, depth.dtype)
+    extreme = np.zeros(2, depth.dtype)
+    integer = np.int32 if depth.dtype == np.float32 else np.int64
+    high, low = _split(depth, cells, sums, flat, flat.view(integer), mixed, extreme, extreme.view(integer))
+    return max(high, float(extreme[0])), min(low, float(extreme[1]))
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _split(depth, cells, sums, flat, bits, mixed, extreme, extreme_bits):
     h = depth.shape[0] - 2
     w = depth.shape[1] - 2
     keep = cells.shape[1] > 0
-    flat = np.empty(w, depth.dtype)
-    mixed = np.empty(w, depth.dtype)
     high = 0.0
     low = 0.0
+    highest = extreme_bits[0]
+    lowest = np.iinfo(bits.dtype).min
     for i in range(h):
         up = depth[i]
         row = depth[i + 1]
         down = depth[i + 2]
         any_mixed = _flat_row(up, row, down, flat, mixed, sums)
-        high, low = _extremes(flat, high, low)
+        row_high, row_low = _extremes(bits)
+        highest = max(highest, row_high)
+        lowest = max(lowest, row_low)
         if keep:
             _keep_row(flat, cells, i)
         if not any_mixed:
@@ -182,6 +200,9 @@ def split_depths(depth, cells, sums):
                 cells[1, i, j] = fill
                 cells[2, i, j] = cut_share
                 cells[3, i, j] = fill_share
+    extreme_bits[0] = highest
+    if lowest != np.iinfo(bits.dtype).min:
+        extreme_bits[1] = lowest
     return high, low
 
 
@@ -205,5 +226,5 @@ def split_cells(depth: np.ndarray) -> SplitCells:
     (0.25, 0.25, 0.5)
     """
     cells = np.empty((4, depth.shape[0] - 2, depth.shape[1] - 2))
-    split_depths(depth, cells, np.zeros(8))
+    split(depth, cells, np.zeros(8))
     return SplitCells(*cells)

@@ -9,7 +9,7 @@ from numba import njit
 
 from earthwork.ground.grid import Window
 from earthwork.ground.stack import DISTURBED_OVER_M, Arrays, Stack
-from earthwork.quantities.split import split_depths
+from earthwork.quantities.split import split
 
 
 class Tile:
@@ -57,10 +57,10 @@ class Tile:
         """What the fill rests on [m], (height, width)."""
         return self.stack.removal_bottom({name: a[1:-1, 1:-1] for name, a in self.arrays.items()})
 
-    @cached_property
+    @property
     def depth(self) -> np.ndarray:
         """Subgrade − stripped [m], + fill, with a one-cell rim: (height + 2, width + 2)."""
-        return self.stack.subgrade(self.arrays) - self.stack.stripped(self.arrays)
+        return self.arrays["depth"]
 
     @cached_property
     def weight(self) -> np.ndarray | None:
@@ -73,7 +73,7 @@ class Tile:
     def cells(self) -> np.ndarray:
         """Cut, fill [mean m over the cell], cut share, fill share: (4, height, width), 0 where no data."""
         cells = np.empty((4, self.window.height, self.window.width))
-        split_depths(self.depth, cells, np.zeros(8))
+        split(self.depth, cells, np.zeros(8))
         return cells
 
     @property

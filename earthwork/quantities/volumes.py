@@ -34,6 +34,8 @@ class VolumesTally:
         self.missing_rows = (np.inf, -np.inf)
         self.missing_columns = (np.inf, -np.inf)
 
+    depth_only = True  #: engine: without layers the depth is all that is asked for
+
     def empty(self) -> VolumesTally:
         return VolumesTally(self.ground)
 
