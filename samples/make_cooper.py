@@ -120,7 +120,7 @@ def beside(street: LineString, share: float, offset: float) -> tuple[float, floa
 
 def edges() -> np.ndarray:
     """Where along the street one lot ends and the next begins, as shares of its length."""
-    return np.linspace(0.075, 0.955, LOTS_PER_SIDE + 1)
+    return np.linspace(0.08, 0.955, LOTS_PER_SIDE + 1)
 
 
 def lot_shapes(street: LineString) -> dict[str, Polygon]:
@@ -198,10 +198,9 @@ def bank_tests(existing: np.ndarray) -> list[dict]:
     rows = []
     for number, (x, y, depth, water, dry) in enumerate(BANK_TESTS, 1):
         east, north = here(x, y)
-        column, row = ~LATTICE.transform * (east, north)
         rows.append({
             "test": f"D-{number}", "material": "lean clay", "easting": f"{east:.1f}", "northing": f"{north:.1f}",
-            "elevation": f"{float(existing[int(row), int(column)]) - depth:.1f}", "depth": depth,
+            "elevation": f"{float(existing[LATTICE.cell_at(east, north)]) - depth:.1f}", "depth": depth,
             "water_content_percent": water, "dry_density_lb_ft3": dry, "method": "drive cylinder",
         })  # fmt: skip
     return rows

@@ -209,8 +209,7 @@ def campus_drives(existing: np.ndarray) -> dict[str, tuple[LineString, list[floa
     """Centre line, stations (shares of the length) and elevations of each drive; gates lie on the ground."""
     drives = {}
     for name, line, stations, elevations in DRIVES:
-        column, row = ~LATTICE.transform * here(*line[0])
-        gate = float(existing[int(row), int(column)])
+        gate = float(existing[LATTICE.cell_at(*here(*line[0]))])
         drives[name] = smooth_line(there(line)), stations, [elevations[0] or gate, *elevations[1:]]
     return drives
 
@@ -295,8 +294,7 @@ def bank_tests(existing: np.ndarray, shale: np.ndarray) -> list[dict]:
     rows = []
     for number, (x, y, depth, water, dry, method) in enumerate(BANK_TESTS, 1):
         east, north = here(x, y)
-        column, row = ~LATTICE.transform * (east, north)
-        cell = int(row), int(column)
+        cell = LATTICE.cell_at(east, north)
         elevation = float(existing[cell]) - depth
         material = "topsoil" if depth < 0.15 else "loess" if elevation > shale[cell] else "shale"
         rows.append({

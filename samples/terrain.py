@@ -43,6 +43,10 @@ class Lattice:
         north = self.north - (np.arange(self.rows) + 0.5) * self.cell
         return np.meshgrid(east, north)
 
+    def cell_at(self, east: float, north: float) -> tuple[int, int]:
+        """Row and column of the cell that holds a place."""
+        return int((self.north - north) / self.cell), int((east - self.west) / self.cell)
+
     @property
     def transform(self) -> rasterio.Affine:
         return from_origin(self.west, self.north, self.cell, self.cell)

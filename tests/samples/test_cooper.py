@@ -1,0 +1,113 @@
+"""Cooper Ridge: US survey feet, eighteen lots, two clays; the program against plain numpy."""
+
+import csv
+
+import numpy as np
+import pytest
+import shapely
+
+import earthwork
+from tests.samples.ground_by_numpy import SAMPLES, Plan
+
+FOLDER = SAMPLES / "cooper-ridge"
+FT = 1200 / 3937
+WATER_AND_DRY = ("water_content_percent", "dry_density_lb_ft3")
+#: Ground length / map length at 36.02° N, 85.87° W, 195 m: k = 0.9999535 (Tennessee), R = 6,371 km, by hand.
+GROUND_SCALE = 1.000077
+
+
+@pytest.fixture(scope="module")
+def site():
+    return earthwork.Site.open(FOLDER / "site.toml")
+
+
+@pytest.fixture(scope="module")
+def volumes(site):
+    return earthwork.volumes(site).to_dict()
+
+
+@pytest.fixture(scope="module")
+def balance(site):
+    return earthwork.balance(site).to_dict()
+
+
+@pytest.fixture(scope="module")
+def by_numpy():
+    """Depths [m] of subgrade over stripped ground, area of a cell [m²], and the plan."""
+    plan = Plan(FOLDER)
+    limits = plan.inside("limits")
+    stripped = plan.elevation("existing") * FT - 0.1524 * (plan.inside("grading") & limits)
+    subgrade = plan.elevation("finished") * FT - 0.254 * plan.inside("houses")
+    subgrade = subgrade - 0.3556 * plan.inside("pavement") - 0.1524 * plan.inside("lawn")
+    depth = np.where(limits, subgrade - stripped, 0.0)
+    return depth, (3 * FT * GROUND_SCALE) ** 2, plan
+
+
+def test_foot_is_the_survey_foot(site):
+    assert site.units.foot_m == pytest.approx(FT, rel=1e-15)
+    assert site.model.over_excavation[0].depth == pytest.approx(3 * FT, rel=1e-15)
+
+
+def test_cells_are_three_survey_feet_on_the_ground(volumes):
+    grid = volumes["grid"]
+    assert grid["ground_scale"] == pytest.approx(GROUND_SCALE, abs=2e-6)
+    assert grid["cell_m"] == pytest.approx(3 * FT * grid["ground_scale"], rel=1e-12)
+
+
+def test_volumes_agree_with_numpy(volumes, by_numpy):
+    depth, cell, plan = by_numpy
+    total = volumes["total"]
+    assert total["cut_m3"] == pytest.approx(-depth[depth < 0].sum() * cell, rel=3e-3)
+    assert total["fill_m3"] == pytest.approx(depth[depth > 0].sum() * cell, rel=3e-3)
+    assert volumes["over_excavation_m3"] == pytest.approx(3 * FT * plan.inside("soft").sum() * cell, rel=2e-2)
+
+
+def test_lots_agree_with_numpy(volumes, by_numpy):
+    depth, cell, plan = by_numpy
+    east, north = plan.centres()
+    columns, lots = plan.features("lots")
+    assert [zone["zone"] for zone in volumes["zones"]] == list(columns["lot"])
+    assert len(lots) == 18
+    for lot, zone in zip(lots, volumes["zones"], strict=True):
+        assert len(zone["zone"]) >= 40
+        inside = shapely.contains_xy(lot, east, north)
+        # Cells on the lot line are counted whole or not at all here.
+        slack = 0.02 * np.abs(depth[inside]).sum() * cell + 1.0
+        assert zone["area_m2"] == pytest.approx(lot.area * (FT * GROUND_SCALE) ** 2, rel=1e-5)
+        assert zone["cut_minus_fill_m3"] == pytest.approx(-depth[inside].sum() * cell, abs=slack)
+
+
+def test_lots_and_the_rest_add_up_to_the_site(volumes):
+    parts = [*volumes["zones"], volumes["outside_zones"]]
+    for key in ("area_m2", "cut_m3", "fill_m3", "strip_m3", "section_m3", "over_excavation_m3", "scarify_m3"):
+        assert sum(part[key] for part in parts) == pytest.approx(volumes["total"][key], rel=1e-9), key
+
+
+def test_clay_by_hand(balance):
+    """98.05 lb/ft³ dry in the bank (120.6 moist at 23 %), 104.76 in the fill (0.97 × 108), 3 % lost."""
+    clay = next(row for row in balance["materials"] if row["material"] == "lean clay")
+    bank = clay["cut_bank_m3"] + clay["over_excavation_bank_m3"] + clay["allowance_bank_m3"]
+    assert clay["allowance_bank_m3"] == pytest.approx(420 * 0.764554857984, rel=1e-12)
+    assert clay["compacted_m3"] == pytest.approx(bank * (120.6 / 1.23) / (0.97 * 108) * 0.97, rel=1e-9)
+
+
+def test_borrow_comes_in_while_topsoil_leaves(balance):
+    assert [row["material"] for row in balance["imports"]] == ["river clay"]
+    assert [row["material"] for row in balance["exports"]] == ["topsoil"]
+    (borrow,) = balance["imports"]
+    assert borrow["compacted_m3"] == pytest.approx(-balance["surplus_compacted_m3"], rel=1e-9)
+    # 94 lb/ft³ in the pit, 0.97 × 106 in the fill
+    assert borrow["bank_m3"] == pytest.approx(borrow["compacted_m3"] * 0.97 * 106 / 94 / 0.97, rel=1e-9)
+    assert abs(balance["ledger_closure_t"]) < 1e-9 * sum(row["dry_mass_t"] for row in balance["ledger"])
+
+
+def test_figures_of_the_site_file_are_those_of_the_laboratory():
+    def rows_of(name):
+        with (FOLDER / "lab" / name).open(encoding="utf-8", newline="") as source:
+            return list(csv.DictReader(source))
+
+    water, dry = (np.array([float(r[k]) for r in rows_of("proctor.csv")]) for k in WATER_AND_DRY)
+    a, b, c = np.polyfit(water, dry, 2)
+    assert c - b**2 / (4 * a) == pytest.approx(108, rel=0.005)
+    assert -b / (2 * a) == pytest.approx(17.5, abs=0.4)
+    assert np.mean([float(r["dry_density_lb_ft3"]) for r in rows_of("bank.csv")]) == pytest.approx(98.05, rel=0.005)
