@@ -236,7 +236,7 @@ class StackReader:
         for i, stratum in enumerate(self.stack.strata[:-1]):
             name = f"stratum{i}"
             if stratum.bottom is None:
-                arrays[name] = top - stratum.thickness_m
+                arrays[name] = top - (stratum.thickness_m or 0.0)
             else:
                 arrays[name] = np.minimum(arrays[name], top)
             top = arrays[name]

@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from earthwork.errors import PlanError
 from earthwork.quantities.volumes import AreaVolumes
 from earthwork.site.model import SiteModel
-from earthwork.soils.card import SoilCard
+from earthwork.soils.card import SoilCard, State
 
 
 @dataclass(frozen=True)
@@ -166,7 +166,7 @@ def _material(
     )
 
 
-def _taken_m3(volume_m3: float, state: str, card: SoilCard) -> float:
+def _taken_m3(volume_m3: float, state: State, card: SoilCard) -> float:
     """Compacted volume that a negative allowance takes; topsoil and waste take none of the fill."""
     if card.use not in ("fill", "rock") or card.fill_dry_density_kg_m3 is None:
         return 0.0

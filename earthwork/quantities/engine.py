@@ -15,7 +15,7 @@ from collections import deque
 from collections.abc import Callable, Sequence
 from concurrent.futures import ThreadPoolExecutor
 from itertools import pairwise
-from typing import Protocol
+from typing import Any, Protocol
 
 import numpy as np
 
@@ -42,7 +42,7 @@ class Tally(Protocol):
     def add(self, tile: Tile) -> None:
         """Count a tile; called by one thread at a time for each instance."""
 
-    def merge(self, other: Tally) -> None:
+    def merge(self, other: Any) -> None:
         """Take over what another instance, of ground further on, has counted."""
 
 
