@@ -3,13 +3,13 @@
 import math
 
 import pytest
-from design_helpers import ArraySurface, grid_of, ground
 from shapely.geometry import LineString, box
 
 from earthwork.ground.design import build_design
 from earthwork.ground.design_checks import inspect_design
 from earthwork.ground.elements import PadShape, RoadShape, SideSlope
 from earthwork.units import METRIC, UnitSystem
+from tests.ground.design_helpers import ArraySurface, grid_of, ground
 
 TWO = SideSlope(cut=2.0, fill=2.0)
 

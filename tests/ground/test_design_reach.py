@@ -4,7 +4,6 @@ import math
 
 import numpy as np
 import pytest
-from design_helpers import ArraySurface, built, centres, grid_of, ground, volumes
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from shapely import affinity
@@ -14,6 +13,7 @@ from earthwork.errors import GroundError
 from earthwork.ground.design import CUT_SLOPE, FILL_SLOPE, INSIDE, UNTOUCHED, build_design
 from earthwork.ground.elements import PadShape, RoadShape, SideSlope
 from earthwork.ground.grid import Window
+from tests.ground.design_helpers import ArraySurface, built, centres, grid_of, ground, volumes
 
 TWO = SideSlope(cut=2.0, fill=2.0)
 

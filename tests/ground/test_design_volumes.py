@@ -4,12 +4,12 @@ import math
 
 import numpy as np
 import pytest
-from design_helpers import exact_fill, grid_of, ground, volumes
 from shapely import affinity
 from shapely.geometry import LineString, Polygon, box
 
 from earthwork.ground.design import build_design
 from earthwork.ground.elements import PadShape, RoadShape, SideSlope
+from tests.ground.design_helpers import exact_fill, grid_of, ground, volumes
 
 TWO = SideSlope(cut=2.0, fill=2.0)
 
