@@ -84,8 +84,8 @@ class Design:
         return self.existing.block
 
     @property
-    def block_offset(self) -> tuple[int, int]:
-        return getattr(self.existing, "block_offset", (0, 0))
+    def block_start(self) -> tuple[int, int]:
+        return self.existing.block_start
 
     @property
     def lattice(self) -> Lattice:

@@ -283,9 +283,9 @@ def _positive(field: np.ndarray, window: Window, design: Design) -> list[Polygon
     east = grid.west + np.clip(columns, 0, grid.columns) * grid.cell_east
     north = grid.north - np.clip(rows, 0, grid.rows) * grid.cell_north
     tracer = contourpy.contour_generator(east, north, field, name="serial", fill_type="OuterOffset")
-    points, offsets = tracer.filled(0.0, np.inf)
+    found: Any = tracer.filled(0.0, np.inf)
     polygons = []
-    for outline, ring_offsets in zip(points, offsets, strict=True):
+    for outline, ring_offsets in zip(*found, strict=True):
         rings = [outline[a:b] for a, b in pairwise(ring_offsets)]
         polygon = Polygon(rings[0], rings[1:])
         polygons.append(polygon if polygon.is_valid else shapely.make_valid(polygon))

@@ -84,6 +84,7 @@ class Stack:
     scarifies: tuple[ScarifyLayer, ...] = ()
     strata: tuple[StratumLayer, ...] = ()
     bands_below_m: tuple[tuple[float, str], ...] = ()  #: depths of the fill's by_depth rows and what they start from
+    built_to_subgrade: bool = False  #: ``finished`` is the subgrade, and the sections lie on top of it
     moving: bool = field(default=False)  #: whether the share that a grade shift moves is wanted
 
     @property
@@ -129,7 +130,11 @@ class Stack:
             if layer.bottom is not None:
                 finished += np.where(arrays[f"excavation{i}"] > 0, 0.0 * arrays[f"excavation_bottom{i}"], 0.0)
         arrays["stripped"] = existing - sum(arrays[f"strip{i}"] for i in range(len(self.strips)))
-        arrays["subgrade"] = finished - sum(arrays[f"section{i}"] for i in range(len(self.sections)))
+        laid = sum(arrays[f"section{i}"] for i in range(len(self.sections)))
+        if self.built_to_subgrade:
+            arrays["subgrade"], arrays["finished"] = finished, finished + laid
+        else:
+            arrays["subgrade"] = finished - laid
         arrays["depth"] = arrays["subgrade"] - arrays["stripped"]
 
     def shifted(self, arrays: Arrays, shift_m: float) -> Arrays:

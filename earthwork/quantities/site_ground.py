@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from earthwork.errors import GroundError, Warning
 from earthwork.files.vectors import NamedPolygon, read_polygons
@@ -18,9 +18,13 @@ from earthwork.ground.stack import (
     StratumLayer,
     StripLayer,
 )
+from earthwork.ground.surfaces import Surface
 from earthwork.quantities.coverage import area_share
 from earthwork.site import Site
 from earthwork.site.model import AreaSpec
+
+if TYPE_CHECKING:
+    from earthwork.ground.open_design import BuiltDesign
 
 
 @dataclass(frozen=True)
@@ -29,6 +33,7 @@ class SiteGround:
 
     stack: Stack
     surfaces: SurfaceSet
+    design: BuiltDesign | None = None  #: what is built, where the site has a [design]
     zone_names: tuple[str, ...] = ()
     zones: Rings | None = None
     zone_shapes: tuple[Any, ...] = ()
@@ -94,19 +99,22 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
     """
     opener = _Opener(site)
     model = site.model
-    if opener.surfaces.finished is None:
-        raise GroundError(f"{site.name}: [design] gives no finished surface here; give ground.finished")
     # Without limits the site is what all surfaces cover: in another CRS that is not a whole rectangle of cells.
     limits = opener.shape(model.ground.limits, "ground.limits") if model.ground.limits else opener.surfaces.footprint
-    worked = _worked(opener)
+    design = _design(opener, limits)
+    disturbed = opener.rings(model.ground.disturbed, "ground.disturbed")
+    worked = None if model.ground.disturbed else _worked(opener)
+    if design is not None and disturbed is None:
+        disturbed, worked = areas.rings_on(opener.grid, [areas.union_area([design.lines.area, *(worked or [])])]), None
     stack = Stack(
         grid=opener.grid,
         existing=opener.surfaces.existing,
-        finished=opener.surfaces.finished,
+        finished=_finished(opener, design),
+        built_to_subgrade=design is not None and design.elevation_is == "subgrade",
         coverage=area_share,
         limits=areas.rings_on(opener.grid, [limits]) if limits is not None else None,
-        disturbed=opener.rings(model.ground.disturbed, "ground.disturbed"),
-        worked=worked,
+        disturbed=disturbed,
+        worked=areas.rings_on(opener.grid, [areas.union_area(worked)]) if worked else None,
         move=opener.rings(model.balance.shift_area, "balance.shift_area") if moving else None,
         moving=moving,
         bands_below_m=tuple((row.below, row.measured_from) for row in model.fill.by_depth) if model.fill else (),
@@ -116,20 +124,39 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
     return SiteGround(
         stack=stack,
         surfaces=opener.surfaces,
+        design=design,
         limits_area_m2=areas.ground_area_m2(limits, opener.grid) if limits is not None else None,
         warnings=tuple(dict.fromkeys(opener.warnings)),
         **zones,
     )
 
 
-def _worked(opener: _Opener) -> Rings | None:
+def _design(opener: _Opener, limits: Any) -> BuiltDesign | None:
+    """The pads and roads of a site that is designed by them, with what they cannot do as drawn among the warnings."""
+    site, surfaces = opener.site, opener.surfaces
+    if site.model.design is None:
+        return None
+    from earthwork.ground.open_design import open_design
+
+    design = open_design(site, opener.grid, surfaces.existing, opener.polygons, limits=limits)
+    opener.warnings += design.warnings
+    opener.warnings += [finding.warning(site.units) for finding in design.inspection.findings]
+    return design
+
+
+def _finished(opener: _Opener, design: BuiltDesign | None) -> Surface:
+    surface = opener.surfaces.finished if design is None else design.design
+    if surface is None:
+        raise GroundError(f"{opener.site.name}: there is no finished surface; give ground.finished or a [design]")
+    return surface
+
+
+def _worked(opener: _Opener) -> list[Any]:
     """Areas that sections and over-excavations name: disturbed whatever the surfaces say."""
     model = opener.site.model
-    if model.ground.disturbed is not None:
-        return None
     shapes = [opener.shape(s.area, f'section "{s.name}"') for s in model.section if s.area]
     shapes += [opener.shape(o.area, f'over_excavation "{o.name}"', o.spread) for o in model.over_excavation if o.area]
-    return areas.rings_on(opener.grid, [areas.union_area(shapes)]) if shapes else None
+    return shapes
 
 
 def _layers(opener: _Opener) -> dict[str, Any]:

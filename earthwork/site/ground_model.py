@@ -2,12 +2,23 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import Literal
 
 from pydantic import Field, model_validator
 
 from earthwork.site.base import Area, Section, SurfaceSpec
-from earthwork.site.values import Distance, Length, Point, PositiveNumber, SoilVolume, Text, Thickness
+from earthwork.site.values import (
+    Distance,
+    Elevation,
+    Length,
+    Percent,
+    Point,
+    PositiveNumber,
+    SoilVolume,
+    Text,
+    Thickness,
+)
 
 _DISTURBED = "where; default: the disturbed area"
 
@@ -47,17 +58,77 @@ class Ground(Section):
     )
 
 
+class RoadProfile(Section):
+    """Elevations along one road, where its line carries none."""
+
+    road: Text = Field(description="name of the road")
+    points: tuple[tuple[Distance, Elevation], ...] = Field(
+        min_length=2, description="distance from the start of the line, and elevation; straight in between"
+    )
+
+    @model_validator(mode="after")
+    def _rising(self) -> RoadProfile:
+        at = [point[0] for point in self.points]
+        if any(b <= a for a, b in pairwise(at)):
+            raise ValueError("give the points in order of distance, each farther than the one before")
+        return self
+
+
+class DesignRoads(Section):
+    """Roads and ramps as prisms along lines; they end where they enter a pad."""
+
+    lines: Area = Field(description="lines of the crowns; their vertices carry elevations, or profile does")
+    name: Text = Field(default="name", description="attribute with the road's name")
+    width: Length = Field(description="whole width")
+    own_width: Text | None = Field(default=None, description="attribute with a road's own width, where it differs")
+    crossfall: Percent = Field(default=0.0, description="fall across the road, percent")
+    falls: Literal["both sides", "left to right"] = Field(
+        default="both sides", description="from the crown to both sides, or all across, seen along the line"
+    )
+    profile: tuple[RoadProfile, ...] = Field(default=(), description="elevations along roads whose lines have none")
+
+
 class Design(Section):
     """Instead of ground.finished: pads built with side slopes that daylight on the existing ground."""
 
-    pads: Area = Field(description="polygons of the pads")
+    pads: Area = Field(description="polygons of the pads; they must not overlap")
     name: Text = Field(default="name", description="attribute with the pad's name")
-    elevation: Text = Field(
-        default="elevation", description="attribute with its elevation, in the site's unit"
+    elevation: Text = Field(default="elevation", description="attribute with its elevation, in the site's unit")
+    elevation_is: Literal["finished", "subgrade"] = Field(
+        description="which surface the elevations give; with subgrade, sections are laid on top of what is built"
     )
-    elevation_is: Literal["finished", "subgrade"] = Field(description="which surface those elevations give")
+    elevation_from: Literal["attribute", "vertices"] = Field(
+        default="attribute", description="or the heights of the polygons' vertices, triangles in between"
+    )
+    fall: Text | None = Field(
+        default=None, description="attribute with the fall of a tilted pad, percent; the elevation is at its centroid"
+    )
+    fall_direction: Text | None = Field(
+        default=None, description="attribute with where it falls to, degrees clockwise from grid north"
+    )
     cut_slope: PositiveNumber = Field(description="horizontal run per unit of height, in cut")
     fill_slope: PositiveNumber = Field(description="horizontal run per unit of height, in fill")
+    own_cut_slope: Text | None = Field(default=None, description="attribute with a pad's own cut slope")
+    own_fill_slope: Text | None = Field(default=None, description="attribute with a pad's own fill slope")
+    corners: Literal["round", "mitred"] = Field(
+        default="round", description="slopes run around convex corners as cones, or meet in a line"
+    )
+    bench_every: Length | None = Field(default=None, description="height between benches in slopes; default: none")
+    bench_width: Length | None = Field(default=None, description="width of the level benches")
+    retaining: Area | None = Field(
+        default=None, description="lines along the edges of pads over which no slope may spread"
+    )
+    roads: DesignRoads | None = Field(default=None, description="roads and ramps")
+
+    @model_validator(mode="after")
+    def _pairs(self) -> Design:
+        if (self.bench_every is None) != (self.bench_width is None):
+            raise ValueError("give bench_every and bench_width together")
+        if (self.fall is None) != (self.fall_direction is None):
+            raise ValueError("give fall and fall_direction together")
+        if self.elevation_from == "vertices" and self.fall is not None:
+            raise ValueError("give elevations by vertices, or one elevation and a fall, not both")
+        return self
 
 
 class Zones(Section):

@@ -13,7 +13,7 @@ class ArraySurface:
 
     dtype = np.dtype(np.float64)
     block = None
-    block_offset = (0, 0)
+    block_start = (0, 0)
     resampling = "none"
 
     def __init__(self, values):
