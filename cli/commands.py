@@ -1,0 +1,114 @@
+"""The commands. Each parses, calls one library function of the same name, and prints."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+import earthwork
+
+from .options import Shared, SiteFile, with_shared
+
+app = typer.Typer(
+    name="earthwork",
+    help="Cut and fill, soil and balance of a site, from two surfaces and a site file. "
+    "Exit codes: 0 done, 2 bad input or usage, 3 a warning with --strict, 130 interrupted.",
+    no_args_is_help=True,
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 100},
+)
+
+
+def _version(asked: bool) -> None:
+    if asked:
+        print(f"earthwork {earthwork.__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def root(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version and end.")
+    ] = False,
+) -> None:
+    """Options before the command."""
+
+
+@app.command()
+def new(
+    directory: Annotated[Path, typer.Argument(metavar="DIR", help="A folder that is new or empty.")],
+    units: Annotated[
+        str, typer.Option("--units", metavar="metric|us", help="Units of its numbers.")
+    ] = "metric",
+) -> None:
+    """Write a commented starter site that runs at once, with small surfaces and a plan of an invented site."""
+    from earthwork.files.starter import new
+
+    site = new(directory, units=units)
+    print(f"{site}\nTry:  earthwork volumes {site}")
+
+
+@app.command()
+@with_shared
+def check(site: SiteFile, how: Shared) -> None:
+    """Check a site file and every file it names, and say which commands it has everything for."""
+    from .flow import perform
+
+    perform("check", site, how)
+
+
+@app.command()
+@with_shared
+def volumes(
+    site: Annotated[
+        Path | None, typer.Argument(metavar="SITE", help="The site file.")
+    ] = None,
+    existing: Annotated[Path | None, typer.Option(metavar="FILE", help="Existing ground, a raster.")] = None,
+    finished: Annotated[Path | None, typer.Option(metavar="FILE", help="Finished ground, a raster.")] = None,
+    limits: Annotated[
+        Path | None, typer.Option(metavar="FILE", help="Polygons; only ground inside counts.")
+    ] = None,
+    zones: Annotated[Path | None, typer.Option(metavar="FILE", help="Polygons to report by.")] = None,
+    zone_name: Annotated[
+        str | None, typer.Option(metavar="FIELD", help="Attribute with a zone's name.")
+    ] = None,
+    nodata: Annotated[
+        float | None, typer.Option(metavar="X", help="Value for no data in both rasters.")
+    ] = None,
+    units: Annotated[str | None, typer.Option(metavar="metric|us", help="Units; default metric.")] = None,
+    *,
+    how: Shared,
+) -> None:
+    """Cut and fill between stripped ground and subgrade, by zone and material.
+
+    Runs from a site file, or straight from two rasters with --existing and --finished.
+    """
+    from .flow import perform, site_of_files
+
+    files = {
+        "existing": existing, "finished": finished, "limits": limits, "zones": zones, "zone_name": zone_name,
+        "nodata": nodata, "units": units,
+    }  # fmt: skip
+    perform("volumes", site_of_files(site, files), how)
+
+
+@app.command()
+@with_shared
+def soil(site: SiteFile, how: Shared) -> None:
+    """The soil card of each material: densities, shrink and swell, water contents, placing target."""
+    from .flow import perform
+
+    perform("soil", site, how)
+
+
+@app.command()
+@with_shared
+def balance(site: SiteFile, how: Shared) -> None:
+    """Balance the site in dry mass: surplus or shortage, imports, exports, the grade shift that mends it."""
+    from .flow import perform
+
+    perform("balance", site, how)

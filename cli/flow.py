@@ -1,0 +1,71 @@
+"""The one way that every command goes: run the library, write files, print, warn, and end."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import typer
+
+from .options import Shared
+from .progress import ProgressBar
+from .terminal import print_json, print_page, say, say_warnings
+
+if TYPE_CHECKING:
+    from earthwork.site import Site
+
+
+def perform(command: str, site: Path | Site, how: Shared) -> None:
+    """Run a command on a site and show its result.
+
+    Raises:
+        EarthworkError: bad input.
+        typer.Exit: code 3, when ``how.strict`` and there is a warning.
+    """
+    from earthwork.reporting.runner import run_command
+    from earthwork.site import load_site
+
+    if how.overwrite and how.out is None:
+        raise typer.BadParameter("--overwrite replaces files in a folder; give the folder with --out DIR")
+    with ProgressBar(command, quiet=how.quiet) as progress:
+        outcome = run_command(
+            command,
+            load_site(site) if isinstance(site, Path) else site,
+            out=how.out,
+            overwrite=how.overwrite,
+            threads=how.threads,
+            progress=progress,
+        )
+    say_warnings(outcome.result.warnings)
+    if not how.quiet:
+        for file in outcome.written:
+            say(f"wrote {file}")
+    if how.json:
+        print_json(outcome.json())
+    else:
+        print_page(outcome.page())
+    if how.strict and outcome.result.warnings:
+        raise typer.Exit(3)
+
+
+def site_of_files(site: Path | None, files: dict[str, Any]) -> Path | Site:
+    """The site file, or a site made of two rasters and what was given with them; never both."""
+    given = [f"--{name.replace('_', '-')}" for name, value in files.items() if value is not None]
+    if site is not None:
+        if given:
+            raise typer.BadParameter(
+                f"{', '.join(given)} belong to a run without a site file; keep one of the two"
+            )
+        return site
+    for name in ("existing", "finished"):
+        if files[name] is None:
+            raise typer.BadParameter(
+                f"give a site file, or both --existing and --finished (--{name} is missing)"
+            )
+    if files["zone_name"] is not None and files["zones"] is None:
+        raise typer.BadParameter("--zone-name names an attribute of --zones; give --zones FILE too")
+    if files["units"] not in (None, "metric", "us"):
+        raise typer.BadParameter(f"--units is {files['units']!r}; it must be metric or us")
+    from earthwork.site.load import site_from_files
+
+    return site_from_files(**{name: value for name, value in files.items() if value is not None})

@@ -1,0 +1,86 @@
+"""The entry point ``earthwork``: sets the streams up, runs a command, and turns every end into an exit code.
+
+0 done · 2 bad input, bad usage, or no room to write · 3 a warning with ``--strict`` · 130 interrupted.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import errno
+import os
+import signal
+import sys
+from collections.abc import Sequence
+from typing import Any
+
+import typer
+
+from earthwork.errors import EarthworkError
+
+from .commands import app
+from .terminal import prepare_streams, say, say_error
+
+#: Base of the usage errors, wherever the installed typer keeps it.
+_UsageError: Any = typer.BadParameter.__mro__[2]
+assert _UsageError.__name__ == "ClickException"
+
+_NO_ROOM = (errno.ENOSPC, errno.EDQUOT, errno.EFBIG)
+
+
+def run(arguments: Sequence[str] | None = None) -> None:
+    """Run a command line and leave the process with its exit code."""
+    prepare_streams()
+    signal.signal(signal.SIGTERM, _terminate)
+    code = main(arguments)
+    with contextlib.suppress(OSError, ValueError):
+        sys.stderr.flush()
+    sys.exit(code)
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run a command line; the exit code."""
+    try:
+        code = app(
+            args=None if arguments is None else list(arguments), prog_name="earthwork", standalone_mode=False
+        )
+        sys.stdout.flush()
+        return int(code or 0)
+    except typer.Exit as end:
+        return int(end.exit_code)
+    except _UsageError as error:
+        error.show()
+        return 2
+    except EarthworkError as error:
+        say_error(str(error))
+        return 2
+    except (KeyboardInterrupt, typer.Abort):
+        say("interrupted; nothing was written")
+        return 130
+    except BrokenPipeError:
+        return _reader_gone()
+    except MemoryError:
+        say_error("not enough memory; try --threads 1, or a coarser ground.cell")
+        return 2
+    except OSError as error:
+        if error.errno not in _NO_ROOM:
+            raise
+        _discard_stdout()
+        say_error(f"cannot write the result: {(error.strerror or str(error)).lower()}")
+        return 2
+
+
+def _reader_gone() -> int:
+    """Whoever read stdout has had enough, as with ``| head``: that is no failure."""
+    _discard_stdout()
+    return 0
+
+
+def _discard_stdout() -> None:
+    """Send what is still in stdout's buffer nowhere, so that the exit does not fail on it again."""
+    with contextlib.suppress(OSError, ValueError):
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+
+
+def _terminate(number: int, frame: Any) -> None:
+    """A request to end is taken as an interrupt, so that nothing half written stays."""
+    raise KeyboardInterrupt

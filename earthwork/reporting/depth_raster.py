@@ -1,0 +1,65 @@
+"""The depth raster: written tile by tile while the ground is walked, so that it is never whole in memory."""
+
+from __future__ import annotations
+
+import threading
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from earthwork.files.gis import DepthRasterWriter
+from earthwork.units import UnitSystem
+
+if TYPE_CHECKING:
+    from earthwork.quantities.tile import Tile
+
+DESCRIPTION = "depth: subgrade - stripped ground; + fill, - cut"
+
+
+class DepthRasterTally:
+    """Hands every tile's depths to one file, in the site's unit of length; :meth:`finish` closes it.
+
+    Cells outside the limits are no data.
+    """
+
+    def __init__(self, path: Path, units: UnitSystem) -> None:
+        self.path = path
+        self.units = units
+        self._shared = _Shared()
+
+    def empty(self) -> DepthRasterTally:
+        other = DepthRasterTally(self.path, self.units)
+        other._shared = self._shared
+        return other
+
+    def add(self, tile: Tile) -> None:
+        depth = tile.depth[1:-1, 1:-1]
+        if tile.weight is not None:
+            depth = np.where(tile.weight > 0, depth, np.nan)
+        with self._shared.lock:
+            if self._shared.writer is None:
+                self._shared.writer = DepthRasterWriter(
+                    self.path,
+                    tile.grid,
+                    description=DESCRIPTION,
+                    unit=self.units.unit("length"),
+                    factor=1 / self.units.factor("length"),
+                )
+        self._shared.writer.write(tile.window, depth)
+
+    def merge(self, other: DepthRasterTally) -> None:
+        """Nothing: all instances write into the same file."""
+
+    def finish(self) -> None:
+        """Complete the file."""
+        if self._shared.writer is not None:
+            self._shared.writer.finish()
+
+
+class _Shared:
+    """What all instances of one tally write with."""
+
+    def __init__(self) -> None:
+        self.lock = threading.Lock()
+        self.writer: DepthRasterWriter | None = None
