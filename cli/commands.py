@@ -41,9 +41,7 @@ def root(
 @app.command()
 def new(
     directory: Annotated[Path, typer.Argument(metavar="DIR", help="A folder that is new or empty.")],
-    units: Annotated[
-        str, typer.Option("--units", metavar="metric|us", help="Units of its numbers.")
-    ] = "metric",
+    units: Annotated[str, typer.Option("--units", metavar="metric|us", help="Units of its numbers.")] = "metric",
 ) -> None:
     """Write a commented starter site that runs at once, with small surfaces and a plan of an invented site."""
     from earthwork.files.starter import new
@@ -64,21 +62,13 @@ def check(site: SiteFile, how: Shared) -> None:
 @app.command()
 @with_shared
 def volumes(
-    site: Annotated[
-        Path | None, typer.Argument(metavar="SITE", help="The site file.")
-    ] = None,
+    site: Annotated[Path | None, typer.Argument(metavar="SITE", help="The site file.")] = None,
     existing: Annotated[Path | None, typer.Option(metavar="FILE", help="Existing ground, a raster.")] = None,
     finished: Annotated[Path | None, typer.Option(metavar="FILE", help="Finished ground, a raster.")] = None,
-    limits: Annotated[
-        Path | None, typer.Option(metavar="FILE", help="Polygons; only ground inside counts.")
-    ] = None,
+    limits: Annotated[Path | None, typer.Option(metavar="FILE", help="Polygons; only ground inside counts.")] = None,
     zones: Annotated[Path | None, typer.Option(metavar="FILE", help="Polygons to report by.")] = None,
-    zone_name: Annotated[
-        str | None, typer.Option(metavar="FIELD", help="Attribute with a zone's name.")
-    ] = None,
-    nodata: Annotated[
-        float | None, typer.Option(metavar="X", help="Value for no data in both rasters.")
-    ] = None,
+    zone_name: Annotated[str | None, typer.Option(metavar="FIELD", help="Attribute with a zone's name.")] = None,
+    nodata: Annotated[float | None, typer.Option(metavar="X", help="Value for no data in both rasters.")] = None,
     units: Annotated[str | None, typer.Option(metavar="metric|us", help="Units; default metric.")] = None,
     *,
     how: Shared,

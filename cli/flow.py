@@ -53,15 +53,11 @@ def site_of_files(site: Path | None, files: dict[str, Any]) -> Path | Site:
     given = [f"--{name.replace('_', '-')}" for name, value in files.items() if value is not None]
     if site is not None:
         if given:
-            raise typer.BadParameter(
-                f"{', '.join(given)} belong to a run without a site file; keep one of the two"
-            )
+            raise typer.BadParameter(f"{', '.join(given)} belong to a run without a site file; keep one of the two")
         return site
     for name in ("existing", "finished"):
         if files[name] is None:
-            raise typer.BadParameter(
-                f"give a site file, or both --existing and --finished (--{name} is missing)"
-            )
+            raise typer.BadParameter(f"give a site file, or both --existing and --finished (--{name} is missing)")
     if files["zone_name"] is not None and files["zones"] is None:
         raise typer.BadParameter("--zone-name names an attribute of --zones; give --zones FILE too")
     if files["units"] not in (None, "metric", "us"):

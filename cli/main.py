@@ -40,9 +40,7 @@ def run(arguments: Sequence[str] | None = None) -> None:
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run a command line; the exit code."""
     try:
-        code = app(
-            args=None if arguments is None else list(arguments), prog_name="earthwork", standalone_mode=False
-        )
+        code = app(args=None if arguments is None else list(arguments), prog_name="earthwork", standalone_mode=False)
         sys.stdout.flush()
         return int(code or 0)
     except typer.Exit as end:

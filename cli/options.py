@@ -34,9 +34,7 @@ _DECLARED: dict[str, tuple[Any, Any]] = {
     "out": (
         Annotated[
             Path | None,
-            typer.Option(
-                "--out", metavar="DIR", help="Write tables (CSV) and maps (GeoTIFF, GeoPackage, PNG) there."
-            ),
+            typer.Option("--out", metavar="DIR", help="Write tables (CSV) and maps (GeoTIFF, GeoPackage, PNG) there."),
         ],
         None,
     ),
@@ -55,9 +53,7 @@ _DECLARED: dict[str, tuple[Any, Any]] = {
     "threads": (
         Annotated[
             int | None,
-            typer.Option(
-                "--threads", metavar="N", min=1, help="Threads; the result is the same for any number."
-            ),
+            typer.Option("--threads", metavar="N", min=1, help="Threads; the result is the same for any number."),
         ],
         None,
     ),
@@ -68,9 +64,7 @@ def with_shared(command: Callable[..., None]) -> Callable[..., None]:
     """Give a command the shared options: its parameter ``how: Shared`` is filled from them."""
     hints = get_type_hints(command, include_extras=True)
     own = [
-        p.replace(annotation=hints[p.name])
-        for p in inspect.signature(command).parameters.values()
-        if p.name != "how"
+        p.replace(annotation=hints[p.name]) for p in inspect.signature(command).parameters.values() if p.name != "how"
     ]
     extra = [
         inspect.Parameter(name, inspect.Parameter.KEYWORD_ONLY, default=default, annotation=annotation)

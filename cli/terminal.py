@@ -28,8 +28,7 @@ def _plain_characters(error: UnicodeError) -> tuple[str, int]:
         raise error
     text = error.object[error.start : error.end]
     plain = "".join(
-        _PLAIN.get(c) or unicodedata.normalize("NFKD", c).encode("ascii", "ignore").decode() or "?"
-        for c in text
+        _PLAIN.get(c) or unicodedata.normalize("NFKD", c).encode("ascii", "ignore").decode() or "?" for c in text
     )
     return plain, error.end
 
@@ -114,9 +113,7 @@ def print_page(page: Page) -> None:
         elif isinstance(block, Table):
             console.print(_table(block))
             if block.left_out:
-                console.print(
-                    Text(f"  … and {block.left_out:,} more rows: all are in --json and in --out DIR")
-                )
+                console.print(Text(f"  … and {block.left_out:,} more rows: all are in --json and in --out DIR"))
         else:
             console.print(_notes(block.lines))
     lines = (line.rstrip() for line in sheet.getvalue().splitlines())

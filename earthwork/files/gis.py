@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import threading
+import warnings
 from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -37,7 +38,7 @@ class DepthRasterWriter:
 
     def __init__(self, path: Path, grid: Grid, *, description: str, unit: str, factor: float = 1.0) -> None:
         import rasterio
-        from rasterio.transform import from_origin
+        from affine import Affine
 
         self.grid = grid
         self.factor = np.float32(factor)
@@ -57,7 +58,7 @@ class DepthRasterWriter:
                 count=1,
                 dtype="float32",
                 crs=grid.crs.to_wkt() if grid.crs is not None else None,
-                transform=from_origin(grid.west, grid.north, grid.cell_east, grid.cell_north),
+                transform=Affine(grid.cell_east, 0.0, grid.west, 0.0, -grid.cell_north, grid.north),
                 nodata=_NODATA,
                 tiled=True,
                 blockxsize=_BLOCK,
@@ -77,9 +78,7 @@ class DepthRasterWriter:
         values[~np.isfinite(values)] = _NODATA
         with self._lock:
             for block_row in range(window.row // _BLOCK, -(-(window.row + window.height) // _BLOCK)):
-                for block_column in range(
-                    window.column // _BLOCK, -(-(window.column + window.width) // _BLOCK)
-                ):
+                for block_column in range(window.column // _BLOCK, -(-(window.column + window.width) // _BLOCK)):
                     self._add((block_row, block_column), window, values)
 
     def _add(self, block: tuple[int, int], window: Window, values: np.ndarray) -> None:
@@ -194,6 +193,8 @@ def write_shapes(
     kind = kinds.pop() if len(kinds) == 1 else ("MultiPolygon" if several else "Unknown")
     if kind == "MultiPolygon":
         shapes = [s if type(s).__name__ == "MultiPolygon" else shapely.MultiPolygon([s]) for s in shapes]
+    # A local grid has no CRS, and its user has been told so.
+    warnings.filterwarnings("ignore", message="'crs' was not provided", module="earthwork")
     try:
         pyogrio.raw.write(
             path,

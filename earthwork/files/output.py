@@ -64,8 +64,7 @@ class OutputFolder:
         if there and not self.overwrite:
             names = ", ".join(there[:3]) + (f" and {len(there) - 3} more" if len(there) > 3 else "")
             raise OutputError(
-                f"{self.directory}: has {names} already. "
-                "Give another folder with --out, or --overwrite to replace them"
+                f"{self.directory}: has {names} already. Give another folder with --out, or --overwrite to replace them"
             )
         with output_errors(self.directory):
             self._make(self.directory)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from earthwork.files.output import OutputFolder
 from earthwork.reporting.basis import basis
 from earthwork.reporting.display import display_key, plain, show
 from earthwork.reporting.page import Block, Column, Facts, Notes, Page, table_of
@@ -44,9 +45,7 @@ def page(site: Site, result: Any) -> Page:
         Facts(heading="Balance", rows=_answer(site, balance)),
         table_of(balance["materials"], _MATERIAL_COLUMNS, site.units, heading=heading, text_columns=2),
     ]
-    moves = [{"way": "in", **m} for m in balance["imports"]] + [
-        {"way": "out", **m} for m in balance["exports"]
-    ]
+    moves = [{"way": "in", **m} for m in balance["imports"]] + [{"way": "out", **m} for m in balance["exports"]]
     if moves:
         blocks.append(table_of(moves, _MOVE_COLUMNS, site.units, heading="Over the gate", text_columns=3))
     else:
@@ -134,3 +133,31 @@ def title_of(result: Result) -> str:
     surplus = result.to_dict()["surplus_compacted_m3"]
     word = "Surplus" if surplus >= 0 else "Shortage"
     return f"{word} {show(abs(surplus), 'soil_volume', result.units)} compacted"
+
+
+def tallies(site: Site, folder: OutputFolder) -> tuple[Any, ...]:
+    """What gathers the maps while the ground is walked."""
+    from earthwork.reporting.maps import map_tallies
+
+    return map_tallies(site, folder, "balance")
+
+
+def draw(site: Site, result: Any, folder: OutputFolder, gathered: Any) -> None:
+    """Write the maps and the curve of a **balance** result."""
+    from earthwork.reporting.balance_curve import draw_balance_curve
+    from earthwork.reporting.maps import write_maps
+
+    write_maps(site, result.volumes, folder, "balance", gathered, subtitle=title_of(result))
+    content = result.to_dict()
+    curve = [(point["shift_m"], point["surplus_compacted_m3"]) for point in content["grade_curve"]]
+    if len(curve) > 1:
+        shift = content["grade_shift"]
+        draw_balance_curve(
+            curve,
+            folder.path("balance_curve.png"),
+            units=site.units,
+            title=f"{site.name}: what a shift of grade does",
+            target_m3=site.model.balance.target_surplus,
+            shift_m=shift["shift_m"] if shift else None,
+            sd_m3=content["surplus_compacted_sd_m3"],
+        )

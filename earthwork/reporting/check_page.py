@@ -49,7 +49,6 @@ def _files(site: Site) -> Table:
 
 def _commands(checked: dict[str, Any]) -> Table:
     rows = tuple(
-        (c["command"], "ready" if c["ready"] else "needs " + " and ".join(c["missing"]))
-        for c in checked["commands"]
+        (c["command"], "ready" if c["ready"] else "needs " + " and ".join(c["missing"])) for c in checked["commands"]
     )
     return Table(columns=("command", "state"), rows=rows, heading="Commands", text_columns=2)

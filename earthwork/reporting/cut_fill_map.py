@@ -95,8 +95,9 @@ def draw_cut_fill_map(
         draw_outline(axes, limits, dashed=True)
     for _, shape in zones:
         draw_outline(axes, shape)
-    taken = frame.label_zones(axes, zones)
+    taken: list[Any] = []
     _draw_spots(axes, depth, classes, frame, taken)
+    frame.label_zones(axes, zones, taken)
     shown = ["zero line: neither cut nor fill"]
     shown += ["zone"] * bool(zones) + ["limits of the ground that counts"] * (limits is not None)
     shown += ["no data"] * bool(np.isnan(depth).any())
@@ -153,12 +154,7 @@ def _draw_zero_line(axes: Axes, depth: np.ndarray, classes: Classes, frame: Fram
         if not (sign.min() < level < sign.max()):
             continue
         drawn = axes.contour(east, north, sign, levels=[level], colors=colors.INK, linewidths=0.9)
-        kept = [
-            p
-            for path in drawn.get_paths()
-            for p in path.to_polygons(closed_only=False)
-            if _length(p) > shortest
-        ]
+        kept = [p for path in drawn.get_paths() for p in path.to_polygons(closed_only=False) if _length(p) > shortest]
         drawn.remove()
         for line in kept:
             axes.plot(line[:, 0], line[:, 1], color=colors.INK, linewidth=0.9, zorder=4)
@@ -189,9 +185,7 @@ def _draw_spots(axes: Axes, depth: np.ndarray, classes: Classes, frame: Frame, t
             label.remove()
             continue
         taken.append(box)
-        axes.plot(
-            [east], [north], marker="+", markersize=5, color=colors.INK, zorder=7, path_effects=halo(1.6)
-        )
+        axes.plot([east], [north], marker="+", markersize=5, color=colors.INK, zorder=7, path_effects=halo(1.6))
 
 
 def spots(depth: np.ndarray, least: float, count: int = _SPOTS) -> list[tuple[int, int]]:
@@ -223,9 +217,7 @@ def spots(depth: np.ndarray, least: float, count: int = _SPOTS) -> list[tuple[in
     return kept[:count]
 
 
-def _draw_legend(
-    panel: Axes, frame: Frame, classes: Classes, shown: Sequence[str], notes: Sequence[str]
-) -> None:
+def _draw_legend(panel: Axes, frame: Frame, classes: Classes, shown: Sequence[str], notes: Sequence[str]) -> None:
     """The legend: classes, then lines and spots, then notes; side by side where it stands under the map."""
     unit = frame.units.label("length")
     y = _legend_classes(panel, classes, unit, "no data" in shown)

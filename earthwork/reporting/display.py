@@ -137,6 +137,8 @@ def decimals(values: Iterable[float | None], dimension: str) -> int:
     (0, 2)
     """
     greatest = max((abs(v) for v in values if v is not None and math.isfinite(v)), default=0.0)
+    if greatest == 0.0 and dimension not in ("length", "factor"):
+        return 0
     return next(d for bound, d in _DECIMALS[dimension] if greatest >= bound)
 
 

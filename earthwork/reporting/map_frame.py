@@ -68,9 +68,7 @@ class Frame:
         """Axes for the map, with a few coordinates."""
         width, height = self.size
         bottom = height - _TOP - self.map_height
-        axes = figure.add_axes(
-            (_LEFT / width, bottom / height, self.map_width / width, self.map_height / height)
-        )
+        axes = figure.add_axes((_LEFT / width, bottom / height, self.map_width / width, self.map_height / height))
         west, east, south, north = self.extent
         axes.set_xlim(west, east)
         axes.set_ylim(south, north)
@@ -109,18 +107,15 @@ class Frame:
         east = self.grid.west + (columns + 0.5) * self.grid.cell_east
         return field[np.ix_(rows, columns)], east, north
 
-    def label_zones(self, axes: Axes, zones: Sequence[tuple[str, Any]]) -> list[Any]:
-        """Write each zone's name inside it, the largest first; a name that meets another is left out.
+    def label_zones(self, axes: Axes, zones: Sequence[tuple[str, Any]], taken: list[Any]) -> None:
+        """Write each zone's name inside it, the largest first, clear of the boxes taken (pixels).
 
-        Returns:
-            the boxes that are written on, in pixels.
+        A name that finds no room is left out; the table beside the map has them all.
         """
-        taken: list[Any] = []
         for name, shape in sorted(zones, key=lambda z: -z[1].area):
-            place = shape.representative_point()
             label = axes.text(
-                place.x,
-                place.y,
+                0.0,
+                0.0,
                 wrapped(name),
                 fontsize=7.5,
                 fontstyle="italic",
@@ -130,12 +125,14 @@ class Frame:
                 zorder=8,
                 linespacing=1.05,
             )
-            box = label.get_window_extent()
-            if any(box.overlaps(other) for other in taken) or not self.inside(axes, box):
-                label.remove()
+            for place in places_in(shape):
+                label.set_position(place)
+                box = label.get_window_extent()
+                if self.inside(axes, box) and not any(box.overlaps(other) for other in taken):
+                    taken.append(box)
+                    break
             else:
-                taken.append(box)
-        return taken
+                label.remove()
 
     def inside(self, axes: Axes, box: Any) -> bool:
         """Whether a box in pixels lies on the map."""
@@ -177,6 +174,19 @@ class Frame:
         axes.text(east, bottom + 0.52, "N", ha="center", fontweight="bold")
 
 
+def places_in(shape: Any, along: int = 9) -> list[tuple[float, float]]:
+    """Places inside a polygon for its name, the best first: its own inner point, then others from the middle out."""
+    import shapely
+
+    inner = shape.representative_point()
+    west, south, east, north = shape.bounds
+    steps = (np.arange(along) + 0.5) / along
+    points = [(west + u * (east - west), south + v * (north - south)) for u in steps for v in steps]
+    points = [p for p in points if shapely.contains_xy(shape, *p)]
+    points.sort(key=lambda p: (p[0] - inner.x) ** 2 + (p[1] - inner.y) ** 2)
+    return [(inner.x, inner.y), *points]
+
+
 def draw_outline(axes: Axes, shape: Any, *, dashed: bool = False, color: str | None = None) -> None:
     """The rings of a polygon."""
     style = (0, (5, 3)) if dashed else "solid"
@@ -199,9 +209,7 @@ def legend_panel(figure: Figure, frame: Frame) -> Axes:
     """Axes for a legend beside the map; y is inches under its top plus one."""
     width, height = frame.size
     if frame.legend_below:
-        panel = figure.add_axes(
-            (_LEFT / width, 0.1 / height, frame.map_width / width, (_LEGEND_HEIGHT - 0.2) / height)
-        )
+        panel = figure.add_axes((_LEFT / width, 0.1 / height, frame.map_width / width, (_LEGEND_HEIGHT - 0.2) / height))
         panel.set_xlim(0, frame.map_width)
         panel.set_ylim(1 - (_LEGEND_HEIGHT - 0.2), 1)
         panel.axis("off")
@@ -222,13 +230,9 @@ def legend_swatch(panel: Axes, y: float, color: str, label: str, *, hatch: str |
     panel.add_patch(Rectangle((0.0, y - 0.16), 0.34, 0.17, facecolor=color, edgecolor="none"))
     if hatch:
         panel.add_patch(
-            Rectangle(
-                (0.0, y - 0.16), 0.34, 0.17, facecolor="none", edgecolor=hatch, hatch="////", linewidth=0
-            )
+            Rectangle((0.0, y - 0.16), 0.34, 0.17, facecolor="none", edgecolor=hatch, hatch="////", linewidth=0)
         )
-    panel.add_patch(
-        Rectangle((0.0, y - 0.16), 0.34, 0.17, facecolor="none", edgecolor=colors.FAINT, linewidth=0.5)
-    )
+    panel.add_patch(Rectangle((0.0, y - 0.16), 0.34, 0.17, facecolor="none", edgecolor=colors.FAINT, linewidth=0.5))
     panel.text(0.45, y - 0.075, label, va="center")
 
 

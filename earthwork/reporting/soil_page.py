@@ -44,6 +44,7 @@ def page(site: Site, result: Result) -> Page:
     for i in range(0, len(materials), 5):
         blocks.append(_cards(materials[i : i + 5], site))
     bands = [(m["material"], band) for m in materials for band in m["bands"]]
+    bands = [(name, band) for name, band in bands if band["fill_dry_density_kg_m3"] is not None]
     if bands:
         blocks.append(_bands(bands, site))
     notes = tuple(
@@ -80,8 +81,6 @@ def _bands(bands: Sequence[tuple[str, dict[str, Any]]], site: Site) -> Table:
     depths = column_texts("below_m", [b.get("below_m") for _, b in bands], site.units)
     texts = [column_texts(key, [b[key] for _, b in bands], site.units) for key in keys]
     columns = [f"below\n{unit_label('below_m', site.units)}"]
-    columns += [
-        f"{label}\n{unit_label(key, site.units)}".rstrip() for key, label in zip(keys, labels, strict=True)
-    ]
+    columns += [f"{label}\n{unit_label(key, site.units)}".rstrip() for key, label in zip(keys, labels, strict=True)]
     rows = zip([name for name, _ in bands], depths, *texts, strict=True)
     return Table(columns=("material", *columns), rows=tuple(rows), heading="Deep fill")

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from earthwork.files.output import OutputFolder
 from earthwork.reporting.basis import basis
 from earthwork.reporting.display import show
 from earthwork.reporting.page import Block, Column, Facts, Page, table_of
@@ -34,9 +35,7 @@ def page(site: Site, result: Result) -> Page:
     volumes = result.to_dict()
     blocks: list[Block] = [basis(site, volumes), _areas(site, volumes)]
     if len(volumes["materials"]) > 1 or site.model.stratum:
-        blocks.append(
-            table_of(volumes["materials"], _MATERIAL_COLUMNS, site.units, heading="By material, bank volume")
-        )
+        blocks.append(table_of(volumes["materials"], _MATERIAL_COLUMNS, site.units, heading="By material, bank volume"))
     lines = other_lines(site, volumes)
     if lines:
         blocks.append(Facts(heading="Lines of their own, in neither cut nor fill", rows=lines))
@@ -48,7 +47,8 @@ def _areas(site: Site, volumes: dict[str, Any]) -> Block:
     zones = sorted(volumes["zones"], key=lambda z: -(z["cut_m3"] + z["fill_m3"]))
     zones = zones if len(zones) > 24 else volumes["zones"]
     totals = []
-    if volumes["outside_zones"] is not None:
+    outside = volumes["outside_zones"]
+    if outside is not None and (outside["area_m2"] or outside["missing_area_m2"]):
         totals.append({**volumes["outside_zones"], "zone": "outside all zones"})
     totals.append({**volumes["total"], "zone": "whole site"})
     heading = "Cut and fill" + (", the largest zones first" if len(zones) > 24 else "")
@@ -77,3 +77,17 @@ def other_lines(site: Site, volumes: dict[str, Any]) -> tuple[tuple[str, str, st
 def _acreage(area_m2: float, site: Site) -> str:
     unit, name = ("ha", "ha") if site.units.name == "metric" else ("acre", "acres")
     return f"{area_m2 / UNITS['area'][unit]:.2f} {name}"
+
+
+def tallies(site: Site, folder: OutputFolder) -> tuple[Any, ...]:
+    """What gathers the maps while the ground is walked."""
+    from earthwork.reporting.maps import map_tallies
+
+    return map_tallies(site, folder, "volumes")
+
+
+def draw(site: Site, result: Any, folder: OutputFolder, gathered: Any) -> None:
+    """Write the maps of a **volumes** result."""
+    from earthwork.reporting.maps import write_maps
+
+    write_maps(site, result, folder, "volumes", gathered)

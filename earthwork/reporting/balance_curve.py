@@ -1,0 +1,115 @@
+"""The curve of surplus against grade shift."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from earthwork.reporting import colors
+from earthwork.reporting.display import show
+from earthwork.reporting.figures import halo, new_figure, number, plain_axes, round_step, save_figure
+from earthwork.units import UnitSystem
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+
+
+def draw_balance_curve(
+    curve: Sequence[tuple[float, float]],
+    path: Path,
+    *,
+    units: UnitSystem,
+    title: str,
+    target_m3: float = 0.0,
+    shift_m: float | None = None,
+    sd_m3: float | None = None,
+) -> None:
+    """Draw surplus against shift as PNG.
+
+    Args:
+        curve: (shift [m], surplus [m³ compacted]), at least two, from the lowest shift up.
+        path: the PNG.
+        units: of the axes.
+        title: over the chart.
+        target_m3: surplus wanted in hand.
+        shift_m: the shift that gives it, if any does.
+        sd_m3: standard deviation of the surplus, drawn as a band.
+    """
+    length, volume = units.factor("length"), units.factor("soil_volume")
+    x = [shift / length for shift, _ in curve]
+    y = [surplus / volume for _, surplus in curve]
+    figure = new_figure(7.6, 4.8)
+    axes = figure.add_axes((0.13, 0.13, 0.84, 0.73))
+    plain_axes(axes)
+    target = target_m3 / volume
+    axes.fill_between(x, y, target, where=[v >= target for v in y], interpolate=True, color=colors.CUT[3], linewidth=0)
+    axes.fill_between(x, y, target, where=[v < target for v in y], interpolate=True, color=colors.FILL[0], linewidth=0)
+    if sd_m3:
+        band = sd_m3 / volume
+        axes.plot(x, [v + band for v in y], color=colors.FAINT, linewidth=0.7, linestyle=(0, (2, 2)))
+        axes.plot(x, [v - band for v in y], color=colors.FAINT, linewidth=0.7, linestyle=(0, (2, 2)))
+    axes.plot(x, y, color=colors.INK, linewidth=1.6)
+    axes.axhline(target, color=colors.INK, linewidth=0.8)
+    axes.set_xlim(min(x), max(x))
+    _name_sides(axes, x, y, target)
+    at = 0.0 if shift_m is None else shift_m / length
+    _mark(axes, x, y, 0.0, "as designed", units, above=at <= 0.0)
+    if shift_m is not None:
+        _mark(axes, x, y, at, "balanced", units, above=at > 0.0)
+    unit = units.label("length")
+    axes.set_xlabel(f"shift of the grade that may move, {unit}   (+ raises it)")
+    axes.set_ylabel(f"surplus of compacted fill, {units.label('soil_volume')}")
+    for axis, values in ((axes.xaxis, x), (axes.yaxis, y)):
+        step = round_step(max(values) - min(values) or 1.0, 6)
+        axis.set_major_formatter(lambda v, _, step=step: number(v, step).replace("-", "−"))
+    figure.text(0.13, 0.94, title, fontsize=12, fontweight="bold")
+    note = "Surplus after shrink and loss" + (
+        f"; dotted: ± {show(sd_m3, 'soil_volume', units)}, one standard deviation from the soil tests" if sd_m3 else ""
+    )
+    figure.text(0.13, 0.895, note, fontsize=8.5, color=colors.FAINT)
+    save_figure(figure, path)
+
+
+def _name_sides(axes: Axes, x: Sequence[float], y: Sequence[float], target: float) -> None:
+    """Name the areas above and below the target, each at its wide end."""
+    for word, value in (("SURPLUS: soil left over", max(y)), ("SHORTAGE: soil to bring in", min(y))):
+        if (value > target) != word.startswith("SURPLUS"):
+            continue
+        at_left = y[0] == value
+        edge = x[0] if at_left else x[-1]
+        axes.annotate(
+            word,
+            (edge, target + 0.35 * (value - target)),
+            xytext=(8 if at_left else -8, 0),
+            textcoords="offset points",
+            ha="left" if at_left else "right",
+            va="center",
+            fontweight="bold",
+            path_effects=halo(),
+        )
+
+
+def _mark(
+    axes: Axes, x: Sequence[float], y: Sequence[float], at: float, word: str, units: UnitSystem, *, above: bool
+) -> None:
+    """A dot on the curve with its name, above to the right or below to the left: the curve always falls."""
+    import numpy as np
+
+    if not x[0] <= at <= x[-1]:
+        return
+    value = float(np.interp(at, x, y))
+    axes.plot([at], [value], marker="o", markersize=5.5, color=colors.INK, markerfacecolor=colors.PAPER, zorder=6)
+    text = f"{word}: {number(at, 0.01).replace('-', '−')} {units.label('length')}"
+    if word != "balanced":
+        text = f"{word}: {number(value, 1.0).replace('-', '−')} {units.label('soil_volume')}"
+    axes.annotate(
+        text,
+        (at, value),
+        xytext=(8, 7) if above else (-8, -7),
+        textcoords="offset points",
+        ha="left" if above else "right",
+        va="bottom" if above else "top",
+        path_effects=halo(),
+        zorder=7,
+    )
