@@ -24,6 +24,7 @@ from .terminal import prepare_streams, say, say_error
 _UsageError: Any = typer.BadParameter.__mro__[2]
 assert _UsageError.__name__ == "ClickException"
 
+_INTERRUPTED = 130
 _NO_ROOM = (errno.ENOSPC, errno.EDQUOT, errno.EFBIG)
 
 
@@ -40,11 +41,12 @@ def run(arguments: Sequence[str] | None = None) -> None:
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run a command line; the exit code."""
     try:
-        code = app(args=None if arguments is None else list(arguments), prog_name="earthwork", standalone_mode=False)
+        given = None if arguments is None else list(arguments)
+        code = int(app(args=given, prog_name="earthwork", standalone_mode=False) or 0)
         sys.stdout.flush()
-        return int(code or 0)
+        return _interrupted() if code == _INTERRUPTED else code
     except typer.Exit as end:
-        return int(end.exit_code)
+        return _interrupted() if end.exit_code == _INTERRUPTED else int(end.exit_code)
     except _UsageError as error:
         error.show()
         return 2
@@ -52,9 +54,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
         say_error(str(error))
         return 2
     except (KeyboardInterrupt, typer.Abort):
-        say("interrupted; nothing was written")
-        return 130
-    except BrokenPipeError:
+        return _interrupted()
+    except (BrokenPipeError, SystemExit):
+        # typer ends the process itself, with code 1, when the reader of stdout has gone; nothing else here exits.
         return _reader_gone()
     except MemoryError:
         say_error("not enough memory; try --threads 1, or a coarser ground.cell")
@@ -65,6 +67,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
         _discard_stdout()
         say_error(f"cannot write the result: {(error.strerror or str(error)).lower()}")
         return 2
+
+
+def _interrupted() -> int:
+    say("interrupted; nothing was written")
+    return _INTERRUPTED
 
 
 def _reader_gone() -> int:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import textwrap
+import warnings
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -37,6 +38,8 @@ def new_figure(width: float, height: float) -> Figure:
     from matplotlib.figure import Figure
 
     matplotlib.rcParams.update(_RC)
+    # A name may hold characters that the font lacks; it shows boxes for them.
+    warnings.filterwarnings("ignore", message="Glyph .* missing from font", category=UserWarning)
     figure = Figure(figsize=(width, height), dpi=DPI, facecolor=PAPER)
     FigureCanvasAgg(figure)
     return figure
