@@ -1,8 +1,9 @@
 """Reads the tables that laboratories and field crews send: CSV as spreadsheets really write it.
 
-What is plain is read: a byte order mark, comma, semicolon or tab between cells, decimal commas where the comma
-does not separate cells, a row of units under the header, ``-`` and ``n/a`` for what is missing, comment lines,
-``12.5 %`` with its unit in the cell. What could mean two things is refused with row and column.
+What is plain is read: a byte order mark, comma, semicolon or tab between cells, decimal commas where the
+comma does not separate cells, a row of units under the header, ``-`` and ``n/a`` for what is missing,
+comment lines, ``12.5 %`` with its unit in the cell. What could mean two things is refused with row and
+column.
 """
 
 from __future__ import annotations
@@ -141,9 +142,11 @@ def column_name(text: str) -> str:
     """
     name = text.strip()
     suffix = None
-    if (match := re.search(r"[\[(]([^\])]*)[\])]\s*$", name)) and (suffix := _unit_suffix(match.group(1))):
-        name = name[: match.start()]
-    elif (match := re.search(r"[,_\s]\s*(%|\S*/\S+)\s*$", name)) and (suffix := _unit_suffix(match.group(1))):
+    if (
+        (match := re.search(r"[\[(]([^\])]*)[\])]\s*$", name)) and (suffix := _unit_suffix(match.group(1)))
+    ) or (
+        (match := re.search(r"[,_\s]\s*(%|\S*/\S+)\s*$", name)) and (suffix := _unit_suffix(match.group(1)))
+    ):
         name = name[: match.start()]
     name = name.lower().replace("³", "3").replace("%", " percent ")
     name = re.sub(r"[^a-z0-9]+", "_", name).strip("_")
@@ -172,7 +175,8 @@ def _with_units(path: Path, number: int, names: list[str], units: list[str | Non
                         if name.endswith(f"_{s}")), None)  # fmt: skip
         if unit and carried and unit != carried:
             raise FileError(
-                f"{path}: row {number}, column {name}: the unit row says {unit.replace('_', '/')}, which is not "
+                f"{path}: row {number}, column {name}: the unit row says {unit.replace('_', '/')}, which "
+                "is not "
                 "the unit in the name; keep the right one"
             )
         united.append(f"{name}_{unit}" if unit and not carried else name)
@@ -189,7 +193,8 @@ def _cells(path: Path, number: int, names: list[str], cells: list[str], separato
     extra = [cell for cell in cells[len(names) :] if cell.strip()]
     if extra:
         hint = (
-            ". Decimal commas in a file with commas between cells cannot be told apart: use semicolons between "
+            ". Decimal commas in a file with commas between cells cannot be told apart: use semicolons "
+            "between "
             "cells, or decimal points"
             if separator == ","
             else ""
@@ -217,21 +222,28 @@ def _uses_decimal_comma(path: Path, rows: Sequence[Row]) -> bool:
     if len(first) == 2:
         (a, col_a, text_a), (b, col_b, text_b) = first[","], first["."]
         raise FileError(
-            f"{path}: row {a}, column {col_a} has {text_a!r} and row {b}, column {col_b} has {text_b!r}: decimal "
+            f"{path}: row {a}, column {col_a} has {text_a!r} and row {b}, column {col_b} has {text_b!r}: "
+            "decimal "
             "commas and decimal points in one file; write all numbers in one way"
         )
     return "," in first
 
 
 def _number(cell: str, *, decimal_comma: bool) -> float | str:
-    """The number in a cell, or why there is none. A percent sign may follow; other units belong in the name."""
+    """The number in a cell, or why there is none.
+
+    A percent sign may follow; other units belong in the name.
+    """
     bare = cell.removesuffix("%").strip()
     if decimal_comma and _COMMA.fullmatch(bare):
         return float(bare.replace(",", "."))
     if _PLAIN.fullmatch(bare):
         return float(bare)
     if "," in bare and re.fullmatch(r"[+-]?[\d.,]+", bare):
-        return "may have a decimal comma or a comma for thousands; write it with a decimal point and no other comma"
+        return (
+            "may have a decimal comma or a comma for thousands; write it with a decimal point and no other "
+            "comma"
+        )
     if (match := _WITH_UNIT.fullmatch(cell)) and any(
         match.group(2).strip() in units for units in UNITS.values()
     ):

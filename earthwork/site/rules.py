@@ -38,7 +38,9 @@ def _materials(model: SiteModel) -> Iterator[str]:
     used += [(f"stratum[{i + 1}].material", s.material) for i, s in enumerate(model.stratum)]
     used += [(f"allowance[{i + 1}].material", a.material) for i, a in enumerate(model.allowance)]
     used += [(f"borrow[{i + 1}].material", b.material) for i, b in enumerate(model.borrow)]
-    used += [(f"section[{i + 1}].source", s.source) for i, s in enumerate(model.section) if s.source != "imported"]
+    used += [
+        (f"section[{i + 1}].source", s.source) for i, s in enumerate(model.section) if s.source != "imported"
+    ]
     for i, site in enumerate(model.disposal):
         used += [(f"disposal[{i + 1}].accepts", name) for name in site.accepts or ()]
     for key, name in used:
@@ -58,7 +60,10 @@ def _soils(model: SiteModel) -> Iterator[str]:
         }
         given = [key for key, there in ways.items() if there]
         if len(given) > 1:
-            yield f"material.{name}: {' and '.join(given)} are given; keep one, each says what it becomes as fill"
+            yield (
+                f"material.{name}: {' and '.join(given)} are given; keep one, each says what it becomes as "
+                "fill"
+            )
         if material.use == "rock" and material.proctor is not None:
             yield (
                 f"material.{name}.proctor: rock has no compaction test; give fill.dry_density or "
@@ -68,7 +73,8 @@ def _soils(model: SiteModel) -> Iterator[str]:
             low, high = material.shrink_percent_of_bank
             if not low <= high < 100:
                 yield (
-                    f"material.{name}.shrink_percent_of_bank = [{low:g}, {high:g}]: the first must be the lower "
+                    f"material.{name}.shrink_percent_of_bank = [{low:g}, {high:g}]: the first must be the "
+                    "lower "
                     "one, and both below 100"
                 )
 
@@ -78,9 +84,15 @@ def _strata(model: SiteModel) -> Iterator[str]:
         last = i == len(model.stratum) - 1
         open_bottom = stratum.bottom is None and stratum.thickness is None
         if last and not open_bottom:
-            yield f"stratum[{i + 1}] ({stratum.material}): the last stratum has no bottom; take bottom or thickness out"
+            yield (
+                f"stratum[{i + 1}] ({stratum.material}): the last stratum has no bottom; take bottom or "
+                "thickness out"
+            )
         if not last and open_bottom:
-            yield f"stratum[{i + 1}] ({stratum.material}): bottom or thickness is missing; only the last has none"
+            yield (
+                f"stratum[{i + 1}] ({stratum.material}): bottom or thickness is missing; only the last has "
+                "none"
+            )
 
 
 def _fill(model: SiteModel) -> Iterator[str]:
@@ -95,7 +107,8 @@ def _fill(model: SiteModel) -> Iterator[str]:
     for where, required, expected in rows:
         if expected is not None and expected < required:
             yield (
-                f"{where}.expected_compaction = {expected:g}: it must be at least the required {required:g} %; "
+                f"{where}.expected_compaction = {expected:g}: it must be at least the required "
+                f"{required:g} %; "
                 "it is the mean that crews reach, and they overshoot"
             )
     if fill.lift_thickness is not None and fill.loose_lift_thickness is not None:
@@ -106,7 +119,8 @@ def _fill(model: SiteModel) -> Iterator[str]:
             yield f"fill.water_content_window = [{low:g}, {high:g}]: the first must be the lower one"
         elif not low <= fill.water_content_offset <= high:
             yield (
-                f"fill.water_content_offset = {fill.water_content_offset:g}: the target must lie in the window "
+                f"fill.water_content_offset = {fill.water_content_offset:g}: the target must lie in the "
+                "window "
                 f"[{low:g}, {high:g}]"
             )
 

@@ -11,12 +11,14 @@ from earthwork.soils import oversize, phase, states
 from earthwork.soils.card import Band, SoilCard
 from earthwork.units import UnitSystem
 
-#: Crews overshoot the required compaction; this many points when the site says nothing (method: shrinkage uses what
-#: will be reached). Common practice, no single source.
+#: Crews overshoot the required compaction; this many points when the site says nothing (method: shrinkage
+#: uses what will be reached). Common practice, no single source.
 OVERSHOOT_POINTS = 2.0
-#: Specific gravity of the grains when none is stated: quartz sands 2.65, clays 2.70 ([das], table 2.4, from memory).
+#: Specific gravity of the grains when none is stated: quartz sands 2.65, clays 2.70 ([das], table 2.4, from
+#: memory).
 ASSUMED_GRAVITY = {"fill": 2.68, "waste": 2.68, "topsoil": 2.65, "rock": 2.70}
-#: Swell of the bank volume when none is stated [%]: common earth and blasted rock ([fm-5-434], table 1-1, from memory).
+#: Swell of the bank volume when none is stated [%]: common earth and blasted rock ([fm-5-434], table 1-1,
+#: from memory).
 ASSUMED_SWELL = {"fill": (25.0, 11.0, 43.0), "waste": (25.0, 11.0, 43.0), "topsoil": (25.0, 11.0, 43.0),
                  "rock": (50.0, 30.0, 75.0)}  # fmt: skip
 #: Saturation [%] up to which a measured state only warns: the grain density is off by a few hundredths.
@@ -29,7 +31,8 @@ def build_cards(site: Site) -> dict[str, SoilCard]:
     missing = [table for table, there in (("[material.*]", materials), ("[fill]", fill)) if not there]
     if missing or fill is None:
         raise SiteFileError(
-            f"{site.path or 'site'}: {' and '.join(missing)} missing; soil cards need a [material.NAME] table for each "
+            f"{site.path or 'site'}: {' and '.join(missing)} missing; soil cards need a [material.NAME] "
+            "table for each "
             "soil, and [fill] with the required relative_compaction"
         )
     cards: dict[str, SoilCard] = {}
@@ -71,7 +74,7 @@ class _Draft:
         digits = 1 if self.units.name == "us" else 0
         return f"{self.units.from_si(value, 'density'):.{digits}f} {self.units.label('density')}"
 
-    # --- the parts of a card -------------------------------------------------------------------------------------
+    # --- the parts of a card ----------------------------------------------------------------------
 
     def card(self) -> SoilCard | None:
         material = self.material
@@ -115,7 +118,8 @@ class _Draft:
             return gravity
         self.warn(
             "specific-gravity-assumed", "specific_gravity",
-            f"not given; {gravity:g} is assumed (most soils have 2.65 to 2.75). Zero air voids and saturation rest on it",
+            f"not given; {gravity:g} is assumed (most soils have 2.65 to 2.75). Zero air voids and "
+            "saturation rest on it",
         )  # fmt: skip
         return gravity
 
@@ -150,7 +154,8 @@ class _Draft:
             return
         most = phase.zero_air_voids_water_content_percent(bank, gravity)
         text = (
-            f"{self.density(bank)} at {water:g} % water is saturated to {saturation:.1f} %; that dry density has room "
+            f"{self.density(bank)} at {water:g} % water is saturated to {saturation:.1f} %; that dry "
+            "density has room "
             f"for {most:.2f} % at most (specific gravity {gravity:g})"
         )
         if saturation <= SATURATION_LIMIT:
@@ -172,7 +177,8 @@ class _Draft:
             if state.dry_density >= bank:
                 self.fault(
                     "loose.dry_density",
-                    f"{self.density(state.dry_density)} is not below the bank dry density {self.density(bank)}; "
+                    f"{self.density(state.dry_density)} is not below the bank dry density "
+                    f"{self.density(bank)}; "
                     "soil loosens when it is dug. Check that both are dry",
                 )
                 return None
@@ -183,7 +189,8 @@ class _Draft:
             self.assumed += ["loose_dry_density_kg_m3", "swell_percent"]
             self.warn(
                 "swell-assumed", "loose",
-                f"no swell given; {swell:g} % is assumed ({low:g} to {high:g} % is usual). Loose volumes and truck "
+                f"no swell given; {swell:g} % is assumed ({low:g} to {high:g} % is usual). Loose volumes "
+                "and truck "
                 "loads rest on it, the balance does not",
             )  # fmt: skip
         return states.loose_dry_density_of_swell(bank, swell)
@@ -216,13 +223,15 @@ class _Draft:
         if density >= most:
             self.fault(
                 "proctor.max_dry_density",
-                f"{self.density(density)} is at or over the density of the grains (specific gravity {gravity:g})",
+                f"{self.density(density)} is at or over the density of the grains (specific gravity "
+                f"{gravity:g})",
             )
             return False
         room = phase.zero_air_voids_water_content_percent(density, gravity)
         needed = 1 / (phase.WATER_DENSITY_KG_M3 / density - optimum / 100)
         text = (
-            f"{self.density(density)} at {optimum:g} % water is above zero air voids; that dry density has room for "
+            f"{self.density(density)} at {optimum:g} % water is above zero air voids; that dry density has "
+            "room for "
             f"{room:.2f} % at most. Suspect specific_gravity = {gravity:g}"
         )
         if "specific_gravity" in self.assumed:
@@ -247,7 +256,8 @@ class _Draft:
         self.assumed.append("expected_compaction_percent")
         warning = Warning(
             "compaction-assumed",
-            f"{where}.expected_compaction: not given; {expected:g} % is assumed, {OVERSHOOT_POINTS:g} points over the "
+            f"{where}.expected_compaction: not given; {expected:g} % is assumed, {OVERSHOOT_POINTS:g} "
+            "points over the "
             "required one. Every point over costs soil: give the mean that the crew reaches",
         )
         if warning not in self.warnings:
@@ -276,7 +286,8 @@ class _Draft:
             if bank > peak[0] and material.use != "rock":
                 self.warn(
                     "bank-denser-than-maximum", "bank.dry_density",
-                    f"{self.density(bank)} is over the compaction maximum {self.density(peak[0])}. Stiff clay and "
+                    f"{self.density(bank)} is over the compaction maximum {self.density(peak[0])}. Stiff "
+                    "clay and "
                     "till can be; otherwise check that both are dry and of the same soil",
                 )  # fmt: skip
             return _Made(peak[0] * self._expected(self.fill) / 100, "compaction test")
@@ -284,7 +295,8 @@ class _Draft:
             means = "fill.dry_density or shrink_percent_of_bank"
             self.fault(
                 "",
-                f"what it becomes as fill is missing; give {'' if material.use == 'rock' else 'proctor, '}{means}",
+                "what it becomes as fill is missing; give "
+                f"{'' if material.use == 'rock' else 'proctor, '}{means}",
             )
         return None
 
@@ -295,7 +307,8 @@ class _Draft:
         if target < 0:
             self.fault(
                 "",
-                f"the target water content is {target:g} %; it must be 0 or more. Check fill.water_content_offset",
+                f"the target water content is {target:g} %; it must be 0 or more. Check "
+                "fill.water_content_offset",
             )
             return None, None
         window = self.fill.water_content_window
@@ -350,7 +363,8 @@ class _Draft:
         if dry >= gravity * phase.WATER_DENSITY_KG_M3:
             self.fault(
                 "",
-                f"{what}: {self.density(dry)} is at or over the density of the grains; check fill.expected_compaction",
+                f"{what}: {self.density(dry)} is at or over the density of the grains; check "
+                "fill.expected_compaction",
             )
             return
         room = phase.zero_air_voids_water_content_percent(dry, gravity)
@@ -362,8 +376,10 @@ class _Draft:
             suspects.append(f"specific_gravity ({gravity:g} is assumed)")
         self.fault(
             "",
-            f"{what}, {water:.2f} % water at {self.density(dry)} ({expected:g} % of the maximum), is above zero air voids "
-            f"(saturation {phase.saturation_percent(dry, water, gravity):.1f} %); the greatest water content possible "
+            f"{what}, {water:.2f} % water at {self.density(dry)} ({expected:g} % of the maximum), is above "
+            "zero air voids "
+            f"(saturation {phase.saturation_percent(dry, water, gravity):.1f} %); the greatest water "
+            "content possible "
             f"there is {room:.2f} %. Suspect {', '.join(suspects)}",
         )
 

@@ -1,7 +1,8 @@
 """The soil card: what one material weighs, dry, in the bank, loose and compacted, and what the fill asks of it.
 
-``soil_cards(site)`` gives a card per material; ``soil(site)`` is the command. Only dry mass is conserved, so a card
-turns a dry mass into a volume of each state and back, and every other figure follows from its dry densities.
+``soil_cards(site)`` gives a card per material; ``soil(site)`` is the command. Only dry mass is conserved,
+so a card turns a dry mass into a volume of each state and back, and every other figure follows from its dry
+densities.
 """
 
 from __future__ import annotations
@@ -49,10 +50,10 @@ class Band:
 class SoilCard:
     """One material. Densities are dry [kg/m³], water contents percent of dry mass; None is not known or not asked.
 
-    ``fill_dry_density_kg_m3`` is the density at the compaction that crews will reach, not the one required. Topsoil and
-    waste have none: they are never placed as fill, and respread or stockpiled soil has no density to hold it to.
-    ``max_dry_density_kg_m3`` and ``optimum_water_content_percent`` hold for the whole soil, oversize included;
-    ``specific_gravity`` too.
+    ``fill_dry_density_kg_m3`` is the density at the compaction that crews will reach, not the one required.
+    Topsoil and waste have none: they are never placed as fill, and respread or stockpiled soil has no
+    density to hold it to. ``max_dry_density_kg_m3`` and ``optimum_water_content_percent`` hold for the
+    whole soil, oversize included; ``specific_gravity`` too.
     """
 
     material: str
@@ -76,7 +77,7 @@ class SoilCard:
     assumed: tuple[str, ...] = ()
     warnings: tuple[Warning, ...] = ()
 
-    # --- factors -------------------------------------------------------------------------------------------------
+    # --- factors ----------------------------------------------------------------------------------
 
     @cached_property
     def shrinkage_factor(self) -> float | None:
@@ -106,7 +107,7 @@ class SoilCard:
     def load_factor(self) -> float:
         return states.load_factor(self.bank_dry_density_kg_m3, self.loose_dry_density_kg_m3)
 
-    # --- phases --------------------------------------------------------------------------------------------------
+    # --- phases -----------------------------------------------------------------------------------
 
     @property
     def bank_void_ratio(self) -> float:
@@ -150,7 +151,7 @@ class SoilCard:
         """Moist mass per dry mass as loaded, at the bank water content (taken as dry when that is not known)."""
         return 1 + (self.bank_water_content_percent or 0.0) / 100
 
-    # --- dry mass to volume and back -----------------------------------------------------------------------------
+    # --- dry mass to volume and back --------------------------------------------------------------
 
     def dry_density_kg_m3(self, state: State, *, band: int | None = None) -> float:
         """Dry density in a state; ``band`` is a row of :attr:`bands` and holds for the compacted state.

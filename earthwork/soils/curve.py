@@ -1,10 +1,11 @@
 """The compaction curve: maximum dry density and optimum water content from test points, by least squares.
 
-Three forms are fitted. The parabola is what most laboratories draw; the cubic follows curves that are steeper on one
-side; the bounded form joins a straight dry branch to a wet branch of constant saturation and so can never cross zero air
-voids. ``auto`` takes the parabola or the cubic, whichever foretells left-out points better, because a fit is asked for
-its peak and not for its residuals; the bounded form steps in when both polynomials put the peak above zero air voids. The
-spread of the three is reported: it is what the choice is worth.
+Three forms are fitted. The parabola is what most laboratories draw; the cubic follows curves that are
+steeper on one side; the bounded form joins a straight dry branch to a wet branch of constant saturation and
+so can never cross zero air voids. ``auto`` takes the parabola or the cubic, whichever foretells left-out
+points better, because a fit is asked for its peak and not for its residuals; the bounded form steps in when
+both polynomials put the peak above zero air voids. The spread of the three is reported: it is what the
+choice is worth.
 """
 
 from __future__ import annotations
@@ -31,7 +32,10 @@ USUAL_SATURATION = (70.0, 95.0)
 
 @dataclass(frozen=True, kw_only=True)
 class CompactionCurve:
-    """A fitted compaction curve. ``chosen`` gives the figures; ``fits`` are all forms that have a peak in the data."""
+    """A fitted compaction curve.
+
+    ``chosen`` gives the figures; ``fits`` are all forms that have a peak in the data.
+    """
 
     method: str
     specific_gravity: float
@@ -109,8 +113,9 @@ def fit_curve(
         where: opens each message.
 
     Raises:
-        SoilError: a density at or above that of the grains; fewer than four different water contents; no peak inside the
-            data, which is either a free-draining soil or too few points; no point on one side of the peak.
+        SoilError: a density at or above that of the grains; fewer than four different water contents; no
+            peak inside the data, which is either a free-draining soil or too few points; no point on one
+            side of the peak.
     """
     used, left_out, warnings = _possible(points, specific_gravity, where)
     water = np.array([point.water_content_percent for point in used])
@@ -119,7 +124,8 @@ def fit_curve(
     if different < LEAST_POINTS:
         dropped = f" ({len(left_out)} left out: {_names(left_out)})" if left_out else ""
         raise SoilError(
-            f"{where}: {different} different water contents{dropped}; a compaction curve needs at least {LEAST_POINTS}, "
+            f"{where}: {different} different water contents{dropped}; a compaction curve needs at least "
+            f"{LEAST_POINTS}, "
             "with one on each side of the peak. Test more points"
         )
     fits = {name: fit_form(name, water, density, specific_gravity) for name in FORMS}
@@ -175,7 +181,8 @@ def _possible(
         warnings.append(
             Warning(
                 "points-left-out",
-                f"{where}: left out of the fit: {listed}. Check water contents and specific gravity {gravity:g}",
+                f"{where}: left out of the fit: {listed}. Check water contents and specific gravity "
+                f"{gravity:g}",
             )
         )
     if doubtful:
@@ -204,7 +211,8 @@ def _no_peak(
         )
     dropped = f"; left out beyond zero air voids: {_names(left_out)}" if left_out else ""
     return (
-        f"{where}: no peak inside the {len(used)} points ({water.min():.1f} to {water.max():.1f} % water{dropped}): "
+        f"{where}: no peak inside the {len(used)} points ({water.min():.1f} to {water.max():.1f} % "
+        f"water{dropped}): "
         f"they {course}. Either points{side} are missing, or the soil drains freely and has no peak: "
         "then test minimum and maximum density (ASTM D4253, D4254) and give relative_density"
     )
@@ -234,7 +242,8 @@ def _choose(form: Form, admissible: Sequence[Fit], where: str) -> Fit:
     if "bounded" in by_form:
         return by_form["bounded"]
     raise SoilError(
-        f"{where}: every curve puts its peak above zero air voids or has no points on one side of it; check the specific "
+        f"{where}: every curve puts its peak above zero air voids or has no points on one side of it; "
+        "check the specific "
         "gravity and the water contents, and test more points"
     )
 
@@ -258,7 +267,8 @@ def _doubts(
             Warning(
                 "peak-not-bracketed",
                 f"{where}: the densest point, {_label(used[int(np.argmax(density))])}, is the "
-                f"{'driest' if water[np.argmax(density)] == water.min() else 'wettest'} one; test further out",
+                f"{'driest' if water[np.argmax(density)] == water.min() else 'wettest'} one; test further "
+                "out",
             )
         )
     line = fit_form("line", water, density, gravity)
@@ -266,7 +276,8 @@ def _doubts(
         found.append(
             Warning(
                 "weak-peak",
-                f"{where}: a straight line foretells the points as well as a curve does; scatter hides the peak, "
+                f"{where}: a straight line foretells the points as well as a curve does; scatter hides the "
+                "peak, "
                 "or the soil has none (free-draining soils are judged by relative density)",
             )
         )
@@ -275,7 +286,8 @@ def _doubts(
         found.append(
             Warning(
                 "optimum-saturation",
-                f"{where}: saturation at the optimum is {saturation:.0f} %; most soils have {USUAL_SATURATION[0]:.0f} to "
+                f"{where}: saturation at the optimum is {saturation:.0f} %; most soils have "
+                f"{USUAL_SATURATION[0]:.0f} to "
                 f"{USUAL_SATURATION[1]:.0f} %. Check the specific gravity {gravity:g} and the water contents",
             )
         )

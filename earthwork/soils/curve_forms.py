@@ -12,8 +12,8 @@ from earthwork.units import WATER_DENSITY_KG_M3
 
 #: The forms that are candidates for the peak.
 FORMS = ("parabola", "cubic", "bounded")
-#: How sharply the two branches of the bounded form meet; 40 did best on left-out points of real curves, and 20 to 80
-#: change the peak by less than its standard error.
+#: How sharply the two branches of the bounded form meet; 40 did best on left-out points of real curves, and
+#: 20 to 80 change the peak by less than its standard error.
 _SHARPNESS = 40.0
 
 Predict = Callable[[np.ndarray, np.ndarray], np.ndarray]
@@ -21,7 +21,10 @@ Predict = Callable[[np.ndarray, np.ndarray], np.ndarray]
 
 @dataclass(frozen=True, kw_only=True)
 class Fit:
-    """One form fitted to the points. Standard errors are None when there are no more points than parameters."""
+    """One form fitted to the points.
+
+    Standard errors are None when there are no more points than parameters.
+    """
 
     form: str
     parameters: tuple[float, ...]
@@ -61,8 +64,8 @@ def _predictor(form: str, centre: float, gravity: float) -> Predict:
 def _bounded(water: np.ndarray, parameters: np.ndarray, gravity: float) -> np.ndarray:
     """Two branches joined smoothly: a straight dry one, and a wet one of constant saturation.
 
-    ρd = (dry^−k + wet^−k)^(−1/k), dry = a + b w, wet = Gs ρw / (1 + w Gs / S). On the wet side real curves run close to
-    a line of constant saturation ([horpibulsuk]).
+    ρd = (dry^−k + wet^−k)^(−1/k), dry = a + b w, wet = Gs ρw / (1 + w Gs / S). On the wet side real curves
+    run close to a line of constant saturation ([horpibulsuk]).
     """
     start, slope, saturation = parameters
     dry = np.maximum(start + slope * water, 1.0)
@@ -187,8 +190,8 @@ def _peak_errors(
 ) -> tuple[float | None, float | None]:
     """Standard errors of the maximum and the optimum, by the delta method.
 
-    At the peak the density does not depend on where the peak is, so dρ/dp is that at a fixed water content; the optimum
-    moves by −(∂²ρ/∂w∂p) / (∂²ρ/∂w²).
+    At the peak the density does not depend on where the peak is, so dρ/dp is that at a fixed water content;
+    the optimum moves by −(∂²ρ/∂w∂p) / (∂²ρ/∂w²).
     """
     if covariance is None:
         return None, None

@@ -18,8 +18,8 @@ Effort = Literal["standard", "modified"]
 #: ([astm-d698], [astm-d1557], scopes).
 NOMINAL_ENERGY_KJ_M3: dict[Effort, float] = {"standard": 600.0, "modified": 2700.0}
 
-#: What a method's name holds → its effort. AASHTO T 99 and T 180 and the 2.5 kg and 4.5 kg rammers of BS 1377-4 and
-#: EN 13286-2 are the counterparts of the two ASTM methods (from memory).
+#: What a method's name holds → its effort. AASHTO T 99 and T 180 and the 2.5 kg and 4.5 kg rammers of BS
+#: 1377-4 and EN 13286-2 are the counterparts of the two ASTM methods (from memory).
 _NAMES: tuple[tuple[str, Effort], ...] = (
     (r"D\s*-?\s*698\b", "standard"),
     (r"D\s*-?\s*1557\b", "modified"),

@@ -11,7 +11,8 @@ from typing import Any
 from earthwork.errors import SoilError
 from earthwork.soils.records import DensityTest
 
-#: A test further than this from the median, in robust standard deviations, is named ([iglewicz-hoaglin], 3.5).
+#: A test further than this from the median, in robust standard deviations, is named ([iglewicz-hoaglin],
+#: 3.5).
 OUTLIER_SCORE = 3.5
 #: Fewer tests than this cannot show an outlier.
 OUTLIER_LEAST = 5
@@ -40,7 +41,8 @@ def sand_cone_moist_density(
     _need_positive("sand cone", soil=hole_soil_mass, cone=cone_sand_mass, sand_density=sand_density)
     if not sand_mass_used > cone_sand_mass:
         raise SoilError(
-            f"sand cone: {sand_mass_used:g} kg of sand was used, which is not more than the {cone_sand_mass:g} kg in the "
+            f"sand cone: {sand_mass_used:g} kg of sand was used, which is not more than the "
+            f"{cone_sand_mass:g} kg in the "
             "cone; check which is which"
         )
     return hole_soil_mass * sand_density / (sand_mass_used - cone_sand_mass)
@@ -57,7 +59,8 @@ def drive_cylinder_moist_density(
     _need_positive("drive cylinder", volume=cylinder_volume)
     if not cylinder_and_soil_mass > cylinder_mass >= 0:
         raise SoilError(
-            f"drive cylinder: the full mass {cylinder_and_soil_mass:g} kg is not over the empty mass {cylinder_mass:g} kg; "
+            f"drive cylinder: the full mass {cylinder_and_soil_mass:g} kg is not over the empty mass "
+            f"{cylinder_mass:g} kg; "
             "check which is which"
         )
     return (cylinder_and_soil_mass - cylinder_mass) / cylinder_volume
@@ -88,8 +91,8 @@ class GaugeReduction:
 def reduce_gauge(moist_density: float, gauge_water: float, *, water_offset: float = 0.0) -> GaugeReduction:
     """Nuclear gauge reading to dry density ([astm-d6938]): ρd = ρ − M, w = M / ρd, M = gauge water + offset.
 
-    The gauge counts all hydrogen, also that of clay minerals, gypsum, lime and organic matter, and so sees water that no
-    oven drives out. The offset corrects that: see :func:`gauge_water_offset`.
+    The gauge counts all hydrogen, also that of clay minerals, gypsum, lime and organic matter, and so sees
+    water that no oven drives out. The offset corrects that: see :func:`gauge_water_offset`.
 
     Args:
         moist_density: reading [kg/m³].
@@ -105,7 +108,8 @@ def reduce_gauge(moist_density: float, gauge_water: float, *, water_offset: floa
     dry = moist_density - water
     if water < 0 or not dry > 0:
         raise SoilError(
-            f"nuclear gauge: water {gauge_water:g} kg/m³ with the offset {water_offset:g} in a moist density of "
+            f"nuclear gauge: water {gauge_water:g} kg/m³ with the offset {water_offset:g} in a moist "
+            "density of "
             f"{moist_density:g} kg/m³ is impossible; check both and the offset"
         )
     return GaugeReduction(dry, 100 * water / dry)
@@ -114,8 +118,8 @@ def reduce_gauge(moist_density: float, gauge_water: float, *, water_offset: floa
 def gauge_water_offset(readings: Sequence[tuple[float, float, float]]) -> float:
     """Water offset of a gauge on one soil [kg/m³], from readings with oven water contents of the same spots.
 
-    True water per volume is ρ w / (1 + w); the offset is the mean of true less gauge ([astm-d6938], water content
-    correction).
+    True water per volume is ρ w / (1 + w); the offset is the mean of true less gauge ([astm-d6938], water
+    content correction).
 
     Args:
         readings: (moist density [kg/m³], gauge water [kg/m³], oven water content [%]) per spot.
@@ -153,9 +157,9 @@ class TestSummary:
 def summarise(values: Sequence[float], labels: Sequence[str] | None = None) -> TestSummary:
     """Mean, scatter and outliers of test values.
 
-    Outliers are named and stay in the mean: a wild test may be a wild place. They are the values whose modified z-score,
-    0.6745 (x − median) / MAD, is over 3.5 ([iglewicz-hoaglin]); with most values alike the mean absolute deviation stands
-    in for the MAD.
+    Outliers are named and stay in the mean: a wild test may be a wild place. They are the values whose
+    modified z-score, 0.6745 (x − median) / MAD, is over 3.5 ([iglewicz-hoaglin]); with most values alike
+    the mean absolute deviation stands in for the MAD.
 
     Raises:
         SoilError: no values.

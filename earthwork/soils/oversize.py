@@ -1,7 +1,7 @@
 """Oversize particles: from the fraction that fits the mould to the whole soil, and back ([astm-d4718]).
 
-The laboratory takes out what is larger than the sieve of its method and reports on the finer fraction; the field test
-measures the whole. The two are comparable only after this correction.
+The laboratory takes out what is larger than the sieve of its method and reports on the finer fraction; the
+field test measures the whole. The two are comparable only after this correction.
 """
 
 from __future__ import annotations
@@ -9,8 +9,9 @@ from __future__ import annotations
 from earthwork.errors import SoilError
 from earthwork.units import WATER_DENSITY_KG_M3
 
-#: Largest share of oversize [% of dry mass] for which the correction holds, by the sieve that splits ([astm-d4718],
-#: scope; from memory). Beyond it the coarse particles touch and the finer fraction is not compacted between them.
+#: Largest share of oversize [% of dry mass] for which the correction holds, by the sieve that splits
+#: ([astm-d4718], scope; from memory). Beyond it the coarse particles touch and the finer fraction is not
+#: compacted between them.
 OVERSIZE_LIMIT_PERCENT = {"4.75 mm": 40.0, "19 mm": 30.0}
 #: Below this share the standard lets the correction be left out ([astm-d4718], scope).
 OVERSIZE_MATTERS_PERCENT = 5.0
@@ -51,7 +52,8 @@ def fine_dry_density(
     """Dry density of the finer fraction in a field test of the whole soil; the inverse of :func:`whole_dry_density`.
 
     Raises:
-        SoilError: more oversize than the standard covers, or a density that leaves no room for the finer fraction.
+        SoilError: more oversize than the standard covers, or a density that leaves no room for the finer
+            fraction.
 
     >>> round(fine_dry_density(2083.3333333, 20.0, 2.5), 3)
     2000.0
@@ -61,8 +63,10 @@ def fine_dry_density(
     room = 1 / whole_dry_density - coarse / (oversize_specific_gravity * water_density)
     if not room > 0:
         raise SoilError(
-            f"oversize: {oversize_percent:g} % of particles with specific gravity {oversize_specific_gravity:g} fill "
-            f"the whole volume at a dry density of {whole_dry_density:g}; check the share of oversize and the density"
+            f"oversize: {oversize_percent:g} % of particles with specific gravity "
+            f"{oversize_specific_gravity:g} fill "
+            f"the whole volume at a dry density of {whole_dry_density:g}; check the share of oversize and "
+            "the density"
         )
     return (1 - coarse) / room
 
@@ -96,7 +100,8 @@ def fine_water_content_percent(
     water = whole_water_content_percent - coarse * oversize_water_content_percent
     if water < 0:
         raise SoilError(
-            f"oversize: {oversize_percent:g} % of particles at {oversize_water_content_percent:g} % hold more water "
+            f"oversize: {oversize_percent:g} % of particles at {oversize_water_content_percent:g} % hold "
+            "more water "
             f"than the whole soil at {whole_water_content_percent:g} %; check both water contents"
         )
     return water / (1 - coarse)

@@ -1,7 +1,7 @@
 """Relative density: how a free-draining soil is judged, between its loosest and its densest state.
 
-With few fines water drains out under the rammer and the compaction curve has no peak; the vibrating-table maximum and
-the poured minimum take its place ([astm-d4253], [astm-d4254]).
+With few fines water drains out under the rammer and the compaction curve has no peak; the vibrating-table
+maximum and the poured minimum take its place ([astm-d4253], [astm-d4254]).
 """
 
 from __future__ import annotations
@@ -62,8 +62,8 @@ def relative_compaction_of_relative_density(
 def lee_singh_relative_compaction(relative_density_percent: float) -> float:
     """Relative compaction [%] by correlation, when no minimum density was tested: Rc = 80 + 0.2 Dr.
 
-    A fit to 47 granular soils ([lee-singh], from memory); the exact relation needs the two densities. Holds for Dr of
-    0 to 100 %.
+    A fit to 47 granular soils ([lee-singh], from memory); the exact relation needs the two densities. Holds
+    for Dr of 0 to 100 %.
 
     >>> lee_singh_relative_compaction(50.0)
     90.0
@@ -78,6 +78,7 @@ def lee_singh_relative_compaction(relative_density_percent: float) -> float:
 def _check(min_dry_density: float, max_dry_density: float) -> None:
     if not 0 < min_dry_density < max_dry_density:
         raise SoilError(
-            f"relative density: the minimum dry density {min_dry_density:g} must be more than 0 and below the maximum "
+            f"relative density: the minimum dry density {min_dry_density:g} must be more than 0 and below "
+            "the maximum "
             f"{max_dry_density:g}"
         )

@@ -1,7 +1,7 @@
 """Bank, loose and compacted: the factors between the states of one soil, from dry densities.
 
-Every factor is a ratio of dry densities, because only the dry mass is the same in all states ([nunnally], ch. 2).
-A percentage says its base in its name.
+Every factor is a ratio of dry densities, because only the dry mass is the same in all states ([nunnally],
+ch. 2). A percentage says its base in its name.
 """
 
 from __future__ import annotations
