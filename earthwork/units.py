@@ -1,7 +1,8 @@
 """The only place where a foot, a yard, a pound or a gallon appears.
 
-Inside the library every quantity is SI (m, m², m³, kg, kg/m³, L, L/s, m/s); evaporation stays in mm/day and durations
-are named (minutes, hours). :class:`UnitSystem` turns numbers of a site file into SI and back for display.
+Inside the library every quantity is SI (m, m², m³, kg, kg/m³, L, L/s, m/s); evaporation stays in mm/day and
+durations are named (minutes, hours). :class:`UnitSystem` turns numbers of a site file into SI and back for
+display.
 
 Factors are exact definitions (NIST Special Publication 811, appendix B.8; the US survey foot is 1200/3937 m).
 """
@@ -24,16 +25,35 @@ _LB_FT3 = POUND_KG / FOOT_M**3
 #: dimension → unit symbol → SI value of one unit
 UNITS: dict[str, dict[str, float]] = {
     "length": {
-        "m": 1.0, "mm": 0.001, "cm": 0.01, "km": 1000.0, "in": FOOT_M / 12, "ft": FOOT_M,
-        "ftUS": US_SURVEY_FOOT_M, "yd": _YARD_M, "mi": 5280 * FOOT_M, "mile": 5280 * FOOT_M,
+        "m": 1.0,
+        "mm": 0.001,
+        "cm": 0.01,
+        "km": 1000.0,
+        "in": FOOT_M / 12,
+        "ft": FOOT_M,
+        "ftUS": US_SURVEY_FOOT_M,
+        "yd": _YARD_M,
+        "mi": 5280 * FOOT_M,
+        "mile": 5280 * FOOT_M,
     },
     "area": {
-        "m2": 1.0, "ha": 10_000.0, "km2": 1e6, "ft2": FOOT_M**2, "yd2": _YARD_M**2, "acre": 43_560 * FOOT_M**2,
+        "m2": 1.0,
+        "ha": 10_000.0,
+        "km2": 1e6,
+        "ft2": FOOT_M**2,
+        "yd2": _YARD_M**2,
+        "acre": 43_560 * FOOT_M**2,
     },
-    "soil_volume": {"m3": 1.0, "yd3": _YARD_M**3, "ft3": FOOT_M**3, "L": 0.001},
+    "soil_volume": {"m3": 1.0, "yd3": _YARD_M**3, "ft3": FOOT_M**3, "in3": (FOOT_M / 12) ** 3, "L": 0.001, "cm3": 1e-6},
     "density": {
-        "kg/m3": 1.0, "t/m3": 1000.0, "g/cm3": 1000.0, "Mg/m3": 1000.0, "lb/ft3": _LB_FT3, "pcf": _LB_FT3,
-        "lb/yd3": POUND_KG / _YARD_M**3, "kN/m3": 1000.0 / STANDARD_GRAVITY_M_S2,
+        "kg/m3": 1.0,
+        "t/m3": 1000.0,
+        "g/cm3": 1000.0,
+        "Mg/m3": 1000.0,
+        "lb/ft3": _LB_FT3,
+        "pcf": _LB_FT3,
+        "lb/yd3": POUND_KG / _YARD_M**3,
+        "kN/m3": 1000.0 / STANDARD_GRAVITY_M_S2,
     },
     "mass": {"kg": 1.0, "t": 1000.0, "lb": POUND_KG, "short ton": 2000 * POUND_KG, "ton": 2000 * POUND_KG},
     "water_volume": {"L": 1.0, "m3": 1000.0, "gal": GALLON_L, "ft3": 1000 * FOOT_M**3},
@@ -84,7 +104,7 @@ def parse_quantity(text: str, dimension: str) -> float:
     table = UNITS[dimension]
     match = _QUANTITY.match(text)
     if match is None or match.group(2) is None:
-        raise ValueError(f"it must be a number, or a number with its unit such as \"1.5 {next(iter(table))}\"")
+        raise ValueError(f'it must be a number, or a number with its unit such as "1.5 {next(iter(table))}"')
     unit = _spell(match.group(2))
     if unit not in table:
         raise ValueError(f"unit {match.group(2)!r} is not one of {', '.join(table)}")
@@ -104,8 +124,8 @@ def _spell(unit: str) -> str:
 class UnitSystem:
     """The units in which a site's numbers are written and shown.
 
-    ``foot_m`` is the foot of the site: international, or US survey where the CRS says so. It holds for lengths and
-    elevations only; areas, volumes and densities always use the international foot.
+    ``foot_m`` is the foot of the site: international, or US survey where the CRS says so. It holds for
+    lengths and elevations only; areas, volumes and densities always use the international foot.
     """
 
     name: str

@@ -19,9 +19,7 @@ from earthwork.errors import FileError
 from earthwork.units import UNITS
 
 #: Cells that stand for a missing value, lower-case.
-MISSING = frozenset(
-    {"", "-", "--", "–", "—", "n/a", "na", "n.a.", "#n/a", "nan", "null", "none", "nil", "?", "."}
-)
+MISSING = frozenset({"", "-", "--", "–", "—", "n/a", "na", "n.a.", "#n/a", "nan", "null", "none", "nil", "?", "."})
 _PLAIN = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)([eE][+-]?\d+)?")
 _COMMA = re.compile(r"[+-]?(\d+,\d*|,\d+)([eE][+-]?\d+)?")
 _WITH_UNIT = re.compile(r"([+-]?[\d.,]+(?:[eE][+-]?\d+)?)\s*([^\d\s.,].*)")
@@ -142,9 +140,7 @@ def column_name(text: str) -> str:
     """
     name = text.strip()
     suffix = None
-    if (
-        (match := re.search(r"[\[(]([^\])]*)[\])]\s*$", name)) and (suffix := _unit_suffix(match.group(1)))
-    ) or (
+    if ((match := re.search(r"[\[(]([^\])]*)[\])]\s*$", name)) and (suffix := _unit_suffix(match.group(1)))) or (
         (match := re.search(r"[,_\s]\s*(%|\S*/\S+)\s*$", name)) and (suffix := _unit_suffix(match.group(1)))
     ):
         name = name[: match.start()]
@@ -240,13 +236,8 @@ def _number(cell: str, *, decimal_comma: bool) -> float | str:
     if _PLAIN.fullmatch(bare):
         return float(bare)
     if "," in bare and re.fullmatch(r"[+-]?[\d.,]+", bare):
-        return (
-            "may have a decimal comma or a comma for thousands; write it with a decimal point and no other "
-            "comma"
-        )
-    if (match := _WITH_UNIT.fullmatch(cell)) and any(
-        match.group(2).strip() in units for units in UNITS.values()
-    ):
+        return "may have a decimal comma or a comma for thousands; write it with a decimal point and no other comma"
+    if (match := _WITH_UNIT.fullmatch(cell)) and any(match.group(2).strip() in units for units in UNITS.values()):
         return f"has a unit; put {match.group(2).strip()} into the name of the column"
     if cell[0] in "<>~≈":
         return "is a bound, not a value; give the value, or leave the cell empty"

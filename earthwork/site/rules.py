@@ -38,9 +38,7 @@ def _materials(model: SiteModel) -> Iterator[str]:
     used += [(f"stratum[{i + 1}].material", s.material) for i, s in enumerate(model.stratum)]
     used += [(f"allowance[{i + 1}].material", a.material) for i, a in enumerate(model.allowance)]
     used += [(f"borrow[{i + 1}].material", b.material) for i, b in enumerate(model.borrow)]
-    used += [
-        (f"section[{i + 1}].source", s.source) for i, s in enumerate(model.section) if s.source != "imported"
-    ]
+    used += [(f"section[{i + 1}].source", s.source) for i, s in enumerate(model.section) if s.source != "imported"]
     for i, site in enumerate(model.disposal):
         used += [(f"disposal[{i + 1}].accepts", name) for name in site.accepts or ()]
     for key, name in used:
@@ -55,14 +53,20 @@ def _soils(model: SiteModel) -> Iterator[str]:
     for name, material in model.material.items():
         ways = {
             "proctor": material.proctor is not None,
+            "relative_density": material.relative_density is not None,
             "fill.dry_density": material.fill is not None,
             "shrink_percent_of_bank": material.shrink_percent_of_bank is not None,
         }
         given = [key for key, there in ways.items() if there]
         if len(given) > 1:
+            yield (f"material.{name}: {' and '.join(given)} are given; keep one, each says what it becomes as fill")
+        if (material.liquid_limit is None) != (material.plastic_limit is None):
+            yield f"material.{name}: give both liquid_limit and plastic_limit, or neither (non-plastic)"
+        elif (material.plastic_limit or 0) > (material.liquid_limit or 0):
             yield (
-                f"material.{name}: {' and '.join(given)} are given; keep one, each says what it becomes as "
-                "fill"
+                f"material.{name}.plastic_limit = {material.plastic_limit:g}: it must be at most "
+                "liquid_limit = "
+                f"{material.liquid_limit:g}"
             )
         if material.use == "rock" and material.proctor is not None:
             yield (
@@ -85,14 +89,10 @@ def _strata(model: SiteModel) -> Iterator[str]:
         open_bottom = stratum.bottom is None and stratum.thickness is None
         if last and not open_bottom:
             yield (
-                f"stratum[{i + 1}] ({stratum.material}): the last stratum has no bottom; take bottom or "
-                "thickness out"
+                f"stratum[{i + 1}] ({stratum.material}): the last stratum has no bottom; take bottom or thickness out"
             )
         if not last and open_bottom:
-            yield (
-                f"stratum[{i + 1}] ({stratum.material}): bottom or thickness is missing; only the last has "
-                "none"
-            )
+            yield (f"stratum[{i + 1}] ({stratum.material}): bottom or thickness is missing; only the last has none")
 
 
 def _fill(model: SiteModel) -> Iterator[str]:
@@ -111,6 +111,19 @@ def _fill(model: SiteModel) -> Iterator[str]:
                 f"{required:g} %; "
                 "it is the mean that crews reach, and they overshoot"
             )
+    if (
+        fill.relative_density is not None
+        and fill.expected_relative_density is not None
+        and fill.expected_relative_density < fill.relative_density
+    ):
+        yield (
+            f"fill.expected_relative_density = {fill.expected_relative_density:g}: it must be at least the "
+            "required "
+            f"{fill.relative_density:g} %"
+        )
+    if fill.saturation_window is not None and fill.saturation_window[0] >= fill.saturation_window[1]:
+        low, high = fill.saturation_window
+        yield f"fill.saturation_window = [{low:g}, {high:g}]: the first must be the lower one"
     if fill.lift_thickness is not None and fill.loose_lift_thickness is not None:
         yield "fill.lift_thickness and fill.loose_lift_thickness are both given: keep one"
     if fill.water_content_window is not None:

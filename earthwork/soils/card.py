@@ -7,18 +7,26 @@ densities.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING, Any, Literal
-
-import numpy as np
 
 from earthwork.errors import SoilError, Warning
 from earthwork.soils import phase, states
 
 if TYPE_CHECKING:
     from earthwork.site import Site
+    from earthwork.soils.classify import Classification
+    from earthwork.soils.consequences import Consequences
+    from earthwork.soils.curve import CompactionCurve
+    from earthwork.soils.in_place import TestSet
+    from earthwork.soils.placing import FieldLog
+    from earthwork.soils.records import MaterialTests
     from earthwork.soils.result import SoilResult
+    from earthwork.soils.suction import SuctionEstimate
+    from earthwork.soils.uncertainty import ShrinkUncertainty
+    from earthwork.soils.window import PlacingWindow
 
 State = Literal["bank", "loose", "compacted"]
 STATES: tuple[State, ...] = ("bank", "loose", "compacted")
@@ -64,16 +72,31 @@ class SoilCard:
     bank_water_content_percent: float | None = None
     fill_dry_density_kg_m3: float | None = None
     fill_dry_density_from: str | None = None
+    required_dry_density_kg_m3: float | None = None
     method: str | None = None
     max_dry_density_kg_m3: float | None = None
     optimum_water_content_percent: float | None = None
+    laboratory_max_dry_density_kg_m3: float | None = None
+    laboratory_optimum_water_content_percent: float | None = None
     relative_compaction_percent: float | None = None
     expected_compaction_percent: float | None = None
+    expected_compaction_from: str | None = None
+    fill_relative_density_percent: float | None = None
+    bank_relative_density_percent: float | None = None
     target_water_content_percent: float | None = None
     window_water_content_percent: tuple[float, float] | None = None
+    saturation_window_percent: tuple[float, float] | None = None
+    air_voids_max_percent: float | None = None
     loss_fraction: float = 0.0
-    shrinkage_factor_sd: float | None = None
+    bank_m3_per_compacted_m3_per_point: float | None = None
+    uncertainty: ShrinkUncertainty | None = None
     bands: tuple[Band, ...] = ()
+    curve: CompactionCurve | None = None
+    bank_tests: TestSet | None = None
+    field_log: FieldLog | None = None
+    classification: Classification | None = None
+    consequences: Consequences | None = None
+    suction: SuctionEstimate | None = None
     assumed: tuple[str, ...] = ()
     warnings: tuple[Warning, ...] = ()
 
@@ -107,6 +130,11 @@ class SoilCard:
     def load_factor(self) -> float:
         return states.load_factor(self.bank_dry_density_kg_m3, self.loose_dry_density_kg_m3)
 
+    @property
+    def shrinkage_factor_sd(self) -> float | None:
+        """Standard deviation of the shrinkage factor; None when no test and no range stands behind it."""
+        return None if self.uncertainty is None else self.uncertainty.sd
+
     # --- phases -----------------------------------------------------------------------------------
 
     @property
@@ -121,16 +149,18 @@ class SoilCard:
 
     @property
     def bank_saturation_percent(self) -> float | None:
-        return _saturation(
-            self.bank_dry_density_kg_m3, self.bank_water_content_percent, self.specific_gravity
-        )
+        return self.saturation_percent_at(self.bank_dry_density_kg_m3, self.bank_water_content_percent)
 
     @property
     def fill_saturation_percent(self) -> float | None:
         """At the fill dry density and the target water content."""
-        return _saturation(
-            self.fill_dry_density_kg_m3, self.target_water_content_percent, self.specific_gravity
-        )
+        return self.saturation_percent_at(self.fill_dry_density_kg_m3, self.target_water_content_percent)
+
+    def saturation_percent_at(self, dry_density: float | None, water_content: float | None) -> float | None:
+        """Saturation [%] of a state; None when one of its figures is not known."""
+        if dry_density is None or water_content is None:
+            return None
+        return float(phase.saturation_percent(dry_density, water_content, self.specific_gravity))
 
     @property
     def zero_air_voids_water_content_percent(self) -> float | None:
@@ -151,6 +181,22 @@ class SoilCard:
         """Moist mass per dry mass as loaded, at the bank water content (taken as dry when that is not known)."""
         return 1 + (self.bank_water_content_percent or 0.0) / 100
 
+    def placing_window(self) -> PlacingWindow | None:
+        """The states that the fill may have when it is placed; None for what has no target water content."""
+        if self.required_dry_density_kg_m3 is None or self.target_water_content_percent is None:
+            return None
+        from earthwork.soils.window import PlacingWindow
+
+        target = None
+        if self.fill_dry_density_kg_m3 is not None:
+            target = (self.target_water_content_percent, self.fill_dry_density_kg_m3)
+        return PlacingWindow(
+            min_dry_density_kg_m3=self.required_dry_density_kg_m3, specific_gravity=self.specific_gravity,
+            water_content_percent=self.window_water_content_percent,
+            saturation_percent=self.saturation_window_percent, air_voids_max_percent=self.air_voids_max_percent,
+            target=target,
+        )  # fmt: skip
+
     # --- dry mass to volume and back --------------------------------------------------------------
 
     def dry_density_kg_m3(self, state: State, *, band: int | None = None) -> float:
@@ -164,9 +210,7 @@ class SoilCard:
         if state == "loose":
             return self.loose_dry_density_kg_m3
         if state != "compacted":
-            raise SoilError(
-                f"material.{self.material}: state is {state!r}; it must be one of {', '.join(STATES)}"
-            )
+            raise SoilError(f"material.{self.material}: state is {state!r}; it must be one of {', '.join(STATES)}")
         density = self.fill_dry_density_kg_m3 if band is None else self.bands[band].fill_dry_density_kg_m3
         if density is None:
             raise SoilError(
@@ -206,11 +250,17 @@ class SoilCard:
             "loose_dry_density_kg_m3": self.loose_dry_density_kg_m3,
             "fill_dry_density_kg_m3": self.fill_dry_density_kg_m3,
             "fill_dry_density_from": self.fill_dry_density_from,
+            "required_dry_density_kg_m3": self.required_dry_density_kg_m3,
             "method": self.method,
             "max_dry_density_kg_m3": self.max_dry_density_kg_m3,
             "optimum_water_content_percent": self.optimum_water_content_percent,
+            "laboratory_max_dry_density_kg_m3": self.laboratory_max_dry_density_kg_m3,
+            "laboratory_optimum_water_content_percent": self.laboratory_optimum_water_content_percent,
             "relative_compaction_percent": self.relative_compaction_percent,
             "expected_compaction_percent": self.expected_compaction_percent,
+            "expected_compaction_from": self.expected_compaction_from,
+            "fill_relative_density_percent": self.fill_relative_density_percent,
+            "bank_relative_density_percent": self.bank_relative_density_percent,
             "target_water_content_percent": self.target_water_content_percent,
             "window_water_content_percent": _listed(self.window_water_content_percent),
             "bank_water_content_percent": self.bank_water_content_percent,
@@ -228,32 +278,46 @@ class SoilCard:
             "fill_saturation_percent": self.fill_saturation_percent,
             "zero_air_voids_water_content_percent": self.zero_air_voids_water_content_percent,
             "shrinkage_factor_sd": self.shrinkage_factor_sd,
-            "tests": {"proctor": None, "bank": None, "field": None},
+            "bank_m3_per_compacted_m3_per_point": self.bank_m3_per_compacted_m3_per_point,
+            "uncertainty": _dict(self.uncertainty),
+            "tests": {
+                "proctor": _dict(self.curve),
+                "bank": _dict(self.bank_tests),
+                "field": _dict(self.field_log),
+            },
             "bands": [band.to_dict() for band in self.bands],
+            "window": _dict(self.placing_window()),
+            "classification": _dict(self.classification),
+            "consequences": _dict(self.consequences),
+            "suction": _dict(self.suction),
             "assumed": list(self.assumed),
         }
 
 
-def _saturation(dry_density: float | None, water: float | None, gravity: float) -> float | None:
-    if dry_density is None or water is None or not dry_density < gravity * phase.WATER_DENSITY_KG_M3:
-        return None
-    return float(np.asarray(phase.saturation_percent(dry_density, water, gravity)))
+def _dict(part: Any) -> dict[str, Any] | None:
+    return None if part is None else part.to_dict()
 
 
 def _listed(pair: tuple[float, float] | None) -> list[float] | None:
     return None if pair is None else list(pair)
 
 
-def soil_cards(site: Site) -> dict[str, SoilCard]:
+def soil_cards(site: Site, tests: Mapping[str, MaterialTests] | None = None) -> dict[str, SoilCard]:
     """A card per material of the site, in the order of the site file.
 
+    Args:
+        site: the site.
+        tests: tests by material; by default those of the files that the site names are read.
+
     Raises:
+        FileError: a file of tests that cannot be read; the message lists every fault.
         SiteFileError: no ``[material.*]`` or no ``[fill]``.
         SoilError: a soil that cannot be; the message lists every fault of every material.
     """
+    from earthwork.files.soil_tests import read_site_tests
     from earthwork.soils.build import build_cards
 
-    return build_cards(site)
+    return build_cards(site, read_site_tests(site) if tests is None else tests)
 
 
 def soil_warnings(cards: dict[str, SoilCard]) -> tuple[Warning, ...]:

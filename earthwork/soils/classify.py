@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -126,17 +127,13 @@ def classify(
         if grading is not None and liquid_limit is None and plastic_limit is None:
             notes.append("no limits are given: taken as non-plastic")
         symbol = _fine_symbol(liquid_limit, plasticity, organic)
-        clayey = (
-            liquid_limit is not None and plasticity is not None and plasticity >= max(a_line(liquid_limit), 4)
-        )
+        clayey = liquid_limit is not None and plasticity is not None and plasticity >= max(a_line(liquid_limit), 4)
         kind = _FINE_NAMES.get(symbol, "organic clay" if clayey else "organic silt")
         name = _fine_name(kind, gravel, sand, fines)
         uniformity = curvature = None
     else:
         assert grading is not None
-        symbol, name, uniformity, curvature = _coarse(
-            grading, gravel, sand, fines, liquid_limit, plasticity, organic
-        )
+        symbol, name, uniformity, curvature = _coarse(grading, gravel, sand, fines, liquid_limit, plasticity, organic)
     return Classification(
         symbol=symbol, name=name, gravel_percent=gravel, sand_percent=sand, fines_percent=fines,
         liquid_limit=liquid_limit, plasticity_index=plasticity, uniformity=uniformity, curvature=curvature,
@@ -210,9 +207,7 @@ def _coarse(
     other = f"{'sand' if is_gravel else 'gravel'}" if (sand if is_gravel else gravel) >= 15 else ""
     uniformity, curvature = grading.uniformity, grading.curvature
     fine = _fine_symbol(liquid_limit, plasticity, False)
-    suffix, word = {"CL": ("C", "clay"), "CH": ("C", "clay"), "CL-ML": ("C", "silty clay")}.get(
-        fine, ("M", "silt")
-    )
+    suffix, word = {"CL": ("C", "clay"), "CH": ("C", "clay"), "CL-ML": ("C", "silty clay")}.get(fine, ("M", "silt"))
     if fines > 12:
         if fine == "CL-ML":
             symbol, name = f"{letter}C-{letter}M", f"silty, clayey {noun}"
@@ -246,7 +241,7 @@ def grading_of(passing: Sequence[tuple[float, float]]) -> Grading:
     60.1
     """
     ordered = sorted(((float(size), float(percent)) for size, percent in passing), reverse=True)
-    for (coarse, more), (fine, less) in zip(ordered, ordered[1:], strict=False):
+    for (coarse, more), (fine, less) in pairwise(ordered):
         if coarse == fine:
             raise SoilError(f"grading: the {coarse:g} mm sieve is given twice; keep one")
         if less > more:

@@ -124,11 +124,7 @@ def _cautions(soil: Classification, bank: float | None, gravity: float) -> list[
             "(crumb ASTM D6572, pinhole ASTM D4647)"
         )
     if symbol == "MH":
-        found.append(
-            "elastic silt: mica or volcanic ash may rebound under rollers and lose strength when remoulded"
-        )
+        found.append("elastic silt: mica or volcanic ash may rebound under rollers and lose strength when remoulded")
     if symbol in ("SP", "SP-SM", "SW") and (soil.gravel_percent or 0) < 15:
-        found.append(
-            "clean sand: loose and saturated it may liquefy; surface tests read low until it is confined"
-        )
+        found.append("clean sand: loose and saturated it may liquefy; surface tests read low until it is confined")
     return found

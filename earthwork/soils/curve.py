@@ -132,9 +132,7 @@ def fit_curve(
     parabola = fits["parabola"]
     if parabola is None:
         raise SoilError(_no_peak(where, used, left_out, water, density))
-    admissible = [
-        fit for fit in fits.values() if fit is not None and _admissible(fit, water, specific_gravity)
-    ]
+    admissible = [fit for fit in fits.values() if fit is not None and _admissible(fit, water, specific_gravity)]
     chosen = _choose(form, admissible, where)
     warnings += _doubts(chosen, admissible, used, water, density, specific_gravity, where)
     return CompactionCurve(
@@ -181,8 +179,7 @@ def _possible(
         warnings.append(
             Warning(
                 "points-left-out",
-                f"{where}: left out of the fit: {listed}. Check water contents and specific gravity "
-                f"{gravity:g}",
+                f"{where}: left out of the fit: {listed}. Check water contents and specific gravity {gravity:g}",
             )
         )
     if doubtful:
@@ -205,9 +202,7 @@ def _no_peak(
         course, side = "do not bend down", ""
     else:
         course, side = (
-            ("rise to the end", " on the wet side")
-            if slope > 0
-            else ("fall from the start", " on the dry side")
+            ("rise to the end", " on the wet side") if slope > 0 else ("fall from the start", " on the dry side")
         )
     dropped = f"; left out beyond zero air voids: {_names(left_out)}" if left_out else ""
     return (

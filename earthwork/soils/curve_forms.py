@@ -74,9 +74,7 @@ def _bounded(water: np.ndarray, parameters: np.ndarray, gravity: float) -> np.nd
     return lower * ((dry / lower) ** -_SHARPNESS + (wet / lower) ** -_SHARPNESS) ** (-1 / _SHARPNESS)
 
 
-def _estimate(
-    form: str, water: np.ndarray, density: np.ndarray, centre: float, gravity: float
-) -> np.ndarray | None:
+def _estimate(form: str, water: np.ndarray, density: np.ndarray, centre: float, gravity: float) -> np.ndarray | None:
     """Least-squares parameters of a form; None when there are too few different water contents."""
     degree = {"line": 1, "parabola": 2, "cubic": 3, "bounded": 2}[form]
     if len(np.unique(water)) <= degree:
@@ -133,9 +131,7 @@ def fit_form(form: str, water: np.ndarray, density: np.ndarray, gravity: float) 
     )  # fmt: skip
 
 
-def _peak(
-    form: str, predict: Predict, parameters: np.ndarray, centre: float, water: np.ndarray
-) -> float | None:
+def _peak(form: str, predict: Predict, parameters: np.ndarray, centre: float, water: np.ndarray) -> float | None:
     """Water content of the highest density inside the data; None when an end is as high."""
     low, high = float(water.min()), float(water.max())
     if form == "bounded":
@@ -169,9 +165,7 @@ def _covariance(
         return None, None
     residual = predict(water, parameters) - density
     variance = float(residual @ residual) / spare
-    jacobian = np.column_stack(
-        [_slope(lambda p: predict(water, p), parameters, i) for i in range(len(parameters))]
-    )
+    jacobian = np.column_stack([_slope(lambda p: predict(water, p), parameters, i) for i in range(len(parameters))])
     try:
         return variance**0.5, variance * np.linalg.inv(jacobian.T @ jacobian)
     except np.linalg.LinAlgError:
@@ -197,9 +191,7 @@ def _peak_errors(
         return None, None
     step = 0.02
     around = np.array([optimum - step, optimum, optimum + step])
-    by_parameter = np.array(
-        [_slope(lambda p: predict(around, p), parameters, i) for i in range(len(parameters))]
-    )
+    by_parameter = np.array([_slope(lambda p: predict(around, p), parameters, i) for i in range(len(parameters))])
     level = by_parameter[:, 1]
     low, middle, high = predict(around, parameters)
     curvature = (low - 2 * middle + high) / step**2

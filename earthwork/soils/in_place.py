@@ -48,9 +48,7 @@ def sand_cone_moist_density(
     return hole_soil_mass * sand_density / (sand_mass_used - cone_sand_mass)
 
 
-def drive_cylinder_moist_density(
-    cylinder_and_soil_mass: float, cylinder_mass: float, cylinder_volume: float
-) -> float:
+def drive_cylinder_moist_density(cylinder_and_soil_mass: float, cylinder_mass: float, cylinder_volume: float) -> float:
     """Moist density by the drive cylinder ([astm-d2937]), also of a mould: (full − empty) / volume [kg, m³].
 
     >>> round(drive_cylinder_moist_density(3.0, 1.2, 0.001), 6)
@@ -128,9 +126,7 @@ def gauge_water_offset(readings: Sequence[tuple[float, float, float]]) -> float:
     -15.0
     """
     if not readings:
-        raise SoilError(
-            "nuclear gauge: no readings with an oven water content; the offset needs at least one"
-        )
+        raise SoilError("nuclear gauge: no readings with an oven water content; the offset needs at least one")
     true = [moist * oven / (100 + oven) for moist, _, oven in readings]
     return statistics.fmean(t - gauge for t, (_, gauge, _) in zip(true, readings, strict=True))
 
@@ -196,9 +192,7 @@ class TestSet:
     tests: tuple[DensityTest, ...]
     dry_density: TestSummary
     water_content: TestSummary | None
-    groups: tuple[
-        tuple[str, TestSummary], ...
-    ] = ()  #: dry density by stratum or lift, where the crew notes one
+    groups: tuple[tuple[str, TestSummary], ...] = ()  #: dry density by stratum or lift, where the crew notes one
     left_out: tuple[tuple[DensityTest, str], ...] = ()  #: impossible tests with the reason
 
     def to_dict(self) -> dict[str, Any]:
@@ -219,9 +213,7 @@ class TestSet:
         }
 
 
-def summarise_tests(
-    tests: Sequence[DensityTest], left_out: Sequence[tuple[DensityTest, str]] = ()
-) -> TestSet:
+def summarise_tests(tests: Sequence[DensityTest], left_out: Sequence[tuple[DensityTest, str]] = ()) -> TestSet:
     """Mean and scatter of in-place tests, outliers named, by group where groups are noted."""
     labels = [test.label for test in tests]
     wet = [test for test in tests if test.water_content_percent is not None]

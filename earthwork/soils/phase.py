@@ -1,6 +1,6 @@
 """Phase relations: solids, water and air in a volume of soil, one formula per function.
 
-Arguments are floats or numpy arrays of one shape, and the answer has that shape. Water content is percent
+States are floats or numpy arrays of one shape, and the answer has that shape. Water content is percent
 of dry mass. Densities are kg/m³; any other unit works as long as ``water_density`` is given in it too (unit
 weights as well, since the formulas are ratios). Grain density is specific gravity × water density.
 
@@ -67,9 +67,7 @@ def moist_density(dry_density: Value, water_content_percent: Value) -> Value:
     return dry_density * (1 + water_content_percent / 100)
 
 
-def void_ratio(
-    dry_density: Value, specific_gravity: Value, *, water_density: float = WATER_DENSITY_KG_M3
-) -> Value:
+def void_ratio(dry_density: Value, specific_gravity: float, *, water_density: float = WATER_DENSITY_KG_M3) -> Value:
     """Volume of voids per volume of solids: e = Gs ρw / ρd − 1.
 
     Raises:
@@ -83,7 +81,7 @@ def void_ratio(
 
 
 def dry_density_of_void_ratio(
-    void_ratio: Value, specific_gravity: Value, *, water_density: float = WATER_DENSITY_KG_M3
+    void_ratio: Value, specific_gravity: float, *, water_density: float = WATER_DENSITY_KG_M3
 ) -> Value:
     """Dry density at a void ratio: ρd = Gs ρw / (1 + e).
 
@@ -108,7 +106,7 @@ def porosity(void_ratio: Value) -> Value:
 def saturation_percent(
     dry_density: Value,
     water_content_percent: Value,
-    specific_gravity: Value,
+    specific_gravity: float,
     *,
     water_density: float = WATER_DENSITY_KG_M3,
 ) -> Value:
@@ -123,14 +121,12 @@ def saturation_percent(
     _need_not_negative("water content", water_content_percent)
     _need_below_grains(dry_density, specific_gravity, water_density)
     e = specific_gravity * water_density / dry_density - 1
-    _need(
-        np.greater(e, 0), "dry density", dry_density, "below the grain density, or there are no voids to fill"
-    )
+    _need(np.greater(e, 0), "dry density", dry_density, "below the grain density, or there are no voids to fill")
     return water_content_percent * specific_gravity / e
 
 
 def zero_air_voids_water_content_percent(
-    dry_density: Value, specific_gravity: Value, *, water_density: float = WATER_DENSITY_KG_M3
+    dry_density: Value, specific_gravity: float, *, water_density: float = WATER_DENSITY_KG_M3
 ) -> Value:
     """The greatest water content that a dry density has room for [%]: w = ρw/ρd − 1/Gs.
 
@@ -142,21 +138,19 @@ def zero_air_voids_water_content_percent(
 
 
 def zero_air_voids_dry_density(
-    water_content_percent: Value, specific_gravity: Value, *, water_density: float = WATER_DENSITY_KG_M3
+    water_content_percent: Value, specific_gravity: float, *, water_density: float = WATER_DENSITY_KG_M3
 ) -> Value:
     """The greatest dry density at a water content: ρd = Gs ρw / (1 + w Gs).
 
     >>> round(zero_air_voids_dry_density(22.5, 2.5), 6)
     1600.0
     """
-    return dry_density_at_saturation(
-        water_content_percent, specific_gravity, 100.0, water_density=water_density
-    )
+    return dry_density_at_saturation(water_content_percent, specific_gravity, 100.0, water_density=water_density)
 
 
 def dry_density_at_saturation(
     water_content_percent: Value,
-    specific_gravity: Value,
+    specific_gravity: float,
     saturation_percent: float,
     *,
     water_density: float = WATER_DENSITY_KG_M3,
@@ -169,15 +163,13 @@ def dry_density_at_saturation(
     _need_not_negative("water content", water_content_percent)
     _need_positive("specific gravity", specific_gravity)
     _need(0 < saturation_percent <= 100, "saturation", saturation_percent, "more than 0 and at most 100 %")
-    return (
-        specific_gravity * water_density / (1 + water_content_percent * specific_gravity / saturation_percent)
-    )
+    return specific_gravity * water_density / (1 + water_content_percent * specific_gravity / saturation_percent)
 
 
 def air_voids_percent(
     dry_density: Value,
     water_content_percent: Value,
-    specific_gravity: Value,
+    specific_gravity: float,
     *,
     water_density: float = WATER_DENSITY_KG_M3,
 ) -> Value:
@@ -193,7 +185,7 @@ def air_voids_percent(
 
 def dry_density_at_air_voids(
     water_content_percent: Value,
-    specific_gravity: Value,
+    specific_gravity: float,
     air_voids_percent: float,
     *,
     water_density: float = WATER_DENSITY_KG_M3,
@@ -211,7 +203,7 @@ def dry_density_at_air_voids(
 
 
 def saturated_density(
-    void_ratio: Value, specific_gravity: Value, *, water_density: float = WATER_DENSITY_KG_M3
+    void_ratio: Value, specific_gravity: float, *, water_density: float = WATER_DENSITY_KG_M3
 ) -> Value:
     """Density with all voids full of water: ρsat = ρw (Gs + e) / (1 + e).
 

@@ -27,9 +27,7 @@ def relative_density_percent(dry_density: float, min_dry_density: float, max_dry
     return 100 * max_dry_density * (dry_density - min_dry_density) / (dry_density * spread)
 
 
-def dry_density_of_relative(
-    relative_density_percent: float, min_dry_density: float, max_dry_density: float
-) -> float:
+def dry_density_of_relative(relative_density_percent: float, min_dry_density: float, max_dry_density: float) -> float:
     """Dry density at a relative density: ρd = ρmax ρmin / (ρmax − Dr (ρmax − ρmin)). Source: [das].
 
     >>> dry_density_of_relative(37.5, 1500.0, 1800.0)
@@ -52,11 +50,7 @@ def relative_compaction_of_relative_density(
     >>> round(relative_compaction_of_relative_density(37.5, 1500.0, 1800.0), 4)
     88.8889
     """
-    return (
-        100
-        * dry_density_of_relative(relative_density_percent, min_dry_density, max_dry_density)
-        / max_dry_density
-    )
+    return 100 * dry_density_of_relative(relative_density_percent, min_dry_density, max_dry_density) / max_dry_density
 
 
 def lee_singh_relative_compaction(relative_density_percent: float) -> float:
@@ -69,9 +63,7 @@ def lee_singh_relative_compaction(relative_density_percent: float) -> float:
     90.0
     """
     if not 0 <= relative_density_percent <= 100:
-        raise SoilError(
-            f"relative density is {relative_density_percent:g} %; the correlation holds for 0 to 100 %"
-        )
+        raise SoilError(f"relative density is {relative_density_percent:g} %; the correlation holds for 0 to 100 %")
     return 80 + 0.2 * relative_density_percent
 
 

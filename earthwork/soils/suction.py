@@ -54,9 +54,7 @@ class RetentionCurve:
             SoilError: a saturation that is not between 0 and 100 %.
         """
         if not 0 < saturation_percent <= 100:
-            raise SoilError(
-                f"saturation is {saturation_percent:g} %; it must be more than 0 and at most 100 %"
-            )
+            raise SoilError(f"saturation is {saturation_percent:g} %; it must be more than 0 and at most 100 %")
         # The curve falls steadily with the logarithm of suction: halve the interval to the last digit.
         low, high = math.log(1e-6), math.log(_DRY_KPA)
         if saturation_percent >= self.saturation_percent(math.exp(low)):
@@ -84,8 +82,7 @@ def plastic_curve(fines_percent: float, plasticity_index: float) -> RetentionCur
     low, high = PLASTIC_RANGE
     if not low <= weighted <= high:
         raise SoilError(
-            f"suction: the weighted plasticity index is {weighted:g}; the correlation holds for {low:g} to "
-            f"{high:g}"
+            f"suction: the weighted plasticity index is {weighted:g}; the correlation holds for {low:g} to {high:g}"
         )
     a = 0.00364 * weighted**3.35 + 4 * weighted + 11
     c = 0.0514 * weighted**0.465 + 0.5

@@ -140,7 +140,5 @@ def typical_soil(name: str) -> TypicalSoil:
     34.0
     """
     if name not in TYPICAL:
-        raise SoilError(
-            f"typical = {name!r}: not a type of the table; it must be one of {', '.join(TYPICAL)}"
-        )
+        raise SoilError(f"typical = {name!r}: not a type of the table; it must be one of {', '.join(TYPICAL)}")
     return TYPICAL[name]

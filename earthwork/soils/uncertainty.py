@@ -59,9 +59,7 @@ class ShrinkUncertainty:
         return {part.name: 3 * part.tests for part in self.parts if part.tests}
 
     def to_dict(self) -> dict[str, Any]:
-        shares = {
-            p.name: (p.relative_sd / self.relative_sd) ** 2 if self.relative_sd else 0.0 for p in self.parts
-        }
+        shares = {p.name: (p.relative_sd / self.relative_sd) ** 2 if self.relative_sd else 0.0 for p in self.parts}
         return {
             "shrinkage_factor_sd": self.sd,
             "parts": [
@@ -73,9 +71,7 @@ class ShrinkUncertainty:
         }  # fmt: skip
 
 
-def bank_volume_per_point(
-    max_dry_density: float, bank_dry_density: float, loss_fraction: float = 0.0
-) -> float:
+def bank_volume_per_point(max_dry_density: float, bank_dry_density: float, loss_fraction: float = 0.0) -> float:
     """Bank volume that one more point of compaction costs, per compacted volume [m³/m³].
 
     A compacted volume at Rc holds Rc ρmax; one point is ρmax / 100, dug as ρmax / (100 ρbank), more with
