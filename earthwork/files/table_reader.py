@@ -9,7 +9,6 @@ column.
 from __future__ import annotations
 
 import csv
-import io
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass
@@ -77,13 +76,7 @@ def read_source_table(path: Path) -> SourceTable:
     Raises:
         FileError: missing, not text, no header, no rows, or rows that do not fit the header.
     """
-    text = _decode(path)
-    lines = text.splitlines()
-    kept = [(i + 1, line) for i, line in enumerate(lines) if line.strip(" \t,;") and not line.startswith("#")]
-    if not kept:
-        raise FileError(f"{path}: empty; it must have a header row with column names, and a row per test")
-    separator = _separator(kept[0][1])
-    rows = [(number, next(csv.reader(io.StringIO(line), delimiter=separator))) for number, line in kept]
+    rows, separator = _rows(path, _decode(path))
     names = _column_names(path, rows[0][1])
     body = rows[1:]
     if body and (units := _unit_row(body[0][1])) is not None:
@@ -117,6 +110,29 @@ def _decode(path: Path) -> str:
     except UnicodeDecodeError:
         # What old spreadsheets write; a wrong guess could only spoil names, never digits.
         return data.decode("cp1252", errors="replace")
+
+
+def _rows(path: Path, text: str) -> tuple[list[tuple[int, list[str]]], str]:
+    """The rows with their line numbers, without blank ones and comments, and the separator."""
+    lines = text.splitlines(keepends=True)
+    start = next((i for i, line in enumerate(lines) if line.strip(" \t,;\r\n") and not line.startswith("#")), None)
+    if start is None:
+        raise FileError(f"{path}: empty; it must have a header row with column names, and a row per test")
+    declared = re.fullmatch(r"sep=(.)", lines[start].strip(), re.IGNORECASE)
+    if declared:
+        start += 1
+    separator = declared.group(1) if declared else _separator(lines[start])
+    reader = csv.reader(lines[start:], delimiter=separator)
+    rows = []
+    number = start + 1
+    try:
+        for cells in reader:
+            if any(cell.strip() for cell in cells) and not cells[0].startswith("#"):
+                rows.append((number, cells))
+            number = start + reader.line_num + 1
+    except csv.Error as error:
+        raise FileError(f"{path}: row {number}: not a row of cells ({error})") from None
+    return rows, separator
 
 
 def _separator(header: str) -> str:
