@@ -217,6 +217,6 @@ def _field(values: pandas.Series) -> np.ndarray:
     if array.dtype.kind in "iufb":
         return array
     listed = list(values)
-    if all(v is None or isinstance(v, int | float) and not isinstance(v, bool) for v in listed):
+    if all(v is None or (isinstance(v, int | float) and not isinstance(v, bool)) for v in listed):
         return np.array([np.nan if v is None else float(v) for v in listed])
     return np.array([None if v is None or v != v else str(v) for v in listed], dtype=object)

@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 from earthwork.reporting import colors
 from earthwork.reporting.display import show
@@ -61,14 +61,17 @@ def draw_balance_curve(
     axes.set_xlabel(f"shift of the grade that may move, {unit}   (+ raises it)")
     axes.set_ylabel(f"surplus of compacted fill, {units.label('soil_volume')}")
     for axis, values in ((axes.xaxis, x), (axes.yaxis, y)):
-        step = round_step(max(values) - min(values) or 1.0, 6)
-        axis.set_major_formatter(lambda v, _, step=step: number(v, step).replace("-", "−"))
+        axis.set_major_formatter(_plain_numbers(round_step(max(values) - min(values) or 1.0, 6)))
     figure.text(0.13, 0.94, title, fontsize=12, fontweight="bold")
     note = "Surplus after shrink and loss" + (
         f"; dotted: ± {show(sd_m3, 'soil_volume', units)}, one standard deviation from the soil tests" if sd_m3 else ""
     )
     figure.text(0.13, 0.895, note, fontsize=8.5, color=colors.FAINT)
     save_figure(figure, path)
+
+
+def _plain_numbers(step: float) -> Callable[[float, Any], str]:
+    return lambda value, _: number(value, step).replace("-", "−")
 
 
 def _name_sides(axes: Axes, x: Sequence[float], y: Sequence[float], target: float) -> None:

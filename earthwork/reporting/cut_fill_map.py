@@ -154,9 +154,11 @@ def _draw_zero_line(axes: Axes, depth: np.ndarray, classes: Classes, frame: Fram
         if not (sign.min() < level < sign.max()):
             continue
         drawn = axes.contour(east, north, sign, levels=[level], colors=colors.INK, linewidths=0.9)
-        kept = [p for path in drawn.get_paths() for p in path.to_polygons(closed_only=False) if _length(p) > shortest]
+        lines = [np.asarray(p) for path in drawn.get_paths() for p in path.to_polygons(closed_only=False)]
         drawn.remove()
-        for line in kept:
+        for line in lines:
+            if _length(line) <= shortest:
+                continue
             axes.plot(line[:, 0], line[:, 1], color=colors.INK, linewidth=0.9, zorder=4)
 
 

@@ -16,7 +16,7 @@ if TYPE_CHECKING:
 
 DPI = 150
 #: Names from people's files must not be read as formulas by the text engine.
-_RC = {
+_RC: dict[Any, Any] = {
     "font.family": "DejaVu Sans",
     "font.size": 8.5,
     "axes.edgecolor": FAINT,

@@ -122,7 +122,7 @@ def test_any_encoding(starters, encoding, json):
 
 def test_a_reader_that_leaves_is_no_failure(starters):
     process = subprocess.Popen(
-        [*RUN, "balance", str(starters["metric"]), "--json"], stdout=subprocess.PIPE, stderr=subprocess.PIPE
+        [*RUN, "balance", str(starters["metric"]), "--json", "--quiet"], stdout=subprocess.PIPE, stderr=subprocess.PIPE
     )
     assert process.stdout is not None
     process.stdout.close()
