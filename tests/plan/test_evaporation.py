@@ -25,8 +25,7 @@ def test_the_day_at_uccle_gives_the_printed_evaporation():
         vapour_kpa=vapour,
         wind_2m=wind,
         **{
-            k: uccle[k]
-            for k in ("maximum_c", "minimum_c", "solar_mj_m2", "latitude_deg", "elevation_m", "day_of_year")
+            k: uccle[k] for k in ("maximum_c", "minimum_c", "solar_mj_m2", "latitude_deg", "elevation_m", "day_of_year")
         },
     )
     assert depth == pytest.approx(uccle["printed_mm_day"], abs=0.05)

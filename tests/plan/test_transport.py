@@ -122,9 +122,7 @@ def test_cost_marginals_and_feasibility_agree_with_a_linear_program(seed):
     supply, need, cost, spare_rows, spare_columns = random_case(seed)
     other = by_linear_program(supply, need, cost, spare_rows, spare_columns)
     try:
-        plan = solve_transport(
-            supply, need, Costs.of_matrix(cost), spare_rows=spare_rows, spare_columns=spare_columns
-        )
+        plan = solve_transport(supply, need, Costs.of_matrix(cost), spare_rows=spare_rows, spare_columns=spare_columns)
     except TransportInfeasible as error:
         assert other.status == 2
         check_cut(error, supply, need, cost, spare_rows, spare_columns)
@@ -191,9 +189,7 @@ def test_unlike_ratios_agree_with_a_linear_program(seed, all_moves, monkeypatch)
     other = by_linear_program(supply, need, costs.block(), spare_rows, spare_columns, by_pair)
     if other.status == 2:
         with pytest.raises(TransportInfeasible, match="cannot be placed"):
-            solve_transport(
-                supply, need, costs, weight=weight, spare_rows=spare_rows, spare_columns=spare_columns
-            )
+            solve_transport(supply, need, costs, weight=weight, spare_rows=spare_rows, spare_columns=spare_columns)
         return
     plan = solve_transport(supply, need, costs, weight=weight, spare_rows=spare_rows, spare_columns=spare_columns)
     assert plan.cost == pytest.approx(other.fun, rel=1e-8)
@@ -325,6 +321,9 @@ def test_too_little_supply_names_the_columns_and_the_amount():
 def test_too_little_room_names_the_rows_and_the_amount():
     with pytest.raises(TransportInfeasible, match="2 sources lack a sink: 3 cannot be placed") as caught:
         solve_transport(
-            np.array([5.0, 6.0]), np.array([4.0, 4.0]), matrix_costs([1, 1], [1, 1]), spare_columns=np.array([True, True])
+            np.array([5.0, 6.0]),
+            np.array([4.0, 4.0]),
+            matrix_costs([1, 1], [1, 1]),
+            spare_columns=np.array([True, True]),
         )
     assert caught.value.rows.tolist() == [0, 1]
