@@ -105,12 +105,6 @@ class Stack:
         return max(files, key=lambda s: s.block or (0, 0)).block_start if files else (0, 0)
 
     @property
-    def tile_cells(self) -> int:
-        """Cells of a tile: fewer when more fields are held at once."""
-        fields = 4 + 2 * (len(self.strips) + len(self.sections) + len(self.excavations) + 2 * len(self.strata))
-        return 2**18 if not self.layered and self.limits is None else max(2**15, 2**21 // (fields + 8))
-
-    @property
     def materials(self) -> list[str]:
         """Names of the strata's materials, once each, from the top down."""
         return list(dict.fromkeys(stratum.material for stratum in self.strata))

@@ -52,6 +52,7 @@ def walk(
     *,
     threads: int | None = None,
     progress: Progress | None = None,
+    client: Any = None,
     tile_cells: int | None = None,
     band_rows: int | None = None,
 ) -> None:
@@ -62,13 +63,21 @@ def walk(
         tallies: counted into in place.
         threads: default: one a processor, at most 4.
         progress: called with (bands done, bands in all), from any thread, one call at a time.
+        client: a ``dask.distributed.Client``: the bands are then walked by its workers, which must see the files
+            under the same paths; the answer is the same to the last digit.
         tile_cells, band_rows: size of a tile and of a band; the result does not depend on them beyond rounding.
 
     Raises:
         FileError: a file cannot be read; KeyboardInterrupt passes through after the threads have stopped.
     """
-    count = threads or min(os.cpu_count() or 1, 4)
-    _Walk(stack, tallies, progress, tile_cells or stack.tile_cells, band_rows).run(count)
+    edges = band_edges(stack.grid.rows, stack.block, stack.block_start[0], band_rows)
+    whole = Walk(stack, tallies, progress, tile_cells=tile_cells or _tile_cells(stack, tallies), edges=edges)
+    if client is not None:
+        from earthwork.quantities.cluster import walk_on_cluster
+
+        walk_on_cluster(whole, client)
+    else:
+        whole.run(range(whole.bands), threads or min(os.cpu_count() or 1, 4))
 
 
 def band_edges(rows: int, block: tuple[int, int] | None, start: int = 0, band_rows: int | None = None) -> list[int]:
@@ -88,18 +97,32 @@ def band_edges(rows: int, block: tuple[int, int] | None, start: int = 0, band_ro
     return edges
 
 
-class _Walk:
+def _tile_cells(stack: Stack, tallies: Sequence[Tally]) -> int:
+    """Cells of a tile: fewer when more fields of 8 bytes a cell are held at once."""
+    if not stack.layered and all(getattr(tally, "depth_only", False) for tally in tallies):
+        return 2**18
+    layers = len(stack.strips) + len(stack.sections) + len(stack.excavations) + 2 * len(stack.strata)
+    return max(2**15, 2**20 // (16 + 2 * layers))
+
+
+class Walk:
     """The state of one walk: bands waiting, seams half known, counts waiting to be merged in order."""
 
     def __init__(
-        self, stack: Stack, tallies: Sequence[Tally], progress: Progress | None, tile_cells: int, band_rows: int | None
+        self,
+        stack: Stack,
+        tallies: Sequence[Tally],
+        progress: Progress | None,
+        *,
+        tile_cells: int,
+        edges: list[int],
     ) -> None:
         self.stack = stack
         self.tallies = tallies
         self.progress = progress
         self.grid: Grid = stack.grid
         self.depth_only = not stack.layered and all(getattr(tally, "depth_only", False) for tally in tallies)
-        self.edges = band_edges(self.grid.rows, stack.block, stack.block_start[0], band_rows)
+        self.edges = edges
         self.tile_cells = tile_cells
         self.lock = threading.Lock()
         self.merging = threading.Lock()
@@ -113,12 +136,13 @@ class _Walk:
     def bands(self) -> int:
         return len(self.edges) - 1
 
-    def run(self, threads: int) -> None:
-        threads = max(1, min(threads, self.bands))
+    def run(self, bands: range, threads: int) -> None:
+        """Walk some neighbouring bands; the seams at their ends stay half known unless other bands are walked too."""
+        threads = max(1, min(threads, len(bands)))
         # Each thread starts on a run of neighbouring bands, so that blocks cut by a band edge are still in GDAL's
         # cache; who is done first helps the others from the far end.
-        share = -(-self.bands // threads)
-        queues = [deque(range(k * share, min((k + 1) * share, self.bands))) for k in range(threads)]
+        share = -(-len(bands) // threads)
+        queues = [deque(bands[k * share : (k + 1) * share]) for k in range(threads)]
         if threads == 1:
             self._thread(0, queues)
             return
@@ -179,13 +203,17 @@ class _Walk:
             height = (stop if last else stop - 1) - inner
             if height > 0 and east > west:
                 self._count(counts, rimmed, Window(inner, west, height, east - west))
-        self._finish(2 * band, counts)
+        self.finish(2 * band, counts)
         if not first:
-            self._seam(band - 1, "south", _side_by_side(edges_north))
+            self.seam(band - 1, "south", _side_by_side(edges_north))
         if not last:
-            self._seam(band, "north", _side_by_side(edges_south))
+            self.seam(band, "north", _side_by_side(edges_south))
+        self.note_done(1)
+
+    def note_done(self, bands: int) -> None:
+        """Count bands that are done, and tell."""
         with self.lock:
-            self.done += 1
+            self.done += bands
             if self.progress:
                 self.progress(self.done, self.bands)
 
@@ -203,7 +231,7 @@ class _Walk:
             del edges[-2]
         return edges
 
-    def _seam(self, above: int, side: str, rows: Arrays) -> None:
+    def seam(self, above: int, side: str, rows: Arrays) -> None:
         """Keep the two rows on one side of a seam; count its two rows of cells when both sides are known."""
         other = "north" if side == "south" else "south"
         with self.lock:
@@ -215,14 +243,14 @@ class _Walk:
         arrays = {name: _padded(np.concatenate([north[name], south[name]]), west=True, east=True) for name in north}
         counts = [tally.empty() for tally in self.tallies]
         self._count(counts, arrays, Window(self.edges[above + 1] - 1, 0, 2, self.grid.columns))
-        self._finish(2 * above + 1, counts)
+        self.finish(2 * above + 1, counts)
 
     def _count(self, counts: list[Tally], arrays: Arrays, window: Window) -> None:
         tile = Tile(self.stack, window, arrays)
         for tally in counts:
             tally.add(tile)
 
-    def _finish(self, unit: int, counts: list[Tally]) -> None:
+    def finish(self, unit: int, counts: list[Tally]) -> None:
         """Merge what is counted from north to south, as far as it is known without a gap."""
         with self.merging:
             self.counted[unit] = counts

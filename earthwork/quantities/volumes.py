@@ -34,14 +34,17 @@ class VolumesTally:
         self.missing_rows = (np.inf, -np.inf)
         self.missing_columns = (np.inf, -np.inf)
 
-    depth_only = True  #: engine: without layers the depth is all that is asked for
+    @property
+    def depth_only(self) -> bool:
+        """Engine: nothing but the sums of depth is asked for."""
+        stack = self.ground.stack
+        return not (stack.layered or stack.limits or stack.disturbed or self.ground.zone_names)
 
     def empty(self) -> VolumesTally:
         return VolumesTally(self.ground)
 
     def add(self, tile: Tile) -> None:
-        stack = self.ground.stack
-        if not stack.layered and stack.limits is None and stack.disturbed is None and not self.ground.zone_names:
+        if self.depth_only:
             before = self.total.values[0]
             self.total.add_plain(tile)
             if self.total.values[0] - before < tile.window.height * tile.window.width:
@@ -281,6 +284,7 @@ def volumes(
     threads: int | None = None,
     progress: Progress | None = None,
     tallies: Sequence[Tally] = (),
+    client: Any = None,
 ) -> VolumesResult:
     """Cut and fill volumes between stripped ground and subgrade, by zone and material.
 
@@ -289,12 +293,13 @@ def volumes(
         threads: default: one a processor, at most 4; the result is the same for any number.
         progress: called with (bands done, bands in all).
         tallies: further questions to count in the same pass.
+        client: a ``dask.distributed.Client`` whose workers read the ground, for rasters that outgrow one machine.
 
     Raises:
         EarthworkError: bad input; the message says what, where and how to mend it.
     """
     site = site if isinstance(site, Site) else load_site(site)
-    return count_volumes(site, open_site(site), threads=threads, progress=progress, tallies=tallies)
+    return count_volumes(site, open_site(site), threads=threads, progress=progress, tallies=tallies, client=client)
 
 
 def count_volumes(
@@ -304,13 +309,20 @@ def count_volumes(
     threads: int | None = None,
     progress: Progress | None = None,
     tallies: Sequence[Tally] = (),
+    client: Any = None,
     tile_cells: int | None = None,
     band_rows: int | None = None,
 ) -> VolumesResult:
     """As :func:`volumes`, on a ground that is already open."""
     tally = VolumesTally(ground)
     walk(
-        ground.stack, [tally, *tallies], threads=threads, progress=progress, tile_cells=tile_cells, band_rows=band_rows
+        ground.stack,
+        [tally, *tallies],
+        threads=threads,
+        progress=progress,
+        client=client,
+        tile_cells=tile_cells,
+        band_rows=band_rows,
     )
     return volumes_result(site, ground, tally)
 

@@ -86,9 +86,9 @@ def check_site(
     system = raw.get("units") if isinstance(raw, dict) else None
     foot = FOOT_M
     if system == "us":
-        if foot_of is None:
-            from earthwork.files.rasters import foot_of_site as foot_of
-        foot = foot_of(document, directory)
+        from earthwork.files.rasters import foot_of_site
+
+        foot = (foot_of or foot_of_site)(document, directory)
     units = UnitSystem("us" if system == "us" else "metric", foot)
     where = str(path) if path else "site"
     model, faults = _validate(document, units)

@@ -47,12 +47,12 @@ def stack_of(existing, finished, *, cell=1.0, **layers) -> Stack:
     )
 
 
-def count_arrays(existing, finished, *, cell=1.0, threads=1, tile_cells=None, band_rows=None, **layers):
+def count_arrays(existing, finished, *, cell=1.0, threads=1, client=None, tile_cells=None, band_rows=None, **layers):
     """Quantities between two arrays, counted as the program counts a site."""
     stack = stack_of(existing, finished, cell=cell, **layers)
     ground = SimpleNamespace(stack=stack, zone_names=(), zones=None)
     tally = VolumesTally(ground)
-    walk(stack, [tally], threads=threads, tile_cells=tile_cells, band_rows=band_rows)
+    walk(stack, [tally], threads=threads, client=client, tile_cells=tile_cells, band_rows=band_rows)
     return area_volumes(ground, tally.total, None, tally.missing * stack.grid.cell_area_m2)
 
 
