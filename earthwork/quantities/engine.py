@@ -21,6 +21,7 @@ import numpy as np
 
 from earthwork.ground.grid import Grid, Window
 from earthwork.ground.stack import Arrays, Stack, StackReader
+from earthwork.quantities.sharing import SHARED
 from earthwork.quantities.tile import Tile
 
 Progress = Callable[[int, int], None]
@@ -70,6 +71,10 @@ def walk(
     Raises:
         FileError: a file cannot be read; KeyboardInterrupt passes through after the threads have stopped.
     """
+    shared = SHARED.get()
+    if shared is not None:
+        shared.walk(stack, tallies)
+        return
     edges = band_edges(stack.grid.rows, stack.block, stack.block_start[0], band_rows)
     whole = Walk(stack, tallies, progress, tile_cells=tile_cells or _tile_cells(stack, tallies), edges=edges)
     if client is not None:
@@ -77,7 +82,12 @@ def walk(
 
         walk_on_cluster(whole, client)
     else:
-        whole.run(range(whole.bands), threads or min(os.cpu_count() or 1, 4))
+        whole.run(range(whole.bands), thread_count(threads))
+
+
+def thread_count(threads: int | None) -> int:
+    """Threads that a walk takes: what is asked for, else one a processor, at most 4."""
+    return threads or min(os.cpu_count() or 1, 4)
 
 
 def band_edges(rows: int, block: tuple[int, int] | None, start: int = 0, band_rows: int | None = None) -> list[int]:

@@ -20,6 +20,7 @@ from earthwork.ground.stack import (
 )
 from earthwork.ground.surfaces import Surface
 from earthwork.quantities.coverage import area_share
+from earthwork.quantities.sharing import SHARED
 from earthwork.site import Site
 from earthwork.site.model import AreaSpec
 
@@ -97,6 +98,10 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
     Raises:
         FileError, GroundError: a file or an area that does not fit; the message says which and why.
     """
+    shared = SHARED.get()
+    ground = shared.ground(site) if shared else None
+    if ground is not None and (ground.stack.moving or not moving):
+        return ground
     opener = _Opener(site)
     model = site.model
     # Without limits the site is what all surfaces cover: in another CRS that is not a whole rectangle of cells.

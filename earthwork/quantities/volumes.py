@@ -40,6 +40,11 @@ class VolumesTally:
         stack = self.ground.stack
         return not (stack.layered or stack.limits or stack.disturbed or self.ground.zone_names)
 
+    @property
+    def key(self) -> tuple[str, int]:
+        """Commands that run together count the same ground once."""
+        return ("volumes", id(self.ground))
+
     def empty(self) -> VolumesTally:
         return VolumesTally(self.ground)
 
