@@ -81,6 +81,17 @@ class SoilRows:
         value = self.value(row, found[0])
         return None if value is None else value * found[1]
 
+    def optional(self, row: Row, column: str) -> float | None:
+        """The number in a column that need not be there."""
+        return self.value(row, column) if column in self.table.columns else None
+
+    def length(self, row: Row, quantity: str, default_m: float) -> float | None:
+        """A length [m]; a column that names no unit is in the unit given."""
+        if quantity in self.table.columns:
+            value = self.value(row, quantity)
+            return None if value is None else value * default_m
+        return self.quantity(row, quantity, LENGTH)
+
     def density(self, row: Row, quantity: str) -> float | None:
         """A density [kg/m³] that can be one of soil."""
         found = self.column(quantity, DENSITY)

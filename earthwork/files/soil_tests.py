@@ -16,8 +16,7 @@ from earthwork.errors import EarthworkError, FileError
 from earthwork.files.soil_rows import (
     DENSITY,
     GROUP_COLUMNS,
-    LENGTH,
-    MASS,
+        MASS,
     METHOD_COLUMNS,
     NAME_COLUMNS,
     VOLUME,
@@ -80,7 +79,7 @@ def read_compaction_points(path: Path, *, material: str | None = None, method: s
     return Reading(points=tuple(points), notes=tuple(reader.notes))
 
 
-def read_density_tests(path: Path, *, material: str | None = None) -> Reading:
+def read_density_tests(path: Path, *, material: str | None = None, length_m: float = 1.0) -> Reading:
     """In-place density tests, raw readings reduced.
 
     Args:
@@ -90,6 +89,7 @@ def read_density_tests(path: Path, *, material: str | None = None) -> Reading:
             ``cylinder_and_soil_mass_*``) or a nuclear gauge (``moist_density_*``, ``gauge_water_*``,
             ``gauge_water_offset_*``).
         material: the rows to take where a column ``material`` says.
+        length_m: the unit of depths and elevations whose column names none [m].
 
     Raises:
         FileError: the message lists every fault with row and column.
@@ -116,7 +116,10 @@ def read_density_tests(path: Path, *, material: str | None = None) -> Reading:
                 name=reader.first_text(row, NAME_COLUMNS),
                 group=reader.first_text(row, GROUP_COLUMNS),
                 method=reader.first_text(row, METHOD_COLUMNS),
-                depth_m=reader.quantity(row, "depth", LENGTH),
+                depth_m=reader.length(row, "depth", length_m),
+                easting=reader.optional(row, "easting"),
+                northing=reader.optional(row, "northing"),
+                elevation_m=reader.length(row, "elevation", length_m),
             )
         )
     reader.skipped(empty, "density")
@@ -254,11 +257,12 @@ def _sources(site: Site, name: str) -> dict[str, Callable[[], Reading]]:
     """What to read for a material, by kind."""
     material = site.model.material[name]
     sources: dict[str, Callable[[], Reading]] = {}
+    density_tests = partial(read_density_tests, material=name, length_m=site.units.factor("length"))
     if material.proctor is not None and material.proctor.tests is not None:
         path, method = site.resolve(material.proctor.tests), material.proctor.method
         sources["curve"] = partial(read_compaction_points, path, material=name, method=method)
     if material.bank.tests is not None:
-        sources["bank"] = partial(read_density_tests, site.resolve(material.bank.tests), material=name)
+        sources["bank"] = partial(density_tests, site.resolve(material.bank.tests))
     if material.field is not None:
-        sources["field"] = partial(read_density_tests, site.resolve(material.field.tests), material=name)
+        sources["field"] = partial(density_tests, site.resolve(material.field.tests))
     return sources

@@ -32,7 +32,7 @@ class DensityTest:
     depth_m: float | None = None
     easting: float | None = None
     northing: float | None = None
-    elevation: float | None = None
+    elevation_m: float | None = None
 
     @property
     def label(self) -> str:
