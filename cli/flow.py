@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 
 import typer
 
+from .lean_start import load_numba_without_blas
 from .options import Shared
 from .progress import ProgressBar
 from .terminal import print_json, print_page, say, say_warnings
@@ -25,6 +26,8 @@ def perform(command: str, site: Path | Site, how: Shared) -> None:
     from earthwork.reporting.runner import run_command
     from earthwork.site import load_site
 
+    if command == "volumes":
+        load_numba_without_blas()
     if how.overwrite and how.out is None:
         raise typer.BadParameter("--overwrite replaces files in a folder; give the folder with --out DIR")
     with ProgressBar(command, quiet=how.quiet) as progress:
