@@ -42,9 +42,7 @@ def parse_crs(text: str) -> CRS:
     try:
         return CRS.from_user_input(text)
     except CRSError:
-        raise ValueError(
-            f'"{text}" is not a CRS; write an authority code such as "EPSG:32611", or WKT'
-        ) from None
+        raise ValueError(f'"{text}" is not a CRS; write an authority code such as "EPSG:32611", or WKT') from None
 
 
 def snap_unit(metres: float) -> float:
@@ -203,6 +201,20 @@ def utm_code(longitude: float, latitude: float) -> str:
     """
     zone = min(max(int((longitude + 180.0) // 6.0) + 1, 1), 60)
     return f"EPSG:{32600 + zone if latitude >= 0 else 32700 + zone}"
+
+
+def shift_doubt(source: CRS, target: CRS, easting: float, northing: float) -> str | None:
+    """Why coordinates of one CRS cannot be brought into another to survey precision; None when they can.
+
+    Args:
+        easting, northing: a place in ``source`` [CRS unit].
+    """
+    there = transformer(source, target)
+    there.transform(easting, northing)
+    used = there.get_last_used_operation().description
+    if "ballpark" not in used.lower():
+        return None
+    return f"no datum shift from {describe(source)} to {describe(target)} is known here; it may be off by metres"
 
 
 def from_wkt(wkt: str) -> CRS | None:

@@ -17,7 +17,7 @@ from rasterio.enums import MaskFlags
 from rasterio.errors import NotGeoreferencedWarning, RasterioError
 from rasterio.windows import Window as FileWindow
 
-from earthwork.crs import VerticalReference, from_wkt, horizontal_unit_m, vertical_reference
+from earthwork.crs import VerticalReference, from_wkt, horizontal_unit_m, parse_crs, vertical_reference
 from earthwork.errors import FileError
 from earthwork.files.paths import is_virtual, require_file
 from earthwork.units import FOOT_M, US_SURVEY_FOOT_M
@@ -164,9 +164,7 @@ def _raster_in_zip(path: Path, what: str) -> str | None:
     if path.suffix.lower() != ".zip" or not zipfile.is_zipfile(path):
         return None
     with zipfile.ZipFile(path) as archive:
-        members = [
-            m for m in archive.namelist() if not m.endswith("/") and Path(m).suffix.lower() not in _SIDECARS
-        ]
+        members = [m for m in archive.namelist() if not m.endswith("/") and Path(m).suffix.lower() not in _SIDECARS]
     found = []
     for member in members:
         name = f"/vsizip/{path}/{member}"
@@ -176,9 +174,7 @@ def _raster_in_zip(path: Path, what: str) -> str | None:
             continue
         found.append(name)
     if len(found) > 1:
-        raise FileError(
-            f"{what}: {path}: the zip holds {len(found)} rasters; name one of them: {', '.join(found)}"
-        )
+        raise FileError(f"{what}: {path}: the zip holds {len(found)} rasters; name one of them: {', '.join(found)}")
     return found[0] if found else None
 
 
@@ -217,21 +213,16 @@ def _facts(dataset: Any, name: str, band: int, what: str) -> RasterInfo:
         raise FileError(f"{where}: not one raster; {hint}")
     if not 1 <= band <= dataset.count:
         bands = "1 band" if dataset.count == 1 else f"{dataset.count} bands"
-        raise FileError(
-            f"{where}: band is {band}; it must be 1 to {dataset.count}, since the file has {bands}"
-        )
+        raise FileError(f"{where}: band is {band}; it must be 1 to {dataset.count}, since the file has {bands}")
     dtype = str(dataset.dtypes[band - 1])
     if dtype.startswith("complex"):
-        raise FileError(
-            f"{where}: band {band} holds complex numbers ({dtype}); elevations must be real numbers"
-        )
+        raise FileError(f"{where}: band {band} holds complex numbers ({dtype}); elevations must be real numbers")
     a, b, c, d, e, f = tuple(dataset.transform)[:6]
     if a * e - b * d == 0 or not all(math.isfinite(v) for v in (a, b, c, d, e, f)):
         raise FileError(
             f"{where}: the size of its cells is {a:g} × {e:g}; it must not be zero. Repair its georeference"
         )
     flags = dataset.mask_flag_enums[band - 1]
-    wkt = dataset.crs.to_wkt(version="WKT2_2019") if dataset.crs else ""
     return RasterInfo(
         path=dataset.name,
         name=name,
@@ -239,7 +230,7 @@ def _facts(dataset: Any, name: str, band: int, what: str) -> RasterInfo:
         rows=dataset.height,
         columns=dataset.width,
         transform=(a, b, c, d, e, f),
-        crs=from_wkt(wkt) if wkt else None,
+        crs=_crs(dataset),
         dtype=dtype,
         nodata=dataset.nodatavals[band - 1],
         scale=dataset.scales[band - 1],
@@ -248,6 +239,16 @@ def _facts(dataset: Any, name: str, band: int, what: str) -> RasterInfo:
         unit=(dataset.units[band - 1] or "").strip(),
         masked=MaskFlags.per_dataset in flags or MaskFlags.alpha in flags,
     )
+
+
+def _crs(dataset: Any) -> CRS | None:
+    """CRS of a dataset, vertical part included; None when it has none or it cannot be understood."""
+    if not dataset.crs:
+        return None
+    try:
+        return from_wkt(dataset.crs.to_wkt(version="WKT2_2019"))
+    except RasterioError:  # some old definitions have no second edition
+        return from_wkt(dataset.crs.to_wkt())
 
 
 @dataclass(frozen=True)
@@ -316,9 +317,7 @@ class RasterReader:
             values += info.offset
             values *= self.source.unit_m
         if info.south_up or info.east_first:
-            values = np.ascontiguousarray(
-                values[:: -1 if info.south_up else 1, :: -1 if info.east_first else 1]
-            )
+            values = np.ascontiguousarray(values[:: -1 if info.south_up else 1, :: -1 if info.east_first else 1])
         return values
 
     def _damage(self, window: FileWindow, error: Exception) -> str:
@@ -385,7 +384,6 @@ def foot_of_site(document: dict[str, Any], directory: Path) -> float:
         document: the parsed site file, unchecked.
         directory: folder that its paths are relative to.
     """
-    from earthwork.crs import parse_crs
 
     def table(name: str) -> dict[str, Any]:
         value = document.get(name)
@@ -397,7 +395,7 @@ def foot_of_site(document: dict[str, Any], directory: Path) -> float:
         if isinstance(file, str) and file:
             try:
                 crs = raster_info(directory / file).crs
-            except (FileError, OSError, ValueError):
+            except Exception:  # whatever is wrong with the file is told when it is opened for its cells
                 continue
             if crs is not None:
                 return _foot(crs)

@@ -12,7 +12,7 @@ import numpy as np
 import shapely
 from pyproj import CRS
 
-from earthwork.crs import describe, parse_crs, same_place, transformer
+from earthwork.crs import describe, horizontal_unit_m, parse_crs, same_place, transformer
 from earthwork.errors import FileError, GroundError, Warning
 from earthwork.files.paths import nearest, require_file
 
@@ -38,7 +38,7 @@ class Feature:
         heights: the same shape with the heights that the file carries, in the file's unit; None where it has
             none.
         attributes: all its attributes.
-        where: what the feature is to the user, for messages.
+        where: what the features are to the user and their file, for messages.
     """
 
     name: str
@@ -46,6 +46,11 @@ class Feature:
     heights: Any = None
     attributes: Mapping[str, Any] = field(default_factory=dict)
     where: str = ""
+
+    @property
+    def label(self) -> str:
+        """What it is, its file and its name, for messages."""
+        return f"{self.where}, {self.name!r}"
 
 
 @dataclass(frozen=True)
@@ -126,16 +131,12 @@ def _read(
     layer = _layer(spec, path, what)
     meta, fids, shapes, columns = _table(path, layer, spec.where, where)
     fields = [str(f) for f in meta["fields"]]
-    if name is not None and name not in fields:
+    if name is not None and name not in fields and name != "fid":
         raise FileError(f"{where}: there is no attribute {name!r}; {nearest(name, fields)}")
     if len(shapes) == 0:
         passed = f"no feature passes where = {spec.where!r}" if spec.where else "the layer holds no feature"
-        raise FileError(
-            f"{where}: {passed}; it must hold at least one. Check the file, its layer and the filter"
-        )
-    attributes = [dict(zip(fields, row, strict=True)) for row in zip(*columns, strict=True)] or [{}] * len(
-        shapes
-    )
+        raise FileError(f"{where}: {passed}; it must hold at least one. Check the file, its layer and the filter")
+    attributes = [dict(zip(fields, row, strict=True)) for row in zip(*columns, strict=True)] or [{}] * len(shapes)
     names = [_name(attributes[i], name, int(fids[i]), where) for i in range(len(shapes))]
     shapes = shapely.from_wkb(shapes)
     kept = _kept(shapes, names, where, kinds, kind, warnings)
@@ -152,7 +153,7 @@ def _read(
             "geometry": flat[k],
             "heights": moved[k] if shapely.has_z(moved[k]) else None,
             "attributes": attributes[i],
-            "where": f"{where}, {names[i]!r}",
+            "where": where,
         }
         for k, i in enumerate(kept)
     ]
@@ -168,9 +169,7 @@ def _layer(spec: AreaSpec, path: Path, what: str) -> str | None:
         raise FileError(f"{what}: {path}: not a vector file, or damaged ({_line(error)})") from None
     if spec.layer is not None:
         if spec.layer not in layers:
-            raise FileError(
-                f"{what}: {path}: there is no layer {spec.layer!r}; {nearest(spec.layer, layers)}"
-            )
+            raise FileError(f"{what}: {path}: there is no layer {spec.layer!r}; {nearest(spec.layer, layers)}")
         return spec.layer
     if len(layers) > 1:
         raise FileError(
@@ -182,9 +181,7 @@ def _layer(spec: AreaSpec, path: Path, what: str) -> str | None:
     return layers[0]
 
 
-def _table(
-    path: Path, layer: str | None, where_sql: str | None, where: str
-) -> tuple[dict, Any, Any, list[Any]]:
+def _table(path: Path, layer: str | None, where_sql: str | None, where: str) -> tuple[dict, Any, Any, list[Any]]:
     """Facts, feature numbers, shapes (WKB) and attribute columns of a layer."""
     import pyogrio.raw
     from pyogrio.errors import DataLayerError, DataSourceError
@@ -192,9 +189,7 @@ def _table(
     try:
         with python_warnings.catch_warnings():
             python_warnings.simplefilter("ignore")
-            meta, fids, shapes, columns = pyogrio.raw.read(
-                path, layer=layer, where=where_sql, return_fids=True
-            )
+            meta, fids, shapes, columns = pyogrio.raw.read(path, layer=layer, where=where_sql, return_fids=True)
     except (ValueError, DataLayerError, DataSourceError) as error:
         if where_sql is not None:
             fields = ", ".join(map(str, pyogrio.read_info(path, layer=layer)["fields"]))
@@ -217,7 +212,7 @@ def _name(attributes: dict[str, Any], name: str | None, fid: int, where: str) ->
     """The name of a feature as text."""
     if name is None:
         return f"feature {fid}"
-    value = attributes[name]
+    value = attributes.get(name, fid)
     missing = value is None or (isinstance(value, float | np.floating) and np.isnan(value))
     if missing or not str(value).strip():
         raise FileError(
@@ -264,8 +259,7 @@ def _refuse_invalid(shapes: np.ndarray, names: list[str], where: str) -> None:
         faults.append(f"{names[i]!r}: {reason.strip()}" + (f" at ({at})" if at else ""))
     more = f"; and {bad.size - 5} more" if bad.size > 5 else ""
     raise GroundError(
-        f"{where}: {'; '.join(faults)}{more}. Polygons must not cross themselves; repair them in your GIS or "
-        "CAD"
+        f"{where}: {'; '.join(faults)}{more}. Polygons must not cross themselves; repair them in your GIS or CAD"
     )
 
 
@@ -307,16 +301,14 @@ def _reprojected(shapes: np.ndarray, there: CRS | None, crs: CRS | None, where: 
     """Shapes in the CRS of the surfaces; edges are cut into short pieces when the CRS really differs."""
     if there is None or crs is None or same_place(there, crs, tuple(shapely.total_bounds(shapes))):
         return shapes
-    unit = _METRES_PER_DEGREE if there.is_geographic else there.axis_info[0].unit_conversion_factor
+    unit = horizontal_unit_m(there) or _METRES_PER_DEGREE
     longest = float(shapely.length(shapes).max())
     pieces = shapely.segmentize(shapes, max(_EDGE_M / unit, longest / 100_000))
     forward = transformer(there, crs)
     points = shapely.get_coordinates(pieces, include_z=True)
     east, north = forward.transform(points[:, 0], points[:, 1])
     if not (np.isfinite(east).all() and np.isfinite(north).all()):
-        raise GroundError(
-            f"{where}: its coordinates cannot be brought from {describe(there)} to {describe(crs)}"
-        )
+        raise GroundError(f"{where}: its coordinates cannot be brought from {describe(there)} to {describe(crs)}")
     has_z = shapely.has_z(pieces)
     flat = np.column_stack([east, north])
     out = shapely.set_coordinates(shapely.force_2d(pieces), flat)

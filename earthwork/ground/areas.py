@@ -70,23 +70,16 @@ def check_overlaps(
         f"all, the largest {shared[worst]:.2g} m² between {zones[pairs[worst, 0]].name!r} and "
         f"{zones[pairs[worst, 1]].name!r}; they are given to the first zone of each pair"
     )
-    return [replace(z, geometry=s) for z, s in zip(zones, shapes, strict=True)], (
-        Warning("zone-slivers", message),
-    )
+    return [replace(z, geometry=s) for z, s in zip(zones, shapes, strict=True)], (Warning("zone-slivers", message),)
 
 
-def _refuse_overlaps(
-    zones: list[NamedPolygon], pairs: np.ndarray, shared: np.ndarray, bad: np.ndarray
-) -> None:
+def _refuse_overlaps(zones: list[NamedPolygon], pairs: np.ndarray, shared: np.ndarray, bad: np.ndarray) -> None:
     worst = np.flatnonzero(bad)[np.argsort(-shared[bad], kind="stable")]
     if worst.size == 0:
         return
-    lines = [
-        f"{zones[pairs[k, 0]].name!r} and {zones[pairs[k, 1]].name!r} by {shared[k]:.6g} m²"
-        for k in worst[:5]
-    ]
+    lines = [f"{zones[pairs[k, 0]].name!r} and {zones[pairs[k, 1]].name!r} by {shared[k]:.6g} m²" for k in worst[:5]]
     more = f", and {worst.size - 5} more pairs" if worst.size > 5 else ""
-    where = zones[0].where.rpartition(", ")[0] or "zones"
+    where = zones[0].where or "zones"
     raise GroundError(
         f"{where}: zones overlap: {'; '.join(lines)}{more}. Each piece of ground must lie in one zone only; "
         "cut the overlap out of one of the two"
@@ -199,13 +192,15 @@ def rings_on(grid: Grid, polygons: Sequence[NamedPolygon | Area]) -> Rings:
 
 def _oriented(points: np.ndarray, ring_offsets: np.ndarray, part_offsets: np.ndarray) -> np.ndarray:
     """Order of vertices in which outer rings run counter-clockwise and holes clockwise."""
-    order = np.arange(len(points))
-    outer = np.zeros(len(ring_offsets) - 1, bool)
+    start, count = ring_offsets[:-1], np.diff(ring_offsets)
+    outer = np.zeros(len(count), bool)
     outer[part_offsets[:-1][np.diff(part_offsets) > 0]] = True
-    for k in range(len(outer)):
-        ring = slice(ring_offsets[k], ring_offsets[k + 1])
-        x, y = (points[ring] - points[ring_offsets[k]]).T
-        twice_area = np.dot(x[:-1], y[1:]) - np.dot(x[1:], y[:-1])
-        if (twice_area > 0) != outer[k]:
-            order[ring] = order[ring][::-1]
-    return order
+    # from the first vertex of each ring: coordinates of millions would drown the area of a small ring
+    x, y = (points - np.repeat(points[start], count, axis=0)).T
+    cross = np.zeros(len(points))
+    cross[:-1] = x[:-1] * y[1:] - x[1:] * y[:-1]
+    cross[ring_offsets[1:] - 1] = 0.0
+    turned = np.repeat((np.add.reduceat(cross, start) > 0) != outer, count)
+    order = np.arange(len(points))
+    mirror = np.repeat(start + ring_offsets[1:] - 1, count) - order
+    return np.where(turned, mirror, order)

@@ -192,9 +192,7 @@ def with_one_crs(found: Sequence[Candidate], stated: CRS | None) -> tuple[list[C
     return out, [Warning("crs-differs", message)]
 
 
-def with_unit(
-    found: RasterCandidate, site: Site
-) -> tuple[RasterCandidate, VerticalFacts, tuple[Warning, ...]]:
+def with_unit(found: RasterCandidate, site: Site) -> tuple[RasterCandidate, VerticalFacts, tuple[Warning, ...]]:
     """A raster with the unit of its elevations, how it was found, and what is doubtful about it."""
     facts, doubts = vertical_facts(found.spec, found.info, found.crs, site.units, found.what)
     return replace(found, unit_m=facts.unit_m), facts, doubts

@@ -15,25 +15,28 @@ def weigh(
     column_weight: np.ndarray,
     out: np.ndarray,
 ) -> None:
-    """``out[i, j] = Σ_l v_jl Σ_k u_ik z_kl``, in the order of :func:`earthwork.ground.resample.apply_taps`.
+    """``out[i, j] = Σ_l v_lj Σ_k u_ki z``, in the order of :func:`earthwork.ground.resample.apply_taps`.
 
-    Row sums are taken once for each source column and reused by every cell that takes that column. Without
+    Row sums are taken once for each source column and used by every cell that takes that column. Without
     fast-math, so that no term is reordered or fused and the digits are those of the array code.
     """
     samples = values.shape[1]
     sums = np.empty(samples, np.float64)
     for i in range(out.shape[0]):
-        first = values[row_index[i, 0]]
-        weight = row_weight[i, 0]
+        row = values[row_index[0, i]]
+        weight = row_weight[0, i]
         for j in range(samples):
-            sums[j] = first[j] * weight
-        for k in range(1, row_index.shape[1]):
-            row = values[row_index[i, k]]
-            weight = row_weight[i, k]
+            sums[j] = row[j] * weight
+        for k in range(1, row_index.shape[0]):
+            row = values[row_index[k, i]]
+            weight = row_weight[k, i]
             for j in range(samples):
                 sums[j] += row[j] * weight
-        for j in range(out.shape[1]):
-            total = sums[column_index[j, 0]] * column_weight[j, 0]
-            for k in range(1, column_index.shape[1]):
-                total += sums[column_index[j, k]] * column_weight[j, k]
-            out[i, j] = total
+        cells = out[i]
+        index, weights = column_index[0], column_weight[0]
+        for j in range(cells.size):
+            cells[j] = sums[index[j]] * weights[j]
+        for k in range(1, column_index.shape[0]):
+            index, weights = column_index[k], column_weight[k]
+            for j in range(cells.size):
+                cells[j] += sums[index[j]] * weights[j]

@@ -56,9 +56,7 @@ def lattice_of(lead: RasterCandidate, site: Site) -> Grid:
     inset, fewer = (0.5, 1) if lead.nodes else (0.0, 0)
     rows, columns = info.rows - fewer, info.columns - fewer
     if rows < 1 or columns < 1:
-        raise GroundError(
-            f"{lead.name}: it has {info.rows} × {info.columns} nodes; at least 2 × 2 make a patch"
-        )
+        raise GroundError(f"{lead.name}: it has {info.rows} × {info.columns} nodes; at least 2 × 2 make a patch")
     cell_east, cell_north = info.cell_east, info.cell_north
     if site.model.ground.cell is not None:
         side = site.model.ground.cell / unit

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 from pyproj import CRS
 
-from earthwork.crs import describe, horizontal
+from earthwork.crs import describe, horizontal, same_place, shift_doubt
 from earthwork.errors import Warning
 from earthwork.ground.candidates import (
     Candidate,
@@ -118,6 +118,7 @@ def open_ground(site: Site) -> SurfaceSet:
     """
     found, vertical, doubts = _found(site)
     lead = leading_raster(found)
+    doubts += _reprojection_doubts(found, lead)
     crs = lead.crs if lead is not None else stated_crs(site)
     limits, area = _limits(site, horizontal(crs) if crs is not None else None, doubts)
     base = lattice_of(lead, site) if lead is not None else grid_of_limits(site, crs, area)
@@ -159,9 +160,27 @@ def _found(site: Site) -> tuple[list[Candidate], tuple[VerticalFacts, ...], list
     return found, tuple(vertical), doubts
 
 
-def _limits(
-    site: Site, crs: CRS | None, doubts: list[Warning]
-) -> tuple[tuple[NamedPolygon, ...] | None, Any]:
+def _reprojection_doubts(found: Sequence[Candidate], lead: RasterCandidate | None) -> list[Warning]:
+    """What the user must know of rasters in another CRS than that of the grid."""
+    doubts: list[Warning] = []
+    if lead is None or lead.crs is None:
+        return doubts
+    for raster in found:
+        if not isinstance(raster, RasterCandidate) or raster.crs is None:
+            continue
+        if same_place(raster.crs, lead.crs, raster.info.bounds):
+            continue
+        west, south, east, north = raster.info.bounds
+        shift = shift_doubt(raster.crs, lead.crs, (west + east) / 2, (south + north) / 2)
+        message = (
+            f"{raster.name}: it is in {describe(raster.crs)} and is reprojected to {describe(lead.crs)}, the CRS of "
+            f"{lead.what}, in which all coordinates of the site file are understood" + (f"; {shift}" if shift else "")
+        )
+        doubts.append(Warning("reprojected", message))
+    return doubts
+
+
+def _limits(site: Site, crs: CRS | None, doubts: list[Warning]) -> tuple[tuple[NamedPolygon, ...] | None, Any]:
     """The polygons of the limits and their union; (None, None) without limits."""
     spec = site.model.ground.limits
     if spec is None:
@@ -186,14 +205,11 @@ def _outside_m2(area: Any, covered: Grid, grid: Grid) -> float:
 def _mean_elevation(found: Sequence[Candidate], grid: Grid, doubts: list[Warning]) -> float:
     """Sampled mean elevation [m] of the first surface with data; every raster is looked at for markers."""
     means = [
-        sampled_elevation(c.on(grid), grid, c.what, c.source if isinstance(c, RasterCandidate) else None)
-        for c in found
+        sampled_elevation(c.on(grid), grid, c.what, c.source if isinstance(c, RasterCandidate) else None) for c in found
     ]
     known = next((m for m in means if m is not None), None)
     if known is None:
-        message = (
-            "no data was found where the surfaces were sampled; elevation 0 is taken for the ground scale"
-        )
+        message = "no data was found where the surfaces were sampled; elevation 0 is taken for the ground scale"
         doubts.append(Warning("elevation-unknown", message))
     return known or 0.0
 
@@ -217,9 +233,7 @@ def _common_footprint(found: Sequence[Candidate], grid: Grid) -> Any:
     return shapely.intersection_all([c.footprint(grid) for c in others])
 
 
-def _notes(
-    found: Sequence[Candidate], surfaces: Sequence[Surface], lead: RasterCandidate | None
-) -> tuple[str, ...]:
+def _notes(found: Sequence[Candidate], surfaces: Sequence[Surface], lead: RasterCandidate | None) -> tuple[str, ...]:
     """One sentence for each raster that is not read as it is."""
     notes = []
     for raster, surface in zip(found, surfaces, strict=True):

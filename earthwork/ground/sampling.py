@@ -22,9 +22,7 @@ _MARKERS = (-9999.0, -10000.0, -32767.0, -32768.0, -99999.0, 9999.0, 32767.0, 99
 _ABSURD_M = 1e5
 
 
-def sampled_elevation(
-    surface: Surface, grid: Grid, what: str, source: RasterSource | None = None
-) -> float | None:
+def sampled_elevation(surface: Surface, grid: Grid, what: str, source: RasterSource | None = None) -> float | None:
     """Mean elevation [m] of a surface over a few windows; None when they hold no data.
 
     The windows lie at the corners, along the edges and in the middle, the same ones each time.

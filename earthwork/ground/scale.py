@@ -89,9 +89,7 @@ def grid_scale_factor(crs: CRS, easting: float, northing: float) -> float:
     return math.sqrt(areal)
 
 
-def ground_scale(
-    crs: CRS | None, centre_easting: float, centre_northing: float, mean_elevation_m: float
-) -> float:
+def ground_scale(crs: CRS | None, centre_easting: float, centre_northing: float, mean_elevation_m: float) -> float:
     """Ground length / map length at the centre of a site: ``1 / (grid scale factor × R / (R + h))``.
 
     The grid scale factor comes from :func:`grid_scale_factor`; :func:`scale_warnings` says what the user must
@@ -123,9 +121,7 @@ def scale_warnings(crs: CRS | None, centre_easting: float, centre_northing: floa
         message = "no CRS is given: a local grid with ground scale 1 is taken; name the CRS in [site] crs"
         return (Warning("no-crs", message),)
     if _is_local(crs):
-        message = (
-            f"{describe(crs)} is tied to no place on earth: it is taken as a local grid with ground scale 1"
-        )
+        message = f"{describe(crs)} is tied to no place on earth: it is taken as a local grid with ground scale 1"
         return (Warning("no-crs", message),)
     if not is_web_mercator(crs):
         return ()
@@ -157,9 +153,7 @@ def refuse_geographic(crs: CRS, easting: float, northing: float, what: str = "th
             "out.tif"
         )
     if flat.is_geocentric:
-        raise GroundError(
-            f"{what}: CRS is {describe(crs)}, geocentric; it must be a projected one. Reproject it first"
-        )
+        raise GroundError(f"{what}: CRS is {describe(crs)}, geocentric; it must be a projected one. Reproject it first")
 
 
 def _outside(crs: CRS, easting: float, northing: float) -> str:

@@ -180,12 +180,7 @@ class _AlignedReader:
     def read(self, window: Window) -> np.ndarray:
         info = self._surface.source.info
         row, column = window.row + self._surface.row, window.column + self._surface.column
-        if (
-            row >= 0
-            and column >= 0
-            and row + window.height <= info.rows
-            and column + window.width <= info.columns
-        ):
+        if row >= 0 and column >= 0 and row + window.height <= info.rows and column + window.width <= info.columns:
             return self._file.read(row, column, window.height, window.width)
         values = np.full((window.height, window.width), np.nan, self._surface.dtype)
         top, left = max(row, 0), max(column, 0)
@@ -235,28 +230,22 @@ class _ResampledReader:
         high, wide = len(north), len(east)
         if (bottom - top) * (right - left) > _READ_AT_ONCE and (high > 1 or wide > 1):
             if high > 1:
-                for rows in (slice(0, high // 2), slice(high // 2, high)):
-                    self._fill(out[rows], _run(north, rows), east)
+                for start, stop in ((0, high // 2), (high // 2, high)):
+                    part = north.part(north.first + start, north.first + stop)
+                    self._fill(out[start:stop], part, east)
             else:
-                for columns in (slice(0, wide // 2), slice(wide // 2, wide)):
-                    self._fill(out[:, columns], north, _run(east, columns))
+                for start, stop in ((0, wide // 2), (wide // 2, wide)):
+                    part = east.part(east.first + start, east.first + stop)
+                    self._fill(out[:, start:stop], north, part)
             return
         values = self._file.read(top, left, bottom - top, right - left)
-        near_north = Taps(0, north.index - top, north.weight, north.averaged)
-        near_east = Taps(0, east.index - left, east.weight, east.averaged)
-        out[...] = apply_taps(values, near_north, near_east, compiled=self._surface.compiled)
+        out[...] = apply_taps(values, north.less(top), east.less(left), compiled=self._surface.compiled)
 
     def close(self) -> None:
         self._file.close()
 
 
-def _run(taps: Taps, cut: slice) -> Taps:
-    return Taps(0, taps.index[cut], taps.weight[cut], taps.averaged)
-
-
-def raster_on_grid(
-    source: RasterSource, grid: Grid, *, nodes: bool = False
-) -> AlignedRaster | ResampledRaster:
+def raster_on_grid(source: RasterSource, grid: Grid, *, nodes: bool = False) -> AlignedRaster | ResampledRaster:
     """A raster in the grid's CRS as a surface on the grid: as it is where the cells agree, else resampled.
 
     Args:
@@ -287,12 +276,8 @@ def raster_on_grid(
 
 def raster_taps(info: RasterInfo, grid: Grid, *, nodes: bool = False) -> tuple[Taps, Taps]:
     """Taps along north and east that bring a north-up raster of the grid's CRS onto the grid."""
-    north = axis_taps(
-        -info.north, info.cell_north, info.rows, -grid.north, grid.cell_north, grid.rows, nodes=nodes
-    )
-    east = axis_taps(
-        info.west, info.cell_east, info.columns, grid.west, grid.cell_east, grid.columns, nodes=nodes
-    )
+    north = axis_taps(-info.north, info.cell_north, info.rows, -grid.north, grid.cell_north, grid.rows, nodes=nodes)
+    east = axis_taps(info.west, info.cell_east, info.columns, grid.west, grid.cell_east, grid.columns, nodes=nodes)
     return north, east
 
 

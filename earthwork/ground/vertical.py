@@ -77,9 +77,7 @@ def vertical_facts(
     return facts, (Warning("vertical-unit", message),)
 
 
-def _unit(
-    spec: RasterSurface, info: RasterInfo, crs: CRS | None, units: UnitSystem, what: str
-) -> tuple[float, str]:
+def _unit(spec: RasterSurface, info: RasterInfo, crs: CRS | None, units: UnitSystem, what: str) -> tuple[float, str]:
     if spec.vertical_unit is not None:
         return _STATED[spec.vertical_unit], "site file"
     if info.unit:

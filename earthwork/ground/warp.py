@@ -13,7 +13,7 @@ from earthwork.crs import transformer
 from earthwork.errors import GroundError
 from earthwork.files.rasters import RasterSource
 from earthwork.ground.grid import Grid, Window
-from earthwork.ground.resample import AVERAGE_FROM
+from earthwork.ground.resample import AVERAGE_FROM, snapped
 
 if TYPE_CHECKING:
     import shapely
@@ -27,9 +27,6 @@ _SPACINGS = (64, 32, 16, 8, 4, 2, 1)
 
 #: Source cells read at once [cells].
 _READ_AT_ONCE = 4_000_000
-
-#: Two places closer than this are one [source cells].
-_SNAP = 1e-6
 
 FLOAT64 = np.dtype(np.float64)
 
@@ -81,8 +78,7 @@ def warped_raster(source: RasterSource, crs: CRS, grid: Grid) -> WarpedRaster:
     here = _places(rough, to_file, row, column)
     if not np.isfinite(here).all():
         raise GroundError(
-            f"{source.what}: {source.info.name}: the site cannot be expressed in its CRS ({crs.name}); check "
-            "both CRS"
+            f"{source.what}: {source.info.name}: the site cannot be expressed in its CRS ({crs.name}); check both CRS"
         )
     beside = _places(rough, to_file, row, column + 1.0) - here
     below = _places(rough, to_file, row + 1.0, column) - here
@@ -99,15 +95,11 @@ def _places(surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column
     return np.stack([(info.north - north) / info.cell_north - 0.5, (east - info.west) / info.cell_east - 0.5])
 
 
-def _bend(
-    surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column: np.ndarray, spacing: int
-) -> float:
+def _bend(surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column: np.ndarray, spacing: int) -> float:
     """The greatest error of places between control points ``spacing`` cells apart [source cells]."""
     if spacing == 1:
         return 0.0
-    corner = [
-        _places(surface, to_file, row + i * spacing, column + j * spacing) for i in (0, 1) for j in (0, 1)
-    ]
+    corner = [_places(surface, to_file, row + i * spacing, column + j * spacing) for i in (0, 1) for j in (0, 1)]
     middle = _places(surface, to_file, row + spacing / 2, column + spacing / 2)
     along = _places(surface, to_file, row, column + spacing / 2)
     down = _places(surface, to_file, row + spacing / 2, column)
@@ -139,9 +131,7 @@ class _WarpedReader:
         info, parts = self._surface.source.info, self._surface.parts
         control = self._control(window)
         reach = self._reach(control)
-        if (reach[1] - reach[0]) * (reach[3] - reach[2]) > _READ_AT_ONCE and max(
-            window.height, window.width
-        ) > 1:
+        if (reach[1] - reach[0]) * (reach[3] - reach[2]) > _READ_AT_ONCE and max(window.height, window.width) > 1:
             for part, cut in _halves(window):
                 self._add(out[cut], part)
             return
@@ -161,9 +151,7 @@ class _WarpedReader:
         """Places in the file of the control points around a window; the same cells for every window."""
         step = self._surface.spacing
         rows = np.arange(window.row // step, (window.row + window.height - 1) // step + 2) * step + 0.5
-        columns = (
-            np.arange(window.column // step, (window.column + window.width - 1) // step + 2) * step + 0.5
-        )
+        columns = np.arange(window.column // step, (window.column + window.width - 1) // step + 2) * step + 0.5
         row, column = np.meshgrid(rows, columns, indexing="ij")
         return _places(self._surface, self._to_file, row, column)
 
@@ -220,7 +208,7 @@ def bilinear(values: np.ndarray, row: np.ndarray, column: np.ndarray) -> np.ndar
     >>> bilinear(np.array([[0.0, 1.0], [2.0, 3.0]]), np.array([0.5]), np.array([0.25]))
     array([1.25])
     """
-    row, column = _snapped(row), _snapped(column)
+    row, column = snapped(row), snapped(column)
     inside = (row >= 0) & (row <= values.shape[0] - 1) & (column >= 0) & (column <= values.shape[1] - 1)
     row, column = np.where(inside, row, 0.0), np.where(inside, column, 0.0)
     i, j = np.floor(row).astype(np.intp), np.floor(column).astype(np.intp)
@@ -229,11 +217,6 @@ def bilinear(values: np.ndarray, row: np.ndarray, column: np.ndarray) -> np.ndar
     upper = values[i, j] * (1 - v) + values[i, right] * v
     lower = values[below, j] * (1 - v) + values[below, right] * v
     return np.where(inside, upper * (1 - u) + lower * u, np.nan)
-
-
-def _snapped(place: np.ndarray) -> np.ndarray:
-    near = np.rint(place)
-    return np.where(np.abs(place - near) < _SNAP, near, place)
 
 
 def footprint(source: RasterSource, crs: CRS, grid_crs: CRS, *, points: int = 64) -> shapely.Polygon:
@@ -254,11 +237,7 @@ def footprint(source: RasterSource, crs: CRS, grid_crs: CRS, *, points: int = 64
     ring_north = np.concatenate([np.full(points - 1, south), south + (north - south) * along])
     ring_north = np.concatenate([ring_north, np.full(points - 1, north), north - (north - south) * along])
     xs, ys = transformer(crs, grid_crs).transform(ring_east, ring_north)
-    polygon = (
-        shapely.Polygon(np.column_stack([xs, ys]))
-        if np.isfinite(xs).all() and np.isfinite(ys).all()
-        else None
-    )
+    polygon = shapely.Polygon(np.column_stack([xs, ys])) if np.isfinite(xs).all() and np.isfinite(ys).all() else None
     if polygon is None or polygon.is_empty or not polygon.is_valid:
         raise GroundError(
             f"{source.what}: {info.name}: its extent cannot be expressed in the CRS of the grid; cut it to "
