@@ -1,7 +1,7 @@
 """What a CRS says: its length unit, its vertical datum, and whether two CRS are the same place.
 
-A CRS in US survey feet is not one in feet: at 2,000,000 ft the two lie 4 ft apart [FR-2020-21902]. The
-vertical part of a compound CRS is kept apart from the horizontal one throughout.
+A CRS in US survey feet is not one in feet: at 2,000,000 ft the two lie 4 ft apart [FR-2020-21902]. The vertical part
+of a compound CRS is kept apart from the horizontal one throughout.
 """
 
 from __future__ import annotations
@@ -11,8 +11,9 @@ from dataclasses import dataclass
 from functools import lru_cache
 
 from pyproj import CRS, Proj, Transformer
-from pyproj.exceptions import CRSError
+from pyproj.exceptions import CRSError, ProjError
 
+from earthwork.errors import GroundError
 from earthwork.units import FOOT_M, US_SURVEY_FOOT_M
 
 #: Two spellings of a unit differ by less than this; the two feet differ by 2e-6.
@@ -79,6 +80,18 @@ def horizontal(crs: CRS) -> CRS:
     if crs.is_bound and crs.source_crs is not None:
         return horizontal(crs.source_crs) if crs.source_crs.is_compound else crs
     return crs.to_2d() if len(crs.axis_info) == 3 else crs
+
+
+def tied_to_earth(crs: CRS | None) -> bool:
+    """False for no CRS, and for a local one of which only the unit is known.
+
+    >>> tied_to_earth(CRS("EPSG:32611")), tied_to_earth(None)
+    (True, False)
+    """
+    if crs is None:
+        return False
+    flat = horizontal(crs)
+    return flat.is_projected or flat.is_geographic or flat.is_geocentric or flat.is_bound
 
 
 def horizontal_unit_m(crs: CRS | None) -> float | None:
@@ -151,19 +164,27 @@ def describe(crs: CRS | None) -> str:
 
 def transformer(source: CRS, target: CRS) -> Transformer:
     """Transformation of (easting, northing), or (longitude, latitude), between two horizontal CRS."""
-    return Transformer.from_crs(horizontal(source), horizontal(target), always_xy=True)
+    try:
+        return Transformer.from_crs(horizontal(source), horizontal(target), always_xy=True)
+    except ProjError:
+        raise GroundError(
+            f"no way is known from {describe(source)} to {describe(target)}; both CRS must be tied to places on earth. "
+            "Name the right ones, or reproject the files first"
+        ) from None
 
 
 @lru_cache(maxsize=64)
-def same_place(a: CRS, b: CRS, bounds: tuple[float, float, float, float], tolerance_m: float = 1e-4) -> bool:
+def same_place(a: CRS, b: CRS, bounds: tuple[float, float, float, float], tolerance_m: float = 1e-3) -> bool:
     """True when coordinates of one CRS can be used in the other within a rectangle.
 
-    Files spell one CRS in many ways, so names decide nothing: corners and centre are transformed and
-    compared.
+    Files spell one CRS in many ways, so names decide nothing: corners and centre are transformed and compared.
 
     Args:
         bounds: (west, south, east, north) in ``a`` [CRS unit].
-        tolerance_m: the greatest shift that counts as none [m].
+        tolerance_m: the greatest shift that counts as none [m]; spellings of one CRS differ by 0.1 mm in feet.
+
+    Raises:
+        GroundError: no transformation between the two is known.
     """
     first, second = horizontal(a), horizontal(b)
     if first.equals(second, ignore_axis_order=True):
@@ -177,10 +198,7 @@ def same_place(a: CRS, b: CRS, bounds: tuple[float, float, float, float], tolera
     west, south, east, north = bounds
     xs = [west, east, east, west, (west + east) / 2]
     ys = [south, south, north, north, (south + north) / 2]
-    try:
-        there_x, there_y = transformer(a, b).transform(xs, ys)
-    except CRSError:
-        return False
+    there_x, there_y = transformer(a, b).transform(xs, ys)
     shifts = [math.hypot(u - x, v - y) * unit for x, y, u, v in zip(xs, ys, there_x, there_y, strict=True)]
     return all(shift <= tolerance_m for shift in shifts)
 

@@ -14,6 +14,7 @@ import numpy as np
 import rasterio
 from pyproj import CRS
 from rasterio.enums import MaskFlags
+from rasterio.env import set_gdal_config
 from rasterio.errors import NotGeoreferencedWarning, RasterioError
 from rasterio.windows import Window as FileWindow
 
@@ -22,14 +23,12 @@ from earthwork.errors import FileError
 from earthwork.files.paths import is_virtual, require_file
 from earthwork.units import FOOT_M, US_SURVEY_FOOT_M
 
-#: GDAL's block cache [bytes]. Its default, 5 % of memory, makes streamed reads three times slower.
+#: GDAL's block cache [bytes]. Its default, 5 % of memory, makes streamed reads three times slower. It is the process's,
+#: and is set when a raster is opened unless the environment variable GDAL_CACHEMAX says otherwise.
 CACHE_BYTES = 32 * 2**20
 
-# GDAL reads the size of its block cache once, at its first use in the process, whatever a later Env says.
-os.environ.setdefault("GDAL_CACHEMAX", str(CACHE_BYTES))
-
-#: Settings under which every raster is opened; the vertical part of a compound CRS is dropped without the second.
-_GDAL = {"GDAL_CACHEMAX": CACHE_BYTES, "GTIFF_REPORT_COMPD_CS": True}
+#: Settings under which every raster is opened; without it the vertical part of a compound CRS is dropped.
+_GDAL = {"GTIFF_REPORT_COMPD_CS": True}
 
 #: Integer types that float32 holds exactly.
 _EXACT_IN_FLOAT32 = {"uint8", "int8", "int16", "uint16", "float32", "float16"}
@@ -155,6 +154,9 @@ def _open(path: str | Path, what: str) -> Any:
 
 
 def _rasterio_open(path: str) -> Any:
+    if "GDAL_CACHEMAX" not in os.environ:
+        # an Env would set it only for its own duration, and readers outlive the opening
+        set_gdal_config("GDAL_CACHEMAX", CACHE_BYTES)
     with rasterio.Env(**_GDAL):
         return rasterio.open(path, sharing=False)
 
@@ -337,8 +339,7 @@ class RasterReader:
         a, b, c, d, e, f = info.transform
         place = f"easting {a * left + b * top + c:.10g}, northing {d * left + e * top + f:.10g}"
         return (
-            f"{self.source.what}: {info.name}: data are damaged or cut off in the block at row {top}, column "
-            f"{left} "
+            f"{self.source.what}: {info.name}: data are damaged or cut off in the block at row {top}, column {left} "
             f"({place}): {reason}. Copy the file anew"
         )
 
@@ -377,8 +378,8 @@ def _blank(values: np.ndarray, missing: list[Any], mask: np.ndarray | None) -> N
 def foot_of_site(document: dict[str, Any], directory: Path) -> float:
     """The foot of a site in US units [m]: US survey where the CRS's unit is that foot, else international.
 
-    The CRS is that of the existing raster, else of the finished one, else ``[site] crs``. Nothing is raised:
-    files that are missing are reported when they are opened.
+    The CRS is that of the existing raster, else of the finished one, else ``[site] crs``. Nothing is raised: files
+    that are missing are reported when they are opened.
 
     Args:
         document: the parsed site file, unchecked.

@@ -35,8 +35,7 @@ class Feature:
     Attributes:
         name: value of the name attribute as text; ``"feature 3"`` where no attribute was asked for.
         geometry: its shape without heights.
-        heights: the same shape with the heights that the file carries, in the file's unit; None where it has
-            none.
+        heights: the same shape with the heights that the file carries, in the file's unit; None where it has none.
         attributes: all its attributes.
         where: what the features are to the user and their file, for messages.
     """
@@ -91,10 +90,10 @@ def read_polygons(
         warnings: a list to which doubts are added.
 
     Raises:
-        FileError: no such file, layer or attribute (with the nearest), not a vector file, a filter that
-            cannot be read, or that nothing passes, or a layer without features.
-        GroundError: a feature that is no polygon, or one that crosses itself (with its name, the reason and
-            the place).
+        FileError: no such file, layer or attribute (with the nearest), not a vector file, a filter that cannot be
+            read, or that nothing passes, or a layer without features.
+        GroundError: a feature that is no polygon, or one that crosses itself (with its name, the reason and the
+            place).
     """
     features = _read(spec, directory, crs, name, what, warnings, _POLYGONS, "a polygon")
     return [NamedPolygon(**f) for f in features]
@@ -195,8 +194,7 @@ def _table(path: Path, layer: str | None, where_sql: str | None, where: str) -> 
             fields = ", ".join(map(str, pyogrio.read_info(path, layer=layer)["fields"]))
             raise FileError(
                 f'{where}: where = "{where_sql}" cannot be used ({_line(error)}); write it like "phase = 1" '
-                "or "
-                f"\"kind = 'road'\". Attributes are: {fields}"
+                f"or \"kind = 'road'\". Attributes are: {fields}"
             ) from None
         raise FileError(f"{where}: cannot be read ({_line(error)})") from None
     if shapes is None:
@@ -235,9 +233,8 @@ def _kept(
             empty.append(names[i])
         elif shape.geom_type not in kinds:
             raise GroundError(
-                f"{where}: {names[i]!r} is a {shape.geom_type}; it must be {kind}. Take it out of the layer, "
-                "or filter it "
-                "with where"
+                f"{where}: {names[i]!r} is a {shape.geom_type}; it must be {kind}. Take it out of the layer, or "
+                "filter it with where"
             )
         else:
             kept.append(i)
@@ -290,21 +287,25 @@ def _file_crs(
         warnings.append(Warning("crs-missing", message))
     if there is not None and crs is None and there.is_geographic:
         raise GroundError(
-            f"{where}: its coordinates are in degrees ({describe(there)}), and the surfaces name no CRS to "
-            "bring them to. "
-            "Name the CRS of the surfaces in [site] crs"
+            f"{where}: its coordinates are in degrees ({describe(there)}), and the surfaces name no CRS to bring "
+            "them to. Name the CRS of the surfaces in [site] crs"
         )
     return None
 
 
 def _reprojected(shapes: np.ndarray, there: CRS | None, crs: CRS | None, where: str) -> np.ndarray:
     """Shapes in the CRS of the surfaces; edges are cut into short pieces when the CRS really differs."""
-    if there is None or crs is None or same_place(there, crs, tuple(shapely.total_bounds(shapes))):
+    if there is None or crs is None:
         return shapes
+    try:
+        if same_place(there, crs, tuple(shapely.total_bounds(shapes).tolist())):
+            return shapes
+        forward = transformer(there, crs)
+    except GroundError as error:
+        raise GroundError(f"{where}: {error}") from None
     unit = horizontal_unit_m(there) or _METRES_PER_DEGREE
     longest = float(shapely.length(shapes).max())
     pieces = shapely.segmentize(shapes, max(_EDGE_M / unit, longest / 100_000))
-    forward = transformer(there, crs)
     points = shapely.get_coordinates(pieces, include_z=True)
     east, north = forward.transform(points[:, 0], points[:, 1])
     if not (np.isfinite(east).all() and np.isfinite(north).all()):

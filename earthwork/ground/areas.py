@@ -66,9 +66,9 @@ def check_overlaps(
     worst = sliver[np.argmax(shared[sliver])]
     message = (
         f"zones overlap by slivers in {sliver.size} place{'s' if sliver.size > 1 else ''}, "
-        f"{shared[sliver].sum():.2g} m² in "
-        f"all, the largest {shared[worst]:.2g} m² between {zones[pairs[worst, 0]].name!r} and "
-        f"{zones[pairs[worst, 1]].name!r}; they are given to the first zone of each pair"
+        f"{shared[sliver].sum():.2g} m² in all, the largest {shared[worst]:.2g} m² between "
+        f"{zones[pairs[worst, 0]].name!r} and {zones[pairs[worst, 1]].name!r}; they are given to the first zone of "
+        "each pair"
     )
     return [replace(z, geometry=s) for z, s in zip(zones, shapes, strict=True)], (Warning("zone-slivers", message),)
 
@@ -137,8 +137,8 @@ def ground_area_m2(area: Area, grid: Grid) -> float:
 class Rings:
     """Closed rings of polygons in cells of a grid, for exact shares of cells by signed areas.
 
-    Outer rings run so that their western side goes down the rows (counter-clockwise on the map), holes the
-    other way: the sum over edges of ``Δrow`` × (share of the cell east of the edge) is + inside and cancels
+    Outer rings run so that their western side goes down the rows (counter-clockwise on the map), holes the other way:
+    the sum over edges of ``Δrow`` × (share of the cell east of the edge) is + inside and cancels
         in holes.
 
     Attributes:

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from pyproj import CRS
 
-from earthwork.crs import describe, parse_crs, same_place
+from earthwork.crs import describe, parse_crs, same_place, tied_to_earth
 from earthwork.errors import GroundError, SiteFileError, Warning
 from earthwork.files.rasters import RasterInfo, RasterSource, raster_info
 from earthwork.ground.grid import Grid
@@ -85,21 +85,24 @@ class RasterCandidate(Candidate):
         """True when its values are points of the ground; else each stands for its cell."""
         return self.spec.sample == "node"
 
-    def shares_crs(self, grid: Grid) -> bool:
-        """True when its coordinates are the grid's."""
-        if self.crs is None or grid.crs is None:
+    def shares_crs(self, grid_crs: CRS | None) -> bool:
+        """True when its coordinates are those of the grid."""
+        if self.crs is None or grid_crs is None:
             return True
-        return same_place(self.crs, grid.crs, self.info.bounds)
+        try:
+            return same_place(self.crs, grid_crs, self.info.bounds)
+        except GroundError as error:
+            raise GroundError(f"{self.name}: {error}") from None
 
     def on(self, grid: Grid) -> Surface:
         """The surface on a grid: as it is, resampled, or out of another CRS."""
-        if self.crs is not None and not self.shares_crs(grid):
+        if self.crs is not None and not self.shares_crs(grid.crs):
             return warped_raster(self.source, self.crs, grid)
         return raster_on_grid(self.source, grid, nodes=self.nodes)
 
     def valid_range(self, grid: Grid) -> CellRange:
         """The run of rows and of columns of a grid that the raster reaches; (0, 0) where it reaches none."""
-        if not self.shares_crs(grid):
+        if not self.shares_crs(grid.crs):
             return self._box_of_footprint(grid)
         offset = None if self.nodes else aligned_offset(self.info, grid)
         if offset is None:
@@ -157,20 +160,21 @@ def stated_crs(site: Site) -> CRS | None:
 
 
 def with_crs(found: RasterCandidate, stated: CRS | None, others: CRS | None) -> RasterCandidate:
-    """A raster with its own CRS, else the stated one.
+    """A raster with its own CRS, else the stated one; a local CRS counts as none where another is known.
 
     Raises:
         GroundError: it has none while other surfaces have one, or it is in degrees.
     """
-    crs = found.crs if found.crs is not None else stated
-    if crs is None:
-        if others is None:
-            return found
+    crs = found.crs if tied_to_earth(found.crs) or stated is None else stated
+    if not tied_to_earth(crs):
+        if not tied_to_earth(others):
+            return replace(found, crs=crs)
         raise GroundError(
             f"{found.name}: it carries no CRS, while another surface is in {describe(others)}; all must have "
             "one. "
             'Name it in [site] crs, such as crs = "EPSG:32611"'
         )
+    assert crs is not None
     west, south, east, north = found.info.bounds
     refuse_geographic(crs, (west + east) / 2, (south + north) / 2, found.name)
     return replace(found, crs=crs)
@@ -179,14 +183,13 @@ def with_crs(found: RasterCandidate, stated: CRS | None, others: CRS | None) -> 
 def with_one_crs(found: Sequence[Candidate], stated: CRS | None) -> tuple[list[Candidate], list[Warning]]:
     """Surfaces with the CRS of each: it must be known for all rasters, or for none."""
     rasters = [c for c in found if isinstance(c, RasterCandidate)]
-    carrier = next((c for c in rasters if c.crs is not None), None)
+    carrier = next((c for c in rasters if tied_to_earth(c.crs)), None)
     others = carrier.crs if carrier is not None else None
     out = [with_crs(c, stated, others) if isinstance(c, RasterCandidate) else c for c in found]
-    if stated is None or carrier is None or others is None or same_place(others, stated, carrier.info.bounds):
+    if stated is None or carrier is None or others is None or carrier.shares_crs(stated):
         return out, []
     message = (
-        f"{carrier.name}: the file carries {describe(others)}, and site.crs says {describe(stated)}; the "
-        "file's is "
+        f"{carrier.name}: the file carries {describe(others)}, and site.crs says {describe(stated)}; the file's is "
         "used. site.crs is for surfaces that carry none"
     )
     return out, [Warning("crs-differs", message)]
@@ -201,10 +204,9 @@ def with_unit(found: RasterCandidate, site: Site) -> tuple[RasterCandidate, Vert
 def no_overlap(found: RasterCandidate, other: str, grid: Grid) -> GroundError:
     """The error for a raster that shares no ground with another surface; both extents are named."""
     return GroundError(
-        f"{found.name} covers {extent(found.info.bounds)} in {describe(found.crs)}, {other} "
-        f"{extent(grid.bounds)} in {describe(grid.crs)}; they must overlap. Check that both are of this site "
-        "and that "
-        "each carries the right CRS"
+        f"{found.name} covers {extent(found.info.bounds)} in {describe(found.crs)}, {other} {extent(grid.bounds)} in "
+        f"{describe(grid.crs)}; they must overlap. Check that both are of this site and that each carries the right "
+        "CRS"
     )
 
 

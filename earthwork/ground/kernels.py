@@ -17,8 +17,8 @@ def weigh(
 ) -> None:
     """``out[i, j] = Σ_l v_lj Σ_k u_ki z``, in the order of :func:`earthwork.ground.resample.apply_taps`.
 
-    Row sums are taken once for each source column and used by every cell that takes that column. Without
-    fast-math, so that no term is reordered or fused and the digits are those of the array code.
+    Row sums are taken once for each source column and used by every cell that takes that column. Without fast-math,
+    so that no term is reordered or fused and the digits are those of the array code.
     """
     samples = values.shape[1]
     sums = np.empty(samples, np.float64)

@@ -65,9 +65,8 @@ def lattice_of(lead: RasterCandidate, site: Site) -> Grid:
         rows, columns = math.floor(tall / cell_north + _WHOLE), math.floor(wide / cell_east + _WHOLE)
         if rows < 1 or columns < 1:
             raise GroundError(
-                f"ground.cell is {side:g} CRS units; it must be at most the site's {wide:g} × {tall:g}. Give "
-                "a smaller "
-                "cell"
+                f"ground.cell is {side:g} CRS units; it must be at most the site's {wide:g} × {tall:g}. Give a "
+                "smaller cell"
             )
     west, north = info.west + inset * info.cell_east, info.north - inset * info.cell_north
     return Grid(rows, columns, west, north, cell_east, cell_north, unit, 1.0, crs)
@@ -91,8 +90,7 @@ def grid_of_limits(site: Site, crs: CRS | None, area: Any) -> Grid:
     side = site.model.ground.cell
     if area is None or side is None:
         raise GroundError(
-            "ground.existing and ground.finished are levels or planes, which have no extent; give "
-            "ground.limits and "
+            "ground.existing and ground.finished are levels or planes, which have no extent; give ground.limits and "
             "ground.cell, or a raster for one of the two"
         )
     flat = horizontal(crs) if crs is not None else None

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 
 from pyproj import CRS
 
-from earthwork.crs import describe, horizontal, same_place, shift_doubt
+from earthwork.crs import describe, horizontal, shift_doubt
 from earthwork.errors import Warning
 from earthwork.ground.candidates import (
     Candidate,
@@ -58,8 +58,8 @@ class SurfaceSet:
         vertical: unit and datum of each raster.
         limits: polygons within which ground counts, in the grid's CRS; None where the site names none.
         limits_outside_m2: ground inside the limits that the surfaces do not cover, and so no cell shows [m²].
-        footprint: ground that all surfaces cover, where it is not the grid's whole rectangle (a raster in
-            another CRS), else None.
+        footprint: ground that all surfaces cover, where it is not the grid's whole rectangle (a raster in another
+            CRS), else None.
         notes: how surfaces came onto the grid, as sentences for reports.
         warnings: what is doubtful.
     """
@@ -107,13 +107,13 @@ class SurfaceSet:
 def open_ground(site: Site) -> SurfaceSet:
     """The surfaces of a site on one grid.
 
-    The grid is that of the finer of the existing and the finished raster (ties: existing), or ``ground.cell``
-    on its lattice, cut to the cells that all of them give and to the box around the limits.
+    The grid is that of the finer of the existing and the finished raster (ties: existing), or ``ground.cell`` on its
+    lattice, cut to the cells that all of them give and to the box around the limits.
 
     Raises:
         FileError: a file that is missing, no raster, or damaged.
-        GroundError: surfaces that do not fit: CRS missing on one side, degrees, other vertical datum,
-            rotated, no overlap.
+        GroundError: surfaces that do not fit: CRS missing on one side, degrees, other vertical datum, rotated, no
+            overlap.
         SiteFileError: ``site.crs`` is not a CRS.
     """
     found, vertical, doubts = _found(site)
@@ -166,9 +166,7 @@ def _reprojection_doubts(found: Sequence[Candidate], lead: RasterCandidate | Non
     if lead is None or lead.crs is None:
         return doubts
     for raster in found:
-        if not isinstance(raster, RasterCandidate) or raster.crs is None:
-            continue
-        if same_place(raster.crs, lead.crs, raster.info.bounds):
+        if not isinstance(raster, RasterCandidate) or raster.crs is None or raster.shares_crs(lead.crs):
             continue
         west, south, east, north = raster.info.bounds
         shift = shift_doubt(raster.crs, lead.crs, (west + east) / 2, (south + north) / 2)
@@ -225,7 +223,7 @@ def _scale(site: Site, grid: Grid, elevation: float, doubts: list[Warning]) -> f
 
 def _common_footprint(found: Sequence[Candidate], grid: Grid) -> Any:
     """The ground that all rasters of another CRS cover; None when there is none in another CRS."""
-    others = [c for c in found if isinstance(c, RasterCandidate) and not c.shares_crs(grid)]
+    others = [c for c in found if isinstance(c, RasterCandidate) and not c.shares_crs(grid.crs)]
     if not others:
         return None
     import shapely
@@ -240,7 +238,7 @@ def _notes(found: Sequence[Candidate], surfaces: Sequence[Surface], lead: Raster
         if not isinstance(raster, RasterCandidate) or surface.resampling not in _WAYS:
             continue
         onto = f", onto the grid of {lead.info.name}" if lead is not None and lead is not raster else ""
-        shares = lead is None or raster.crs is None or lead.crs is None or raster.crs == lead.crs
+        shares = lead is None or raster.shares_crs(lead.crs)
         out_of = "" if shares else f", out of {describe(raster.crs)}"
         notes.append(f"{raster.what} ({raster.info.name}) is {_WAYS[surface.resampling]}{onto}{out_of}")
     return tuple(notes)

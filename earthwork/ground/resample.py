@@ -1,8 +1,8 @@
 """Brings raster values onto the cells of another north-up grid by weights, one axis at a time.
 
-Every rule used here is separable: the value of a cell is ``Σ_i Σ_j u_i v_j z_ij`` with weights u along north
-and v along east. :class:`Taps` holds the weights of one axis. A cell is valid only where every sample that it
-takes is: nothing is filled in, and no weight is spread over the rest.
+Every rule used here is separable: the value of a cell is ``Σ_i Σ_j u_i v_j z_ij`` with weights u along north and v
+along east. :class:`Taps` holds the weights of one axis. A cell is valid only where every sample that it takes is:
+nothing is filled in, and no weight is spread over the rest.
 """
 
 from __future__ import annotations
@@ -80,8 +80,8 @@ def axis_taps(
         source_cell: side of a source cell, > 0.
         samples: source cells along the axis; each has its sample at its centre.
         start, cell, cells: outer edge of the first target cell, side, count.
-        nodes: the samples are points of a surface that runs straight between them (else each stands for its
-            cell); it matters only where the source is finer and is averaged.
+        nodes: the samples are points of a surface that runs straight between them (else each stands for its cell); it
+            matters only where the source is finer and is averaged.
 
     >>> taps = axis_taps(0.0, 1.0, 4, 0.5, 1.0, 3)     # half a cell further: the mean of two neighbours
     >>> taps.first, taps.index.tolist(), taps.weight.tolist()

@@ -65,7 +65,6 @@ def _refuse_markers(values: np.ndarray, what: str, source: RasterSource) -> None
         marker = float(stored[np.argmax(np.abs(values))])
     if marker is not None:
         raise GroundError(
-            f"{what}: {source.info.name}: it holds the value {marker:.10g}, which is no elevation; it looks "
-            "like a marker of "
-            f"missing data that the file does not declare. State it: {{ file = …, nodata = {marker:.10g} }}"
+            f"{what}: {source.info.name}: it holds the value {marker:.10g}, which is no elevation; it looks like a "
+            f"marker of missing data that the file does not declare. State it: {{ file = …, nodata = {marker:.10g} }}"
         )

@@ -1,8 +1,7 @@
 """How long a metre of the map is on the ground: grid scale factor and height in one number.
 
-``ground length = map length × ground_scale``, ``ground area = map area × ground_scale²``. One number, taken
-at the site's centre, serves the whole site; across 10 km of a UTM zone it changes by less than 1 part in
-10,000.
+``ground length = map length × ground_scale``, ``ground area = map area × ground_scale²``. One number, taken at the
+site's centre, serves the whole site; across 10 km of a UTM zone it changes by less than 1 part in 10,000.
 """
 
 from __future__ import annotations
@@ -11,7 +10,7 @@ import math
 
 from pyproj import CRS, Proj
 
-from earthwork.crs import describe, horizontal, is_web_mercator, longitude_latitude, utm_code
+from earthwork.crs import describe, horizontal, is_web_mercator, longitude_latitude, tied_to_earth, utm_code
 from earthwork.errors import GroundError, Warning
 
 #: Mean radius of the earth [m] [GRS80-mean-radius]; 20 km off changes the factor at 2000 m by 1 part in a
@@ -28,8 +27,7 @@ def elevation_factor(height_m: float, radius_m: float = EARTH_RADIUS_M) -> float
     """Length on the ellipsoid / length at a height: ``R / (R + h)`` [NGS-SPCS-manual, "elevation factor"].
 
     Args:
-        height_m: mean height of the site [m]. The geoid's height (at most 107 m) is left out: 1.7 parts in
-            100,000.
+        height_m: mean height of the site [m]. The geoid's height (at most 107 m) is left out: 1.7 parts in 100,000.
         radius_m: radius of the earth [m], in the unit of ``height_m``.
 
     >>> round(elevation_factor(1000.0), 6)
@@ -50,10 +48,10 @@ def combined_factor(grid_scale: float, height_m: float, radius_m: float = EARTH_
 def web_mercator_factor(latitude: float) -> float:
     """Map length / ground length in Web Mercator at a latitude [°], on the ellipsoid.
 
-    The map is a sphere's Mercator, ``1 / cos φ`` times too long; it is fed with latitudes of the WGS 84
-    ellipsoid, whose radii of curvature M (along the meridian) and N (across) differ from the sphere's radius
-    a. The square root of the areal scale ``a² / (M N cos² φ)`` [Snyder-1987, eq. 4-18 and 4-20 for N and M]
-    makes areas right; the plain ``1 / cos φ`` would leave up to 0.7 % of area.
+    The map is a sphere's Mercator, ``1 / cos φ`` times too long; it is fed with latitudes of the WGS 84 ellipsoid,
+    whose radii of curvature M (along the meridian) and N (across) differ from the sphere's radius a. The square root
+    of the areal scale ``a² / (M N cos² φ)`` [Snyder-1987, eq. 4-18 and 4-20 for N and M] makes areas right; the plain
+    ``1 / cos φ`` would leave up to 0.7 % of area.
 
     >>> round(web_mercator_factor(60.0), 3)
     1.997
@@ -67,8 +65,8 @@ def web_mercator_factor(latitude: float) -> float:
 def grid_scale_factor(crs: CRS, easting: float, northing: float) -> float:
     """Map length / length on the ellipsoid at a place: the square root of the projection's areal scale.
 
-    On a conformal projection (UTM, State Plane) this is the grid scale factor of every direction; on others
-    it is the factor that makes areas and volumes right.
+    On a conformal projection (UTM, State Plane) this is the grid scale factor of every direction; on others it is the
+    factor that makes areas and volumes right.
 
     Args:
         crs: a projected CRS.
@@ -92,12 +90,10 @@ def grid_scale_factor(crs: CRS, easting: float, northing: float) -> float:
 def ground_scale(crs: CRS | None, centre_easting: float, centre_northing: float, mean_elevation_m: float) -> float:
     """Ground length / map length at the centre of a site: ``1 / (grid scale factor × R / (R + h))``.
 
-    The grid scale factor comes from :func:`grid_scale_factor`; :func:`scale_warnings` says what the user must
-    know.
+    The grid scale factor comes from :func:`grid_scale_factor`; :func:`scale_warnings` says what the user must know.
 
     Args:
-        crs: CRS of the map; None, or one that is tied to no place on earth, is a local grid, which has scale
-            1.
+        crs: CRS of the map; None, or one that is tied to no place on earth, is a local grid, which has scale 1.
         centre_easting, centre_northing: centre of the site [CRS unit].
         mean_elevation_m: mean elevation of the site [m].
 
@@ -110,7 +106,7 @@ def ground_scale(crs: CRS | None, centre_easting: float, centre_northing: float,
     if crs is None:
         return 1.0
     refuse_geographic(crs, centre_easting, centre_northing)
-    if _is_local(crs):
+    if not tied_to_earth(crs):
         return 1.0
     return 1.0 / combined_factor(grid_scale_factor(crs, centre_easting, centre_northing), mean_elevation_m)
 
@@ -120,7 +116,7 @@ def scale_warnings(crs: CRS | None, centre_easting: float, centre_northing: floa
     if crs is None:
         message = "no CRS is given: a local grid with ground scale 1 is taken; name the CRS in [site] crs"
         return (Warning("no-crs", message),)
-    if _is_local(crs):
+    if not tied_to_earth(crs):
         message = f"{describe(crs)} is tied to no place on earth: it is taken as a local grid with ground scale 1"
         return (Warning("no-crs", message),)
     if not is_web_mercator(crs):
@@ -128,17 +124,11 @@ def scale_warnings(crs: CRS | None, centre_easting: float, centre_northing: floa
     longitude, latitude = longitude_latitude(crs, centre_easting, centre_northing)
     message = (
         f"{describe(crs)} is Web Mercator, made for looking at: map areas are "
-        f"{web_mercator_factor(latitude) ** 2:.3f} "
-        "times too large here. They are corrected by the ground scale of the site's centre; for better "
-        "figures "
-        f"reproject the surfaces to a projection for surveys, such as {utm_code(longitude, latitude)}"
+        f"{web_mercator_factor(latitude) ** 2:.3f} times too large here. They are corrected by the ground scale of "
+        "the site's centre; for better figures reproject the surfaces to a projection for surveys, such as "
+        f"{utm_code(longitude, latitude)}"
     )
     return (Warning("web-mercator", message),)
-
-
-def _is_local(crs: CRS) -> bool:
-    flat = horizontal(crs)
-    return not (flat.is_projected or flat.is_bound)
 
 
 def refuse_geographic(crs: CRS, easting: float, northing: float, what: str = "the site") -> None:
@@ -147,10 +137,8 @@ def refuse_geographic(crs: CRS, easting: float, northing: float, what: str = "th
     if flat.is_geographic:
         code = utm_code(easting, northing)
         raise GroundError(
-            f"{what}: CRS is {describe(crs)}, in degrees; it must be a projected one, since degrees are no "
-            "lengths. "
-            f"Reproject it first, here for example to {code}: gdalwarp -t_srs {code} -r bilinear in.tif "
-            "out.tif"
+            f"{what}: CRS is {describe(crs)}, in degrees; it must be a projected one, since degrees are no lengths. "
+            f"Reproject it first, here for example to {code}: gdalwarp -t_srs {code} -r bilinear in.tif out.tif"
         )
     if flat.is_geocentric:
         raise GroundError(f"{what}: CRS is {describe(crs)}, geocentric; it must be a projected one. Reproject it first")

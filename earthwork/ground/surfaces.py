@@ -147,8 +147,7 @@ class AlignedRaster:
 
     Args:
         source: the file.
-        row, column: row and column of the file (north up) at the grid's (0, 0); negative where the grid
-            begins first.
+        row, column: row and column of the file (north up) at the grid's (0, 0); negative where the grid begins first.
     """
 
     source: RasterSource
@@ -303,16 +302,14 @@ def require_north_up(info: RasterInfo, what: str) -> None:
     if info.rotated:
         a, b, _, d, e, _ = info.transform
         raise GroundError(
-            f"{what}: {info.name}: its grid is rotated or sheared (one column is {a:g} east and {d:g} north, "
-            "one row "
-            f"{b:g} east and {e:g} north); rows must run east. Resample it to a north-up grid first: "
-            "gdalwarp -r bilinear in.tif out.tif"
+            f"{what}: {info.name}: its grid is rotated or sheared (one column is {a:g} east and {d:g} north, one row "
+            f"{b:g} east and {e:g} north); rows must run east. Resample it to a north-up grid first: gdalwarp -r "
+            "bilinear in.tif out.tif"
         )
     if not info.placed:
         raise GroundError(
-            f"{what}: {info.name}: it carries no georeference; where it lies and how large its cells are "
-            "must be known. "
-            "Add them, for example with a world file"
+            f"{what}: {info.name}: it carries no georeference; where it lies and how large its cells are must be "
+            "known. Add them, for example with a world file"
         )
 
 

@@ -44,8 +44,8 @@ def vertical_facts(
 ) -> tuple[VerticalFacts, tuple[Warning, ...]]:
     """Unit and datum of a raster's elevations; the first that speaks of the unit is believed.
 
-    Order: ``vertical_unit`` of the site file, the band's unit, the vertical CRS, the horizontal CRS, the
-        site's units.
+    Order: ``vertical_unit`` of the site file, the band's unit, the vertical CRS, the horizontal CRS, the site's
+        units.
 
     Args:
         spec: the surface in the site file.
@@ -61,8 +61,7 @@ def vertical_facts(
     if reference is not None and not reference.upwards:
         raise GroundError(
             f"{what}: {info.name}: its vertical CRS {reference.name!r} counts depths downwards; it must give "
-            "elevations "
-            "upwards. Turn the sign and name the right vertical CRS"
+            "elevations upwards. Turn the sign and name the right vertical CRS"
         )
     unit, source = _unit(spec, info, crs, units, what)
     facts = VerticalFacts(what, unit, unit_label(unit), source, reference.datum if reference else None)
@@ -111,7 +110,6 @@ def refuse_other_datum(facts: Sequence[VerticalFacts]) -> None:
         if other.datum != named[0].datum:
             raise GroundError(
                 f"{named[0].surface} is in the vertical datum {named[0].datum!r}, {other.surface} in "
-                f"{other.datum!r}; they "
-                "must be the same, since datums differ by decimetres to tens of metres. Transform one of the "
-                "two first"
+                f"{other.datum!r}; they must be the same, since datums differ by decimetres to tens of metres. "
+                "Transform one of the two first"
             )

@@ -35,15 +35,14 @@ FLOAT64 = np.dtype(np.float64)
 class WarpedRaster:
     """A raster in another CRS, on the cells of the grid.
 
-    Bilinear between the four source samples around the centre of a cell, valid only where all four are. Where
-    the source is finer, ``parts`` × ``parts`` points of the cell are averaged.
+    Bilinear between the four source samples around the centre of a cell, valid only where all four are. Where the
+    source is finer, ``parts`` × ``parts`` points of the cell are averaged.
 
     Args:
         source: the file, north up in its own CRS.
         crs: its CRS.
         grid: the grid.
-        spacing: cells between control points, at which places are transformed; between them they are
-            interpolated.
+        spacing: cells between control points, at which places are transformed; between them they are interpolated.
         parts: points per cell along each axis.
     """
 
@@ -130,21 +129,21 @@ class _WarpedReader:
         """Add the points of each cell of a window to ``out``; in halves when they take too many samples."""
         info, parts = self._surface.source.info, self._surface.parts
         control = self._control(window)
-        reach = self._reach(control)
-        if (reach[1] - reach[0]) * (reach[3] - reach[2]) > _READ_AT_ONCE and max(window.height, window.width) > 1:
-            for part, cut in _halves(window):
-                self._add(out[cut], part)
-            return
-        top, bottom = max(reach[0], 0), min(reach[1], info.rows)
-        left, right = max(reach[2], 0), min(reach[3], info.columns)
+        middle = self._between(control, window, 0.0, 0.0)
+        top, bottom, left, right = _reach(middle, parts)
+        top, bottom, left, right = max(top, 0), min(bottom, info.rows), max(left, 0), min(right, info.columns)
         if bottom <= top or right <= left:
             out[...] = np.nan
             return
+        if (bottom - top) * (right - left) > _READ_AT_ONCE and max(window.height, window.width) > 1:
+            for part, cut in _halves(window):
+                self._add(out[cut], part)
+            return
         source = self._file.read(top, left, bottom - top, right - left)
-        for i in range(parts):
-            for j in range(parts):
-                row = self._between(control[0], window, (i + 0.5) / parts - 0.5, (j + 0.5) / parts - 0.5)
-                column = self._between(control[1], window, (i + 0.5) / parts - 0.5, (j + 0.5) / parts - 0.5)
+        offsets = [(i + 0.5) / parts - 0.5 for i in range(parts)]
+        for down in offsets:
+            for along in offsets:
+                row, column = middle if parts == 1 else self._between(control, window, down, along)
                 out += bilinear(source, row - top, column - left)
 
     def _control(self, window: Window) -> np.ndarray:
@@ -153,27 +152,31 @@ class _WarpedReader:
         rows = np.arange(window.row // step, (window.row + window.height - 1) // step + 2) * step + 0.5
         columns = np.arange(window.column // step, (window.column + window.width - 1) // step + 2) * step + 0.5
         row, column = np.meshgrid(rows, columns, indexing="ij")
-        return _places(self._surface, self._to_file, row, column)
+        places = _places(self._surface, self._to_file, row, column)
+        return np.where(np.isfinite(places), places, np.nan)
 
     def _between(self, control: np.ndarray, window: Window, down: float, along: float) -> np.ndarray:
-        """One coordinate for each cell of a window, at an offset from its centre [cells]."""
+        """Place in the file of each cell of a window, at an offset from its centre [cells]; shape (2, height, width)."""
         step = self._surface.spacing
         rows = np.arange(window.row, window.row + window.height)
         columns = np.arange(window.column, window.column + window.width)
         i, j = rows // step - window.row // step, columns // step - window.column // step
         u = ((rows % step + down) / step)[:, None]
         v = ((columns % step + along) / step)[None, :]
-        coarse = control[i] * (1 - u) + control[i + 1] * u
-        return coarse[:, j] * (1 - v) + coarse[:, j + 1] * v
+        coarse = control[:, i] * (1 - u) + control[:, i + 1] * u
+        return coarse[:, :, j] * (1 - v) + coarse[:, :, j + 1] * v
 
-    @staticmethod
-    def _reach(control: np.ndarray) -> tuple[int, int, int, int]:
-        """(top, bottom, left, right) of the source samples that a window can take."""
-        if not np.isfinite(control).any():
-            return 0, 0, 0, 0
-        low = np.floor(np.nanmin(np.where(np.isfinite(control), control, np.nan), axis=(1, 2))) - 1
-        high = np.ceil(np.nanmax(np.where(np.isfinite(control), control, np.nan), axis=(1, 2))) + 2
-        return int(low[0]), int(high[0]), int(low[1]), int(high[1])
+
+def _reach(places: np.ndarray, parts: int) -> tuple[int, int, int, int]:
+    """(top, bottom, left, right) of the source samples that cells with their middles at places can take."""
+    known = np.isfinite(places).all(axis=0)
+    if not known.any():
+        return 0, 0, 0, 0
+    # points lie up to half a cell from the middle, a cell is at most ``parts`` samples wide, and each takes a neighbour
+    margin = parts // 2 + 2
+    low = np.floor(places[:, known].min(axis=1)).astype(int) - margin
+    high = np.ceil(places[:, known].max(axis=1)).astype(int) + margin + 1
+    return int(low[0]), int(high[0]), int(low[1]), int(high[1])
 
 
 def _halves(window: Window) -> list[tuple[Window, tuple[slice, slice]]]:
