@@ -12,6 +12,7 @@ import os
 from collections.abc import Callable, Iterator
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -85,7 +86,7 @@ class Ways:
         if roads is not None:
             free = np.full((len(roads.nodes), 4), np.nan)
             self._nodes = np.vstack([corners, np.hstack([roads.nodes, free])])
-        self._graph = self._links() if len(self._nodes) else None
+        self._graph: Any = self._links() if len(self._nodes) else None
 
     def table(self, sources: Array, targets: Array) -> WayTable:
         """Lengths of the ways from each source to each target."""
@@ -260,7 +261,7 @@ class Ways:
         road = np.full(len(nodes) + 1, -1)
         if self.roads is not None:
             shift = len(self._nodes) - len(self.roads.nodes)
-            for k, (a, b) in enumerate(zip(nodes[:-1], nodes[1:], strict=True)):
+            for k, (a, b) in enumerate(pairwise(nodes)):
                 road[k + 1] = self.roads.road_between(a - shift, b - shift, float(self._graph[a, b]))
         return road
 
@@ -269,7 +270,7 @@ class Ways:
         parts = min(count, 8 * self._threads) or 1
         edges = [count * k // parts for k in range(parts + 1)]
         if self._threads == 1 or count < 16:
-            return [work(a, b) for a, b in zip(edges[:-1], edges[1:], strict=True)]
+            return [work(a, b) for a, b in pairwise(edges)]
         with ThreadPoolExecutor(self._threads) as pool:
             return list(pool.map(work, edges[:-1], edges[1:]))
 

@@ -60,7 +60,7 @@ def _cut(plan: Array, allowed: Array, need: Array, supply: Array) -> tuple[Array
         more = wanting | ((plan > 0) & allowed)[reached].any(axis=0)
         if (more == wanting).all() and (reached == helping).all():
             break
-        wanting, helping = more, reached
+        wanting, helping = np.asarray(more), reached
     closed = not (helping[-1] or wanting[-1])
     helping[-1], wanting[-1] = False, False
     return (
