@@ -56,11 +56,11 @@ def _cut(plan: Array, allowed: Array, need: Array, supply: Array) -> tuple[Array
     wanting[-1] = False
     helping = np.zeros(len(supply), bool)
     while True:
-        reached = allowed[:, wanting].any(axis=1)
-        more = wanting | ((plan > 0) & allowed)[reached].any(axis=0)
+        reached: Array = allowed[:, wanting].any(axis=1)
+        more: Array = wanting | ((plan > 0) & allowed)[reached].any(axis=0)
         if (more == wanting).all() and (reached == helping).all():
             break
-        wanting, helping = np.asarray(more), reached
+        wanting, helping = more, reached
     closed = not (helping[-1] or wanting[-1])
     helping[-1], wanting[-1] = False, False
     return (
