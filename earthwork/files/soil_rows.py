@@ -30,7 +30,7 @@ _SPELLINGS = {
 }
 GROUP_COLUMNS = ("stratum", "lift", "area", "zone", "layer", "group")
 NAME_COLUMNS = ("test", "point", "location", "specimen", "sample", "id", "no", "number")
-_MATERIAL_COLUMNS = ("material", "soil")
+MATERIAL_COLUMNS = ("material", "soil")
 METHOD_COLUMNS = ("method", "effort", "compaction_effort")
 #: A density outside this range [kg/m³] is a slip of unit.
 _BELIEVED_KG_M3 = (500.0, 3500.0)
@@ -164,9 +164,13 @@ class SoilRows:
     def first_text(self, row: Row, columns: tuple[str, ...]) -> str:
         return next((text for column in columns if (text := row.text(column))), "")
 
+    def texts(self, rows: list[Row], columns: tuple[str, ...]) -> list[str]:
+        """The different texts that rows have in the first of the columns that is filled."""
+        return list(dict.fromkeys(text for row in rows if (text := self.first_text(row, columns))))
+
     def rows(self, material: str | None) -> Iterator[Row]:
         """The rows of a material, all when the table names none; exact repeats once."""
-        column = next((c for c in _MATERIAL_COLUMNS if c in self.table.columns), None)
+        column = next((c for c in MATERIAL_COLUMNS if c in self.table.columns), None)
         wanted = [
             row for row in self.table.rows
             if column is None or material is None or (row.text(column) or "").lower() == material.lower()

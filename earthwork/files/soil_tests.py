@@ -16,7 +16,8 @@ from earthwork.errors import EarthworkError, FileError
 from earthwork.files.soil_rows import (
     DENSITY,
     GROUP_COLUMNS,
-        MASS,
+    MASS,
+    MATERIAL_COLUMNS,
     METHOD_COLUMNS,
     NAME_COLUMNS,
     VOLUME,
@@ -127,13 +128,44 @@ def read_density_tests(path: Path, *, material: str | None = None, length_m: flo
     return Reading(tests=tuple(tests), notes=tuple(reader.notes))
 
 
+def material_and_method(
+    path: Path, *, material: str | None = None, any_method: bool = False
+) -> tuple[str | None, str | None]:
+    """The one material and the one method that a file of compaction points names; None where it names none.
+
+    Args:
+        path: the CSV.
+        material: the rows to look at, where the file has several materials.
+        any_method: a method is chosen already, and the file may have several.
+
+    Raises:
+        FileError: several materials and none chosen, or several efforts.
+    """
+    reader = SoilRows(read_source_table(path))
+    if material is None:
+        named = reader.texts(list(reader.table.rows), MATERIAL_COLUMNS)
+        if len(named) > 1:
+            raise FileError(f"{path}: points of {', '.join(named)}; say which material to take")
+        material = named[0] if named else None
+    methods = _efforts(reader.texts(list(reader.rows(material)), METHOD_COLUMNS))
+    if len(methods) > 1 and not any_method:
+        raise FileError(f"{path}: points of {' and '.join(methods)}; efforts are never mixed: say which method to take")
+    return material, methods[0] if methods else None
+
+
+def _efforts(names: list[str]) -> list[str]:
+    """The first name of each effort."""
+    kinds: list[str] = []
+    for name in names:
+        if not any(same_method(name, kind) for kind in kinds):
+            kinds.append(name)
+    return kinds
+
+
 def _of_method(reader: SoilRows, rows: list[Row], method: str | None) -> list[Row]:
     """The rows of a method; refuses a file with several when none is named."""
     named = {row.number: reader.first_text(row, METHOD_COLUMNS) for row in rows}
-    kinds: list[str] = []
-    for name in named.values():
-        if name and not any(same_method(name, kind) for kind in kinds):
-            kinds.append(name)
+    kinds = _efforts([name for name in named.values() if name])
     if not kinds or (method is None and len(kinds) == 1):
         return rows
     if method is None:

@@ -83,6 +83,7 @@ def _card(context: Context) -> SoilCard | None:
         saturation_window_percent=context.fill.saturation_window if target is not None else None,
         air_voids_max_percent=context.fill.air_voids_max if target is not None else None,
         loss_fraction=context.material.loss_percent / 100, bands=rows, bank_tests=bank.tests, classification=soil,
+        oversize=context.material.oversize,
     )  # fmt: skip
     card = _with_fill(context, card, bank, peak, made)
     if soil is not None:

@@ -17,6 +17,7 @@ from earthwork.soils import phase, states
 
 if TYPE_CHECKING:
     from earthwork.site import Site
+    from earthwork.site.model import Oversize
     from earthwork.soils.classify import Classification
     from earthwork.soils.consequences import Consequences
     from earthwork.soils.curve import CompactionCurve
@@ -87,6 +88,7 @@ class SoilCard:
     window_water_content_percent: tuple[float, float] | None = None
     saturation_window_percent: tuple[float, float] | None = None
     air_voids_max_percent: float | None = None
+    oversize: Oversize | None = None
     loss_fraction: float = 0.0
     bank_m3_per_compacted_m3_per_point: float | None = None
     uncertainty: ShrinkUncertainty | None = None
@@ -266,6 +268,7 @@ class SoilCard:
             "bank_water_content_percent": self.bank_water_content_percent,
             "shrinkage_factor": self.shrinkage_factor,
             "effective_factor": self.effective_factor,
+            "oversize_percent": self.oversize.percent if self.oversize else 0.0,
             "loss_percent": 100 * self.loss_fraction,
             "shrink_percent_of_bank": self.shrink_percent_of_bank,
             "shrink_percent_of_fill": self.shrink_percent_of_fill,

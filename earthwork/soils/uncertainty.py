@@ -12,6 +12,10 @@ import math
 from dataclasses import dataclass
 from typing import Any
 
+#: Parts that more tests make smaller. More points on one compaction curve do not: its form, and how well
+#: one sample stands for the soil, stay.
+GROWS = frozenset({"bank", "compaction"})
+
 
 @dataclass(frozen=True, kw_only=True)
 class Part:
@@ -44,19 +48,21 @@ class ShrinkUncertainty:
 
         Each test counts the same: the variance of a mean falls with 1/n, while the other parts stay.
         """
-        part = next((p for p in self.parts if p.name == name), None)
-        if part is None or not part.tests or part.relative_sd == 0:
-            return None
-        others = self.relative_sd**2 - part.relative_sd**2
-        allowed = self.relative_sd**2 / 4 - others
-        if allowed <= 0:
-            return None
-        needed = math.ceil(part.tests * part.relative_sd**2 / allowed - 1e-9)
-        return needed - part.tests
+        found = self._further({name})
+        return found[name] if found else None
 
-    def further_tests_of_all_to_halve(self) -> dict[str, int]:
-        """Further tests of every kind, when no single kind does: four times as many of each halve their part."""
-        return {part.name: 3 * part.tests for part in self.parts if part.tests}
+    def further_tests_of_all_to_halve(self) -> dict[str, int] | None:
+        """Further tests of every kind that together halve it, each kind by the same factor; None when none do."""
+        return self._further({part.name for part in self.parts})
+
+    def _further(self, names: set[str]) -> dict[str, int] | None:
+        grown = [p for p in self.parts if p.name in names and p.name in GROWS and p.tests and p.relative_sd > 0]
+        variance = sum(part.relative_sd**2 for part in grown)
+        allowed = self.relative_sd**2 / 4 - (self.relative_sd**2 - variance)
+        if not grown or allowed <= 0:
+            return None
+        # The tiny amount keeps a factor that is whole by arithmetic from being rounded up by its last digit.
+        return {p.name: math.ceil((p.tests or 0) * variance / allowed - 1e-9) - (p.tests or 0) for p in grown}
 
     def to_dict(self) -> dict[str, Any]:
         shares = {p.name: (p.relative_sd / self.relative_sd) ** 2 if self.relative_sd else 0.0 for p in self.parts}
@@ -67,6 +73,7 @@ class ShrinkUncertainty:
                  "share_percent": 100 * shares[p.name], "further_tests_to_halve": self.further_tests_to_halve(p.name)}
                 for p in self.parts
             ],
+            "further_tests_of_all_to_halve": self.further_tests_of_all_to_halve(),
             "not_included": list(self.unknown),
         }  # fmt: skip
 
