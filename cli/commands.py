@@ -88,11 +88,25 @@ def volumes(
 
 @app.command()
 @with_shared
-def soil(site: SiteFile, how: Shared) -> None:
-    """The soil card of each material: densities, shrink and swell, water contents, placing target."""
-    from .flow import perform
+def soil(
+    site: Annotated[Path | None, typer.Argument(metavar="SITE", help="The site file.")] = None,
+    points: Annotated[Path | None, typer.Option(metavar="FILE", help="CSV of compaction points; no site file.")] = None,
+    specific_gravity: Annotated[float | None, typer.Option(metavar="G", help="Of the grains, for --points.")] = None,
+    method: Annotated[str | None, typer.Option(metavar="NAME", help='Such as "ASTM D698", for --points.')] = None,
+    material: Annotated[str | None, typer.Option(metavar="NAME", help="Which rows to take of --points.")] = None,
+    units: Annotated[str | None, typer.Option(metavar="metric|us", help="Units for --points.")] = None,
+    *,
+    how: Shared,
+) -> None:
+    """The soil card of each material: densities, shrink and swell, water contents, placing target.
 
-    perform("soil", site, how)
+    With --points it fits the compaction curve of a file, without a site file.
+    """
+    from .flow import perform, site_of_bench
+
+    bench = {"specific_gravity": specific_gravity, "method": method, "material": material, "units": units}
+    made = site_of_bench(site, points, bench)
+    perform("soil" if points is None else "proctor", made, how)
 
 
 @app.command()

@@ -68,3 +68,22 @@ def site_of_files(site: Path | None, files: dict[str, Any]) -> Path | Site:
     from earthwork.site.load import site_from_files
 
     return site_from_files(**{name: value for name, value in files.items() if value is not None})
+
+
+def site_of_bench(site: Path | None, points: Path | None, options: dict[str, Any]) -> Path | Site:
+    """The site file, or a site of nothing but a file of compaction points; never both."""
+    given = {name: value for name, value in options.items() if value is not None}
+    if points is None:
+        if site is None:
+            raise typer.BadParameter("give a site file, or the points of a compaction curve with --points FILE")
+        if given:
+            names = ", ".join(f"--{name.replace('_', '-')}" for name in given)
+            raise typer.BadParameter(f"{names} belong to a run with --points; a site file says it itself")
+        return site
+    if site is not None:
+        raise typer.BadParameter("--points is for a run without a site file; keep one of the two")
+    if given.get("units") not in (None, "metric", "us"):
+        raise typer.BadParameter(f"--units is {given['units']!r}; it must be metric or us")
+    from earthwork.soils.bench import site_of_points
+
+    return site_of_points(points, **given)

@@ -16,6 +16,8 @@ _HOME = {
     "Site": "earthwork.site",
     "volumes": "earthwork.quantities.volumes",
     "soil": "earthwork.soils.card",
+    "proctor": "earthwork.soils.bench",
+    "fit_proctor_file": "earthwork.soils.bench",
     "check": "earthwork.plan.check",
     "balance": "earthwork.plan.balance",
     "EarthworkError": "earthwork.errors",

@@ -139,7 +139,7 @@ def draw_compaction_chart(content: ChartContent, path: Path, *, units: UnitSyste
     limits = _limits(content)
     axes.set_xlim(*limits[0])
     axes.set_ylim(limits[1][0] / factor, limits[1][1] / factor)
-    _draw_saturation(axes, content, factor, limits)
+    _draw_saturation(axes, content, factor, limits[0])
     if content.window is not None and not content.window.is_empty:
         _draw_window(axes, content.window, factor)
     _draw_curve(axes, content, factor)
@@ -175,10 +175,10 @@ def _limits(content: ChartContent) -> tuple[tuple[float, float], tuple[float, fl
     )
 
 
-def _draw_saturation(axes: Axes, content: ChartContent, factor: float, limits: Any) -> None:
+def _draw_saturation(axes: Axes, content: ChartContent, factor: float, span: tuple[float, float]) -> None:
     import numpy as np
 
-    water = np.linspace(*limits[0], 200)
+    water = np.linspace(span[0], span[1], 200)
     for saturation, dashes, width in _LINES:
         density = phase.dry_density_at_saturation(water, content.specific_gravity, saturation)
         axes.plot(water, density / factor, color=colors.FAINT, linewidth=width, linestyle=dashes, zorder=2)

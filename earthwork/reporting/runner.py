@@ -26,6 +26,7 @@ _MODULES = {
     "check": "earthwork.reporting.check_page",
     "volumes": "earthwork.reporting.volumes_page",
     "soil": "earthwork.reporting.soil_page",
+    "proctor": "earthwork.reporting.proctor_page",
     "balance": "earthwork.reporting.balance_page",
 }
 

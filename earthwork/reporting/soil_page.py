@@ -3,11 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from earthwork.reporting.page import Block, Notes, Page, Table, column_texts, unit_label
+from earthwork.reporting.soil_blocks import draw_cards, soil_blocks
 from earthwork.results import Result
 from earthwork.site import Site
+
+if TYPE_CHECKING:
+    from earthwork.files.output import OutputFolder
 
 #: (key, label) in the order of a laboratory card; None starts a new part.
 _ROWS: tuple[tuple[str, str] | None, ...] = (
@@ -26,6 +30,10 @@ _ROWS: tuple[tuple[str, str] | None, ...] = (
     ("fill_saturation_percent", "saturation of the fill"),
     ("bank_void_ratio", "void ratio, bank"),
     ("fill_void_ratio", "void ratio, fill"),
+    ("specific_gravity", "specific gravity of the grains"),
+    ("bank_percent_of_maximum", "bank, of the maximum"),
+    ("fill_relative_density_percent", "relative density, fill"),
+    ("bank_relative_density_percent", "relative density, bank"),
     None,
     ("shrinkage_factor", "compacted per bank volume"),
     ("shrinkage_factor_sd", "± standard deviation"),
@@ -34,6 +42,7 @@ _ROWS: tuple[tuple[str, str] | None, ...] = (
     ("shrink_percent_of_fill", "shrink, of fill volume"),
     ("swell_percent", "swell, of bank volume"),
     ("load_factor", "load factor, loose / bank"),
+    ("bank_m3_per_compacted_m3_per_point", "bank per fill volume, for a point more"),
 )
 
 
@@ -43,8 +52,8 @@ def page(site: Site, result: Result) -> Page:
     blocks: list[Block] = []
     for i in range(0, len(materials), 5):
         blocks.append(_cards(materials[i : i + 5], site))
-    bands = [(m["material"], band) for m in materials for band in m["bands"]]
-    bands = [(name, band) for name, band in bands if band["fill_dry_density_kg_m3"] is not None]
+    compacted = [m for m in materials if m["expected_compaction_percent"] is not None]
+    bands = [(m["material"], band) for m in compacted for band in m["bands"]]
     if bands:
         blocks.append(_bands(bands, site))
     notes = tuple(
@@ -54,7 +63,13 @@ def page(site: Site, result: Result) -> Page:
     )
     if notes:
         blocks.append(Notes(heading="Assumed", lines=notes))
+    blocks += soil_blocks(materials, site)
     return Page(title=f"{site.name}: soil cards", blocks=tuple(blocks))
+
+
+def draw(site: Site, result: Any, folder: OutputFolder, tallies: Sequence[Any]) -> None:
+    """Write the compaction charts."""
+    draw_cards(site, result, folder)
 
 
 def _cards(materials: Sequence[dict[str, Any]], site: Site) -> Table:

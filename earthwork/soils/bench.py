@@ -39,7 +39,7 @@ class ProctorResult(Result):
                     "material": name,
                     "specific_gravity": curve.specific_gravity,
                     **curve.to_dict(),
-                    "points": _points(curve),
+                    "points": curve.point_rows(),
                     "compactions": _compactions(curve),
                 }
                 for name, curve in self.curves
@@ -60,25 +60,6 @@ class ProctorResult(Result):
             for name in lists
         }
         return {"proctor": pandas.DataFrame(main), **parts}
-
-
-def _points(curve: CompactionCurve) -> list[dict[str, Any]]:
-    rows = []
-    for point, reason in [*((p, None) for p in curve.points), *curve.left_out]:
-        water, density = point.water_content_percent, point.dry_density_kg_m3
-        rows.append(
-            {
-                "place": point.place,
-                "specimen": point.specimen or None,
-                "water_content_percent": water,
-                "dry_density_kg_m3": density,
-                "saturation_percent": float(phase.saturation_percent(density, water, curve.specific_gravity)),
-                "void_ratio": float(phase.void_ratio(density, curve.specific_gravity)),
-                "fitted_dry_density_kg_m3": float(curve.dry_density_kg_m3([water])[0]),
-                "left_out": reason,
-            }
-        )
-    return rows
 
 
 def _compactions(curve: CompactionCurve) -> list[dict[str, Any]]:

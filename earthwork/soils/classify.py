@@ -1,4 +1,4 @@
-"""Group symbol and name of a soil by grading and plasticity ([astm-d2487])."""
+"""Group symbol and name of a soil by grading and plasticity ([ASTM-D2487])."""
 
 from __future__ import annotations
 
@@ -82,7 +82,7 @@ class Classification:
 
 
 def a_line(liquid_limit: float) -> float:
-    """Plasticity index of the A line: 0.73 (LL − 20). Fines above it are clay ([astm-d2487], figure 3).
+    """Plasticity index of the A line: 0.73 (LL − 20). Fines above it are clay ([ASTM-D2487], figure 3).
 
     >>> round(a_line(50.0), 6)
     21.9
@@ -91,7 +91,7 @@ def a_line(liquid_limit: float) -> float:
 
 
 def u_line(liquid_limit: float) -> float:
-    """Plasticity index of the U line: 0.9 (LL − 8), over which no soil was found ([astm-d2487], figure 3)."""
+    """Plasticity index of the U line: 0.9 (LL − 8), over which no soil was found ([ASTM-D2487], figure 3)."""
     return 0.9 * (liquid_limit - 8)
 
 

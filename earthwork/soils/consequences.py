@@ -1,7 +1,7 @@
 """What a soil group means for the fill: which test governs, what plant suits, how fines behave, what to beware of.
 
-A table of judgements, not of measurements: [fm-5-434] and [navfac-dm7] on compactors, [usbr-earth] on use in
-embankments, [astm-d4253] on free-draining soils; wording and grades are ours, common practice where no
+A table of judgements, not of measurements: [FM-5-434] and [NAVFAC-DM7] on compactors, [USBR-EARTH] on use in
+embankments, [ASTM-D4253] on free-draining soils; wording and grades are ours, common practice where no
 source is named.
 """
 
@@ -14,7 +14,7 @@ from earthwork.soils import phase
 from earthwork.soils.classify import Classification
 
 #: Shrink–swell by plasticity index: below 15 low, 15 to 28 medium, 25 to 41 high, over 35 very high
-#: ([usbr-earth], from memory; the classes overlap in the source). A warning starts where "high" does.
+#: ([USBR-EARTH], from memory; the classes overlap in the source). A warning starts where "high" does.
 EXPANSIVE_PLASTICITY = 25.0
 
 
@@ -91,7 +91,7 @@ def _group_key(symbol: str) -> str:
 def collapse_prone(dry_density_kg_m3: float, liquid_limit: float, specific_gravity: float) -> bool:
     """Whether a natural soil is loose enough to collapse on wetting: its voids hold more water than its liquid limit.
 
-    True when e > LL Gs, that is ρd < Gs ρw / (1 + LL Gs) ([gibbs-bara], from memory). A screen: loess and
+    True when e > LL Gs, that is ρd < Gs ρw / (1 + LL Gs) ([GIBBS-BARA], from memory). A screen: loess and
     alluvial fans near the line need a collapse test (ASTM D4546).
 
     >>> collapse_prone(1350.0, 28.0, 2.68), collapse_prone(1650.0, 28.0, 2.68)

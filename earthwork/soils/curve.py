@@ -78,6 +78,25 @@ class CompactionCurve:
         """The chosen curve at water contents [%]."""
         return self.chosen.predict(np.asarray(water_content_percent, float))
 
+    def point_rows(self) -> list[dict[str, Any]]:
+        """A row per point, those left out last with the reason."""
+        rows = []
+        for point, reason in [*((p, None) for p in self.points), *self.left_out]:
+            water, density = point.water_content_percent, point.dry_density_kg_m3
+            rows.append(
+                {
+                    "place": point.place,
+                    "specimen": point.specimen or None,
+                    "water_content_percent": water,
+                    "dry_density_kg_m3": density,
+                    "saturation_percent": float(phase.saturation_percent(density, water, self.specific_gravity)),
+                    "void_ratio": float(phase.void_ratio(density, self.specific_gravity)),
+                    "fitted_dry_density_kg_m3": float(self.dry_density_kg_m3([water])[0]),
+                    "left_out": reason,
+                }
+            )
+        return rows
+
     def to_dict(self) -> dict[str, Any]:
         return {
             "count": len(self.points),

@@ -65,7 +65,7 @@ def _bounded(water: np.ndarray, parameters: np.ndarray, gravity: float) -> np.nd
     """Two branches joined smoothly: a straight dry one, and a wet one of constant saturation.
 
     ρd = (dry^−k + wet^−k)^(−1/k), dry = a + b w, wet = Gs ρw / (1 + w Gs / S). On the wet side real curves
-    run close to a line of constant saturation ([horpibulsuk]).
+    run close to a line of constant saturation ([HORPIBULSUK]).
     """
     start, slope, saturation = parameters
     dry = np.maximum(start + slope * water, 1.0)

@@ -15,7 +15,7 @@ from earthwork.units import STANDARD_GRAVITY_M_S2
 Effort = Literal["standard", "modified"]
 
 #: Nominal energy [kJ/m³] by effort: 600 (12,400 ft·lbf/ft³) and 2,700 (56,000 ft·lbf/ft³)
-#: ([astm-d698], [astm-d1557], scopes).
+#: ([ASTM-D698], [ASTM-D1557], scopes).
 NOMINAL_ENERGY_KJ_M3: dict[Effort, float] = {"standard": 600.0, "modified": 2700.0}
 
 #: What a method's name holds → its effort. AASHTO T 99 and T 180 and the 2.5 kg and 4.5 kg rammers of BS

@@ -11,7 +11,7 @@ from typing import Any
 from earthwork.errors import SoilError
 from earthwork.soils.records import DensityTest
 
-#: A test further than this from the median, in robust standard deviations, is named ([iglewicz-hoaglin],
+#: A test further than this from the median, in robust standard deviations, is named ([IGLEWICZ-HOAGLIN],
 #: 3.5).
 OUTLIER_SCORE = 3.5
 #: Fewer tests than this cannot show an outlier.
@@ -24,7 +24,7 @@ _MEAN_AD_TO_SD = 1.2533
 def sand_cone_moist_density(
     hole_soil_mass: float, sand_mass_used: float, cone_sand_mass: float, sand_density: float
 ) -> float:
-    """Moist density by the sand cone ([astm-d1556]): mass / volume, V = (sand used − sand in cone) / sand density.
+    """Moist density by the sand cone ([ASTM-D1556]): mass / volume, V = (sand used − sand in cone) / sand density.
 
     Args:
         hole_soil_mass: moist soil out of the hole [kg].
@@ -49,7 +49,7 @@ def sand_cone_moist_density(
 
 
 def drive_cylinder_moist_density(cylinder_and_soil_mass: float, cylinder_mass: float, cylinder_volume: float) -> float:
-    """Moist density by the drive cylinder ([astm-d2937]), also of a mould: (full − empty) / volume [kg, m³].
+    """Moist density by the drive cylinder ([ASTM-D2937]), also of a mould: (full − empty) / volume [kg, m³].
 
     >>> round(drive_cylinder_moist_density(3.0, 1.2, 0.001), 6)
     1800.0
@@ -65,7 +65,7 @@ def drive_cylinder_moist_density(cylinder_and_soil_mass: float, cylinder_mass: f
 
 
 def oven_water_content_percent(moist_and_tin: float, dry_and_tin: float, tin: float) -> float:
-    """Water content by oven drying ([astm-d2216]): (moist − dry) / (dry − tin), percent; any one unit of mass.
+    """Water content by oven drying ([ASTM-D2216]): (moist − dry) / (dry − tin), percent; any one unit of mass.
 
     >>> oven_water_content_percent(125.0, 110.0, 10.0)
     15.0
@@ -87,7 +87,7 @@ class GaugeReduction:
 
 
 def reduce_gauge(moist_density: float, gauge_water: float, *, water_offset: float = 0.0) -> GaugeReduction:
-    """Nuclear gauge reading to dry density ([astm-d6938]): ρd = ρ − M, w = M / ρd, M = gauge water + offset.
+    """Nuclear gauge reading to dry density ([ASTM-D6938]): ρd = ρ − M, w = M / ρd, M = gauge water + offset.
 
     The gauge counts all hydrogen, also that of clay minerals, gypsum, lime and organic matter, and so sees
     water that no oven drives out. The offset corrects that: see :func:`gauge_water_offset`.
@@ -116,7 +116,7 @@ def reduce_gauge(moist_density: float, gauge_water: float, *, water_offset: floa
 def gauge_water_offset(readings: Sequence[tuple[float, float, float]]) -> float:
     """Water offset of a gauge on one soil [kg/m³], from readings with oven water contents of the same spots.
 
-    True water per volume is ρ w / (1 + w); the offset is the mean of true less gauge ([astm-d6938], water
+    True water per volume is ρ w / (1 + w); the offset is the mean of true less gauge ([ASTM-D6938], water
     content correction).
 
     Args:
@@ -154,7 +154,7 @@ def summarise(values: Sequence[float], labels: Sequence[str] | None = None) -> T
     """Mean, scatter and outliers of test values.
 
     Outliers are named and stay in the mean: a wild test may be a wild place. They are the values whose
-    modified z-score, 0.6745 (x − median) / MAD, is over 3.5 ([iglewicz-hoaglin]); with most values alike
+    modified z-score, 0.6745 (x − median) / MAD, is over 3.5 ([IGLEWICZ-HOAGLIN]); with most values alike
     the mean absolute deviation stands in for the MAD.
 
     Raises:

@@ -15,14 +15,14 @@ from earthwork.soils.in_place import TestSet, summarise_tests
 from earthwork.soils.records import DensityTest
 from earthwork.soils.uncertainty import Part
 
-#: Specific gravity of the grains when nothing tells it, by use ([das], typical specific gravities, from
+#: Specific gravity of the grains when nothing tells it, by use ([DAS], typical specific gravities, from
 #: memory).
 ASSUMED_GRAVITY = {"fill": 2.68, "waste": 2.68, "topsoil": 2.65, "rock": 2.70}
 #: The same by the first letter of the group symbol: sands and gravels are mostly quartz, clay minerals are
 #: denser.
 _GRAVITY_BY_GROUP = {"G": 2.65, "S": 2.65, "M": 2.68, "C": 2.70, "O": 2.65}
 #: Swell of the bank volume when nothing tells it [%]: middle, low, high for common earth and blasted rock
-#: ([fm-5-434], from memory).
+#: ([FM-5-434], from memory).
 ASSUMED_SWELL = {"fill": (25.0, 11.0, 43.0), "waste": (25.0, 11.0, 43.0), "topsoil": (25.0, 11.0, 43.0),
                  "rock": (50.0, 30.0, 75.0)}  # fmt: skip
 

@@ -1,4 +1,4 @@
-"""Oversize particles: from the fraction that fits the mould to the whole soil, and back ([astm-d4718]).
+"""Oversize particles: from the fraction that fits the mould to the whole soil, and back ([ASTM-D4718]).
 
 The laboratory takes out what is larger than the sieve of its method and reports on the finer fraction; the
 field test measures the whole. The two are comparable only after this correction.
@@ -10,10 +10,10 @@ from earthwork.errors import SoilError
 from earthwork.units import WATER_DENSITY_KG_M3
 
 #: Largest share of oversize [% of dry mass] for which the correction holds, by the sieve that splits
-#: ([astm-d4718], scope; from memory). Beyond it the coarse particles touch and the finer fraction is not
+#: ([ASTM-D4718], scope; from memory). Beyond it the coarse particles touch and the finer fraction is not
 #: compacted between them.
 OVERSIZE_LIMIT_PERCENT = {"4.75 mm": 40.0, "19 mm": 30.0}
-#: Below this share the standard lets the correction be left out ([astm-d4718], scope).
+#: Below this share the standard lets the correction be left out ([ASTM-D4718], scope).
 OVERSIZE_MATTERS_PERCENT = 5.0
 
 

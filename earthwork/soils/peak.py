@@ -138,7 +138,7 @@ def _stated_peak(context: Context, gravity: float) -> Peak | None:
 
 
 def _whole_peak(context: Context, peak: Peak) -> Peak | None:
-    """The peak with oversize particles put back in ([astm-d4718])."""
+    """The peak with oversize particles put back in ([ASTM-D4718])."""
     coarse = context.material.oversize
     if coarse is None or coarse.percent == 0:
         return peak

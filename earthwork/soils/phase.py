@@ -4,7 +4,7 @@ States are floats or numpy arrays of one shape, and the answer has that shape. W
 of dry mass. Densities are kg/m³; any other unit works as long as ``water_density`` is given in it too (unit
 weights as well, since the formulas are ratios). Grain density is specific gravity × water density.
 
-All are definitions of the three phases ([das], ch. 3; [holtz-kovacs], ch. 2): none has a range of soils,
+All are definitions of the three phases ([DAS], ch. 3; [HOLTZ-KOVACS], ch. 2): none has a range of soils,
 only the physical range that each function checks. NaN is out of range.
 """
 

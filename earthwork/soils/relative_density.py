@@ -1,21 +1,21 @@
 """Relative density: how a free-draining soil is judged, between its loosest and its densest state.
 
 With few fines water drains out under the rammer and the compaction curve has no peak; the vibrating-table
-maximum and the poured minimum take its place ([astm-d4253], [astm-d4254]).
+maximum and the poured minimum take its place ([ASTM-D4253], [ASTM-D4254]).
 """
 
 from __future__ import annotations
 
 from earthwork.errors import SoilError
 
-#: Largest share of fines [% of dry mass] for which the two tests hold ([astm-d4253], [astm-d4254], scopes).
+#: Largest share of fines [% of dry mass] for which the two tests hold ([ASTM-D4253], [ASTM-D4254], scopes).
 FINES_LIMIT_PERCENT = 15.0
 
 
 def relative_density_percent(dry_density: float, min_dry_density: float, max_dry_density: float) -> float:
     """Relative density [%]: Dr = ρmax (ρd − ρmin) / (ρd (ρmax − ρmin)), 0 at the minimum, 100 at the maximum.
 
-    Below 0 or over 100 is possible in the field, and is given as it is. Source: [das], relative density.
+    Below 0 or over 100 is possible in the field, and is given as it is. Source: [DAS], relative density.
 
     >>> relative_density_percent(1600.0, 1500.0, 1800.0)
     37.5
@@ -28,7 +28,7 @@ def relative_density_percent(dry_density: float, min_dry_density: float, max_dry
 
 
 def dry_density_of_relative(relative_density_percent: float, min_dry_density: float, max_dry_density: float) -> float:
-    """Dry density at a relative density: ρd = ρmax ρmin / (ρmax − Dr (ρmax − ρmin)). Source: [das].
+    """Dry density at a relative density: ρd = ρmax ρmin / (ρmax − Dr (ρmax − ρmin)). Source: [DAS].
 
     >>> dry_density_of_relative(37.5, 1500.0, 1800.0)
     1600.0
@@ -45,7 +45,7 @@ def relative_compaction_of_relative_density(
 ) -> float:
     """Relative compaction [%] that is the same state: Rc = R0 / (1 − Dr (1 − R0)), R0 = ρmin / ρmax.
 
-    Exact when both refer to the same maximum. Source: [das], from the definitions.
+    Exact when both refer to the same maximum. Source: [DAS], from the definitions.
 
     >>> round(relative_compaction_of_relative_density(37.5, 1500.0, 1800.0), 4)
     88.8889
@@ -56,7 +56,7 @@ def relative_compaction_of_relative_density(
 def lee_singh_relative_compaction(relative_density_percent: float) -> float:
     """Relative compaction [%] by correlation, when no minimum density was tested: Rc = 80 + 0.2 Dr.
 
-    A fit to 47 granular soils ([lee-singh], from memory); the exact relation needs the two densities. Holds
+    A fit to 47 granular soils ([LEE-SINGH], from memory); the exact relation needs the two densities. Holds
     for Dr of 0 to 100 %.
 
     >>> lee_singh_relative_compaction(50.0)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
@@ -26,17 +27,63 @@ class SoilResult(Result):
         return {"materials": [card.to_dict() for card in self.cards]}
 
     def tables(self) -> dict[str, pandas.DataFrame]:
-        """``soil``: a row per material; ``bands``: a row per material and row of ``fill.by_depth``."""
+        """``soil``: a row per material; and where there are any, ``bands``, ``points`` of compaction curves, ``tests``.
+
+        ``tests`` are the in-place tests in the bank and in the fill, with what each says of compaction and
+        saturation.
+        """
         import pandas
 
-        rows = [card.to_dict() for card in self.cards]
-        bands = [{"material": row["material"], **band} for row in rows for band in row["bands"]]
-        for row in rows:
-            del row["bands"], row["tests"]
-            row["assumed"] = "; ".join(row["assumed"])
-            low, high = row.pop("window_water_content_percent") or (None, None)
-            row["window_low_water_content_percent"], row["window_high_water_content_percent"] = low, high
-        tables = {"soil": pandas.DataFrame(rows)}
-        if bands:
-            tables["bands"] = pandas.DataFrame(bands)
+        tables = {"soil": pandas.DataFrame([_main_row(card) for card in self.cards])}
+        parts = {
+            "bands": [{"material": c.material, **band.to_dict()} for c in self.cards for band in c.bands],
+            "points": [row for card in self.cards for row in _point_rows(card)],
+            "tests": [row for card in self.cards for row in _test_rows(card)],
+        }
+        tables |= {name: pandas.DataFrame(rows) for name, rows in parts.items() if rows}
         return tables
+
+
+def _main_row(card: SoilCard) -> dict[str, Any]:
+    """The single figures of a card, and the ends of its window and its group as columns of their own."""
+    content = card.to_dict()
+    row = {key: value for key, value in content.items() if not isinstance(value, dict | list)}
+    low, high = card.window_water_content_percent or (None, None)
+    row |= {"window_low_water_content_percent": low, "window_high_water_content_percent": high}
+    row["group"] = card.classification.symbol if card.classification else None
+    row["assumed"] = "; ".join(card.assumed)
+    for key in ("tests", "uncertainty", "window", "window_water_content_percent", "classification", "consequences"):
+        row.pop(key, None)
+    row["suction_target_kpa"] = card.suction.target_kpa if card.suction else None
+    row.pop("suction", None)
+    return row
+
+
+def _point_rows(card: SoilCard) -> Iterator[dict[str, Any]]:
+    if card.curve is None:
+        return
+    for row in card.curve.point_rows():
+        yield {"material": card.material, **row}
+
+
+def _test_rows(card: SoilCard) -> Iterator[dict[str, Any]]:
+    sets = (("bank", card.bank_tests), ("fill", card.field_log.tests if card.field_log else None))
+    for place, tests in sets:
+        if tests is None:
+            continue
+        for test, reason in [*((t, None) for t in tests.tests), *tests.left_out]:
+            density, water = test.dry_density_kg_m3, test.water_content_percent
+            top = card.max_dry_density_kg_m3
+            yield {
+                "material": card.material,
+                "state": place,
+                "test": test.label,
+                "group": test.group or None,
+                "method": test.method or None,
+                "depth_m": test.depth_m,
+                "water_content_percent": water,
+                "dry_density_kg_m3": density,
+                "relative_compaction_percent": None if top is None else 100 * density / top,
+                "saturation_percent": card.saturation_percent_at(density, water),
+                "left_out": reason,
+            }

@@ -1,6 +1,6 @@
 """Bank, loose and compacted: the factors between the states of one soil, from dry densities.
 
-Every factor is a ratio of dry densities, because only the dry mass is the same in all states ([nunnally],
+Every factor is a ratio of dry densities, because only the dry mass is the same in all states ([NUNNALLY],
 ch. 2). A percentage says its base in its name.
 """
 

@@ -1,8 +1,8 @@
 """Matric suction of a compacted soil, estimated from its grading and plasticity.
 
 Suction holds an unsaturated fill together. Water that gets in after construction takes it away, and a fill
-that was placed dry then settles or swells. The estimate is a screen: the retention curve of [fredlund-xing]
-with the parameters that [zapata] correlated with index properties, for soils as they dry; wetting curves
+that was placed dry then settles or swells. The estimate is a screen: the retention curve of [FREDLUND-XING]
+with the parameters that [ZAPATA] correlated with index properties, for soils as they dry; wetting curves
 lie lower, by up to a factor of ten.
 """
 
@@ -16,7 +16,7 @@ from earthwork.errors import SoilError
 
 #: Suction [kPa] at which any soil is dry.
 _DRY_KPA = 1.0e6
-#: Ranges of the data behind the correlation ([zapata], from memory): weighted plasticity index, D60 [mm].
+#: Ranges of the data behind the correlation ([ZAPATA], from memory): weighted plasticity index, D60 [mm].
 PLASTIC_RANGE = (0.1, 50.0)
 GRANULAR_RANGE_MM = (0.1, 1.0)
 
@@ -25,7 +25,7 @@ GRANULAR_RANGE_MM = (0.1, 1.0)
 class RetentionCurve:
     """Water retention S(ψ) = C(ψ) / ln(e + (ψ/a)^b)^c, C(ψ) = 1 − ln(1 + ψ/hr) / ln(1 + 10⁶/hr), ψ in kPa.
 
-    Source: [fredlund-xing], equations with the correction factor C (from memory).
+    Source: [FREDLUND-XING], equations with the correction factor C (from memory).
     """
 
     a_kpa: float
@@ -72,7 +72,7 @@ def plastic_curve(fines_percent: float, plasticity_index: float) -> RetentionCur
     """Retention curve of a soil with plastic fines, by its weighted plasticity index wPI = fines share × PI.
 
     a = 0.00364 wPI^3.35 + 4 wPI + 11 kPa, b/c = 5 − 2.313 wPI^0.14, c = 0.0514 wPI^0.465 + 0.5,
-    hr/a = 32.44 exp(0.0186 wPI). Source: [zapata] (from memory). Range: wPI 0.1 to 50.
+    hr/a = 32.44 exp(0.0186 wPI). Source: [ZAPATA] (from memory). Range: wPI 0.1 to 50.
 
     >>> curve = plastic_curve(100.0, 10.0)
     >>> round(curve.a_kpa, 2), round(curve.c, 3)
@@ -94,7 +94,7 @@ def granular_curve(d60_mm: float) -> RetentionCurve:
     """Retention curve of a soil without plastic fines, by D60 [mm].
 
     a = 0.8627 D60^−0.751 kPa, b = 7.5, c = 0.1772 ln D60 + 0.7734, hr/a = 1 / (D60 + 0.00097). Source:
-    [zapata] (from memory). Range: D60 0.1 to 1 mm.
+    [ZAPATA] (from memory). Range: D60 0.1 to 1 mm.
 
     >>> round(granular_curve(1.0).a_kpa, 4), round(granular_curve(1.0).c, 4)
     (0.8627, 0.7734)

@@ -62,29 +62,29 @@ class TypicalSoil:
 
 
 def _gravity(low: float, high: float) -> Range:
-    return Range(low, high, "das")
+    return Range(low, high, "DAS")
 
 
 def _bank(low: float, high: float) -> Range:
     """Natural dry unit weight [kN/m³] to density."""
-    return Range(round(low * _KN_M3, -1), round(high * _KN_M3, -1), "das")
+    return Range(round(low * _KN_M3, -1), round(high * _KN_M3, -1), "DAS")
 
 
 def _maximum(low: float, high: float) -> Range:
     """Maximum dry unit weight [lb/ft³] to density."""
-    return Range(round(low * _PCF, -1), round(high * _PCF, -1), "navfac-dm7")
+    return Range(round(low * _PCF, -1), round(high * _PCF, -1), "NAVFAC-DM7")
 
 
 def _optimum(low: float, high: float) -> Range:
-    return Range(low, high, "navfac-dm7")
+    return Range(low, high, "NAVFAC-DM7")
 
 
 def _swell(low: float, high: float) -> Range:
-    return Range(low, high, "fm-5-434")
+    return Range(low, high, "FM-5-434")
 
 
-#: All from memory: [das] natural states and specific gravities, [navfac-dm7] table of compacted soils,
-#: [fm-5-434] soil conversion factors with the range that other handbooks give.
+#: All from memory: [DAS] natural states and specific gravities, [NAVFAC-DM7] table of compacted soils,
+#: [FM-5-434] soil conversion factors with the range that other handbooks give.
 TYPICAL: dict[str, TypicalSoil] = {
     soil.name: soil
     for soil in (
@@ -122,10 +122,10 @@ TYPICAL: dict[str, TypicalSoil] = {
                     bank_dry_density_kg_m3=_bank(10.0, 14.0), swell_percent=_swell(20, 45)),
         TypicalSoil(name="weathered rock", symbols=(), specific_gravity=_gravity(2.60, 2.75),
                     bank_dry_density_kg_m3=_bank(18.5, 22.5), swell_percent=_swell(30, 50),
-                    shrink_percent_of_bank=Range(-15, 5, "fm-5-434")),
+                    shrink_percent_of_bank=Range(-15, 5, "FM-5-434")),
         TypicalSoil(name="blasted rock", symbols=(), specific_gravity=_gravity(2.60, 2.80),
                     bank_dry_density_kg_m3=_bank(22.5, 26.0), swell_percent=_swell(50, 75),
-                    shrink_percent_of_bank=Range(-30, -10, "fm-5-434")),
+                    shrink_percent_of_bank=Range(-30, -10, "FM-5-434")),
     )
 }  # fmt: skip
 

@@ -1,6 +1,6 @@
 """How good a shrinkage factor is, what one more point of compaction costs, and how many more tests would help.
 
-The factor is ρbank / (ρmax × Rc). Its relative variance is the sum of those of its three parts ([taylor],
+The factor is ρbank / (ρmax × Rc). Its relative variance is the sum of those of its three parts ([TAYLOR],
 product rule for independent errors): the mean bank density, the maximum density, and the mean compaction
 that crews reach. Scatter of tests enters by the standard error of their mean, because the job averages over
 it. Tests close together in place or time are not independent, and then the true uncertainty is larger.
