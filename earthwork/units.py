@@ -60,6 +60,8 @@ UNITS: dict[str, dict[str, float]] = {
     "water_depth": {"L/m2": 1.0, "mm": 1.0, "gal/yd2": GALLON_L / _YARD_M**2, "in": 25.4},
     "flow": {"L/s": 1.0, "L/min": 1 / 60, "m3/h": 1000 / 3600, "gal/min": GALLON_L / 60, "gpm": GALLON_L / 60},
     "speed": {"m/s": 1.0, "km/h": 1 / 3.6, "mph": 5280 * FOOT_M / 3600},
+    # The mechanical horsepower is 550 ft·lbf/s.
+    "power": {"W": 1.0, "kW": 1000.0, "hp": 550 * FOOT_M * POUND_KG * STANDARD_GRAVITY_M_S2},
     "evaporation": {"mm/day": 1.0, "in/day": 25.4},
     "percent": {"%": 1.0},
     "minutes": {"min": 1.0, "s": 1 / 60, "h": 60.0},
@@ -70,12 +72,12 @@ UNITS: dict[str, dict[str, float]] = {
 _METRIC = {
     "length": "m", "area": "m2", "soil_volume": "m3", "density": "kg/m3", "mass": "t", "water_volume": "L",
     "water_depth": "L/m2", "flow": "L/min", "speed": "km/h", "road": "km", "evaporation": "mm/day",
-    "percent": "%", "minutes": "min", "hours": "h", "days": "days",
+    "percent": "%", "minutes": "min", "hours": "h", "days": "days", "power": "kW",
 }  # fmt: skip
 _US = {
     "length": "ft", "area": "ft2", "soil_volume": "yd3", "density": "lb/ft3", "mass": "short ton",
     "water_volume": "gal", "water_depth": "gal/yd2", "flow": "gal/min", "speed": "mph", "road": "mile",
-    "evaporation": "in/day", "percent": "%", "minutes": "min", "hours": "h", "days": "days",
+    "evaporation": "in/day", "percent": "%", "minutes": "min", "hours": "h", "days": "days", "power": "hp",
 }  # fmt: skip
 
 _PRINTED = {

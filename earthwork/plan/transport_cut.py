@@ -52,7 +52,7 @@ def name_infeasible(supply: Array, need: Array, costs: Costs) -> TransportInfeas
 
 def _cut(plan: Array, allowed: Array, need: Array, supply: Array) -> tuple[Array, Array, float, bool]:
     """Columns that lack a supply, the rows that could help, the lack, and whether slack is out of it."""
-    wanting: Array = np.where(allowed, 0.0, plan).sum(axis=0) > CLOSING_ERROR * supply.sum()
+    wanting = np.asarray(np.where(allowed, 0.0, plan).sum(axis=0) > CLOSING_ERROR * supply.sum())
     wanting[-1] = False
     helping = np.zeros(len(supply), bool)
     while True:

@@ -26,13 +26,20 @@ from earthwork.site.ground_model import (
     Strip,
     Zones,
 )
-from earthwork.site.plan_model import (
-    Balance,
+from earthwork.site.haul_model import (
+    Baseline,
     Borrow,
     Disposal,
-    Dust,
+    FillRule,
     Haul,
     HaulTruck,
+    Phases,
+    Roads,
+    Stockpile,
+)
+from earthwork.site.plan_model import (
+    Balance,
+    Dust,
     Pads,
     Supply,
     Tank,
@@ -87,14 +94,61 @@ class SiteModel(Section):
     haul: Haul | None = Field(default=None, description="how earth is moved")
     borrow: tuple[Borrow, ...] = Field(default=(), description="places that give soil")
     disposal: tuple[Disposal, ...] = Field(default=(), description="places that take soil")
+    stockpile: tuple[Stockpile, ...] = Field(default=(), description="places where soil waits")
+    phases: Phases | None = Field(default=None, description="the order of the work")
+    baseline: Baseline | None = Field(default=None, description="the line of the mass curve")
     pads: Pads | None = Field(default=None, description="what building pads stand on")
 
 
 __all__ = [
-    "Allowance", "Area", "AreaSpec", "Balance", "BankState", "Borrow", "ByDepth", "Calendar", "Design",
-    "Disposal", "Drying", "Dust", "Fill", "FillState", "Ground", "Haul", "HaulTruck", "LaidSection",
-    "LevelSurface", "LooseState", "Material", "Moisture", "OverExcavation", "Oversize", "Pads", "Plane",
-    "PlaneSurface", "Plant", "Proctor", "RasterSurface", "Roller", "Scarify", "Section", "SiteModel",
-    "SiteSection", "Stratum", "Strip", "Supply", "Surface", "SurfaceSpec", "Tank", "Water", "WaterTruck",
-    "Weather", "Zones",
+    "Allowance",
+    "Area",
+    "AreaSpec",
+    "Balance",
+    "BankState",
+    "Baseline",
+    "Borrow",
+    "ByDepth",
+    "Calendar",
+    "Design",
+    "Disposal",
+    "Drying",
+    "Dust",
+    "Fill",
+    "FillRule",
+    "FillState",
+    "Ground",
+    "Haul",
+    "HaulTruck",
+    "LaidSection",
+    "LevelSurface",
+    "LooseState",
+    "Material",
+    "Moisture",
+    "OverExcavation",
+    "Oversize",
+    "Pads",
+    "Phases",
+    "Plane",
+    "PlaneSurface",
+    "Plant",
+    "Proctor",
+    "RasterSurface",
+    "Roads",
+    "Roller",
+    "Scarify",
+    "Section",
+    "SiteModel",
+    "SiteSection",
+    "Stockpile",
+    "Stratum",
+    "Strip",
+    "Supply",
+    "Surface",
+    "SurfaceSpec",
+    "Tank",
+    "Water",
+    "WaterTruck",
+    "Weather",
+    "Zones",
 ]  # fmt: skip

@@ -1,8 +1,8 @@
-"""Tables of the site file that plan the work: balance, water, haul and pads."""
+"""Tables of the site file that plan the work: balance, water and pads."""
 
 from __future__ import annotations
 
-from typing import Annotated, Literal
+from typing import Annotated
 
 from pydantic import Field, model_validator
 
@@ -16,9 +16,7 @@ from earthwork.site.values import (
     Mass,
     Minutes,
     NotNegative,
-    Number,
     Percent,
-    Point,
     PositiveFlow,
     PositiveHours,
     PositiveNumber,
@@ -118,53 +116,6 @@ class Water(Section):
     supply: Supply = Field(description="where the water comes from")
     tank: Tank | None = Field(default=None, description="storage on site")
     truck: WaterTruck | None = Field(default=None, description="the water trucks")
-
-
-class HaulTruck(Section):
-    """The hauling trucks, all alike."""
-
-    heaped_volume: PositiveSoilVolume = Field(description="loose volume of a heaped load")
-    payload: Mass = Field(description="greatest mass of a load, moist")
-
-
-class Haul(Section):
-    """How earth is moved on the site."""
-
-    block: Length = Field(default=50.0, description="side of a haul block")
-    barriers: Area | None = Field(default=None, description="what trucks cannot cross")
-    truck: HaulTruck | None = Field(
-        default=None, description="the hauling trucks; loads are counted where given"
-    )
-    cost: NotNegative = Field(default=1.0, description="money per t·km of dry mass (us: per ton·mile)")
-
-
-class Borrow(Section):
-    """A place that soil can be bought from."""
-
-    name: Text = Field(description="name of the place")
-    at: Point = Field(description="easting and northing, in CRS units")
-    material: Text = Field(description="material that it gives")
-    capacity: PositiveSoilVolume | None = Field(
-        default=None, description="most that it gives, bank; default: no limit"
-    )
-    price: Number = Field(default=0.0, description="money per unit of price_per")
-    price_per: Literal["bank", "loose", "mass"] = Field(
-        default="bank", description="what the price is for: bank volume, loose volume, or mass"
-    )
-
-
-class Disposal(Section):
-    """A place that soil can be brought to."""
-
-    name: Text = Field(description="name of the place")
-    at: Point = Field(description="easting and northing, in CRS units")
-    accepts: tuple[Text, ...] | None = Field(
-        default=None, description="materials that it takes; default: any"
-    )
-    capacity: PositiveSoilVolume | None = Field(
-        default=None, description="most that it takes, loose; default: no limit"
-    )
-    price: Number = Field(default=0.0, description="money per loose volume")
 
 
 class Pads(Section):

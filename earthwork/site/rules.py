@@ -5,6 +5,7 @@ from __future__ import annotations
 import difflib
 from collections.abc import Iterator
 
+from earthwork.site.haul_rules import haul_faults
 from earthwork.site.model import SiteModel
 from earthwork.site.work_rules import work_faults
 
@@ -18,6 +19,7 @@ def cross_faults(model: SiteModel) -> Iterator[str]:
     yield from _fill(model)
     yield from _names(model)
     yield from work_faults(model)
+    yield from haul_faults(model)
     low, high = model.balance.shift_range
     if low > high:
         yield f"balance.shift_range = [{low:g}, {high:g}] m: the first must be the lower one"
