@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import contextlib
 import errno
+import gc
 import os
 import signal
 import sys
@@ -30,6 +31,8 @@ _NO_ROOM = (errno.ENOSPC, errno.EDQUOT, errno.EFBIG)
 
 def run(arguments: Sequence[str] | None = None) -> None:
     """Run a command line and leave the process with its exit code."""
+    # Importing makes a million objects and no garbage: looking for some all the while costs a tenth of the start.
+    gc.set_threshold(500_000)
     prepare_streams()
     signal.signal(signal.SIGTERM, _terminate)
     code = main(arguments)

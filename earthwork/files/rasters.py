@@ -362,17 +362,13 @@ def _missing_values(source: RasterSource) -> list[Any]:
 
 
 def _blank(values: np.ndarray, missing: list[Any], mask: np.ndarray | None) -> None:
-    """Set missing and infinite values to NaN, in place, with as few passes as the data allow."""
-    for value in missing:
-        hit = values == value
-        if hit.any():
-            np.putmask(values, hit, np.nan)
+    """Set missing and infinite values to NaN, in place."""
+    from earthwork.files.kernels import blank
+
+    for value in missing or [values.dtype.type(np.nan)]:
+        blank(values, value)
     if mask is not None and mask.any():
         np.putmask(values, mask, np.nan)
-    with np.errstate(over="ignore", invalid="ignore"):
-        total = values.sum()
-    if not math.isfinite(total):
-        np.putmask(values, np.isinf(values), np.nan)
 
 
 def foot_of_site(document: dict[str, Any], directory: Path) -> float:
