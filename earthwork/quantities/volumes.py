@@ -14,6 +14,7 @@ from earthwork.quantities.coverage import polygon_share, touching
 from earthwork.quantities.engine import Progress, Tally, walk
 from earthwork.quantities.fields import Sums, field_names, fields_of
 from earthwork.quantities.site_ground import SiteGround, open_site
+from earthwork.quantities.survey_error import false_volume_m3, volume_error
 from earthwork.quantities.tile import Tile
 from earthwork.results import Result
 from earthwork.site import Site, load_site
@@ -236,6 +237,26 @@ class VolumesResult(Result):
             for name in names
         ]
 
+    def survey_error(self) -> dict[str, float] | None:
+        """Standard deviations of the volumes from the error of the survey; None where the site gives none."""
+        given = self.ground.surfaces.site.model.ground.survey_error
+        if given is None:
+            return None
+        errors = {"noise_m": given.noise, "correlated_m": given.correlated, "range_m": given.range, "bias_m": given.bias}
+        cell, total = self.ground.stack.grid.cell_area_m2, self.total
+        whole = volume_error(total.area_m2, cell, **errors)
+        return {
+            "cut_sd_m3": volume_error(total.cut_area_m2, cell, **errors).total_m3,
+            "fill_sd_m3": volume_error(total.fill_area_m2, cell, **errors).total_m3,
+            "cut_minus_fill_sd_m3": whole.total_m3,
+            "noise_m3": whole.noise_m3,
+            "correlated_m3": whole.correlated_m3,
+            "bias_m3": whole.bias_m3,
+            "false_cut_m3": false_volume_m3(
+                given.noise, given.correlated, max(total.area_m2 - total.disturbed_area_m2, 0.0)
+            ),
+        }
+
     def to_dict(self) -> dict[str, Any]:
         grid = self.ground.stack.grid
         total = self.total
@@ -261,6 +282,7 @@ class VolumesResult(Result):
             "sections": [{"section": n, "section_m3": v} for n, v in total.sections.items()],
             "over_excavation_m3": total.over_excavation_m3,
             "scarify_m3": total.scarify_m3,
+            "survey_error": self.survey_error(),
             "unsplit": {"cut_m3": total.unsplit_cut_m3, "fill_m3": total.unsplit_fill_m3},
         }
 

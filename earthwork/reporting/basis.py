@@ -24,6 +24,7 @@ def basis(site: Site, volumes: dict[str, Any]) -> Notes:
             scale_line(site, volumes),
             missing_line(site, volumes),
             sample_line(site, volumes),
+            *error_lines(site, volumes),
         ),
     )
 
@@ -90,6 +91,20 @@ def missing_line(site: Site, volumes: dict[str, Any]) -> str:
         f"Missing: {show(missing, 'area', site.units)} ({plain(share, 1 if share >= 1 else 2)} %) "
         "of the ground has no data and is in no figure."
     )
+
+
+def error_lines(site: Site, volumes: dict[str, Any]) -> list[str]:
+    """How well the volumes are known from the survey, where the site says how good the survey is."""
+    error = volumes.get("survey_error")
+    if not error:
+        return []
+    cut, fill, false = (
+        show(error[key], "soil_volume", site.units) for key in ("cut_sd_m3", "fill_sd_m3", "false_cut_m3")
+    )
+    return [
+        f"Error of the survey (one standard deviation): cut ± {cut}, fill ± {fill}. On untouched ground its noise makes "
+        f"up to {false} of false cut and as much false fill, which are not removed."
+    ]
 
 
 def sample_line(site: Site, volumes: dict[str, Any]) -> str:

@@ -34,6 +34,18 @@ class SiteSection(Section):
     )
 
 
+class SurveyError(Section):
+    """How well the surfaces are known: standard deviations of the elevations of the survey.
+
+    Where both surfaces are surveys, give the values of their difference.
+    """
+
+    noise: Distance = Field(default=0.0, description="independent in each cell")
+    correlated: Distance = Field(default=0.0, description="shared by neighbours, over the range")
+    range: Length = Field(default=50.0, description="distance over which the correlated part is shared, in ground length")
+    bias: Distance = Field(default=0.0, description="common to the whole survey")
+
+
 class Ground(Section):
     """The two surfaces and the ground between them that counts."""
 
@@ -52,6 +64,9 @@ class Ground(Section):
     cell: Length | None = Field(
         default=None,
         description="side of the analysis cell; default: that of the finer raster, on its own grid",
+    )
+    survey_error: SurveyError | None = Field(
+        default=None, description="error of the survey, which gives the error of the volumes"
     )
     ground_scale: PositiveNumber | Literal["auto"] = Field(
         default="auto", description='ground length / map length; "auto": from the CRS and the mean elevation'
