@@ -15,10 +15,13 @@ _SIDE = 32
 #: Windows along each axis: a first look, and a closer one when the first finds no data.
 _LOOKS = (3, 8)
 
-#: Values that programs write where they have no data; no ground on earth lies there in metres or feet.
+#: Stored values that programs write where they have no data.
 _MARKERS = (-9999.0, -10000.0, -32767.0, -32768.0, -99999.0, 9999.0, 32767.0, 99999.0)
 
-#: Elevations beyond this are no ground on earth [m]; they are markers, whatever their value.
+#: Ground on earth lies within these elevations [m], with room for mines and local datums.
+_GROUND_M = (-1000.0, 9000.0)
+
+#: Elevations beyond this are markers, whatever their value [m].
 _ABSURD_M = 1e5
 
 
@@ -59,10 +62,13 @@ def _windows(grid: Grid, along: int) -> list[Window]:
 
 
 def _refuse_markers(values: np.ndarray, what: str, source: RasterSource) -> None:
-    stored = (values / source.unit_m - source.info.offset) / (source.info.scale or 1.0)
+    odd = values[(values < _GROUND_M[0]) | (values > _GROUND_M[1])]
+    if odd.size == 0:
+        return
+    stored = (odd / source.unit_m - source.info.offset) / (source.info.scale or 1.0)
     marker = next((m for m in _MARKERS if np.isclose(stored, m, rtol=1e-9, atol=0).any()), None)
-    if marker is None and np.abs(values).max() > _ABSURD_M:
-        marker = float(stored[np.argmax(np.abs(values))])
+    if marker is None and np.abs(odd).max() > _ABSURD_M:
+        marker = float(stored[np.argmax(np.abs(odd))])
     if marker is not None:
         raise GroundError(
             f"{what}: {source.info.name}: it holds the value {marker:.10g}, which is no elevation; it looks like a "
