@@ -8,6 +8,7 @@ bridge or a gate does, and a way over ground and roads of different speed is the
 
 from __future__ import annotations
 
+import copy
 import os
 from collections.abc import Callable, Iterator
 from concurrent.futures import ThreadPoolExecutor
@@ -18,7 +19,7 @@ from typing import Any
 import numpy as np
 
 from earthwork.plan.barriers import Barriers
-from earthwork.plan.roads import RoadNet
+from earthwork.plan.roads import RoadNet, lightest_links
 from earthwork.plan.visibility import (
     Array,
     free_lengths,
@@ -53,13 +54,25 @@ class Way:
 
 @dataclass(frozen=True)
 class WayTable:
-    """Ways from n places to m places; ``inf`` where there is none.
-
-    ``effort``: metres of open ground that take as long, equal to ``length`` without roads.
-    """
+    """Ways from n places to m places; ``inf`` where there is none. ``effort`` is what the ways were chosen by."""
 
     length: Array
     effort: Array
+
+
+#: Effort of straight lines from (k, 2) to (k, 2) at a speed limit (k,) [m/s]: metres, minutes or whatever is to be
+#: least.
+Effort = Callable[[Array, Array, Array], Array]
+
+
+def metres(start: Array, end: Array, limit_m_s: Array) -> Array:
+    """Length as the effort, whatever the speed."""
+    return np.hypot(*(end - start).T)
+
+
+def seconds(start: Array, end: Array, limit_m_s: Array) -> Array:
+    """Time at the speed limit as the effort."""
+    return np.hypot(*(end - start).T) / limit_m_s
 
 
 class Ways:
@@ -68,6 +81,8 @@ class Ways:
     Args:
         barriers: what nothing drives over.
         roads: haul roads, or None.
+        effort: what a way is chosen by.
+        ground_speed_m_s: speed limit of open ground.
         threads: default: one a processor.
 
     >>> import shapely
@@ -77,40 +92,46 @@ class Ways:
     [12.0, 4.0]
     """
 
-    def __init__(self, barriers: Barriers, roads: RoadNet | None = None, *, threads: int | None = None) -> None:
+    def __init__(
+        self,
+        barriers: Barriers,
+        roads: RoadNet | None = None,
+        *,
+        effort: Effort = metres,
+        ground_speed_m_s: float = 1.0,
+        threads: int | None = None,
+    ) -> None:
         self.barriers = barriers
         self.roads = roads
+        self.effort = effort
+        self._speed = ground_speed_m_s
         self._threads = threads or os.cpu_count() or 1
         corners = barriers.corners if barriers.walls is not None else np.zeros((0, 6))
         self._nodes = corners
         if roads is not None:
             free = np.full((len(roads.nodes), 4), np.nan)
             self._nodes = np.vstack([corners, np.hstack([roads.nodes, free])])
-        self._graph: Any = self._links() if len(self._nodes) else None
+        self._seen = self._seen_nodes() if len(self._nodes) else None
+        self._link()
+
+    def chosen_by(self, effort: Effort) -> Ways:
+        """The same ground, with ways chosen by another effort."""
+        other = copy.copy(self)
+        other.effort = effort
+        other._link()
+        return other
 
     def table(self, sources: Array, targets: Array) -> WayTable:
         """Lengths of the ways from each source to each target."""
         starts, out = self.barriers.exits(sources)
         ends, back = self.barriers.exits(targets)
-        effort = self._straight(starts, ends)
-        length = effort.copy()
+        length = self._straight(starts, ends)
+        effort = self._straight_effort(starts, ends, length)
         if self._graph is not None:
-            reached = self._pairs(ends)
-            by_end = np.split(np.arange(len(reached[0])), np.searchsorted(reached[0], np.arange(1, len(ends))))
-            for rows, cost, far in self._from(starts):
-                for j, pairs in enumerate(by_end):
-                    if not len(pairs):
-                        continue
-                    nodes, last = reached[1][pairs], reached[2][pairs]
-                    through = cost[:, nodes] + last
-                    best = through.argmin(axis=1)
-                    value = through[np.arange(len(best)), best]
-                    better = value < effort[rows, j]
-                    effort[rows, j] = np.where(better, value, effort[rows, j])
-                    along = far[np.arange(len(best)), nodes[best]] + last[best]
-                    length[rows, j] = np.where(better, along, length[rows, j])
-        detour = out[:, None] + back[None, :]
-        return WayTable(length + detour, effort + detour)
+            self._through_nodes(starts, ends, length, effort)
+        leaving = self._ground_effort(np.asarray(sources, float), starts)
+        arriving = self._ground_effort(ends, np.asarray(targets, float))
+        return WayTable(length + out[:, None] + back[None, :], effort + leaving[:, None] + arriving[None, :])
 
     def ways(self, sources: Array, targets: Array) -> list[Way | None]:
         """The way of each pair of a source and a target, None where there is none."""
@@ -118,7 +139,7 @@ class Ways:
         ends, _ = self.barriers.exits(targets)
         found: list[Way | None] = []
         order, first = np.unique(starts, axis=0, return_inverse=True)
-        reached = self._pairs(ends) if self._graph is not None else None
+        reached = self._pairs(ends, arriving=True) if self._graph is not None else None
         tree: dict[int, tuple[Array, Array]] = {}
         if self._graph is not None:
             for rows, cost, before in self._from(order, before=True):
@@ -130,23 +151,64 @@ class Ways:
 
     # --- the graph ---------------------------------------------------------------------------------------------------
 
-    def _links(self) -> Any:
-        """Sparse matrix of what one may drive from node to node, in metres of open ground."""
-        from scipy.sparse import coo_array
+    def _ground_effort(self, start: Array, end: Array) -> Array:
+        return self.effort(start, end, np.full(len(start), self._speed))
 
-        i, j = self._seen_nodes()
-        length = np.hypot(*(self._nodes[i, :2] - self._nodes[j, :2]).T)
-        tails, heads, efforts = [i, j], [j, i], [length, length]
+    def _link(self) -> None:
+        """Sparse matrix of what one may drive from node to node, and the efforts by road."""
+        self._by_road: dict[tuple[int, int], tuple[int, float]] = {}
+        self._graph: Any = None
+        if self._seen is None:
+            return
+        i, j = self._seen
+        places = self._nodes[:, :2]
+        tails, heads = np.concatenate([i, j]), np.concatenate([j, i])
+        efforts = self._ground_effort(places[tails], places[heads])
         if self.roads is not None:
             shift = len(self._nodes) - len(self.roads.nodes)
-            kept = self.roads.worth_leaving(i - shift, j - shift, length)
-            tails, heads, efforts = [i[kept], j[kept]], [j[kept], i[kept]], [length[kept], length[kept]]
-            tails.append(self.roads.tails + shift)
-            heads.append(self.roads.heads + shift)
-            efforts.append(self.roads.effort)
-        return _lightest(
-            np.concatenate(tails), np.concatenate(heads), np.concatenate(efforts), len(self._nodes), coo_array
-        )
+            road_effort = self.effort(
+                self.roads.nodes[self.roads.tails], self.roads.nodes[self.roads.heads], self.roads.limits_m_s
+            )
+            kept = self._worth_leaving(tails - shift, heads - shift, efforts, road_effort)
+            tails = np.concatenate([tails[kept], self.roads.tails + shift])
+            heads = np.concatenate([heads[kept], self.roads.heads + shift])
+            efforts = np.concatenate([efforts[kept], road_effort])
+            self._note_roads(road_effort, shift)
+        self._graph = lightest_links(tails, heads, efforts, len(self._nodes))
+
+    def _worth_leaving(self, tails: Array, heads: Array, efforts: Array, road_effort: Array) -> Array:
+        """Which links over open ground are quicker than the roads between their nodes; −: not a node of a road."""
+        assert self.roads is not None
+        along = self.roads.along(road_effort)
+        keep = np.ones(len(tails), bool)
+        both = (tails >= 0) & (heads >= 0)
+        keep[both] = efforts[both] < along[tails[both], heads[both]] * (1 - 1e-9)
+        return keep
+
+    def _note_roads(self, road_effort: Array, shift: int) -> None:
+        assert self.roads is not None
+        links = zip(self.roads.tails + shift, self.roads.heads + shift, self.roads.road, road_effort, strict=True)
+        for tail, head, road, effort in links:
+            key = int(tail), int(head)
+            if key not in self._by_road or effort < self._by_road[key][1]:
+                self._by_road[key] = int(road), float(effort)
+
+    def _through_nodes(self, starts: Array, ends: Array, length: Array, effort: Array) -> None:
+        """Shorten efforts, in place, by ways that bend; lengths follow."""
+        point, node, last_length, last_effort = self._pairs(ends, arriving=True)
+        edges = np.searchsorted(point, np.arange(len(ends) + 1))
+        for rows, cost, far in self._from(starts):
+            for j in range(len(ends)):
+                pairs = slice(edges[j], edges[j + 1])
+                if edges[j] == edges[j + 1]:
+                    continue
+                through = cost[:, node[pairs]] + last_effort[pairs]
+                best = through.argmin(axis=1)
+                at = np.arange(len(best))
+                better = through[at, best] < effort[rows, j]
+                effort[rows, j] = np.where(better, through[at, best], effort[rows, j])
+                along = far[at, node[pairs][best]] + last_length[pairs][best]
+                length[rows, j] = np.where(better, along, length[rows, j])
 
     def _seen_nodes(self) -> tuple[Array, Array]:
         """Pairs of nodes that see each other."""
@@ -161,8 +223,12 @@ class Ways:
         pieces = self._in_parts(count, part)
         return np.concatenate([p[0] for p in pieces]), np.concatenate([p[1] for p in pieces])
 
-    def _pairs(self, points: Array) -> tuple[Array, Array, Array]:
-        """Pairs (point, node) that see each other, sorted by point, and their lengths."""
+    def _pairs(self, points: Array, *, arriving: bool = False) -> tuple[Array, Array, Array, Array]:
+        """Pairs (point, node) that see each other, sorted by point, with lengths and efforts of the way between.
+
+        Args:
+            arriving: whether the way runs from the node to the point.
+        """
         if self.barriers.walls is None:
             i = np.repeat(np.arange(len(points)), len(self._nodes))
             j = np.tile(np.arange(len(self._nodes)), len(points))
@@ -176,7 +242,9 @@ class Ways:
 
             pieces = self._in_parts(len(points), part)
             i, j = np.concatenate([p[0] for p in pieces]), np.concatenate([p[1] for p in pieces])
-        return i, j, np.hypot(*(points[i] - self._nodes[j, :2]).T)
+        here, there = points[i], self._nodes[j, :2]
+        effort = self._ground_effort(there, here) if arriving else self._ground_effort(here, there)
+        return i, j, np.hypot(*(there - here).T), effort
 
     def _straight(self, starts: Array, ends: Array) -> Array:
         """Straight distances, ``inf`` where a barrier is in the way."""
@@ -187,27 +255,33 @@ class Ways:
         self._in_parts(len(starts), lambda a, b: free_lengths(starts[a:b], ends, walls, out[a:b]))
         return out
 
+    def _straight_effort(self, starts: Array, ends: Array, length: Array) -> Array:
+        """Efforts of straight lines whose lengths are given, ``inf`` where they are."""
+        if self.effort is metres:
+            return length.copy()
+        effort = np.full(length.shape, np.inf)
+        i, j = np.nonzero(np.isfinite(length))
+        effort[i, j] = self._ground_effort(starts[i], ends[j])
+        return effort
+
     def _from(self, starts: Array, *, before: bool = False) -> Iterator[tuple[Array, Array, Array]]:
-        """Rows of starts, their cheapest efforts to all nodes, and lengths (or the nodes before) of those ways."""
+        """Rows of starts, their least efforts to all nodes, and lengths (or the nodes before) of those ways."""
         from scipy.sparse import coo_array
         from scipy.sparse.csgraph import dijkstra
 
         count = len(self._nodes)
-        i, j, length = self._pairs(starts)
+        i, j, _, effort = self._pairs(starts)
         core = self._graph.tocoo()
         step = max(1, _CHUNK // (count + 1))
         for first in range(0, len(starts), step):
             rows = np.arange(first, min(first + step, len(starts)))
             mine = (i >= first) & (i < first + step)
             size = count + len(rows)
-            graph = coo_array(
-                (
-                    np.concatenate([core.data, length[mine]]),
-                    (np.concatenate([core.row, i[mine] - first + count]), np.concatenate([core.col, j[mine]])),
-                ),
-                shape=(size, size),
-            ).tocsr()
-            if not before and self.roads is None:
+            links = np.concatenate([core.data, np.maximum(effort[mine], 1e-12)])
+            tails = np.concatenate([core.row, i[mine] - first + count])
+            heads = np.concatenate([core.col, j[mine]])
+            graph = coo_array((links, (tails, heads)), shape=(size, size)).tocsr()
+            if not before and self.effort is metres:
                 cost = dijkstra(graph, indices=count + rows - first)
                 yield rows, cost[:, :count], cost[:, :count]
                 continue
@@ -237,12 +311,13 @@ class Ways:
         self, start: Array, end: Array, k: int, tree: tuple[Array, Array] | None, reached: tuple | None
     ) -> Way | None:
         """The way between two free points."""
-        best = float(self._straight(start[None], end[None])[0, 0])
+        length = self._straight(start[None], end[None])
+        best = float(self._straight_effort(start[None], end[None], length)[0, 0])
         nodes: list[int] = []
         if tree is not None and reached is not None:
             cost, before = tree
             low, high = np.searchsorted(reached[0], [k, k + 1])
-            seen, last = reached[1][low:high], reached[2][low:high]
+            seen, last = reached[1][low:high], reached[3][low:high]
             through = cost[seen] + last
             if len(seen) and through.min() < best:
                 best = float(through.min())
@@ -259,10 +334,10 @@ class Ways:
     def _roads_of(self, nodes: list[int]) -> Array:
         """Road of each stretch of a way through some nodes; its first and last stretch are over open ground."""
         road = np.full(len(nodes) + 1, -1)
-        if self.roads is not None:
-            shift = len(self._nodes) - len(self.roads.nodes)
-            for k, (a, b) in enumerate(pairwise(nodes)):
-                road[k + 1] = self.roads.road_between(a - shift, b - shift, float(self._graph[a, b]))
+        for k, (a, b) in enumerate(pairwise(nodes)):
+            index, effort = self._by_road.get((a, b), (-1, np.inf))
+            if effort <= float(self._graph[a, b]) * (1 + 1e-9) + 1e-9:
+                road[k + 1] = index
         return road
 
     def _in_parts(self, count: int, work: Callable[[int, int], Any]) -> list[Any]:
@@ -283,17 +358,6 @@ def _grown(fill: Callable[[Array, Array], int], room: int) -> tuple[Array, Array
         if count <= room:
             return a[:count], b[:count]
         room = count
-
-
-def _lightest(tails: Array, heads: Array, efforts: Array, size: int, coo_array: Any) -> Any:
-    """Sparse matrix that keeps the least of parallel links."""
-    order = np.lexsort((efforts, heads, tails))
-    tails, heads, efforts = tails[order], heads[order], efforts[order]
-    first = np.ones(len(tails), bool)
-    first[1:] = (np.diff(tails) != 0) | (np.diff(heads) != 0)
-    # A link without length would be no link in a sparse matrix.
-    efforts = np.maximum(efforts[first], 1e-9)
-    return coo_array((efforts, (tails[first], heads[first])), shape=(size, size)).tocsr()
 
 
 def _with_ends(source: Array, way: Way, target: Array) -> Way:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
-from functools import cached_property
+from typing import Any
 
 import numpy as np
 import shapely
@@ -39,8 +39,7 @@ class Road:
 class RoadNet:
     """Nodes along roads, and links between them.
 
-    ``nodes`` (n, 2) [m]; ``tails``, ``heads``, ``road``, ``effort`` (k,): links, one for each direction that may be
-    driven, with the effort in metres of open ground that take as long.
+    ``nodes`` (n, 2) [m]; ``tails``, ``heads``, ``road`` (k,): links, one for each direction that may be driven.
     """
 
     roads: tuple[Road, ...]
@@ -48,15 +47,13 @@ class RoadNet:
     tails: Array
     heads: Array
     road: Array
-    effort: Array
     warnings: tuple[Warning, ...] = ()
 
     @classmethod
-    def of(cls, roads: Sequence[Road], *, ground_speed_m_s: float, elevations: Elevations | None = None) -> RoadNet:
+    def of(cls, roads: Sequence[Road], *, elevations: Elevations | None = None) -> RoadNet:
         """A net of roads.
 
         Args:
-            ground_speed_m_s: speed over open ground.
             elevations: heights of points (n, 2) [m], NaN where unknown; needed for grade limits.
         """
         lines = _joined([road.points for road in roads])
@@ -65,57 +62,46 @@ class RoadNet:
         places = np.round(np.concatenate(lines), 3)
         nodes, number = np.unique(places, axis=0, return_inverse=True)
         number = number.ravel()
-        tails, heads, of_road, effort, warnings = [], [], [], [], []
+        tails, heads, of_road, warnings = [], [], [], []
         first = 0
         for index, (road, line) in enumerate(zip(roads, lines, strict=True)):
             at = number[first : first + len(line)]
             first += len(line)
-            step = np.hypot(*np.diff(line, axis=0).T)
-            usable, warning = _within_grade(road, line, step, elevations)
+            usable, warning = _within_grade(road, line, elevations)
             if warning:
                 warnings.append(warning)
-            a, b, e = at[:-1][usable], at[1:][usable], step[usable] * (ground_speed_m_s / road.speed_m_s)
+            a, b = at[:-1][usable], at[1:][usable]
             for tail, head in [(a, b)] if road.one_way else [(a, b), (b, a)]:
                 tails.append(tail)
                 heads.append(head)
-                effort.append(e)
                 of_road.append(np.full(len(tail), index))
         return cls(
-            tuple(roads), nodes, np.concatenate(tails), np.concatenate(heads), np.concatenate(of_road),
-            np.concatenate(effort), tuple(warnings),
-        )  # fmt: skip
+            tuple(roads), nodes, np.concatenate(tails), np.concatenate(heads), np.concatenate(of_road), tuple(warnings)
+        )
 
-    @cached_property
-    def _links(self) -> dict[tuple[int, int], tuple[int, float]]:
-        links: dict[tuple[int, int], tuple[int, float]] = {}
-        for tail, head, road, effort in zip(
-            self.tails.tolist(), self.heads.tolist(), self.road.tolist(), self.effort.tolist(), strict=True
-        ):
-            if (tail, head) not in links or effort < links[tail, head][1]:
-                links[tail, head] = (road, effort)
-        return links
+    @property
+    def limits_m_s(self) -> Array:
+        """Speed of the road of each link."""
+        return np.array([road.speed_m_s for road in self.roads])[self.road]
 
-    def road_between(self, tail: int, head: int, effort: float) -> int:
-        """Index of the road of a link that costs so much; −1 where the link runs over open ground."""
-        road, along = self._links.get((tail, head), (-1, np.inf))
-        return road if along <= effort * (1 + 1e-9) + 1e-8 else -1
-
-    def worth_leaving(self, i: Array, j: Array, length: Array) -> Array:
-        """Which links over open ground are shorter than the roads between their nodes, in one direction at least.
-
-        Negative numbers are no nodes of the net; their links are kept.
-        """
-        from scipy.sparse import coo_array
+    def along(self, effort: Array) -> Array:
+        """Least effort from node to node by roads alone, (n, n), from that of each link."""
         from scipy.sparse.csgraph import dijkstra
 
-        size = len(self.nodes)
-        graph = coo_array((np.maximum(self.effort, 1e-9), (self.tails, self.heads)), shape=(size, size)).tocsr()
-        along = dijkstra(graph)
-        keep = np.ones(len(i), bool)
-        both = (i >= 0) & (j >= 0)
-        slower = np.maximum(along[i[both], j[both]], along[j[both], i[both]])
-        keep[both] = length[both] < slower * (1 - 1e-9)
-        return keep
+        return dijkstra(lightest_links(self.tails, self.heads, effort, len(self.nodes)))
+
+
+def lightest_links(tails: Array, heads: Array, efforts: Array, size: int) -> Any:
+    """Sparse matrix of links that keeps the least of parallel ones."""
+    from scipy.sparse import coo_array
+
+    order = np.lexsort((efforts, heads, tails))
+    tails, heads, efforts = tails[order], heads[order], efforts[order]
+    first = np.ones(len(tails), bool)
+    first[1:] = (np.diff(tails) != 0) | (np.diff(heads) != 0)
+    # A link without length would be no link in a sparse matrix.
+    efforts = np.maximum(efforts[first], 1e-9)
+    return coo_array((efforts, (tails[first], heads[first])), shape=(size, size)).tocsr()
 
 
 def _joined(lines: Sequence[Array]) -> list[Array]:
@@ -142,8 +128,9 @@ def _joined(lines: Sequence[Array]) -> list[Array]:
     return out
 
 
-def _within_grade(road: Road, line: Array, step: Array, elevations: Elevations | None) -> tuple[Array, Warning | None]:
+def _within_grade(road: Road, line: Array, elevations: Elevations | None) -> tuple[Array, Warning | None]:
     """Which pieces of a road are not too steep; pieces of unknown grade are driven."""
+    step = np.hypot(*np.diff(line, axis=0).T)
     if road.grade_limit is None or elevations is None:
         return np.ones(len(step), bool), None
     grade = np.abs(np.diff(elevations(line))) / np.maximum(step, 1e-9)
