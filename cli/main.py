@@ -34,6 +34,8 @@ def run(arguments: Sequence[str] | None = None) -> None:
     # Importing makes a million objects and no garbage: looking for some all the while costs a tenth of the start.
     gc.set_threshold(500_000)
     prepare_streams()
+    # GDAL writes its own remarks to stderr; what matters of them stands in our message.
+    os.environ.setdefault("CPL_LOG", os.devnull)
     signal.signal(signal.SIGTERM, _terminate)
     code = main(arguments)
     with contextlib.suppress(OSError, ValueError):

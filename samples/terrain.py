@@ -1,6 +1,6 @@
 """Invented ground for the sample sites: rolling hills, draws, roughness, and platforms graded into them.
 
-The makers of the samples (``make_larkspur.py``, ``make_cooper.py``) call these helpers. Everything is
+The makers of the samples (``make_larkspur.py``, ``make_cooper.py``) use these functions. Everything is
 deterministic: the same script gives the same elevations. Only numpy, shapely, rasterio and pyogrio are used:
 the samples are made by other means than the program that they try.
 """
