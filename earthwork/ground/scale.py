@@ -13,7 +13,7 @@ from pyproj import CRS, Proj
 from earthwork.crs import describe, horizontal, is_web_mercator, longitude_latitude, tied_to_earth, utm_code
 from earthwork.errors import GroundError, Warning
 
-#: Mean radius of the earth [m] [GRS80-mean-radius]; 20 km off changes the factor at 2000 m by 1 part in a
+#: Mean radius of the earth [m], rounded from 6,371,008.8 [GRS80-mean-radius]; 20 km off changes the factor at 2000 m by 1 part in a
 #: million.
 EARTH_RADIUS_M = 6_371_000.0
 
@@ -24,7 +24,7 @@ _WGS84_E2 = _WGS84_F * (2 - _WGS84_F)
 
 
 def elevation_factor(height_m: float, radius_m: float = EARTH_RADIUS_M) -> float:
-    """Length on the ellipsoid / length at a height: ``R / (R + h)`` [NGS-SPCS-manual, "elevation factor"].
+    """Length on the ellipsoid / length at a height: ``R / (R + h)`` [NGS-SPCS-manual].
 
     Args:
         height_m: mean height of the site [m]. The geoid's height (at most 107 m) is left out: 1.7 parts in 100,000.
@@ -37,7 +37,7 @@ def elevation_factor(height_m: float, radius_m: float = EARTH_RADIUS_M) -> float
 
 
 def combined_factor(grid_scale: float, height_m: float, radius_m: float = EARTH_RADIUS_M) -> float:
-    """Map length / ground length: ``k R / (R + h)`` [NGS-SPCS-manual, "combined factor"].
+    """Map length / ground length: ``k R / (R + h)`` [NGS-SPCS-manual].
 
     >>> round(combined_factor(0.999981, 500.0, 20_906_000.0), 6)    # feet
     0.999957

@@ -63,7 +63,7 @@ class Ground(Section):
     )
     cell: Length | None = Field(
         default=None,
-        description="side of the analysis cell; default: that of the finer raster, on its own grid",
+        description="side of the analysis cell, on the map; default: that of the finer raster, on its own grid",
     )
     survey_error: SurveyError | None = Field(
         default=None, description="error of the survey, which gives the error of the volumes"
