@@ -3,38 +3,34 @@
 from __future__ import annotations
 
 import math
-import os
 import warnings
-import zipfile
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 import numpy as np
-import rasterio
 from pyproj import CRS
 from rasterio.enums import MaskFlags
-from rasterio.env import set_gdal_config
 from rasterio.errors import NotGeoreferencedWarning, RasterioError
 from rasterio.windows import Window as FileWindow
 
 from earthwork.crs import VerticalReference, from_wkt, horizontal_unit_m, parse_crs, vertical_reference
 from earthwork.errors import FileError
-from earthwork.files.paths import is_virtual, require_file
+from earthwork.files.paths import require_file
+from earthwork.files.raster_open import open_raster, reason_of
 from earthwork.units import FOOT_M, US_SURVEY_FOOT_M
-
-#: GDAL's block cache [bytes]. Its default, 5 % of memory, makes streamed reads three times slower. It is the process's,
-#: and is set when a raster is opened unless the environment variable GDAL_CACHEMAX says otherwise.
-CACHE_BYTES = 32 * 2**20
-
-#: Settings under which every raster is opened; without it the vertical part of a compound CRS is dropped.
-_GDAL = {"GTIFF_REPORT_COMPD_CS": True}
 
 #: Integer types that float32 holds exactly.
 _EXACT_IN_FLOAT32 = {"uint8", "int8", "int16", "uint16", "float32", "float16"}
 
-#: Members of a zip that no raster driver opens on their own.
-_SIDECARS = {".xml", ".prj", ".txt", ".tfw", ".wld", ".pdf", ".md", ".html", ".csv", ".ovr"}
+#: Ground on earth lies within these elevations [m], with room for mines and local datums.
+_GROUND_M = (-1000.0, 9000.0)
+
+#: Stored values that programs write where they have no data.
+_MARKERS = (-9999.0, -10000.0, -32767.0, -32768.0, -99999.0, 9999.0, 32767.0, 65535.0, 99999.0)
+
+#: Elevations beyond this are markers, whatever their value [m].
+_ABSURD_M = 1e5
 
 
 @dataclass(frozen=True)
@@ -135,76 +131,11 @@ def raster_info(path: str | Path, *, band: int = 1, what: str = "raster") -> Ras
         FileError: missing (with the nearest name), not a raster, corrupt, no such band, complex numbers.
     """
     require_file(path, what)
-    # not in _open: filters of warnings are the process's, and readers open in threads
+    # not when it is opened: filters of warnings are the process's, and readers open in threads
     with warnings.catch_warnings():
         warnings.simplefilter("ignore", NotGeoreferencedWarning)
-        with _open(path, what) as dataset:
+        with open_raster(path, what) as dataset:
             return _facts(dataset, str(path), band, what)
-
-
-def _open(path: str | Path, what: str) -> Any:
-    """An open dataset of its own (never shared between threads)."""
-    try:
-        return _rasterio_open(str(path))
-    except RasterioError as error:
-        inside = _raster_in_zip(Path(path), what)
-        if inside is not None:
-            return _rasterio_open(inside)
-        raise FileError(f"{what}: {path}: {_why_not_open(Path(path), error)}") from None
-
-
-def _rasterio_open(path: str) -> Any:
-    if "GDAL_CACHEMAX" not in os.environ:
-        # an Env would set it only for its own duration, and readers outlive the opening
-        set_gdal_config("GDAL_CACHEMAX", CACHE_BYTES)
-    with rasterio.Env(**_GDAL):
-        return rasterio.open(path, sharing=False)
-
-
-def _raster_in_zip(path: Path, what: str) -> str | None:
-    """GDAL's name of the only raster in a zip; None when the path is no zip or holds no raster."""
-    if path.suffix.lower() != ".zip" or not zipfile.is_zipfile(path):
-        return None
-    with zipfile.ZipFile(path) as archive:
-        members = [m for m in archive.namelist() if not m.endswith("/") and Path(m).suffix.lower() not in _SIDECARS]
-    found = []
-    for member in members:
-        name = f"/vsizip/{path}/{member}"
-        try:
-            _rasterio_open(name).close()
-        except RasterioError:
-            continue
-        found.append(name)
-    if len(found) > 1:
-        raise FileError(f"{what}: {path}: the zip holds {len(found)} rasters; name one of them: {', '.join(found)}")
-    return found[0] if found else None
-
-
-def _why_not_open(path: Path, error: Exception) -> str:
-    """Why a file that exists cannot be opened as a raster, and what to do."""
-    if path.is_dir():
-        return "this is a folder; name the raster in it"
-    if not is_virtual(path):
-        try:
-            with path.open("rb") as stream:
-                head = stream.read(4)
-        except OSError as failure:
-            return f"cannot be read ({failure.strerror})"
-        if not head:
-            return "the file is empty; copy it anew"
-        if head[:2] in (b"II", b"MM") or "not recognized" not in str(error):
-            return f"corrupt or cut off ({_reason(error)}); copy it anew"
-    return "not a raster (no format that GDAL knows); give a GeoTIFF, an ASCII grid or the like"
-
-
-def _reason(error: BaseException) -> str:
-    """The innermost reason of a failure, on one line."""
-    text = str(error)
-    cause = error.__cause__ or error.__context__
-    while cause is not None:
-        text = str(cause) or text
-        cause = cause.__cause__ or cause.__context__
-    return " ".join(text.split()).rstrip(".")
 
 
 def _facts(dataset: Any, name: str, band: int, what: str) -> RasterInfo:
@@ -290,8 +221,9 @@ class RasterReader:
 
     def __init__(self, source: RasterSource) -> None:
         self.source = source
-        self._dataset = _open(source.info.path, source.what)
+        self._dataset = open_raster(source.info.path, source.what)
         self._missing = _missing_values(source)
+        self._likely = _stored(source, *_GROUND_M)
 
     def close(self) -> None:
         self._dataset.close()
@@ -314,6 +246,7 @@ class RasterReader:
         except RasterioError as error:
             raise FileError(self._damage(window, error)) from None
         _blank(values, self._missing, mask)
+        self._refuse_markers(values, window)
         if self.source.converted:
             values *= info.scale
             values += info.offset
@@ -322,26 +255,55 @@ class RasterReader:
             values = np.ascontiguousarray(values[:: -1 if info.south_up else 1, :: -1 if info.east_first else 1])
         return values
 
+    def _refuse_markers(self, values: np.ndarray, window: FileWindow) -> None:
+        """Raise a FileError for a value that marks missing data, where nothing declares it and no ground can lie."""
+        low, high = self._likely
+        odd = (values < low) | (values > high)
+        if not odd.any():
+            return
+        info = self.source.info
+        absurd_low, absurd_high = _stored(self.source, -_ABSURD_M, _ABSURD_M)
+        odd &= np.isin(values, np.array(_MARKERS, values.dtype)) | (values < absurd_low) | (values > absurd_high)
+        if odd.any():
+            row, column = (int(i) for i in np.argwhere(odd)[0])
+            stored = float(values[row, column])
+            raise FileError(
+                f"{self.source.what}: {info.name}: it holds the value {stored:.10g} at "
+                f"{self._place(window.row_off + row, window.col_off + column)}, which is no elevation; it looks like a "
+                "marker of missing data that the file does not declare. State it: "
+                f"{{ file = …, nodata = {stored:.10g} }}"
+            )
+
+    def _place(self, row: int, column: int) -> str:
+        """Coordinates of the corner of a stored cell, for messages."""
+        a, b, c, d, e, f = self.source.info.transform
+        return f"easting {a * column + b * row + c:.10g}, northing {d * column + e * row + f:.10g}"
+
     def _damage(self, window: FileWindow, error: Exception) -> str:
         """Message for a failed read: the first block that cannot be decoded, and where it lies."""
         info = self.source.info
         high, wide = info.block
         rows = range(window.row_off // high, (window.row_off + window.height - 1) // high + 1)
         columns = range(window.col_off // wide, (window.col_off + window.width - 1) // wide + 1)
-        top, left, reason = window.row_off, window.col_off, _reason(error)
+        top, left, reason = window.row_off, window.col_off, reason_of(error)
         for i, j in ((i, j) for i in rows for j in columns):
             tall, broad = min(high, info.rows - i * high), min(wide, info.columns - j * wide)
             try:
                 self._dataset.read(info.band, window=FileWindow(j * wide, i * high, broad, tall))
             except RasterioError as inner:
-                top, left, reason = i * high, j * wide, _reason(inner)
+                top, left, reason = i * high, j * wide, reason_of(inner)
                 break
-        a, b, c, d, e, f = info.transform
-        place = f"easting {a * left + b * top + c:.10g}, northing {d * left + e * top + f:.10g}"
         return (
             f"{self.source.what}: {info.name}: data are damaged or cut off in the block at row {top}, column {left} "
-            f"({place}): {reason}. Copy the file anew"
+            f"({self._place(top, left)}): {reason}. Copy the file anew"
         )
+
+
+def _stored(source: RasterSource, low_m: float, high_m: float) -> tuple[float, float]:
+    """The stored values of two elevations [m], the lower one first."""
+    scale = source.info.scale or 1.0
+    ends = [(metres / source.unit_m - source.info.offset) / scale for metres in (low_m, high_m)]
+    return min(ends), max(ends)
 
 
 def _missing_values(source: RasterSource) -> list[Any]:

@@ -201,11 +201,9 @@ def _outside_m2(area: Any, covered: Grid, grid: Grid) -> float:
 
 
 def _mean_elevation(found: Sequence[Candidate], grid: Grid, doubts: list[Warning]) -> float:
-    """Sampled mean elevation [m] of the first surface with data; every raster is looked at for markers."""
-    means = [
-        sampled_elevation(c.on(grid), grid, c.what, c.source if isinstance(c, RasterCandidate) else None) for c in found
-    ]
-    known = next((m for m in means if m is not None), None)
+    """Sampled mean elevation [m] of the existing ground, else of the finished; 0 with a doubt where none has data."""
+    means = [sampled_elevation(surface.on(grid), grid) for surface in found]
+    known = next((mean for mean in means if mean is not None), None)
     if known is None:
         message = "no data was found where the surfaces were sampled; elevation 0 is taken for the ground scale"
         doubts.append(Warning("elevation-unknown", message))

@@ -13,8 +13,8 @@ from pyproj import CRS, Proj
 from earthwork.crs import describe, horizontal, is_web_mercator, longitude_latitude, tied_to_earth, utm_code
 from earthwork.errors import GroundError, Warning
 
-#: Mean radius of the earth [m], rounded from 6,371,008.8 [GRS80-mean-radius]; 20 km off changes the factor at 2000 m by 1 part in a
-#: million.
+#: Mean radius of the earth [m], rounded from 6,371,008.8 [GRS80-mean-radius]; 20 km off would change the factor at
+#: 2000 m by 1 part in a million.
 EARTH_RADIUS_M = 6_371_000.0
 
 #: Semi-major axis [m] and squared eccentricity of WGS 84 [WGS84].

@@ -14,7 +14,8 @@ from hypothesis import strategies as st
 from rasterio.transform import Affine
 
 from earthwork.errors import FileError
-from earthwork.files.rasters import CACHE_BYTES, RasterSource, foot_of_site, raster_info
+from earthwork.files.raster_open import CACHE_BYTES
+from earthwork.files.rasters import RasterSource, foot_of_site, raster_info
 from earthwork.units import FOOT_M, US_SURVEY_FOOT_M
 from tests.rasters import write_raster
 
@@ -115,8 +116,9 @@ def test_single_precision_only_where_it_is_exact(tmp_path, stored, given):
 
 
 def test_large_integers_keep_every_digit(tmp_path):
-    # 2^24 + 1 is no float32
-    assert read(write_raster(tmp_path / "v.tif", [[16_777_217]], dtype="int32")).item() == 16_777_217
+    # 2^24 + 1 is no float32; millimetres
+    path = write_raster(tmp_path / "v.tif", [[16_777_217]], dtype="int32")
+    assert read(path, unit_m=0.0001).item() == pytest.approx(1677.7217, abs=1e-12)
 
 
 def test_scale_and_offset(tmp_path):
@@ -149,9 +151,33 @@ def test_a_tagged_value_is_missing(tmp_path, dtype):
 
 
 def test_a_stated_value_is_missing_beside_the_tagged_one(tmp_path):
-    path = write_raster(tmp_path / "v.tif", [[1, -9999, -10000]], nodata=-9999)
+    path = write_raster(tmp_path / "v.tif", [[1, -9999, -500]], nodata=-9999)
     assert missing(read(path)) == [[False, True, False]]
-    assert missing(read(path, nodata=-10000)) == [[False, True, True]]
+    assert missing(read(path, nodata=-500)) == [[False, True, True]]
+
+
+@pytest.mark.parametrize("marker", [-9999.0, -10000.0, -32768.0, 65535.0, 1e20, -3.4028235e38])
+def test_a_marker_that_nothing_declares_is_refused_with_its_place(tmp_path, marker):
+    path = write_raster(tmp_path / "v.tif", [[1, 2], [3, marker]])
+    with pytest.raises(
+        FileError, match=r"it holds the value .* at easting 500001, northing 4099999, which is no elevation"
+    ):
+        read(path)
+    assert missing(read(path, nodata=marker)) == [[False, False], [False, True]]
+
+
+def test_markers_are_looked_for_among_stored_values(tmp_path):
+    """A stored 9999 at a scale of 1 mm is 10 m of ground; −32768 at the same is 33 m below the sea."""
+    path = write_raster(tmp_path / "v.tif", [[9999, -32768]], dtype="int16", scale=0.001)
+    assert read(path)[0].tolist() == pytest.approx([9.999, -32.768], abs=1e-12)
+    # 9,999 ft is a mountain of 3,048 m, −9999 ft is nowhere
+    assert read(write_raster(tmp_path / "a.tif", [[9999.0]]), unit_m=FOOT_M).item() == 9999 * FOOT_M
+    with pytest.raises(FileError, match="it holds the value -9999"):
+        read(write_raster(tmp_path / "b.tif", [[-9999.0]]), unit_m=FOOT_M)
+
+
+def test_high_numbers_that_are_no_markers_are_let_pass(tmp_path):
+    assert read(write_raster(tmp_path / "v.tif", [[12_345.0]])).item() == 12_345.0
 
 
 def test_nan_and_infinities_are_missing(tmp_path):
