@@ -10,6 +10,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cached_property
+from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal
 
 from earthwork.errors import SoilError, Warning
@@ -328,9 +329,11 @@ def soil_warnings(cards: dict[str, SoilCard]) -> tuple[Warning, ...]:
     return tuple(dict.fromkeys(warning for card in cards.values() for warning in card.warnings))
 
 
-def soil(site: Site) -> SoilResult:
-    """The soil cards of a site as a result; see :func:`soil_cards`."""
+def soil(site: Site | str | Path) -> SoilResult:
+    """The soil cards of a checked site, or of the site file at a path, as a result; see :func:`soil_cards`."""
+    from earthwork.site import Site, load_site
     from earthwork.soils.result import SoilResult
 
+    site = site if isinstance(site, Site) else load_site(site)
     cards = soil_cards(site)
     return SoilResult(units=site.units, warnings=soil_warnings(cards), cards=tuple(cards.values()))

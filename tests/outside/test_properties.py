@@ -296,3 +296,13 @@ def test_shift_that_balances_does(site, earthwork, tmp_path, part):
     assert abs(again["surplus_compacted_m3"]) < 1e-5 * found["required_compacted_m3"]
     # The rounded shift is off by at most half a step of a centimetre.
     assert abs(shift["surplus_compacted_m3"]) <= 0.51 * abs(shift["surplus_change_per_cm_m3"]) + 0.01
+
+
+@pytest.mark.parametrize("call", ["check", "volumes", "soil", "balance"])
+def test_library_call_and_command_say_the_same(site, earthwork, call):
+    """Each command is a call of the same name, which takes a site or the path of its file."""
+    import earthwork as library
+
+    of_path = getattr(library, call)(site).to_dict()
+    assert of_path == getattr(library, call)(library.Site.open(site)).to_dict()
+    assert json.loads(json.dumps(of_path)) == earthwork(call, site, "--json").result
