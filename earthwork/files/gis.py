@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+import shutil
 import threading
 import warnings
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from math import ceil
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -18,6 +20,8 @@ if TYPE_CHECKING:
 
 _BLOCK = 512
 _NODATA = -9999.0
+#: With less room than this on the disk, a file that is cut off was cut off by it.
+_FULL_BYTES = 200_000
 #: Unfinished blocks kept in memory; beyond it the fullest go to the file and are completed there.
 _PENDING_BYTES = 128_000_000
 
@@ -126,6 +130,7 @@ class DepthRasterWriter:
                 self._store(block)
             self._file.close()
         levels = overview_levels(self.grid.rows, self.grid.columns)
+        self._verify(())
         if not levels:
             return
         with (
@@ -139,6 +144,30 @@ class DepthRasterWriter:
             rasterio.open(self._path, "r+") as file,
         ):
             file.build_overviews(levels, Resampling.average)
+        self._verify(levels)
+
+    def _verify(self, levels: Sequence[int]) -> None:
+        """Make sure that every block is in the file: a write that fails for want of room is not reported on closing.
+
+        Raises:
+            OutputError: the file is cut off.
+        """
+        import rasterio
+        from rasterio.errors import RasterioError
+
+        size = self._path.stat().st_size
+        try:
+            with rasterio.open(self._path) as file:
+                for level, factor in enumerate([1, *levels]):
+                    for name in _block_names(self.grid, factor):
+                        offset, length = (
+                            file.get_tag_item(f"BLOCK_{what}_{name}", "TIFF", bidx=1, ovr=level - 1 if level else None)
+                            for what in ("OFFSET", "SIZE")
+                        )
+                        if offset is None or length is None or int(offset) + int(length) > size:
+                            raise cut_off(self._path)
+        except (OSError, RasterioError) as error:
+            raise cut_off(self._path, error) from None
 
     def abandon(self) -> None:
         """Close the file unfinished; it is to be removed."""
@@ -146,6 +175,20 @@ class DepthRasterWriter:
             self._pending.clear()
             if not self._file.closed:
                 self._file.close()
+
+
+def _block_names(grid: Grid, factor: int) -> Iterator[str]:
+    """Names of the blocks of an overview, as ``column_row``."""
+    rows = ceil(ceil(grid.rows / factor) / _BLOCK)
+    columns = ceil(ceil(grid.columns / factor) / _BLOCK)
+    return (f"{x}_{y}" for y in range(rows) for x in range(columns))
+
+
+def cut_off(path: Path, error: Exception | None = None) -> OutputError:
+    """The error of a file that could not be written whole, with the likeliest reason."""
+    if shutil.disk_usage(path.parent).free < _FULL_BYTES:
+        return OutputError(f"{path.name}: cannot be written: the disk is full")
+    return OutputError(f"{path.name}: cannot be written whole" + (f": {str(error)[:160]}" if error else ""))
 
 
 def overview_levels(rows: int, columns: int) -> list[int]:
@@ -207,8 +250,8 @@ def write_shapes(
             crs=crs.to_wkt() if crs is not None else None,
             append=append,
         )
-    except pyogrio.errors.DataSourceError as error:
-        raise OutputError(f"{path.name}: cannot be written: {error}") from error
+    except (pyogrio.errors.DataSourceError, pyogrio.errors.DataLayerError, pyogrio.errors.FeatureError) as error:
+        raise cut_off(path, error) from None
 
 
 def _field(values: pandas.Series) -> np.ndarray:

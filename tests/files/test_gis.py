@@ -11,6 +11,7 @@ import pytest
 import rasterio
 import shapely
 
+from earthwork.errors import OutputError
 from earthwork.files import gis
 from earthwork.files.gis import DepthRasterWriter, overview_levels, write_shapes
 from earthwork.ground.grid import Grid, Window
@@ -79,6 +80,18 @@ def test_cells_that_nobody_wrote_are_no_data(tmp_path):
     writer.finish()
     with rasterio.open(tmp_path / "d.tif") as file:
         assert file.read(1, masked=True).count() == 100
+
+
+@pytest.mark.parametrize("kept", [0.0, 0.1, 0.9, 0.99])
+def test_a_raster_that_was_cut_off_is_no_success(tmp_path, kept):
+    path = tmp_path / "d.tif"
+    writer = DepthRasterWriter(path, GRID, description="depth", unit="m")
+    writer.write(GRID.window, _depth())
+    writer.finish()
+    with path.open("r+b") as file:
+        file.truncate(int(path.stat().st_size * kept))
+    with pytest.raises(OutputError, match=r"d\.tif: cannot be written"):
+        writer._verify([2, 4])
 
 
 def test_a_grid_without_crs(tmp_path):
