@@ -153,7 +153,7 @@ class DepthRasterWriter:
             OutputError: the file is cut off.
         """
         import rasterio
-        from rasterio.errors import RasterioError
+        from rasterio.errors import BandOverviewError, RasterioError
 
         size = self._path.stat().st_size
         try:
@@ -166,7 +166,7 @@ class DepthRasterWriter:
                         )
                         if offset is None or length is None or int(offset) + int(length) > size:
                             raise cut_off(self._path)
-        except (OSError, RasterioError) as error:
+        except (OSError, RasterioError, BandOverviewError) as error:
             raise cut_off(self._path, error) from None
 
     def abandon(self) -> None:
