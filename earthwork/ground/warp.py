@@ -13,7 +13,7 @@ from earthwork.crs import transformer
 from earthwork.errors import GroundError
 from earthwork.files.rasters import RasterSource
 from earthwork.ground.grid import Grid, Window
-from earthwork.ground.resample import AVERAGE_FROM, snapped
+from earthwork.ground.resample import AVERAGE_FROM, SNAP, snapped, worth_compiling
 
 if TYPE_CHECKING:
     import shapely
@@ -44,6 +44,7 @@ class WarpedRaster:
         grid: the grid.
         spacing: cells between control points, at which places are transformed; between them they are interpolated.
         parts: points per cell along each axis.
+        compiled: use the compiled kernel, which gives the same digits.
     """
 
     source: RasterSource
@@ -51,6 +52,7 @@ class WarpedRaster:
     grid: Grid
     spacing: int
     parts: int
+    compiled: bool = False
     block: tuple[int, int] | None = None
     block_start: tuple[int, int] = (0, 0)
     dtype: np.dtype = FLOAT64
@@ -84,7 +86,7 @@ def warped_raster(source: RasterSource, crs: CRS, grid: Grid) -> WarpedRaster:
     ratio = max(np.hypot(*beside).max(), np.hypot(*below).max())
     spacing = next((s for s in _SPACINGS if _bend(rough, to_file, row, column, s) < _PLACE_ERROR), 1)
     parts = math.ceil(ratio - 1e-6) if ratio >= AVERAGE_FROM else 1
-    return replace(rough, spacing=spacing, parts=parts)
+    return replace(rough, spacing=spacing, parts=parts, compiled=worth_compiling(grid.rows * grid.columns))
 
 
 def _places(surface: WarpedRaster, to_file: Transformer, row: np.ndarray, column: np.ndarray) -> np.ndarray:
@@ -129,8 +131,7 @@ class _WarpedReader:
         """Add the points of each cell of a window to ``out``; in halves when they take too many samples."""
         info, parts = self._surface.source.info, self._surface.parts
         control = self._control(window)
-        middle = self._between(control, window, 0.0, 0.0)
-        top, bottom, left, right = _reach(middle, parts)
+        top, bottom, left, right = _reach(control, self._ways(window, 0.0, 0.0), parts)
         top, bottom, left, right = max(top, 0), min(bottom, info.rows), max(left, 0), min(right, info.columns)
         if bottom <= top or right <= left:
             out[...] = np.nan
@@ -143,8 +144,14 @@ class _WarpedReader:
         offsets = [(i + 0.5) / parts - 0.5 for i in range(parts)]
         for down in offsets:
             for along in offsets:
-                row, column = middle if parts == 1 else self._between(control, window, down, along)
-                out += bilinear(source, row - top, column - left)
+                ways = self._ways(window, down, along)
+                if self._surface.compiled:
+                    from earthwork.ground.kernels import add_between
+
+                    add_between(source, control, *ways, top, left, SNAP, out)
+                else:
+                    row, column = places_between(control, *ways)
+                    out += bilinear(source, row - top, column - left)
 
     def _control(self, window: Window) -> np.ndarray:
         """Places in the file of the control points around a window; the same cells for every window."""
@@ -155,28 +162,52 @@ class _WarpedReader:
         places = _places(self._surface, self._to_file, row, column)
         return np.where(np.isfinite(places), places, np.nan)
 
-    def _between(self, control: np.ndarray, window: Window, down: float, along: float) -> np.ndarray:
-        """Place in the file of each cell of a window, at an offset from its centre [cells]; shape (2, height, width)."""
+    def _ways(self, window: Window, down: float, along: float) -> tuple[np.ndarray, ...]:
+        """Control point before each row and column, and how far each is on the way to the next.
+
+        Args:
+            down, along: offset from the centres of the cells [cells].
+        """
         step = self._surface.spacing
         rows = np.arange(window.row, window.row + window.height)
         columns = np.arange(window.column, window.column + window.width)
-        i, j = rows // step - window.row // step, columns // step - window.column // step
-        u = ((rows % step + down) / step)[:, None]
-        v = ((columns % step + along) / step)[None, :]
-        coarse = control[:, i] * (1 - u) + control[:, i + 1] * u
-        return coarse[:, :, j] * (1 - v) + coarse[:, :, j + 1] * v
+        return (
+            rows // step - window.row // step,
+            (rows % step + down) / step,
+            columns // step - window.column // step,
+            (columns % step + along) / step,
+        )
 
 
-def _reach(places: np.ndarray, parts: int) -> tuple[int, int, int, int]:
-    """(top, bottom, left, right) of the source samples that cells with their middles at places can take."""
-    known = np.isfinite(places).all(axis=0)
-    if not known.any():
+def places_between(
+    control: np.ndarray, row_node: np.ndarray, row_part: np.ndarray, column_node: np.ndarray, column_part: np.ndarray
+) -> np.ndarray:
+    """Places in the file of cells between control points, shape (2, height, width)."""
+    u, v = row_part[:, None], column_part
+    coarse = control[:, row_node] * (1 - u) + control[:, row_node + 1] * u
+    return coarse[:, :, column_node] * (1 - v) + coarse[:, :, column_node + 1] * v
+
+
+def _reach(control: np.ndarray, ways: tuple[np.ndarray, ...], parts: int) -> tuple[int, int, int, int]:
+    """(top, bottom, left, right) of the source samples that the cells of a window can take."""
+    row_node, row_part, column_node, column_part = ways
+    # between four control points places are bilinear, so their extremes lie at the corners of each such patch
+    rows, columns = _ends(row_node), _ends(column_node)
+    corners = places_between(control, row_node[rows], row_part[rows], column_node[columns], column_part[columns])
+    known = corners[:, np.isfinite(corners).all(axis=0)]
+    if known.size == 0:
         return 0, 0, 0, 0
-    # points lie up to half a cell from the middle, a cell is at most ``parts`` samples wide, and each takes a neighbour
+    # points lie up to half a cell from the middle, a cell is at most ``parts`` samples wide, each takes a neighbour
     margin = parts // 2 + 2
-    low = np.floor(places[:, known].min(axis=1)).astype(int) - margin
-    high = np.ceil(places[:, known].max(axis=1)).astype(int) + margin + 1
+    low = np.floor(known.min(axis=1)).astype(int) - margin
+    high = np.ceil(known.max(axis=1)).astype(int) + margin + 1
     return int(low[0]), int(high[0]), int(low[1]), int(high[1])
+
+
+def _ends(nodes: np.ndarray) -> np.ndarray:
+    """Indices of the first and the last cell after each control point."""
+    change = np.flatnonzero(np.diff(nodes))
+    return np.unique(np.concatenate([[0], change, change + 1, [len(nodes) - 1]]))
 
 
 def _halves(window: Window) -> list[tuple[Window, tuple[slice, slice]]]:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from pyproj import CRS, Transformer
@@ -29,12 +31,12 @@ def centres(grid):
     return grid.west + column * grid.cell_east, grid.north - row * grid.cell_north
 
 
-def source_of(tmp_path, function, *, cell=1.0, rows=300, columns=400, **options):
+def source_of(tmp_path, function, *, cell=1.0, rows=300, columns=400, dtype="float64", **options):
     east = EAST + (np.arange(columns) + 0.5) * cell
     north = NORTH - (np.arange(rows) + 0.5) * cell
     values = function(*np.meshgrid(east - EAST, north - NORTH))
     path = write_raster(
-        tmp_path / "zone10.tif", values, west=EAST, north=NORTH, cell=cell, crs="EPSG:32610", dtype="float64", **options
+        tmp_path / "zone10.tif", values, west=EAST, north=NORTH, cell=cell, crs="EPSG:32610", dtype=dtype, **options
     )
     return RasterSource(raster_info(path), what="ground.finished")
 
@@ -126,6 +128,22 @@ def test_windows_and_reads_in_parts_change_no_digit(tmp_path, monkeypatch):
         assert np.array_equal(read(surface, window), part)
     monkeypatch.setattr(module, "_READ_AT_ONCE", 500)
     assert np.array_equal(read(surface), whole)
+
+
+@pytest.mark.parametrize("cell", [1.0, 2.5])
+def test_the_compiled_kernel_gives_the_same_digits(tmp_path, cell):
+    rng = np.random.default_rng(5)
+
+    def ground(e, n):
+        return np.where(rng.random(e.shape) < 0.02, np.nan, rng.normal(100, 5, e.shape))
+
+    for dtype in ("float32", "float64"):
+        source = source_of(tmp_path, ground, dtype=dtype)
+        surface = warped_raster(source, UTM10, grid_in_zone_11(rows=330, columns=420, cell=cell))
+        assert not surface.compiled
+        plain, compiled = read(surface), read(replace(surface, compiled=True))
+        assert np.isnan(plain).any()
+        assert np.array_equal(plain, compiled, equal_nan=True)
 
 
 def test_averaging_takes_the_mean_of_a_plane(tmp_path):
