@@ -270,8 +270,8 @@ class RasterReader:
             raise FileError(
                 f"{self.source.what}: {info.name}: it holds the value {stored:.10g} at "
                 f"{self._place(window.row_off + row, window.col_off + column)}, which is no elevation; it looks like a "
-                "marker of missing data that the file does not declare. State it: "
-                f"{{ file = …, nodata = {stored:.10g} }}"
+                f"marker of missing data that the file does not declare. State it: nodata = {stored:.10g} for this "
+                f"surface, or --nodata {stored:.10g} without a site file"
             )
 
     def _place(self, row: int, column: int) -> str:

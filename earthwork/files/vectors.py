@@ -12,7 +12,7 @@ import numpy as np
 import shapely
 from pyproj import CRS
 
-from earthwork.crs import describe, horizontal_unit_m, parse_crs, same_place, transformer
+from earthwork.crs import describe, horizontal_unit_m, parse_crs, same_place, shift_doubt, transformer
 from earthwork.errors import FileError, GroundError, Warning
 from earthwork.files.paths import nearest, require_file
 
@@ -143,7 +143,7 @@ def _read(
         raise FileError(f"{where}: no feature has a shape; it must hold at least one")
     _refuse_invalid(shapes[kept], [names[i] for i in kept], where)
     there = _file_crs(meta, path, shapes[kept], crs, where, warnings)
-    moved = _reprojected(shapes[kept], there, crs, where)
+    moved = _reprojected(shapes[kept], there, crs, where, warnings)
     _refuse_invalid(moved, [names[i] for i in kept], where)
     flat = shapely.force_2d(moved)
     return [
@@ -293,7 +293,9 @@ def _file_crs(
     return None
 
 
-def _reprojected(shapes: np.ndarray, there: CRS | None, crs: CRS | None, where: str) -> np.ndarray:
+def _reprojected(
+    shapes: np.ndarray, there: CRS | None, crs: CRS | None, where: str, warnings: list[Warning]
+) -> np.ndarray:
     """Shapes in the CRS of the surfaces; edges are cut into short pieces when the CRS really differs."""
     if there is None or crs is None:
         return shapes
@@ -301,8 +303,11 @@ def _reprojected(shapes: np.ndarray, there: CRS | None, crs: CRS | None, where: 
         if same_place(there, crs, tuple(shapely.total_bounds(shapes).tolist())):
             return shapes
         forward = transformer(there, crs)
+        doubt = shift_doubt(there, crs, *shapely.get_coordinates(shapes[0])[0])
     except GroundError as error:
         raise GroundError(f"{where}: {error}") from None
+    if doubt is not None:
+        warnings.append(Warning("datum-shift-unknown", f"{where}: {doubt}"))
     unit = horizontal_unit_m(there) or _METRES_PER_DEGREE
     longest = float(shapely.length(shapes).max())
     pieces = shapely.segmentize(shapes, max(_EDGE_M / unit, longest / 100_000))

@@ -30,6 +30,9 @@ _READ_AT_ONCE = 4_000_000
 
 FLOAT64 = np.dtype(np.float64)
 
+#: Control point before each row, part of the way to the next; the same for the columns.
+Ways = tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]
+
 
 @dataclass(frozen=True)
 class WarpedRaster:
@@ -162,7 +165,7 @@ class _WarpedReader:
         places = _places(self._surface, self._to_file, row, column)
         return np.where(np.isfinite(places), places, np.nan)
 
-    def _ways(self, window: Window, down: float, along: float) -> tuple[np.ndarray, ...]:
+    def _ways(self, window: Window, down: float, along: float) -> Ways:
         """Control point before each row and column, and how far each is on the way to the next.
 
         Args:
@@ -188,7 +191,7 @@ def places_between(
     return coarse[:, :, column_node] * (1 - v) + coarse[:, :, column_node + 1] * v
 
 
-def _reach(control: np.ndarray, ways: tuple[np.ndarray, ...], parts: int) -> tuple[int, int, int, int]:
+def _reach(control: np.ndarray, ways: Ways, parts: int) -> tuple[int, int, int, int]:
     """(top, bottom, left, right) of the source samples that the cells of a window can take."""
     row_node, row_part, column_node, column_part = ways
     # between four control points places are bilinear, so their extremes lie at the corners of each such patch

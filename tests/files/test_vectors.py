@@ -210,6 +210,18 @@ def test_geojson_with_map_coordinates_is_no_degrees(tmp_path):
     assert [w.code for w in warnings] == ["crs-missing"]
 
 
+def test_an_unknown_datum_shift_is_told(tmp_path):
+    odd = (
+        'PROJCS["x",GEOGCS["y",DATUM["nobody",SPHEROID["z",6378000,299]],PRIMEM["Greenwich",0],'
+        'UNIT["degree",0.0174532925199433]],PROJECTION["Transverse_Mercator"],PARAMETER["central_meridian",-117],'
+        'PARAMETER["scale_factor",0.9996],PARAMETER["false_easting",500000],UNIT["metre",1]]'
+    )
+    warnings = []
+    polygons(write(tmp_path / "p.gpkg", [box(0, 0)], crs=odd), warnings=warnings)
+    assert [w.code for w in warnings] == ["datum-shift-unknown"]
+    assert "may be off by metres" in warnings[0].message
+
+
 # --- what is refused -----------------------------------------------------------------------------------------------
 
 
