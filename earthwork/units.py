@@ -64,6 +64,14 @@ UNITS: dict[str, dict[str, float]] = {
     "power": {"W": 1.0, "kW": 1000.0, "hp": 550 * FOOT_M * POUND_KG * STANDARD_GRAVITY_M_S2},
     "evaporation": {"mm/day": 1.0, "in/day": 25.4},
     "percent": {"%": 1.0},
+    "stress": {
+        "kPa": 1.0,
+        "MPa": 1000.0,
+        "kN/m2": 1.0,
+        "lb/ft2": POUND_KG * STANDARD_GRAVITY_M_S2 / FOOT_M**2 / 1000,
+        "psf": POUND_KG * STANDARD_GRAVITY_M_S2 / FOOT_M**2 / 1000,
+        "psi": POUND_KG * STANDARD_GRAVITY_M_S2 / FOOT_M**2 * 144 / 1000,
+    },
     "minutes": {"min": 1.0, "s": 1 / 60, "h": 60.0},
     "hours": {"h": 1.0, "min": 1 / 60, "day": 24.0, "days": 24.0},
     "days": {"day": 1.0, "days": 1.0, "h": 1 / 24},
@@ -72,16 +80,17 @@ UNITS: dict[str, dict[str, float]] = {
 _METRIC = {
     "length": "m", "area": "m2", "soil_volume": "m3", "density": "kg/m3", "mass": "t", "water_volume": "L",
     "water_depth": "L/m2", "flow": "L/min", "speed": "km/h", "road": "km", "evaporation": "mm/day",
-    "percent": "%", "minutes": "min", "hours": "h", "days": "days", "power": "kW",
+    "percent": "%", "stress": "kPa", "minutes": "min", "hours": "h", "days": "days", "power": "kW",
 }  # fmt: skip
 _US = {
     "length": "ft", "area": "ft2", "soil_volume": "yd3", "density": "lb/ft3", "mass": "short ton",
     "water_volume": "gal", "water_depth": "gal/yd2", "flow": "gal/min", "speed": "mph", "road": "mile",
-    "evaporation": "in/day", "percent": "%", "minutes": "min", "hours": "h", "days": "days", "power": "hp",
+    "evaporation": "in/day", "percent": "%", "stress": "lb/ft2", "minutes": "min", "hours": "h", "days": "days", "power": "hp",
 }  # fmt: skip
 
 _PRINTED = {
     "m2": "m²", "m3": "m³", "ft2": "ft²", "yd3": "yd³", "ft3": "ft³", "kg/m3": "kg/m³", "lb/ft3": "lb/ft³",
+    "lb/ft2": "lb/ft²",
     "L/m2": "L/m²", "gal/yd2": "gal/yd²", "short ton": "ton",
 }  # fmt: skip
 

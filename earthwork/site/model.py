@@ -37,10 +37,10 @@ from earthwork.site.haul_model import (
     Roads,
     Stockpile,
 )
+from earthwork.site.pads_model import Keys, Pads, Settlement
 from earthwork.site.plan_model import (
     Balance,
     Dust,
-    Pads,
     Supply,
     Tank,
     Water,
@@ -98,6 +98,7 @@ class SiteModel(Section):
     phases: Phases | None = Field(default=None, description="the order of the work")
     baseline: Baseline | None = Field(default=None, description="the line of the mass curve")
     pads: Pads | None = Field(default=None, description="what building pads stand on")
+    keys: Keys = Field(default=Keys(), description="keys and benches of fills on steep ground")
 
 
 __all__ = [
@@ -120,6 +121,7 @@ __all__ = [
     "Ground",
     "Haul",
     "HaulTruck",
+    "Keys",
     "LaidSection",
     "LevelSurface",
     "LooseState",
@@ -138,6 +140,7 @@ __all__ = [
     "Roller",
     "Scarify",
     "Section",
+    "Settlement",
     "SiteModel",
     "SiteSection",
     "Stockpile",

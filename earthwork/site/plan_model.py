@@ -8,7 +8,6 @@ from pydantic import Field, model_validator
 
 from earthwork.site.base import Area, Section
 from earthwork.site.values import (
-    Distance,
     Evaporation,
     Flow,
     GroundArea,
@@ -19,13 +18,10 @@ from earthwork.site.values import (
     Percent,
     PositiveFlow,
     PositiveHours,
-    PositiveNumber,
     PositiveSoilVolume,
     PositiveWaterVolume,
     Shift,
     SoilVolume,
-    Text,
-    Thickness,
     WaterDepth,
     WaterVolume,
     Whole,
@@ -116,34 +112,3 @@ class Water(Section):
     supply: Supply = Field(description="where the water comes from")
     tank: Tank | None = Field(default=None, description="storage on site")
     truck: WaterTruck | None = Field(default=None, description="the water trucks")
-
-
-class Pads(Section):
-    """What each building pad stands on, and the rules it is judged by."""
-
-    area: Area = Field(description="polygons of the pads")
-    name: Text = Field(default="name", description="attribute with the pad's name")
-    building: Area | None = Field(
-        default=None, description="buildings; where given, pads are judged under them"
-    )
-    building_margin: Distance = Field(default=1.5, description="judged this far around a building")
-    deep_fill: Length = Field(
-        default=6.0, description="95th percentile of fill thickness at and over which fill is deep"
-    )
-    differential_fill: Length = Field(default=3.0, description="difference in fill thickness that is flagged")
-    transition_share: Percent = Field(
-        default=2.0, description="both cut and fill over this share: a transition pad"
-    )
-    blanket: Thickness = Field(
-        default=0.9, description="least fill under the whole footprint that mends a transition"
-    )
-    blanket_ratio: Annotated[float, Field(strict=True, ge=0, le=1)] = Field(
-        default=0.33, description="or this share of the greatest thickness, whichever is more"
-    )
-    settlement_percent: tuple[Percent, Percent] | None = Field(
-        default=None, description="settlement after construction, low and high, % of fill thickness"
-    )
-    distortion_limit: PositiveNumber = Field(
-        default=500, description="x of the allowable angular distortion, 1 in x"
-    )
-    gauge_length: Length = Field(default=6.0, description="length over which distortion is measured")

@@ -81,6 +81,8 @@ Minutes = _quantity("minutes", "Duration in minutes, 0 or more", low=0.0)
 PositiveHours = _quantity("hours", "Duration in hours, more than 0 and at most 24", above=0.0, high=24.0)
 Percent = _quantity("percent", "Percent, 0 to 100", low=0.0, high=100.0)
 AnyPercent = _quantity("percent", "Percent")
+Stress = _quantity("stress", "Stress, 0 or more", low=0.0)
+PositiveStress = _quantity("stress", "Stress, more than 0", above=0.0)
 
 
 def _evaporation(value: Any, info: ValidationInfo) -> float:
