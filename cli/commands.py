@@ -116,3 +116,12 @@ def balance(site: SiteFile, how: Shared) -> None:
     from .flow import perform
 
     perform("balance", site, how)
+
+
+@app.command()
+@with_shared
+def pads(site: SiteFile, how: Shared) -> None:
+    """What each building pad stands on: fill thickness, class, flags, settlement screen, undercuts, setbacks."""
+    from .flow import perform
+
+    perform("pads", site, how)

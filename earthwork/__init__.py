@@ -20,6 +20,7 @@ _HOME = {
     "fit_proctor_file": "earthwork.soils.bench",
     "check": "earthwork.plan.check",
     "balance": "earthwork.plan.balance",
+    "pads": "earthwork.plan.pads",
     "EarthworkError": "earthwork.errors",
 }
 __all__ = ["__version__", *_HOME]

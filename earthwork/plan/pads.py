@@ -77,7 +77,7 @@ class PadReport:
     undercut: Undercut | None
     slopes: SlopesBeside
     compression_while_placing_m: float | None
-    creep_rate_m_per_year: float | None
+    creep_per_year_m: float | None
     wait_days: float | None
     missing_area_m2: float
 
@@ -104,7 +104,7 @@ class PadReport:
         }  # fmt: skip
         row["undercut"] = self.undercut.to_dict() if self.undercut else None
         row["slopes"] = self.slopes.to_dict()
-        for key in ("compression_while_placing_m", "creep_rate_m_per_year", "wait_days", "missing_area_m2"):
+        for key in ("compression_while_placing_m", "creep_per_year_m", "wait_days", "missing_area_m2"):
             row[key] = getattr(self, key)
         return row
 
@@ -291,7 +291,7 @@ class _Judge:
             undercut=self._undercut(asked, thickness, natural) if "transition" in before and not mended else None,
             slopes=slopes,
             compression_while_placing_m=self.screen.placing_m(high),
-            creep_rate_m_per_year=self.screen.rate_m_per_year(high),
+            creep_per_year_m=self.screen.rate_m_per_year(high),
             wait_days=self.screen.wait_days(high),
             missing_area_m2=sums.missing * cell,
         )

@@ -28,6 +28,7 @@ _MODULES = {
     "soil": "earthwork.reporting.soil_page",
     "proctor": "earthwork.reporting.proctor_page",
     "balance": "earthwork.reporting.balance_page",
+    "pads": "earthwork.reporting.pads_page",
 }
 
 
