@@ -246,7 +246,7 @@ def write_shapes(
             fields=fields,
             layer=layer,
             driver="GPKG",
-            geometry_type=kind,
+            geometry_type=kind + (" Z" if all(shapely.has_z(s) for s in shapes) else ""),
             crs=crs.to_wkt() if crs is not None else None,
             append=append,
         )

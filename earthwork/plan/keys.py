@@ -175,7 +175,7 @@ def keys_result(
     steep = found.gradient * table.steeper_than > 1 + 1e-9
     block_m2 = tally.grid.cell_area_m2 * tally.block**2
     labels, count = label(found.share > 0, np.ones((3, 3), int))
-    fills = []
+    fills: list[SteepFill] = []
     for number in range(1, count + 1):
         here = labels == number
         area = np.where(here & steep, found.share, 0.0)
