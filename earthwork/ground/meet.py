@@ -202,12 +202,13 @@ def _outside_m2(area: Any, covered: Grid, grid: Grid) -> float:
 
 def _mean_elevation(found: Sequence[Candidate], grid: Grid, doubts: list[Warning]) -> float:
     """Sampled mean elevation [m] of the existing ground, else of the finished; 0 with a doubt where none has data."""
-    means = [sampled_elevation(surface.on(grid), grid) for surface in found]
-    known = next((mean for mean in means if mean is not None), None)
-    if known is None:
-        message = "no data was found where the surfaces were sampled; elevation 0 is taken for the ground scale"
-        doubts.append(Warning("elevation-unknown", message))
-    return known or 0.0
+    for surface in found:
+        mean = sampled_elevation(surface.on(grid), grid)
+        if mean is not None:
+            return mean
+    message = "no data was found where the surfaces were sampled; elevation 0 is taken for the ground scale"
+    doubts.append(Warning("elevation-unknown", message))
+    return 0.0
 
 
 def _scale(site: Site, grid: Grid, elevation: float, doubts: list[Warning]) -> float:

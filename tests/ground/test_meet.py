@@ -360,8 +360,9 @@ def test_a_marker_that_is_not_declared_is_refused(tmp_path):
     holed[0, 0] = -10000
     write_raster(tmp_path / "existing.tif", FLAT)
     write_raster(tmp_path / "finished.tif", holed)
+    ground = ground_of(tmp_path)
     with pytest.raises(FileError, match=r"ground\.finished: .*it holds the value -10000 at .*nodata = -10000"):
-        ground_of(tmp_path)
+        whole(ground.finished, ground)
     ground = ground_of(tmp_path, finished={"file": "finished.tif", "nodata": -10000})
     assert np.isnan(whole(ground.finished, ground)[0, 0])
 
@@ -376,8 +377,9 @@ def test_a_marker_s_number_may_be_an_elevation(tmp_path):
 def test_an_absurd_value_is_refused(tmp_path):
     write_raster(tmp_path / "existing.tif", FLAT)
     write_raster(tmp_path / "finished.tif", np.where(np.arange(24).reshape(4, 6) == 3, 1e30, FLAT))
+    ground = ground_of(tmp_path)
     with pytest.raises(FileError, match=r"it holds the value 1\.000000015e\+30"):
-        ground_of(tmp_path)
+        whole(ground.finished, ground)
 
 
 def test_no_data_anywhere_is_told(tmp_path):
