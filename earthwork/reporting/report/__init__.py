@@ -1,0 +1,1 @@
+"""The report: one folder with everything that a site meeting needs."""
