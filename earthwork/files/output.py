@@ -18,9 +18,9 @@ from types import TracebackType
 
 from earthwork.errors import OutputError
 
-_ASIDE = ".unfinished-"
+ASIDE = ".unfinished-"
 #: What other programs leave beside a file and would take for facts about the new one.
-_SIDECARS = (".aux.xml", ".ovr", "-wal", "-shm", "-journal")
+SIDECARS = (".aux.xml", ".ovr", "-wal", "-shm", "-journal")
 
 
 class OutputFolder:
@@ -51,7 +51,7 @@ class OutputFolder:
     ):
         self.directory = Path(directory)
         self.patterns = tuple(patterns)
-        self.earlier = tuple(name for name in earlier if self._announced(name))
+        self.earlier = tuple(name for name in earlier if self.announces(name))
         self.overwrite = overwrite
         self.written: tuple[Path, ...] = ()
         self._aside: Path | None = None
@@ -60,15 +60,11 @@ class OutputFolder:
     def __enter__(self) -> OutputFolder:
         if self.directory.exists() and not self.directory.is_dir():
             raise OutputError(f"{self.directory}: is a file; --out takes a folder")
-        there = self._present()
-        if there and not self.overwrite:
-            names = ", ".join(there[:3]) + (f" and {len(there) - 3} more" if len(there) > 3 else "")
-            raise OutputError(
-                f"{self.directory}: has {names} already. Give another folder with --out, or --overwrite to replace them"
-            )
+        if not self.overwrite:
+            self.refuse_present()
         with output_errors(self.directory):
             self._make(self.directory)
-            self._aside = Path(tempfile.mkdtemp(prefix=_ASIDE, dir=self.directory))
+            self._aside = Path(tempfile.mkdtemp(prefix=ASIDE, dir=self.directory))
         return self
 
     def __exit__(
@@ -83,22 +79,33 @@ class OutputFolder:
         if isinstance(error, OSError) and error.errno in _NO_ROOM:
             raise _output_error(error, self.directory) from error
 
+    def refuse_present(self) -> None:
+        """Raise an OutputError where the folder has files that the command writes."""
+        there = self.present()
+        if there:
+            names = ", ".join(there[:3]) + (f" and {len(there) - 3} more" if len(there) > 3 else "")
+            raise OutputError(
+                f"{self.directory}: has {names} already. Give another folder with --out, or --overwrite to replace them"
+            )
+
     def path(self, name: str) -> Path:
         """Where to write a file now; it gets its place in the folder at the end."""
         if self._aside is None:
             raise RuntimeError("an output folder is used in a with block")
-        if not self._announced(name):
+        if not self.announces(name):
             raise ValueError(f"{name} is not among the names announced: {', '.join(self.patterns)}")
         return self._aside / name
 
-    def _announced(self, name: str) -> bool:
+    def announces(self, name: str) -> bool:
+        """Whether a name is among those that the command may write."""
         plain_name = Path(name).name == name
         return plain_name and any(fnmatch.fnmatchcase(name, pattern) for pattern in self.patterns)
 
-    def _present(self) -> list[str]:
+    def present(self) -> list[str]:
+        """Names in the folder that the command may write."""
         if not self.directory.is_dir():
             return []
-        return sorted(p.name for p in self.directory.iterdir() if self._announced(p.name))
+        return sorted(p.name for p in self.directory.iterdir() if self.announces(p.name))
 
     def _make(self, directory: Path) -> None:
         if directory.is_dir():
@@ -112,7 +119,7 @@ class OutputFolder:
         new = sorted(self._aside.iterdir())
         for file in new:
             os.replace(file, self.directory / file.name)
-            for ending in _SIDECARS:
+            for ending in SIDECARS:
                 (self.directory / (file.name + ending)).unlink(missing_ok=True)
         for name in set(self.earlier) - {file.name for file in new}:
             (self.directory / name).unlink(missing_ok=True)

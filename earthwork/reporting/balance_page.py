@@ -144,10 +144,16 @@ def tallies(site: Site, folder: OutputFolder) -> tuple[Any, ...]:
 
 def draw(site: Site, result: Any, folder: OutputFolder, gathered: Any) -> None:
     """Write the maps and the curve of a **balance** result."""
-    from earthwork.reporting.balance_curve import draw_balance_curve
     from earthwork.reporting.maps import write_maps
 
     write_maps(site, result.volumes, folder, "balance", gathered, subtitle=title_of(result))
+    draw_curve(site, result, folder)
+
+
+def draw_curve(site: Site, result: Result, folder: OutputFolder) -> None:
+    """Write the curve of surplus against shift."""
+    from earthwork.reporting.balance_curve import draw_balance_curve
+
     content = result.to_dict()
     curve = [(point["shift_m"], point["surplus_compacted_m3"]) for point in content["grade_curve"]]
     if len(curve) > 1:

@@ -52,7 +52,7 @@ class Outcome:
 
     def page(self) -> Page:
         """The page for people."""
-        module = _module(self.command)
+        module = module_of(self.command)
         if module is not None and hasattr(module, "page"):
             return module.page(self.site, self.result)
         from earthwork.reporting.plain_page import page
@@ -87,9 +87,9 @@ def run_command(
             earlier = outputs_of(out, command)
             output = OutputFolder(out, patterns=patterns(command), earlier=earlier, overwrite=overwrite)
             folder = stack.enter_context(output)
-        module = _module(command)
+        module = module_of(command)
         tallies = module.tallies(site, folder) if folder and hasattr(module, "tallies") else ()
-        result = _call(command, site, {"threads": threads, "progress": progress, "tallies": tallies})
+        result = call(command, site, {"threads": threads, "progress": progress, "tallies": tallies})
         outcome = Outcome(command, site, result)
         if folder is not None:
             _write(outcome, folder, module, tallies)
@@ -111,13 +111,15 @@ def outputs_of(directory: str | Path, command: str) -> list[str]:
         return []
 
 
-def _call(command: str, site: Site, options: dict[str, Any]) -> Result:
+def call(command: str, site: Site, options: dict[str, Any]) -> Result:
+    """Call the function of a command with those of the options that it knows and that are given."""
     function = getattr(earthwork, command)
     known = inspect.signature(function).parameters
     return function(site, **{name: value for name, value in options.items() if name in known and value})
 
 
-def _module(command: str) -> Any:
+def module_of(command: str) -> Any:
+    """The module that knows what a command shows and draws; None where it has none."""
     return import_module(_MODULES[command]) if command in _MODULES else None
 
 
