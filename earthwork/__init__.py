@@ -21,6 +21,7 @@ _HOME = {
     "check": "earthwork.plan.check",
     "balance": "earthwork.plan.balance",
     "pads": "earthwork.plan.pads",
+    "report": "earthwork.reporting.report.run",
     "EarthworkError": "earthwork.errors",
 }
 __all__ = ["__version__", *_HOME]

@@ -88,13 +88,13 @@ def _remedies(site: Site, balance: dict[str, Any]) -> tuple[tuple[str, str, str]
     rows = []
     shift = balance["grade_shift"]
     if shift is not None:
-        rows.append(("grade shift", _shift_text(shift, site), _shift_note(shift, site)))
+        rows.append(("grade shift", shift_text(shift, site), _shift_note(shift, site)))
     else:
         note = balance["grade_shift_note"] or ""
         nearest = balance["grade_shift_nearest"]
         if nearest:
             left = show(nearest["surplus_compacted_m3"], "soil_volume", units, sign=True)
-            note += f"; nearest {_shift_text(nearest, site)}, leaving {left}"
+            note += f"; nearest {shift_text(nearest, site)}, leaving {left}"
         rows.append(("grade shift", "none", note))
     any_shift = shift or balance["grade_shift_nearest"]
     if any_shift:
@@ -104,7 +104,8 @@ def _remedies(site: Site, balance: dict[str, Any]) -> tuple[tuple[str, str, str]
     return tuple(rows)
 
 
-def _shift_text(shift: dict[str, Any], site: Site) -> str:
+def shift_text(shift: dict[str, Any], site: Site) -> str:
+    """A grade shift in words: which way, and by how much."""
     value = shift["shift_m"]
     if not value:
         return "0 " + site.units.label("length")

@@ -23,18 +23,20 @@ class DepthRasterTally:
     Cells outside the limits are no data.
     """
 
+    description = DESCRIPTION
+
     def __init__(self, path: Path, units: UnitSystem) -> None:
         self.path = path
         self.units = units
         self._shared = _Shared()
 
     def empty(self) -> DepthRasterTally:
-        other = DepthRasterTally(self.path, self.units)
+        other = type(self)(self.path, self.units)
         other._shared = self._shared
         return other
 
     def add(self, tile: Tile) -> None:
-        depth = tile.depth[1:-1, 1:-1]
+        depth = self.values(tile)
         if tile.weight is not None:
             depth = np.where(tile.weight > 0, depth, np.nan)
         with self._shared.lock:
@@ -42,11 +44,15 @@ class DepthRasterTally:
                 self._shared.writer = DepthRasterWriter(
                     self.path,
                     tile.grid,
-                    description=DESCRIPTION,
+                    description=self.description,
                     unit=self.units.unit("length"),
                     factor=1 / self.units.factor("length"),
                 )
         self._shared.writer.write(tile.window, depth)
+
+    def values(self, tile: Tile) -> np.ndarray:
+        """What is written of a tile [m], (height, width)."""
+        return tile.depth[1:-1, 1:-1]
 
     def merge(self, other: DepthRasterTally) -> None:
         """Nothing: all instances write into the same file."""
@@ -55,6 +61,15 @@ class DepthRasterTally:
         """Complete the file."""
         if self._shared.writer is not None:
             self._shared.writer.finish()
+
+
+class ThicknessRasterTally(DepthRasterTally):
+    """The same for the thickness of fill, the refill of over-excavation under it included."""
+
+    description = "fill thickness: subgrade - removal bottom, with the refill of over-excavation"
+
+    def values(self, tile: Tile) -> np.ndarray:
+        return tile.subgrade - tile.removal_bottom
 
 
 class _Shared:
