@@ -125,3 +125,23 @@ def pads(site: SiteFile, how: Shared) -> None:
     from .flow import perform
 
     perform("pads", site, how)
+
+
+def report(
+    site: SiteFile,
+    only: Annotated[
+        list[str] | None,
+        typer.Option(
+            "--only", metavar="GROUPS", help="Of page,tables,maps,workbook,gis,model,json; default all of them."
+        ),
+    ] = None,
+    *,
+    how: Shared,
+) -> None:
+    """The whole job in one pass: page, interactive map, tables, maps, workbook, GIS files, 3D model.
+
+    Goes into the folder "report" beside the site file, or into --out.
+    """
+    from .flow import perform_report
+
+    perform_report(site, how, only or ())

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -13,6 +14,7 @@ from .progress import ProgressBar
 from .terminal import print_json, print_page, say, say_warnings
 
 if TYPE_CHECKING:
+    from earthwork.reporting.runner import Outcome
     from earthwork.site import Site
 
 
@@ -39,6 +41,31 @@ def perform(command: str, site: Path | Site, how: Shared) -> None:
             threads=how.threads,
             progress=progress,
         )
+    _show(outcome, how)
+
+
+def perform_report(site: Path, how: Shared, only: Sequence[str]) -> None:
+    """Write the report of a site and show its answers; as :func:`perform`."""
+    from earthwork.reporting.report.run import report
+    from earthwork.reporting.runner import Outcome
+    from earthwork.site import load_site
+
+    with ProgressBar("report", quiet=how.quiet) as progress:
+        checked = load_site(site)
+        result = report(
+            checked,
+            out=how.out,
+            only=only,
+            overwrite=how.overwrite,
+            threads=how.threads,
+            progress=progress,
+            stage=progress.begin,
+        )
+    _show(Outcome("report", checked, result, result.written), how)
+
+
+def _show(outcome: Outcome, how: Shared) -> None:
+    """Warnings and the files written on stderr, the result on stdout."""
     say_warnings(outcome.result.warnings)
     if not how.quiet:
         for file in outcome.written:

@@ -33,6 +33,7 @@ class ProgressBar:
         self.clock = clock
         self._terminal = self.stream.isatty()
         self._started = clock()
+        self._stage = self._started
         self._next = self._started + _PATIENCE_S
         self._shown = False
         self._lock = threading.Lock()
@@ -56,13 +57,22 @@ class ProgressBar:
             self._next = now + (0.1 if self._terminal else 10.0)
             self._shown = True
             share = min(done / total, 1.0)
-            left = (now - self._started) * (1 - share) / share if share > 0 else None
+            left = (now - self._stage) * (1 - share) / share if share > 0 else None
             text = f"{self.label}: {100 * share:3.0f} %" + (f", about {_span(left)} left" if left else "")
             if self._terminal:
                 bar = ("#" * round(_WIDTH * share)).ljust(_WIDTH, ".")
                 self._write(f"\r\x1b[2K[{bar}] {text}")
             else:
                 self._write(text + "\n")
+
+    def begin(self, stage: str) -> None:
+        """Name the stage that begins; shown at once where work has taken long already."""
+        with self._lock:
+            self.label, self._stage = stage, self.clock()
+            if self.quiet or self.clock() < self._started + _PATIENCE_S:
+                return
+            self._shown = True
+            self._write(f"\r\x1b[2K{stage} …" if self._terminal else f"{stage} …\n")
 
     def _write(self, text: str) -> None:
         try:

@@ -225,6 +225,5 @@ def _haul(parts: Parts) -> HandCheck | None:
 def as_document(checks: tuple[HandCheck, ...]) -> list[dict[str, Any]]:
     """The checks as JSON."""
     return [
-        {"title": c.title, "lines": [{"what": x.what, "sum": x.sum, "value": x.value} for x in c.lines]}
-        for c in checks
+        {"title": c.title, "lines": [{"what": x.what, "sum": x.sum, "value": x.value} for x in c.lines]} for c in checks
     ]

@@ -63,9 +63,7 @@ def map_view(parts: Parts) -> MapView:
         layers.append(("lifts", "Lifts"))
     layers += [("finished", "Finished grade"), ("existing", "Existing ground")]
     outlines, arrows = _outlines(parts), _arrows(parts)
-    content = MapContent(
-        outlines=outlines, arrows=arrows, lifts=lifts, fills=fills, extra=_extra(parts, scales)
-    )
+    content = MapContent(outlines=outlines, arrows=arrows, lifts=lifts, fills=fills, extra=_extra(parts, scales))
     every = parts.surfaces.every
     cells = "one cell" if every == 1 else f"{every} × {every} cells, of which it shows the mean,"
     side = show(parts.surfaces.grid.cell_east_m, "length", units)
@@ -165,9 +163,7 @@ def _outlines(parts: Parts) -> list[Outline]:
     zones = {zone.zone: zone for zone in parts.volumes.zones}
     for name, shape in zip(ground.zone_names, ground.zone_shapes, strict=True):
         volumes = zones[name]
-        note = (
-            f"cut {show(volumes.cut_m3, 'soil_volume', units)}, fill {show(volumes.fill_m3, 'soil_volume', units)}"
-        )
+        note = f"cut {show(volumes.cut_m3, 'soil_volume', units)}, fill {show(volumes.fill_m3, 'soil_volume', units)}"
         found.append(Outline("zones", name, shape, note))
     if model.pads is not None:
         found += _layer(parts, "pads", model.pads.area, model.pads.name, _pad_notes(parts))
@@ -263,4 +259,3 @@ def _fill_numbers(parts: Parts) -> tuple[np.ndarray, dict[str, int]]:
         r, c = np.minimum(rows, area.cells.shape[0] - 1), np.minimum(columns, area.cells.shape[1] - 1)
         numbers[area.cells[np.ix_(r, c)]] = i
     return numbers, names
-

@@ -79,7 +79,7 @@ def coarser(surfaces: SurfaceMap) -> SurfaceMap:
 
     means = {name: mean(getattr(surfaces, name)) for name in _SURFACES}
     stratum = halves(surfaces.stratum, -1).max(axis=(1, 3))
-    return replace(surfaces, grid=small, every=2 * surfaces.every, stratum=stratum, **means)
+    return SurfaceMap(small, 2 * surfaces.every, **means, stratum=stratum, materials=surfaces.materials)
 
 
 def surface_planes(surfaces: SurfaceMap, step_m: float) -> dict[str, Plane]:

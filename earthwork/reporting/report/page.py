@@ -58,9 +58,7 @@ class Part:
     matrix: Table | None = None
 
 
-def page_text(
-    parts: Parts, *, inputs: Sequence[dict[str, Any]], checks: Sequence[HandCheck], pictures: Path
-) -> str:
+def page_text(parts: Parts, *, inputs: Sequence[dict[str, Any]], checks: Sequence[HandCheck], pictures: Path) -> str:
     """The text of report.html.
 
     Args:
@@ -162,9 +160,7 @@ def _matrix(parts: Parts) -> Table | None:
         if (move["from"], move["to"]) in mass:
             mass[move["from"], move["to"]] += move[key]
     factor, unit = display_key(key, site.units)[1], unit_label(key, site.units)
-    rows = [
-        (s, *(plain(mass[s, t] * factor, 0) if mass[s, t] else "·" for t in sinks)) for s in sources
-    ]
+    rows = [(s, *(plain(mass[s, t] * factor, 0) if mass[s, t] else "·" for t in sinks)) for s in sources]
     left = len({m["from"] for m in moves}) - len(sources)
     heading = f"Haul matrix: dry mass, {unit}, from (rows) to (columns)" + (
         ", the places that move most" if left or len({m["to"] for m in moves}) > len(sinks) else ""
@@ -178,4 +174,3 @@ def _largest(moves: Sequence[dict[str, Any]], end: str) -> list[str]:
         total[move[end]] = total.get(move[end], 0.0) + move["dry_mass_t"]
     kept = set(sorted(total, key=lambda name: -total[name])[:_LARGEST_MATRIX])
     return [name for name in total if name in kept]
-

@@ -88,9 +88,7 @@ def gather(
     ground = open_site(site, moving="balance" in names)
     surfaces, probe = SurfaceMapTally(ground.stack), CellProbe(ground.stack)
     gathered = {name: _picture_tallies(name, site, pictures) for name in names}
-    shared = OnePass(
-        site, ground, tallies=[surfaces, probe, *tallies(ground)], threads=threads, progress=progress
-    )
+    shared = OnePass(site, ground, tallies=[surfaces, probe, *tallies(ground)], threads=threads, progress=progress)
     answers = shared.run({name: _caller(name, site, gathered[name], threads) for name in names})
     results: dict[str, Result] = {}
     failed = []

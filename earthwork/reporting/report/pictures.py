@@ -53,7 +53,8 @@ def picture(path: Path) -> Picture:
     words = path.stem.split("_", 1)[-1].replace("_", " ").replace("-", " ")
     command = path.stem.split("_", 1)[0]
     caption, alt = _KNOWN.get(
-        path.stem, (words[:1].upper() + words[1:], f"Picture of {command}: {words}. Its figures are in the tables here.")
+        path.stem,
+        (words[:1].upper() + words[1:], f"Picture of {command}: {words}. Its figures are in the tables here."),
     )
     if command == "soil":
         caption = f"Compaction chart: {words.removeprefix('chart ').removeprefix('compaction ')}"

@@ -24,7 +24,7 @@ _METHOD = (
 def basis_rows(parts: Parts) -> list[tuple[str, str, str]]:
     """The facts under the answer box: (label, value, note)."""
     site, volumes = parts.site, parts.documents["volumes"]
-    rows = [("surfaces", text, "") for text in _surfaces(parts)]
+    rows = [("surfaces", "; ".join(_surfaces(parts)), "")]
     rows.append(("coordinates", *_coordinates(parts)))
     rows += [
         ("to subgrade", subgrade_line(site), ""),
@@ -96,7 +96,7 @@ def _shrinkage(parts: Parts) -> list[tuple[str, str, str]]:
     for card in parts.cards.values():
         if card.use not in ("fill", "rock") or card.shrinkage_factor is None:
             continue
-        factor, sd = card.effective_factor, card.shrinkage_factor_sd
+        factor, sd = card.shrinkage_factor * (1 - card.loss_fraction), card.shrinkage_factor_sd
         text = f"{card.material}: {plain(factor, 3)} compacted per bank after loss"
         if sd:
             low, high = (factor + k * sd * (1 - card.loss_fraction) for k in (-2, 2))

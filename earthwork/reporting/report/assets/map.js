@@ -114,7 +114,7 @@
     const dx = (field(right) - field(left)) / ((right - left || 1) * grid.cell_east * m);
     const dy = (field(up) - field(down)) / (((down - up) / columns || 1) * grid.cell_north * m);
     const lit = (-0.5 * dx * 2 + 0.5 * dy * 2 * -1 + 0.7) / Math.sqrt(1 + 4 * (dx * dx + dy * dy));
-    return Math.min(1, Math.max(0.35, 0.3 + lit));
+    return Math.min(1, Math.max(0.3, 0.2 + lit));
   }
 
   const painters = {
@@ -311,12 +311,20 @@
     const [lo, hi] = [0, 1].map((i) => [Math.min, Math.max].map((f) => f(...ring.map((p) => p[i])))).reduce(
       (a, [l, h]) => [[...a[0], l], [...a[1], h]], [[], []]);
     const x = toX((lo[0] + hi[0]) / 2), y = toY((lo[1] + hi[1]) / 2);
-    const room = (hi[0] - lo[0]) * scale - 8;
-    ink.font = "600 12px system-ui, sans-serif";
-    let text = outline.name;
-    while (text.length > 3 && ink.measureText(text + "…").width > room) text = text.slice(0, -1);
-    if (text.length <= 3 && text !== outline.name) return;
-    halo(text === outline.name ? text : text + "…", x, y + 14, { font: "600 12px system-ui, sans-serif" });
+    const room = (hi[0] - lo[0]) * scale - 8, font = "600 12px system-ui, sans-serif";
+    ink.font = font;
+    const lines = [""];
+    for (const word of outline.name.split(/\s+/)) {
+      const longer = (lines[lines.length - 1] + " " + word).trim();
+      if (ink.measureText(longer).width <= Math.max(room, 60) || !lines[lines.length - 1]) lines[lines.length - 1] = longer;
+      else lines.push(word);
+    }
+    if (room < 34 || lines.length * 14 > (hi[1] - lo[1]) * scale * aspect + 14) return;
+    lines.forEach((line, i) => {
+      let text = line;
+      while (text.length > 3 && ink.measureText(text).width > Math.max(room, 60)) text = text.slice(0, -2) + "…";
+      halo(text, x, y + 14 * (i - (lines.length - 1) / 2) + (layer === "depth" ? 9 : 0), { font });
+    });
   }
   function drawArrow(arrow) {
     const color = data.arrow_colors[arrow.kind], line = arrow.path;
