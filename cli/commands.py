@@ -127,6 +127,8 @@ def pads(site: SiteFile, how: Shared) -> None:
     perform("pads", site, how)
 
 
+@app.command()
+@with_shared
 def report(
     site: SiteFile,
     only: Annotated[
