@@ -210,6 +210,14 @@ def no_overlap(found: RasterCandidate, other: str, grid: Grid) -> GroundError:
     )
 
 
+def too_coarse(found: RasterCandidate, grid: Grid) -> GroundError:
+    """The error for a raster that lies on the site, but whose samples surround the centre of no cell."""
+    return GroundError(
+        f"{found.name}: its {found.info.rows} × {found.info.columns} samples surround the centre of no cell of the site "
+        f"({extent(grid.bounds)}); at least 2 × 2 of them must, to interpolate between. Give more of it around the site"
+    )
+
+
 def extent(bounds: tuple[float, float, float, float]) -> str:
     """A rectangle in words."""
     west, south, east, north = bounds

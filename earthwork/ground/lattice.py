@@ -11,7 +11,7 @@ from pyproj import CRS
 
 from earthwork.crs import describe, horizontal, horizontal_unit_m
 from earthwork.errors import GroundError
-from earthwork.ground.candidates import Candidate, RasterCandidate, extent, no_overlap
+from earthwork.ground.candidates import Candidate, RasterCandidate, extent, no_overlap, too_coarse
 from earthwork.ground.grid import Grid, Window
 from earthwork.ground.scale import ground_scale, refuse_geographic
 
@@ -116,8 +116,15 @@ def common_window(base: Grid, found: Sequence[Candidate], lead: RasterCandidate 
         top, bottom = max(top, rows[0]), min(bottom, rows[1])
         left, right = max(left, columns[0]), min(right, columns[1])
         if (bottom <= top or right <= left) and isinstance(surface, RasterCandidate):
+            if surface.shares_crs(base.crs) and _touch(surface.info.bounds, base.bounds):
+                raise too_coarse(surface, base)
             raise no_overlap(surface, lead.what if lead is not None else "the site", base)
     return Window(top, left, bottom - top, right - left)
+
+
+def _touch(a: tuple[float, float, float, float], b: tuple[float, float, float, float]) -> bool:
+    """True when two rectangles (west, south, east, north) share an area."""
+    return min(a[2], b[2]) > max(a[0], b[0]) and min(a[3], b[3]) > max(a[1], b[1])
 
 
 def window_of_limits(base: Grid, window: Window, area: Any) -> Window:

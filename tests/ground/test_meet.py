@@ -296,6 +296,15 @@ def test_surfaces_that_only_touch_do_not_overlap(tmp_path):
         ground_of(tmp_path)
 
 
+def test_a_raster_that_is_too_coarse_to_interpolate(tmp_path):
+    write_raster(tmp_path / "existing.tif", FLAT)
+    write_raster(tmp_path / "finished.tif", [[100.0, 100.0]], cell=100.0, west=WEST - 8)
+    with pytest.raises(
+        GroundError, match=r"finished\.tif: its 1 × 2 samples surround the centre of no cell of the site"
+    ):
+        ground_of(tmp_path)
+
+
 def test_no_overlap_in_another_crs(tmp_path):
     write_raster(tmp_path / "existing.tif", FLAT)
     write_raster(tmp_path / "finished.tif", FLAT, crs="EPSG:32610")
