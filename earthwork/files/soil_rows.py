@@ -23,7 +23,7 @@ LENGTH = {"m": 1.0, "cm": 0.01, "mm": 0.001, "in": FOOT_M / 12, "ft": FOOT_M}
 _SPELLINGS = {
     "dry_density": ("dry_density", "dry_unit_weight"),
     "moist_density": ("moist_density", "wet_density", "moist_unit_weight", "wet_unit_weight"),
-    "water_content": ("water_content", "moisture_content", "moisture", "w"),
+    "water_content": ("water_content", "moisture_content", "water", "moisture", "w"),
     "mould_volume": ("mould_volume", "mold_volume"),
     "mould_mass": ("mould_mass", "mold_mass"),
     "mould_and_soil_mass": ("mould_and_soil_mass", "mold_and_soil_mass"),
@@ -141,6 +141,11 @@ class SoilRows:
             return None
         percent = value * scale
         written = (row.text(column) or "").endswith("%")
+        if scale == 100.0 and value > 5:
+            self.fault(
+                row, column, f"{value:g} looks like percent; name the column {column.removesuffix('_fraction')}_percent"
+            )
+            return None
         if not 0 <= percent <= 500:
             self.fault(row, column, f"{value:g} is {percent:g} %; a water content must be 0 to 500 % of dry mass")
             return None
@@ -152,9 +157,6 @@ class SoilRows:
                 f"{base}_fraction, or "
                 f'write "{value:g} %" if it really is that dry',
             )  # fmt: skip
-            return None
-        if scale == 100.0 and value > 5:
-            self.fault(row, column, f"{value:g} looks like percent; name the column {column[:-9]}_percent")
             return None
         return percent
 

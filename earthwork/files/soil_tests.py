@@ -1,6 +1,6 @@
 """Reads laboratory and field tests of soils: compaction points, bench data, in-place densities.
 
-Column names are those of docs/file-formats; a unit in the name or in a unit row under the header decides,
+Column names are those of docs/soil-tests.md; a unit in the name or in a unit row under the header decides,
 and figures that look like another unit, a fraction for a percentage or a moist density are refused with row
 and column.
 """

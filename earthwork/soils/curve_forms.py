@@ -74,27 +74,34 @@ def _bounded(water: np.ndarray, parameters: np.ndarray, gravity: float) -> np.nd
     return lower * ((dry / lower) ** -_SHARPNESS + (wet / lower) ** -_SHARPNESS) ** (-1 / _SHARPNESS)
 
 
-def _estimate(form: str, water: np.ndarray, density: np.ndarray, centre: float, gravity: float) -> np.ndarray | None:
+def _estimate(
+    form: str, water: np.ndarray, density: np.ndarray, centre: float, gravity: float, start: np.ndarray | None = None
+) -> np.ndarray | None:
     """Least-squares parameters of a form; None when there are too few different water contents."""
     degree = {"line": 1, "parabola": 2, "cubic": 3, "bounded": 2}[form]
     if len(np.unique(water)) <= degree:
         return None
     if form != "bounded":
         return np.polyfit(water - centre, density, degree)
-    return _estimate_bounded(water, density, gravity)
+    return _estimate_bounded(water, density, gravity, start)
 
 
-def _estimate_bounded(water: np.ndarray, density: np.ndarray, gravity: float) -> np.ndarray:
+def _estimate_bounded(water: np.ndarray, density: np.ndarray, gravity: float, start: np.ndarray | None) -> np.ndarray:
+    """Parameters of the bounded form, from a start or from three of our own (its sum of squares may have valleys)."""
     from scipy.optimize import least_squares
 
-    saturation = water * gravity / (gravity * WATER_DENSITY_KG_M3 / density - 1)
+    grain = gravity * WATER_DENSITY_KG_M3
+    saturation = water * gravity / (grain / density - 1)
     top = int(np.argmax(density))
+    wet = float(np.clip(saturation.max(), 30.0, 99.0))
+    starts = [start] if start is not None else [
+        np.array([max(density[top] - slope * water[top], 1.0), slope, wet]) for slope in (10.0, 40.0, 90.0)
+    ]  # fmt: skip
     best = None
-    for slope in (10.0, 40.0, 90.0):
-        start = [density[top] - slope * water[top], slope, float(np.clip(saturation.max(), 30.0, 99.0))]
+    for first in starts:
         solution = least_squares(
-            lambda p: _bounded(water, p, gravity) - density, start,
-            bounds=([0.0, 0.0, 20.0], [gravity * WATER_DENSITY_KG_M3, 1000.0, 100.0]), x_scale=[100.0, 10.0, 5.0],
+            lambda p: _bounded(water, p, gravity) - density, first,
+            bounds=([0.0, 0.0, 20.0], [grain, 1000.0, 100.0]), x_scale=[100.0, 10.0, 5.0],
         )  # fmt: skip
         if best is None or solution.cost < best.cost:
             best = solution
@@ -126,7 +133,7 @@ def fit_form(form: str, water: np.ndarray, density: np.ndarray, gravity: float) 
         max_dry_density_kg_m3=float(predict(np.array([optimum]), parameters)[0]),
         optimum_water_content_percent=optimum,
         max_dry_density_se_kg_m3=peak_se, optimum_water_content_se_percent=optimum_se, residual_sd_kg_m3=sd,
-        left_out_rms_kg_m3=_left_out_rms(form, water, density, centre, gravity),
+        left_out_rms_kg_m3=_left_out_rms(form, water, density, centre, gravity, parameters),
         centre_percent=centre, specific_gravity=gravity,
     )  # fmt: skip
 
@@ -201,13 +208,15 @@ def _peak_errors(
     return float(np.sqrt(level @ covariance @ level)), float(np.sqrt(shift @ covariance @ shift))
 
 
-def _left_out_rms(form: str, water: np.ndarray, density: np.ndarray, centre: float, gravity: float) -> float:
+def _left_out_rms(
+    form: str, water: np.ndarray, density: np.ndarray, centre: float, gravity: float, start: np.ndarray
+) -> float:
     """Root mean square of what each point is missed by, when the form is fitted to the others."""
     errors = []
     predict = _predictor(form, centre, gravity)
     for i in range(len(water)):
         others = np.arange(len(water)) != i
-        parameters = _estimate(form, water[others], density[others], centre, gravity)
+        parameters = _estimate(form, water[others], density[others], centre, gravity, start)
         if parameters is None:
             return float("inf")
         errors.append(float(predict(water[i : i + 1], parameters)[0] - density[i]))

@@ -17,8 +17,9 @@ if TYPE_CHECKING:
 
 #: Points along each curved side of the polygon; the curves are nearly straight, 64 keep it within 0.1 kg/m³.
 _POINTS = 64
-#: What the outline for scripts may be off by [kg/m³]; it saves the corners along straight sides.
-_DRAWN_KG_M3 = 0.2
+#: Distance in the plane of percent and kg/m³ that the outline for scripts may be off by; on the steep wet
+#: side that is about 0.3 kg/m³. It saves the corners along straight sides.
+_DRAWN = 0.01
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -161,7 +162,7 @@ class PlacingWindow:
             "saturation_percent": list(self.saturation_percent) if self.saturation_percent else None,
             "air_voids_max_percent": self.air_voids_max_percent,
             "target": list(self.target) if self.target else None,
-            "outline": [list(corner) for corner in _outline(self.polygon.simplify(_DRAWN_KG_M3))],
+            "outline": [list(corner) for corner in _outline(self.polygon.simplify(_DRAWN))],
         }
 
 
