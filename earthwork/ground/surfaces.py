@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Protocol, runtime_checkable
 import numpy as np
 
 from earthwork.errors import GroundError
-from earthwork.files.rasters import RasterInfo, RasterReader, RasterSource
+from earthwork.files.rasters import RasterInfo, RasterSource
 from earthwork.ground.grid import Grid, Window
 from earthwork.ground.resample import Taps, apply_taps, axis_taps, worth_compiling
 
@@ -325,7 +325,6 @@ __all__ = [
     "AlignedRaster",
     "LevelGround",
     "PlaneGround",
-    "RasterReader",
     "ResampledRaster",
     "Surface",
     "SurfaceReader",
