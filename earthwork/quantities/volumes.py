@@ -271,6 +271,7 @@ class VolumesResult(Result):
                 "ground_scale": grid.ground_scale,
                 "sample": self.ground.sample,
                 "resampling": self.ground.resampling,
+                "notes": list(self.ground.surfaces.notes),
             },
             "total": total.to_dict(),
             "zones": [zone.to_dict() for zone in self.zones],

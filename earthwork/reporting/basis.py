@@ -24,6 +24,7 @@ def basis(site: Site, volumes: dict[str, Any]) -> Notes:
             scale_line(site, volumes),
             missing_line(site, volumes),
             sample_line(site, volumes),
+            *volumes["grid"].get("notes", []),
             *error_lines(site, volumes),
         ),
     )
