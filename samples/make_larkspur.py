@@ -53,7 +53,7 @@ PADS = [
     ("Dogwood House", (480, 372), 76, 48, -12, 624.50),
     ("Elder House", (392, 118), 64, 44, 30, 615.40),
 ]
-COURT = ("Truck court", (148, 118), 112, 66, 8, 620.80)
+COURT = ("Truck court", (148, 118), 112, 66, 8, 620.70)
 BASIN = ("Stormwater basin", (521, 74), 74, 40, -33, 604.60)
 
 COURT_SLOPE = (0.004, -0.010)
@@ -64,8 +64,8 @@ DRIVES = [
     (
         "West Drive",
         [(3, 186), (95, 180), (180, 172), (268, 200), (292, 255), (330, 300)],
-        [0, 0.25, 0.55, 0.93, 1],
-        [None, 617.6, 618.2, 619.8, 619.8],
+        [0, 0.25, 0.38, 0.60, 0.93, 1],
+        [None, 617.6, 618.9, 618.9, 619.8, 619.8],
     ),
     (
         "Hill Spur",
@@ -73,7 +73,7 @@ DRIVES = [
         [0, 0.1, 0.82, 1],
         [617.6, 617.8, 626.1, 626.1],
     ),
-    ("Court Spur", [(110, 179), (140, 168), (146, 130)], [0, 0.2, 0.5, 1], [617.8, 618, 620.6, 620.6]),
+    ("Court Spur", [(158, 175.2), (156, 160), (155, 140)], [0, 0.12, 0.60, 1], [618.9, 618.9, 620.4, 620.4]),
     ("East Drive", [(616, 448), (560, 420), (490, 375)], [0, 0.62, 1], [None, 624.5, 624.5]),
     ("Elder Lane", [(322, 3), (345, 50), (392, 112)], [0, 0.72, 1], [None, 615.4, 615.4]),
 ]
@@ -241,6 +241,8 @@ def layers_of(plan: Plan, grading: shapely.Geometry) -> dict[str, list[tuple[sha
         "grading": parts(grading, kind="limit of grading"),
         "pads": [(drawn(pad), {"pad": name, "grade": grades[name], "phase": PHASE_OF[name]})
                  for name, pad in plan.pads.items()],
+        "platforms": platform_features(plan),
+        "drives": [(drawn(line), {"name": name}) for name, (line, *_) in plan.drives.items()],
         "buildings": [(shape, {"building": name}) for name, shape in buildings.items()],
         "pavement": [(drawn(plan.court), {"kind": "truck court"}), *parts(drives, kind="drive")],
         "green": parts(drawn(green), kind="lawn and prairie"),
@@ -252,6 +254,21 @@ def layers_of(plan: Plan, grading: shapely.Geometry) -> dict[str, list[tuple[sha
                   for name, line, speed, grade in HAUL_ROADS],
         "baseline": [(LineString(there(BASELINE)), {"name": "campus baseline", "start_station": 0.0})],
     }  # fmt: skip
+
+
+def platform_features(plan: Plan) -> list[tuple[Polygon, dict]]:
+    """All that is built level or to a fall, for a design that the program builds itself."""
+    fall, direction = fall_of(COURT_SLOPE)
+    rows = [(plan.pads[name], name, grade, 0.0, 0.0, 2.0) for name, *_, grade in PADS]
+    rows += [(plan.court, COURT[0], COURT[5], fall, direction, 2.0), (plan.basin, BASIN[0], BASIN[5], 0.0, 0.0, 3.0)]
+    fields = ("platform", "grade", "fall", "fall_direction", "side_slope")
+    return [(drawn(shape), dict(zip(fields, row, strict=True))) for shape, *row in rows]
+
+
+def fall_of(slope: tuple[float, float]) -> tuple[float, float]:
+    """Fall in percent, and where to in degrees clockwise from north, of a rise per unit east and north."""
+    east, north = slope
+    return round(100 * float(np.hypot(east, north)), 4), round(float(np.degrees(np.arctan2(-east, -north))) % 360, 3)
 
 
 def building(pad: Polygon, name: str) -> Polygon:
