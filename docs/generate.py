@@ -1,6 +1,7 @@
-"""Writes the parts of docs/ that follow from the code: site-file.md, site.schema.json and commands.md.
+"""Writes the parts of docs/ that follow from the code: site-file.md, site.schema.json, commands.md, typical-soils.md.
 
-Run ``python docs/generate.py`` after a change of the models or the commands; ``--check`` only says what is out of step.
+Run ``python docs/generate.py`` after a change of the models or the commands; ``--check`` only says what is
+out of step.
 """
 
 from __future__ import annotations
@@ -20,7 +21,12 @@ _NAMED = {"material": "material.NAME"}
 
 def main(arguments: list[str]) -> int:
     """Write the pages, or check them; the exit code."""
-    pages = {"site.schema.json": schema_text(), "site-file.md": site_file(), "commands.md": commands()}
+    pages = {
+        "site.schema.json": schema_text(),
+        "site-file.md": site_file(),
+        "commands.md": commands(),
+        "typical-soils.md": typical_soils(),
+    }
     stale = [
         n for n, text in pages.items() if not (DOCS / n).is_file() or (DOCS / n).read_text(encoding="utf-8") != text
     ]
@@ -34,7 +40,7 @@ def main(arguments: list[str]) -> int:
     return 0
 
 
-# --- the JSON Schema -----------------------------------------------------------------------------------------------
+# --- the JSON Schema ------------------------------------------------------------------------------
 
 
 def schema() -> Schema:
@@ -90,26 +96,28 @@ def _units(pair: list[str]) -> str:
     return pair[0] if pair[0] == pair[1] else f"{pair[0]} or {pair[1]}"
 
 
-# --- the page of the site file --------------------------------------------------------------------------------------
+# --- the page of the site file --------------------------------------------------------------------
 
 _HEAD = """\
 # The site file
 
 <!-- Written by docs/generate.py from the models in earthwork/site; change those, not this page. -->
 
-One TOML file describes a site. `earthwork new DIR` writes a commented one that runs; `earthwork check site.toml` lists
-every fault of yours in one message. File names are relative to the site file. Unknown keys are an error that names the
-closest known key. Every table but `[site]` and `[ground]` may be left out; a command that needs a missing one says which.
+One TOML file describes a site. `earthwork new DIR` writes a commented one that runs; `earthwork check
+site.toml` lists every fault of yours in one message. File names are relative to the site file. Unknown keys
+are an error that names the closest known key. Every table but `[site]` and `[ground]` may be left out; a
+command that needs a missing one says which.
 
-**Numbers** are in the units of `site.units`; a text carries its own unit and wins: `"8 in"`, `"150 mm"`, `"120 lb/ft3"`.
-Below, *m or ft* means metres in a metric site and feet in a US one. Feet are international feet, unless the coordinate
-reference system of the surfaces is in US survey feet. Percentages are numbers such as 12, never fractions.
+**Numbers** are in the units of `site.units`; a text carries its own unit and wins: `"8 in"`, `"150 mm"`,
+`"120 lb/ft3"`. Below, *m or ft* means metres in a metric site and feet in a US one. Feet are international
+feet, unless the coordinate reference system of the surfaces is in US survey feet. Percentages are numbers
+such as 12, never fractions.
 
-**A surface** is a file name, or one of the tables under [surfaces](#surfaces). A level or a plane has the extent of the
-other surface. **An area** is a file name of polygons, or a table under [areas](#areas).
+**A surface** is a file name, or one of the tables under [surfaces](#surfaces). A level or a plane has the
+extent of the other surface. **An area** is a file name of polygons, or a table under [areas](#areas).
 
-**In an editor**: [site.schema.json](site.schema.json) is a JSON Schema of this page. Editors that know JSON Schema for TOML
-complete and check the file when its first line is `#:schema path/to/site.schema.json`.
+**In an editor**: [site.schema.json](site.schema.json) is a JSON Schema of this page. Editors that know JSON
+Schema for TOML complete and check the file when its first line is `#:schema path/to/site.schema.json`.
 """
 
 
@@ -240,19 +248,51 @@ def _plural(kind: str) -> str:
     return {"table": "tables", "text": "texts"}.get(kind, kind)
 
 
-# --- the page of the commands ----------------------------------------------------------------------------------------
+# --- the page of the commands ---------------------------------------------------------------------
 
 _COMMANDS_HEAD = """\
 # The commands
 
 <!-- Written by docs/generate.py from the commands' own help; change cli/commands.py, not this page. -->
 
-The result goes to stdout, every number with its unit; progress and warnings go to stderr. With `--json`, stdout has one
-JSON document in SI units and nothing else. Files named by `--out` appear whole or not at all; see [outputs.md](outputs.md).
+The result goes to stdout, every number with its unit; progress and warnings go to stderr. With `--json`,
+stdout has one JSON document in SI units and nothing else. Files named by `--out` appear whole or not at
+all; see [outputs.md](outputs.md).
 
-Exit codes: 0 done · 2 bad input, bad usage, or no room to write · 3 a warning, with `--strict`, after the result ·
-130 interrupted. Anything else is a bug.
+Exit codes: 0 done · 2 bad input, bad usage, or no room to write · 3 a warning, with `--strict`, after the
+result · 130 interrupted. Anything else is a bug.
 """
+
+
+def typical_soils() -> str:
+    """The page of typical values by soil type."""
+    from earthwork.soils.typical import TYPICAL, Range
+
+    def span(value: Range | None) -> str:
+        return "–" if value is None else f"{value.low:g} to {value.high:g}"
+
+    lines = [
+        "# Typical values by soil type",
+        "",
+        'The last resort: `typical = "lean clay"` in a material fills what was not tested with the middle of a range. Each use',
+        "is a warning, is listed in `assumed`, and carries the whole range into the uncertainty. Natural "
+        "dry densities and specific",
+        "gravities are after [DAS](sources.md), compaction figures (standard effort) after "
+        "[NAVFAC-DM7](sources.md), swell and the",
+        "shrink of rock after [FM-5-434](sources.md) with the range of other handbooks; all from memory. "
+        "Densities in kg/m³, the rest",
+        "in percent; shrink is of bank volume, negative for bulking.",
+        "",
+        "| soil | groups | grains | bank dry density | swell | maximum | optimum | shrink |",
+        "| --- | --- | --- | --- | --- | --- | --- | --- |",
+    ]
+    for soil in TYPICAL.values():
+        spans = (
+            soil.specific_gravity, soil.bank_dry_density_kg_m3, soil.swell_percent, soil.max_dry_density_kg_m3,
+            soil.optimum_water_content_percent, soil.shrink_percent_of_bank,
+        )  # fmt: skip
+        lines.append(f"| {soil.name} | {' '.join(soil.symbols) or '–'} | " + " | ".join(map(span, spans)) + " |")
+    return "\n".join(lines) + "\n"
 
 
 def commands() -> str:

@@ -85,6 +85,14 @@ class SoilRows:
         """The number in a column that need not be there."""
         return self.value(row, column) if column in self.table.columns else None
 
+    def percent(self, row: Row, column: str) -> float | None:
+        """A share of 0 to 100 % in a column that need not be there."""
+        value = self.optional(row, column)
+        if value is not None and not 0 <= value <= 100:
+            self.fault(row, column, f"{value:g}; it must be 0 to 100 %")
+            return None
+        return value
+
     def length(self, row: Row, quantity: str, default_m: float) -> float | None:
         """A length [m]; a column that names no unit is in the unit given."""
         if quantity in self.table.columns:

@@ -117,6 +117,7 @@ def read_density_tests(path: Path, *, material: str | None = None, length_m: flo
                 name=reader.first_text(row, NAME_COLUMNS),
                 group=reader.first_text(row, GROUP_COLUMNS),
                 method=reader.first_text(row, METHOD_COLUMNS),
+                oversize_percent=reader.percent(row, "oversize_percent"),
                 depth_m=reader.length(row, "depth", length_m),
                 easting=reader.optional(row, "easting"),
                 northing=reader.optional(row, "northing"),

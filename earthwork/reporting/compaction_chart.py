@@ -21,8 +21,13 @@ if TYPE_CHECKING:
     from earthwork.soils.card import SoilCard
     from earthwork.soils.curve import CompactionCurve
 
-#: Lines of equal saturation [%]: dash pattern and weight. 100 is zero air voids.
-_LINES: tuple[tuple[float, Any, float], ...] = ((100.0, "-", 1.4), (90.0, (0, (6, 2)), 0.9), (80.0, (0, (2, 2)), 0.9))
+#: Lines of equal saturation [%]: dash pattern, weight, and to which side of its end the name stands, so
+#: that the names of lines that run close keep apart. 100 is zero air voids.
+_LINES: tuple[tuple[float, Any, float, str], ...] = (
+    (100.0, "-", 1.4, "left"),
+    (90.0, (0, (6, 2)), 0.9, "center"),
+    (80.0, (0, (2, 2)), 0.9, "right"),
+)
 
 State = tuple[float, float]  #: (water content [%], dry density [kg/m³])
 
@@ -179,24 +184,26 @@ def _draw_saturation(axes: Axes, content: ChartContent, factor: float, span: tup
     import numpy as np
 
     water = np.linspace(span[0], span[1], 200)
-    for saturation, dashes, width in _LINES:
+    for saturation, dashes, width, side in _LINES:
         density = phase.dry_density_at_saturation(water, content.specific_gravity, saturation)
         axes.plot(water, density / factor, color=colors.FAINT, linewidth=width, linestyle=dashes, zorder=2)
-        _name_line(axes, "zero air voids" if saturation == 100 else f"{saturation:g} %", water, density, factor)
+        name = "zero air voids" if saturation == 100 else f"{saturation:g} %"
+        _name_line(axes, name, (water, density), factor, side)
     axes.plot([], [], color=colors.FAINT, linewidth=1.2, label="equal saturation")
 
 
-def _name_line(axes: Axes, name: str, water: np.ndarray, density: np.ndarray, factor: float) -> None:
+def _name_line(axes: Axes, name: str, line: tuple[np.ndarray, np.ndarray], factor: float, side: str) -> None:
     """Name a line of saturation where it comes in: at the top of the chart, else at its left end."""
     import numpy as np
 
+    water, density = line
     top = axes.get_ylim()[1] * factor
     # The lines fall to the right, so the top is crossed where the reversed density reaches it.
     at_top = bool(density[0] > top > density[-1])
     place = (float(np.interp(top, density[::-1], water[::-1])), top) if at_top else (float(water[0]), float(density[0]))
     axes.annotate(
         name, (place[0], place[1] / factor), xytext=(0, 2) if at_top else (4, 2), textcoords="offset points",
-        ha="center" if at_top else "left", va="bottom", fontsize=7.5, color=colors.FAINT,
+        ha=side if at_top else "left", va="bottom", fontsize=7.5, color=colors.FAINT,
         path_effects=halo(), zorder=3, annotation_clip=True,
     )  # fmt: skip
 

@@ -34,6 +34,7 @@ _ROWS: tuple[tuple[str, str] | None, ...] = (
     ("bank_percent_of_maximum", "bank, of the maximum"),
     ("fill_relative_density_percent", "relative density, fill"),
     ("bank_relative_density_percent", "relative density, bank"),
+    ("lee_singh_relative_density_percent", "relative density, Lee and Singh"),
     None,
     ("shrinkage_factor", "compacted per bank volume"),
     ("shrinkage_factor_sd", "± standard deviation"),

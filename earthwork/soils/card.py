@@ -15,6 +15,7 @@ from typing import TYPE_CHECKING, Any, Literal
 
 from earthwork.errors import SoilError, Warning
 from earthwork.soils import phase, states
+from earthwork.soils.relative_density import lee_singh_relative_density
 
 if TYPE_CHECKING:
     from earthwork.site import Site
@@ -137,6 +138,16 @@ class SoilCard:
     def shrinkage_factor_sd(self) -> float | None:
         """Standard deviation of the shrinkage factor; None when no test and no range stands behind it."""
         return None if self.uncertainty is None else self.uncertainty.sd
+
+    @property
+    def lee_singh_relative_density_percent(self) -> float | None:
+        """Relative density of the fill by correlation, for a clean sand or gravel with no minimum density tested."""
+        soil, percent = self.classification, self.expected_compaction_percent
+        if soil is None or soil.symbol[0] not in "GS" or soil.symbol[1] not in "WP" or percent is None:
+            return None
+        if self.fill_relative_density_percent is not None or not 80 <= percent <= 100:
+            return None
+        return lee_singh_relative_density(percent)
 
     # --- phases -----------------------------------------------------------------------------------
 
@@ -264,6 +275,7 @@ class SoilCard:
             "expected_compaction_from": self.expected_compaction_from,
             "fill_relative_density_percent": self.fill_relative_density_percent,
             "bank_relative_density_percent": self.bank_relative_density_percent,
+            "lee_singh_relative_density_percent": self.lee_singh_relative_density_percent,
             "target_water_content_percent": self.target_water_content_percent,
             "window_water_content_percent": _listed(self.window_water_content_percent),
             "bank_water_content_percent": self.bank_water_content_percent,

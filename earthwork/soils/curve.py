@@ -19,7 +19,7 @@ import numpy as np
 from earthwork.errors import SoilError, Warning
 from earthwork.soils import phase
 from earthwork.soils.curve_forms import FORMS, Fit, fit_form
-from earthwork.soils.records import CurvePoint
+from earthwork.soils.records import CurvePoint, DensityTest
 
 Form = Literal["auto", "parabola", "cubic", "bounded"]
 #: Least number of different water contents on a curve (method: at least four points).
@@ -165,7 +165,7 @@ def _label(point: CurvePoint) -> str:
 
 
 def _names(left_out: Sequence[tuple[CurvePoint, str]]) -> str:
-    return "; ".join(_label(point) for point, _ in left_out)
+    return "; ".join(f"{_label(point)} ({reason})" for point, reason in left_out)
 
 
 def _possible(
@@ -187,14 +187,14 @@ def _possible(
     for point in points:
         saturation = phase.saturation_percent(point.dry_density_kg_m3, point.water_content_percent, gravity)
         if saturation > SATURATION_LIMIT:
-            left_out.append((point, f"saturation {saturation:.1f} %, beyond zero air voids"))
+            left_out.append((point, beyond_zero_air_voids(point, saturation, gravity)))
             continue
         if saturation > 100:
             doubtful.append(f"{_label(point)} ({saturation:.1f} %)")
         used.append(point)
     warnings = []
     if left_out:
-        listed = "; ".join(f"{_label(point)} ({reason})" for point, reason in left_out)
+        listed = _names(left_out)
         warnings.append(
             Warning(
                 "points-left-out",
@@ -210,6 +210,14 @@ def _possible(
             )
         )
     return used, left_out, warnings
+
+
+def beyond_zero_air_voids(test: CurvePoint | DensityTest, saturation: float, gravity: float) -> str:
+    """Why a test is left out, with the likely slip."""
+    reason = f"saturation {saturation:.1f} %, beyond zero air voids"
+    if phase.possible_if_moist(test.dry_density_kg_m3, test.water_content_percent or 0.0, gravity):
+        reason += "; possible if this is the moist density"
+    return reason
 
 
 def _no_peak(

@@ -10,7 +10,7 @@ from earthwork.errors import SoilError, Warning
 from earthwork.soils import phase, states
 from earthwork.soils.classify import Classification, classify, grading_of
 from earthwork.soils.context import Context
-from earthwork.soils.curve import SATURATION_LIMIT
+from earthwork.soils.curve import SATURATION_LIMIT, beyond_zero_air_voids
 from earthwork.soils.in_place import TestSet, summarise_tests
 from earthwork.soils.records import DensityTest
 from earthwork.soils.uncertainty import Part
@@ -139,8 +139,7 @@ def _possible_bank(context: Context, bank: Bank, gravity: float) -> Bank | None:
     if saturation <= SATURATION_LIMIT:
         context.warn("bank-oversaturated", "bank", text + ". The specific gravity is probably a little low")
         return bank
-    dried = phase.dry_density(dry, water)
-    if context.material.bank.dry_density is not None and phase.saturation_percent(dried, water, gravity) <= 100:
+    if context.material.bank.dry_density is not None and phase.possible_if_moist(dry, water, gravity):
         text += f". If {context.density(dry)} is the moist density, write it as bank.moist_density"
     else:
         text += ". Check the density, the water content and the specific gravity"
@@ -169,7 +168,7 @@ def possible_tests(
         water = test.water_content_percent
         saturation = 0.0 if water is None else phase.saturation_percent(test.dry_density_kg_m3, water, gravity)
         if saturation > SATURATION_LIMIT:
-            left_out.append((test, f"saturation {saturation:.1f} %, beyond zero air voids"))
+            left_out.append((test, beyond_zero_air_voids(test, saturation, gravity)))
             continue
         if saturation > 100:
             doubtful.append(f"{test.label} ({saturation:.1f} %)")

@@ -225,3 +225,14 @@ def combined_specific_gravity(percent_second: float, first: float, second: float
     _need_positive("specific gravity", np.array([first, second]))
     share = percent_second / 100
     return 1 / ((1 - share) / first + share / second)
+
+
+def possible_if_moist(density: float, water_content_percent: float, specific_gravity: float) -> bool:
+    """Whether a state beyond zero air voids would be possible if its density were moist: a common slip.
+
+    >>> possible_if_moist(2050.0, 15.0, 2.7), possible_if_moist(2650.0, 40.0, 2.7)
+    (True, False)
+    """
+    dried = density / (1 + water_content_percent / 100)
+    grain = specific_gravity * WATER_DENSITY_KG_M3
+    return dried < grain and saturation_percent(dried, water_content_percent, specific_gravity) <= 100

@@ -7,13 +7,14 @@ from dataclasses import dataclass
 from typing import Any
 
 from earthwork.errors import SoilError, Warning
-from earthwork.site.model import ByDepth, Fill
-from earthwork.soils import phase, states
+from earthwork.site.model import ByDepth, Fill, Oversize
+from earthwork.soils import oversize, phase, states
 from earthwork.soils.card import Band
 from earthwork.soils.context import Context
 from earthwork.soils.in_place import TestSet, TestSummary, summarise, summarise_tests
 from earthwork.soils.inputs import Bank, even_sd, possible_tests
 from earthwork.soils.peak import Peak
+from earthwork.soils.records import DensityTest
 from earthwork.soils.relative_density import dry_density_of_relative
 from earthwork.soils.uncertainty import Part
 from earthwork.soils.window import PlacingWindow
@@ -33,6 +34,7 @@ class FieldLog:
 
     tests: TestSet
     compaction: TestSummary
+    percents: tuple[float, ...]  #: of each test in ``tests.tests``, by the maximum of its own soil
     required_percent: float
     short: tuple[str, ...]  #: labels of tests under the required compaction
 
@@ -201,7 +203,7 @@ def _field_log(context: Context, peak: Peak, required: float, gravity: float) ->
         context.fault("field.tests", "no test is left; check that densities are dry, and the specific gravity")
         return None
     tests = summarise_tests(used, left_out)
-    percents = [100 * test.dry_density_kg_m3 / peak.dry_density for test in used]
+    percents = [100 * test.dry_density_kg_m3 / maximum_of(context, peak, test) for test in used]
     compaction = summarise(percents, [test.label for test in used])
     short = tuple(test.label for test, percent in zip(used, percents, strict=True) if percent < required)
     if compaction.outliers:
@@ -212,7 +214,21 @@ def _field_log(context: Context, peak: Peak, required: float, gravity: float) ->
             "tests-short", "field.tests",
             f"{len(short)} of {len(used)} tests are under the required {required:g} %: {listed}",
         )  # fmt: skip
-    return FieldLog(tests=tests, compaction=compaction, required_percent=required, short=short)
+    return FieldLog(
+        tests=tests, compaction=compaction, percents=tuple(percents), required_percent=required, short=short
+    )
+
+
+def maximum_of(context: Context, peak: Peak, test: DensityTest) -> float:
+    """The maximum dry density that a field test is held to: corrected for its own oversize where it tells it."""
+    if test.oversize_percent is None:
+        return peak.dry_density
+    coarse = context.material.oversize or Oversize()
+    try:
+        return oversize.whole_dry_density(peak.laboratory_dry_density, test.oversize_percent, coarse.specific_gravity)
+    except SoilError as error:
+        context.fault("field.tests", f"{test.label}: {error}")
+        return peak.dry_density
 
 
 def _compare_with_log(context: Context, stated: float, log: FieldLog) -> None:

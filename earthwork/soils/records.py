@@ -29,6 +29,7 @@ class DensityTest:
     name: str = ""
     group: str = ""  #: stratum, lift or area that the crew notes
     method: str = ""
+    oversize_percent: float | None = None  #: in this test's own soil; None takes the material's
     depth_m: float | None = None
     easting: float | None = None
     northing: float | None = None

@@ -67,6 +67,19 @@ def lee_singh_relative_compaction(relative_density_percent: float) -> float:
     return 80 + 0.2 * relative_density_percent
 
 
+def lee_singh_relative_density(relative_compaction_percent: float) -> float:
+    """Relative density [%] by the same correlation: Dr = 5 (Rc − 80), for Rc of 80 to 100 % ([LEE-SINGH]).
+
+    >>> lee_singh_relative_density(95.0)
+    75.0
+    """
+    if not 80 <= relative_compaction_percent <= 100:
+        raise SoilError(
+            f"relative compaction is {relative_compaction_percent:g} %; the correlation holds for 80 to 100 %"
+        )
+    return 5 * (relative_compaction_percent - 80)
+
+
 def _check(min_dry_density: float, max_dry_density: float) -> None:
     if not 0 < min_dry_density < max_dry_density:
         raise SoilError(

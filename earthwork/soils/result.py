@@ -8,6 +8,8 @@ from typing import TYPE_CHECKING, Any
 
 from earthwork.results import Result
 from earthwork.soils.card import SoilCard
+from earthwork.soils.records import DensityTest
+from earthwork.units import WATER_DENSITY_KG_M3
 
 if TYPE_CHECKING:
     import pandas
@@ -67,23 +69,32 @@ def _point_rows(card: SoilCard) -> Iterator[dict[str, Any]]:
 
 
 def _test_rows(card: SoilCard) -> Iterator[dict[str, Any]]:
-    sets = (("bank", card.bank_tests), ("fill", card.field_log.tests if card.field_log else None))
-    for place, tests in sets:
-        if tests is None:
-            continue
-        for test, reason in [*((t, None) for t in tests.tests), *tests.left_out]:
-            density, water = test.dry_density_kg_m3, test.water_content_percent
-            top = card.max_dry_density_kg_m3
-            yield {
-                "material": card.material,
-                "state": place,
-                "test": test.label,
-                "group": test.group or None,
-                "method": test.method or None,
-                "depth_m": test.depth_m,
-                "water_content_percent": water,
-                "dry_density_kg_m3": density,
-                "relative_compaction_percent": None if top is None else 100 * density / top,
-                "saturation_percent": card.saturation_percent_at(density, water),
-                "left_out": reason,
-            }
+    top, log = card.max_dry_density_kg_m3, card.field_log
+    if card.bank_tests is not None:
+        used = [(t, None if top is None else 100 * t.dry_density_kg_m3 / top, None) for t in card.bank_tests.tests]
+        out = [(t, None, reason) for t, reason in card.bank_tests.left_out]
+        yield from (_test_row(card, "bank", *entry) for entry in [*used, *out])
+    if log is not None:
+        placed = [(t, percent, None) for t, percent in zip(log.tests.tests, log.percents, strict=True)]
+        out = [(t, None, reason) for t, reason in log.tests.left_out]
+        yield from (_test_row(card, "fill", *entry) for entry in [*placed, *out])
+
+
+def _test_row(
+    card: SoilCard, state: str, test: DensityTest, percent: float | None, left_out: str | None
+) -> dict[str, Any]:
+    density, water = test.dry_density_kg_m3, test.water_content_percent
+    possible = density < card.specific_gravity * WATER_DENSITY_KG_M3
+    return {
+        "material": card.material,
+        "state": state,
+        "test": test.label,
+        "group": test.group or None,
+        "method": test.method or None,
+        "depth_m": test.depth_m,
+        "water_content_percent": water,
+        "dry_density_kg_m3": density,
+        "relative_compaction_percent": percent,
+        "saturation_percent": card.saturation_percent_at(density, water) if possible else None,
+        "left_out": left_out,
+    }

@@ -182,6 +182,33 @@ def test_oversize_with_tests_scales_the_error(tmp_path: Path) -> None:
         card_of(tmp_path, {**noisy, "oversize": {**coarse, "percent": 35}})
 
 
+def test_field_tests_with_their_own_oversize(tmp_path: Path) -> None:
+    # Laboratory 1,760 on the finer fraction; with 20 % of 2.65: 1 / (0.8/1760 + 0.2/2650) = 1886.8.
+    (tmp_path / "own.csv").write_text(
+        "test,dry_density_kg_m3,oversize_percent\nA,1698.4,0\nB,1800,20\nC,1700,\n", encoding="utf-8"
+    )
+    card = card_of(tmp_path, {**TESTED, "field": {"tests": "own.csv"}})
+    assert card.field_log is not None
+    whole = 1 / (0.8 / 1760 + 0.2 / 2650)
+    assert card.field_log.percents == pytest.approx((96.5, 100 * 1800 / whole, 100 * 1700 / 1760), rel=1e-6)
+    rows = earthwork.soil(site_with(tmp_path, {**TESTED, "field": {"tests": "own.csv"}})).tables()["tests"]
+    assert list(rows[rows["state"] == "fill"]["relative_compaction_percent"]) == pytest.approx(card.field_log.percents)
+    (tmp_path / "own.csv").write_text("test,dry_density_kg_m3,oversize_percent\nA,1698.4,55\n", encoding="utf-8")
+    with pytest.raises(SoilError, match=r"field\.tests: A: oversize: percent is 55 %; it must be 0 to 40 %"):
+        card_of(tmp_path, {**TESTED, "field": {"tests": "own.csv"}})
+
+
+def test_lee_and_singh_is_named_and_only_where_it_belongs() -> None:
+    sand = {"No. 4": 100, "2 mm": 95, "0.4 mm": 60, "0.3 mm": 30, "0.2 mm": 8, "No. 200": 2}
+    clean = soil_cards(site(changed(gradation=sand), fill={**FILL, "expected_compaction": 95.0}))["loess"]
+    assert clean.lee_singh_relative_density_percent == pytest.approx(75)
+    assert clean.to_dict()["lee_singh_relative_density_percent"] == pytest.approx(75)
+    assert soil_cards(site(GRADED))["loess"].lee_singh_relative_density_percent is None
+    tested = {**SAND, "gradation": sand}
+    fill = {"relative_compaction": 95, "relative_density": 70, "expected_relative_density": 75}
+    assert soil_cards(site(tested, fill=fill))["loess"].lee_singh_relative_density_percent is None
+
+
 def test_points_at_hand_need_no_file() -> None:
     points = tuple(CurvePoint(w, 1760 - 6 * (w - 16) ** 2) for w in (11, 13, 15, 17, 19))
     bank = tuple(DensityTest(d, 7.5, name=str(d)) for d in (1420, 1440))

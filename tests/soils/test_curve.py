@@ -138,6 +138,12 @@ def test_saturation_of_100_to_103_only_warns(saturation: float, kept: int, code:
     assert code in codes(curve)
 
 
+def test_moist_densities_taken_for_dry_are_suspected() -> None:
+    moist = [CurvePoint(w, (1800 - 8 * (w - 14) ** 2) * (1 + w / 100)) for w in (10, 12, 13, 15, 17)]
+    with pytest.raises(SoilError, match=r"\(3 left out: .*possible if this is the moist density"):
+        fit_curve(moist, specific_gravity=2.7)
+
+
 def test_few_points_on_a_side_warn() -> None:
     curve = fit_curve(parabola(14.0, 1800, 8, [10, 11, 12, 13, 16]), specific_gravity=2.7)
     assert "few-points" in codes(curve)

@@ -195,6 +195,7 @@ def test_relative_density_and_compaction() -> None:
 @pytest.mark.parametrize(("density", "compaction"), table.LEE_SINGH.items())
 def test_lee_and_singh(density: float, compaction: float) -> None:
     assert relative_density.lee_singh_relative_compaction(density) == pytest.approx(compaction)
+    assert relative_density.lee_singh_relative_density(compaction) == pytest.approx(density)
 
 
 def test_scopes_of_the_standards() -> None:
