@@ -22,6 +22,7 @@ _HOME = {
     "balance": "earthwork.plan.balance",
     "pads": "earthwork.plan.pads",
     "report": "earthwork.reporting.report.run",
+    "haul": "earthwork.plan.haul",
     "EarthworkError": "earthwork.errors",
 }
 __all__ = ["__version__", *_HOME]

@@ -17,7 +17,7 @@ import numpy as np
 
 from earthwork.errors import PlanError
 from earthwork.plan.transport_costs import Array, Costs
-from earthwork.plan.transport_cut import CLOSING_ERROR, name_infeasible
+from earthwork.plan.transport_cut import CLOSING_ERROR, TransportInfeasible, name_infeasible
 
 #: Moves (rows × columns) up to which the whole matrix of costs is held in memory; 40 bytes each in the
 #: solver.
@@ -123,9 +123,15 @@ def solve_transport(
         assert weight is not None
         return solve_linear_program(supply, need, costs, weight, spare_rows, spare_columns)
     by_row, by_column = factors[0][costs.row_class], factors[1][costs.column_class]
-    network = _solve_network(
-        supply * by_row, need / by_column, costs.scaled(factors[0]), spare_rows, spare_columns
-    )
+    try:
+        network = _solve_network(
+            supply * by_row, need / by_column, costs.scaled(factors[0]), spare_rows, spare_columns
+        )
+    except TransportInfeasible as error:
+        unit = by_column[error.columns[0]] if error.shortage else 1 / by_row[error.rows[0]]
+        raise TransportInfeasible(
+            rows=error.rows, columns=error.columns, amount=error.amount * float(unit), shortage=error.shortage
+        ) from None
     certificate = certify(network)
     return _plan(network, certificate, by_row, by_column)
 

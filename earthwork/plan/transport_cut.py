@@ -15,8 +15,8 @@ class TransportInfeasible(PlanError):
     """Supplies and needs do not fit: the columns can be served by the rows only, and those fall short by
     ``amount``.
 
-    ``shortage`` is true where needs lack a supply, false where supplies lack a place to go. The amount is in
-    units of the rows times their factor (compacted-equivalent volume in a haul plan).
+    ``shortage`` is true where needs lack a supply, false where supplies lack a place to go. The amount is in the unit of
+    the first of the columns that lack, or of the first of the rows.
     """
 
     def __init__(self, *, rows: Array, columns: Array, amount: float, shortage: bool) -> None:
@@ -52,12 +52,12 @@ def name_infeasible(supply: Array, need: Array, costs: Costs) -> TransportInfeas
 
 def _cut(plan: Array, allowed: Array, need: Array, supply: Array) -> tuple[Array, Array, float, bool]:
     """Columns that lack a supply, the rows that could help, the lack, and whether slack is out of it."""
-    wanting = np.asarray(np.where(allowed, 0.0, plan).sum(axis=0) > CLOSING_ERROR * supply.sum())
+    wanting: Array = np.asarray(np.where(allowed, 0.0, plan).sum(axis=0) > CLOSING_ERROR * supply.sum())
     wanting[-1] = False
     helping = np.zeros(len(supply), bool)
     while True:
         reached: Array = allowed[:, wanting].any(axis=1)
-        more: Array = wanting | ((plan > 0) & allowed)[reached].any(axis=0)
+        more: Array = np.asarray(wanting) | ((plan > 0) & allowed)[reached].any(axis=0)
         if (more == wanting).all() and (reached == helping).all():
             break
         wanting, helping = more, reached

@@ -1,0 +1,270 @@
+"""From sources, sinks and costs to the cheapest plan and the hauls that it is made of."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from earthwork.errors import PlanError
+from earthwork.plan import phases
+from earthwork.plan.haul_costs import HaulCosts
+from earthwork.plan.haul_errors import no_way_error, shortage_error, surplus_error
+from earthwork.plan.haul_places import Places, Sink, Source
+from earthwork.plan.transport import TransportPlan, solve_transport
+from earthwork.plan.transport_costs import Costs
+from earthwork.plan.transport_cut import TransportInfeasible
+
+Array = np.ndarray
+
+#: Plans with more pairs, over straight distances, keep no matrix of them.
+_MANY_PAIRS = 4_000_000
+
+
+@dataclass(frozen=True, kw_only=True)
+class Leg:
+    """One haul of a material from place to place; earth that waits on a stockpile makes two."""
+
+    source: int  #: index of the source that the earth comes from
+    sink: int  #: index of the sink that it ends in
+    start: tuple[float, float]
+    end: tuple[float, float]
+    from_name: str
+    to_name: str
+    mass_kg: float
+    phase: int
+    pile: int | None = None  #: index of the stockpile that it starts from
+
+
+@dataclass(frozen=True, kw_only=True)
+class HaulPlan:
+    """The cheapest plan of a site.
+
+    ``transport`` is in kg by source and m³ by sink; ``cost`` is all money: hauls, rehandling, prices and openings.
+    """
+
+    transport: TransportPlan
+    legs: tuple[Leg, ...]
+    cost: float
+    opened: tuple[str, ...]  #: places with an opening cost that are used
+
+
+def plan_haul(costs: HaulCosts) -> HaulPlan:
+    """The cheapest plan.
+
+    Raises:
+        PlanError: none exists; the message names what lacks what.
+    """
+    return _Planner(costs).plan()
+
+
+class _Planner:
+    def __init__(self, costs: HaulCosts) -> None:
+        self.costs = costs
+        self.places: Places = costs.places
+        self.every: list[Source | Sink] = [*costs.places.sources, *costs.places.sinks]
+        table, row_class, column_class, scale = self._classes()
+        self.scale = scale
+        self.moves = self._moves(table, row_class, column_class)
+        self.weight = self._weights()
+
+    def plan(self) -> HaulPlan:
+        transport, opened = self._with_openings()
+        fees = sum(place.opening for place in self.every if place.name in opened)
+        return HaulPlan(
+            transport=transport, legs=tuple(self._legs(transport)), cost=transport.cost + fees, opened=opened
+        )
+
+    # --- the problem
+    # ---------------------------------------------------------------------------------------------------
+
+    def _classes(self) -> tuple[Array, Array, Array, Array]:
+        """Prices by class of source and of sink, the classes, and the scale of each sink.
+
+        Sinks whose volumes stand in one ratio to those of another, for all materials, are of its class and count in its
+        volume: so bands of compaction stay a pure network where all soils change alike.
+        """
+        sources, sinks = self.places.sources, self.places.sinks
+        row_keys = [(s.material, s.kind, s.cost_per_kg, s.phase) for s in sources]
+        rows = list(dict.fromkeys(row_keys))
+        kinds: list[Sink] = []
+        column_class, scale = np.zeros(len(sinks), np.int64), np.ones(len(sinks))
+        lookup: dict[tuple, list[int]] = {}
+        for j, sink in enumerate(sinks):
+            like = (sink.kind == "fill", tuple(sink.m3_per_kg), sink.phase, tuple(sink.cost_per_kg.items()))
+            for k in lookup.setdefault(like, []):
+                ratio = _ratio(sink, kinds[k])
+                if ratio is not None:
+                    column_class[j], scale[j] = k, ratio
+                    break
+            else:
+                lookup[like].append(len(kinds))
+                column_class[j] = len(kinds)
+                kinds.append(sink)
+        table = np.full((len(rows), len(kinds)), np.inf)
+        for c, sink in enumerate(kinds):
+            for r, (material, kind, price, phase) in enumerate(rows):
+                late = phase is not None and sink.phase is not None and phase > sink.phase
+                if material in sink.m3_per_kg and not late and (kind == "cut" or sink.kind == "fill"):
+                    table[r, c] = price + sink.cost_per_kg.get(material, 0.0)
+        self.kinds, self.row_materials = kinds, [row[0] for row in rows]
+        return table, np.array([rows.index(key) for key in row_keys], np.int64), column_class, scale
+
+    def _weights(self) -> Array:
+        """Volume that a kilogram makes, by class of source and of sink."""
+        return np.array([[sink.m3_per_kg.get(m, 1.0) for sink in self.kinds] for m in self.row_materials])
+
+    def _moves(self, table: Array, row_class: Array, column_class: Array) -> Costs:
+        """Cost of a kilogram from each source to each sink."""
+        costs = self.costs
+        n, m = len(row_class), len(column_class)
+        straight = costs.haul.distance == "straight" and not costs.by_time
+        if straight and n * m > _MANY_PAIRS and not costs.ways.areas.phases:
+            rate = costs.price("") * costs.haul.straight_factor
+            return Costs(
+                rate=np.full(n, rate), way=np.ones(m), table=table, row_class=row_class, column_class=column_class,
+                row_place=costs.from_place, column_place=costs.to_place,
+            )  # fmt: skip
+        return Costs(
+            rate=np.ones(n), way=np.ones(m), table=table, row_class=row_class, column_class=column_class,
+            distance=costs.per_kg(),
+        )  # fmt: skip
+
+    # --- solving
+    # -------------------------------------------------------------------------------------------------------
+
+    def _with_openings(self) -> tuple[TransportPlan, tuple[str, ...]]:
+        """The cheapest plan with what places cost to be used at all: branch and bound over those places.
+
+        A plan in which undecided places are free to open bounds what any choice of them costs.
+        """
+        fee = {place.name: place.opening for place in self.every if place.opening > 0}
+        best: tuple[float, TransportPlan, tuple[str, ...]] | None = None
+        failure: PlanError | None = None
+        waiting: list[tuple[frozenset[str], frozenset[str]]] = [(frozenset(), frozenset())]
+        while waiting:
+            opened, closed = waiting.pop()
+            try:
+                plan = self._solve(closed)
+            except PlanError as error:
+                failure = failure or error
+                continue
+            if best is not None and plan.cost + sum(fee[name] for name in opened) >= best[0]:
+                continue
+            used = self._used(plan) & fee.keys()
+            total = plan.cost + sum(fee[name] for name in used)
+            if best is None or total < best[0]:
+                best = total, plan, tuple(name for name in fee if name in used)
+            undecided = used - opened
+            if undecided:
+                name = max(undecided, key=lambda n: (fee[n], n))
+                waiting += [(opened | {name}, closed), (opened, closed | {name})]
+        if best is None:
+            assert failure is not None
+            raise failure
+        return best[1], best[2]
+
+    def _used(self, plan: TransportPlan) -> set[str]:
+        return {self.places.sources[i].name for i in plan.rows} | {self.places.sinks[j].name for j in plan.columns}
+
+    def _solve(self, closed: frozenset[str]) -> TransportPlan:
+        sources, sinks = self.places.sources, self.places.sinks
+        supply = np.array([0.0 if s.name in closed else s.mass_kg for s in sources])
+        need = np.array([0.0 if s.name in closed else s.volume_m3 for s in sinks]) / self.scale
+        try:
+            plan = solve_transport(
+                supply, need, self.moves, weight=self.weight, spare_rows=np.array([s.spare for s in sources], bool),
+                spare_columns=np.array([s.spare for s in sinks], bool),
+            )  # fmt: skip
+        except TransportInfeasible as error:
+            raise self._explained(error) from None
+        return replace(plan, unfilled=plan.unfilled * self.scale, column_marginal=plan.column_marginal / self.scale)
+
+    def _explained(self, error: TransportInfeasible) -> PlanError:
+        """What lacks what, by name, and by how much."""
+        shut = self._shut_in()
+        if shut is not None:
+            return shut
+        sources = [self.places.sources[i] for i in error.rows]
+        sinks = [self.places.sinks[j] for j in error.columns]
+        cards, units = self.costs.cards, self.costs.ways.units
+        if error.shortage:
+            return shortage_error(sinks, sources, error.amount * float(self.scale[error.columns[0]]), cards, units)
+        return surplus_error(sources, sinks, error.amount, cards, units)
+
+    def _shut_in(self) -> PlanError | None:
+        """Blocks that barriers close in on all sides."""
+        moves = self.moves
+        if moves.distance is None:
+            return None
+        allowed = np.isfinite(moves.table)[moves.row_class][:, moves.column_class]
+        open_ = allowed & np.isfinite(moves.distance)
+        pairs: list[tuple[Sequence[Source | Sink], int]] = [(self.places.sources, 1), (self.places.sinks, 0)]
+        for places, axis in pairs:
+            shut = allowed.any(axis=axis) & ~open_.any(axis=axis)
+            names = [place.name for place, s in zip(places, shut, strict=True) if s and not place.spare]
+            if names:
+                return no_way_error(names, out=axis == 1)
+        return None
+
+    # --- legs
+    # ----------------------------------------------------------------------------------------------------------
+
+    def _legs(self, plan: TransportPlan) -> list[Leg]:
+        """The hauls of a plan; those of a material between the same places in a phase are one."""
+        costs = self.costs
+        phase = phases.hauled_in(costs.dug, costs.filled)[plan.rows, plan.columns]
+        waiting = phases.waits(costs.dug, costs.filled)[plan.rows, plan.columns]
+        pile = costs.rounds().pile[plan.rows, plan.columns] if waiting.any() else np.zeros(len(phase), np.int64)
+        self._check_piles(plan, waiting, pile)
+        legs: dict[tuple, Leg] = {}
+        for k, (i, j) in enumerate(zip(plan.rows.tolist(), plan.columns.tolist(), strict=True)):
+            source, sink = self.places.sources[i], self.places.sinks[j]
+            whole = Leg(
+                source=i, sink=j, start=source.place, end=sink.place, from_name=source.name, to_name=sink.name,
+                mass_kg=float(plan.amounts[k]), phase=int(phase[k]),
+            )  # fmt: skip
+            for leg in self._over_pile(whole, int(pile[k])) if waiting[k] else [whole]:
+                key = (leg.from_name, leg.to_name, source.material, leg.phase)
+                known = legs.get(key)
+                legs[key] = leg if known is None else replace(known, mass_kg=known.mass_kg + leg.mass_kg)
+        return list(legs.values())
+
+    def _over_pile(self, whole: Leg, pile: int) -> list[Leg]:
+        name = self.costs.piles[pile].name
+        east, north = self.costs.pile_place[pile].tolist()
+        dug = int(self.costs.dug[whole.source])
+        return [
+            replace(whole, end=(east, north), to_name=name, phase=dug),
+            replace(whole, start=(east, north), from_name=name, pile=pile),
+        ]
+
+    def _check_piles(self, plan: TransportPlan, waiting: Array, pile: Array) -> None:
+        """Refuse a plan that heaps more on a stockpile than it holds."""
+        if not waiting.any():
+            return
+        costs = self.costs
+        i, j = plan.rows[waiting], plan.columns[waiting]
+        density = np.array([costs.cards[s.material].loose_dry_density_kg_m3 for s in self.places.sources])
+        count = len(costs.ways.areas.phases)
+        held = phases.stored(
+            pile[waiting], costs.dug[i], costs.filled[j], plan.amounts[waiting] / density[i], len(costs.piles), count
+        )
+        unit, label = costs.ways.units.factor("soil_volume"), costs.ways.units.label("soil_volume")
+        for site, volumes in zip(costs.piles, held, strict=True):
+            worst = int(volumes.argmax())
+            if site.capacity is not None and volumes[worst] > site.capacity * (1 + 1e-9):
+                raise PlanError(
+                    f'haul: stockpile "{site.name}" would hold {volumes[worst] / unit:,.0f} {label} (loose) after phase '
+                    f"{costs.ways.areas.phases[worst]}; its capacity is {site.capacity / unit:,.0f} {label}, too small by "
+                    f"{(volumes[worst] - site.capacity) / unit:,.0f}. Raise it, or add a [[stockpile]]"
+                )
+
+
+def _ratio(sink: Sink, other: Sink) -> float | None:
+    """By what the volumes of one sink are to be multiplied to be those of another; None where materials differ."""
+    ratios = [weight / other.m3_per_kg[material] for material, weight in sink.m3_per_kg.items()]
+    if not ratios:
+        return 1.0
+    return ratios[0] if max(ratios) - min(ratios) <= 1e-12 * ratios[0] else None
