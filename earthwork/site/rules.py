@@ -62,6 +62,10 @@ def _soils(model: SiteModel) -> Iterator[str]:
         given = [key for key, there in ways.items() if there]
         if len(given) > 1:
             yield (f"material.{name}: {' and '.join(given)} are given; keep one, each says what it becomes as fill")
+        if material.loss_percent >= 100:
+            yield (
+                f"material.{name}.loss_percent = {material.loss_percent:g}: it must be below 100; nothing would be left"
+            )
         if (material.liquid_limit is None) != (material.plastic_limit is None):
             yield f"material.{name}: give both liquid_limit and plastic_limit, or neither (non-plastic)"
         elif (material.plastic_limit or 0) > (material.liquid_limit or 0):

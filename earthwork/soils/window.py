@@ -145,7 +145,8 @@ class PlacingWindow:
         Raises:
             SoilError: with the reason.
         """
-        if self.polygon.is_empty:
+        # A window of one water content has no area, and its target may still lie on it.
+        if self.polygon.is_empty and (self.target is None or self.faults(*self.target)):
             raise SoilError(
                 f"{where}: no state fits the placing window: at {self.min_dry_density_kg_m3:.0f} kg/m³ and "
                 "denser, its water "

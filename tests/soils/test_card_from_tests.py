@@ -280,6 +280,7 @@ def test_group_consequences_and_suction() -> None:
         ({"gradation": {"No. 4": 160}}, "percent passing must be a number from 0 to 100"),
         ({"gradation": {"sieve 4": 60}}, "'sieve 4' is not a sieve"),
         ({"gradation": 12}, "it must be a table of sieve = percent passing"),
+        ({"loss_percent": 100}, "it must be below 100; nothing would be left"),
         ({"liquid_limit": 30.0}, "give both liquid_limit and plastic_limit"),
         ({"liquid_limit": 30.0, "plastic_limit": 31.0}, "it must be at most liquid_limit"),
         ({"relative_density": {"min_dry_density": 1800, "max_dry_density": 1700}}, "give min_dry_density below"),

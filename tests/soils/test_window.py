@@ -92,6 +92,15 @@ def test_windows_that_cannot_be(limits: dict, message: str) -> None:
         PlacingWindow(**given_limits).check("material.x")
 
 
+def test_a_window_of_one_water_content() -> None:
+    window = PlacingWindow(
+        min_dry_density_kg_m3=1672, specific_gravity=2.68, water_content_percent=(16, 16), target=(16.0, 1700.0)
+    )
+    window.check("material.x")
+    assert window.polygon.is_empty
+    assert window.contains(16.0, 1700.0)
+
+
 def test_outline_for_scripts_is_short_and_right() -> None:
     window = PlacingWindow(min_dry_density_kg_m3=1672, specific_gravity=2.68, water_content_percent=(15, 19))
     outline = window.to_dict()["outline"]
