@@ -138,3 +138,27 @@ def test_json_is_the_same_in_both_unit_systems(tmp_path, earthwork):
     us = earthwork("volumes", *files, "--units", "us").document
     assert metric["result"] == us["result"]
     assert (metric["display_units"], us["display_units"]) == ("metric", "us")
+
+
+@pytest.mark.parametrize(
+    "written",
+    ["100", '"100 lb/ft3"', '"1601.846337 kg/m3"', '"15.7087464 kN/m3"', '"2700 lb/yd3"', '"1.601846337 t/m3"'],
+)
+def test_density_units(tmp_path, earthwork, written):
+    """1 lb/ft³ is 16.01846337 kg/m³, 0.157087464 kN/m³ and 27 lb/yd³ (by definition of pound, foot and gravity)."""
+    write_raster(tmp_path / "a.tif", np.zeros((3, 3)))
+    text = f"""
+[ground]
+existing = "a.tif"
+finished = {{ level = 1.0 }}
+[material.clay]
+use = "waste"
+bank.dry_density = {written}
+loose.swell_percent = 25
+[fill]
+relative_compaction = 95
+expected_compaction = 97
+"""
+    (clay,) = earthwork("soil", write_site(tmp_path, text, units="us"), "--json").result["materials"]
+    assert clay["bank_dry_density_kg_m3"] == pytest.approx(1601.846337, rel=1e-8)
+    assert clay["load_factor"] == pytest.approx(0.8, rel=1e-12)
