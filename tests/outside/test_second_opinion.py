@@ -5,6 +5,8 @@ import itertools
 import numpy as np
 import pytest
 import shapely
+import trimesh
+from exactextract import exact_extract
 
 from tests.outside.conftest import centres, data, write_polygons, write_raster, write_site
 
@@ -44,12 +46,11 @@ def apart(shapes):
 
 def zonal_sums(raster, polygons):
     """Sum of value × share, and sum of shares, for each polygon, by exactextract."""
-    exactextract = pytest.importorskip("exactextract")
     features = [
         {"type": "Feature", "properties": {"id": i}, "geometry": shapely.geometry.mapping(p)}
         for i, p in enumerate(polygons)
     ]
-    rows = exactextract.exact_extract(str(raster), features, ["sum", "count"])
+    rows = exact_extract(str(raster), features, ["sum", "count"])
     return [(row["properties"]["sum"], row["properties"]["count"]) for row in rows]
 
 
@@ -153,18 +154,17 @@ name = "ID"
 
 def test_fill_of_a_node_grid_by_meshes(tmp_path, volumes):
     """A patch of four nodes holds the mean of the two ways to cut it into triangles: closed meshes, by trimesh."""
-    trimesh = pytest.importorskip("trimesh")
     r = np.random.default_rng(4)
     heights = 5 + r.uniform(0, 3, (9, 12))
     write_raster(tmp_path / "nodes.tif", heights, cell=4.0)
     text = '[ground]\nexisting = { file = "nodes.tif", sample = "node" }\nfinished = { level = 0.0 }'
     found = volumes(write_site(tmp_path, text))["total"]["cut_m3"]
-    both = [prism_mesh(trimesh, heights, 4.0, diagonal).volume for diagonal in (0, 1)]
+    both = [prism_mesh(heights, 4.0, diagonal).volume for diagonal in (0, 1)]
     assert both[0] != pytest.approx(both[1], rel=1e-6)
     assert found == pytest.approx(sum(both) / 2, rel=1e-12)
 
 
-def prism_mesh(trimesh, heights, cell, diagonal):
+def prism_mesh(heights, cell, diagonal):
     """A watertight body between the nodes and level 0."""
     rows, columns = heights.shape
     row, column = np.mgrid[:rows, :columns]
