@@ -57,9 +57,7 @@ def fill_areas(tally: LiftTally) -> tuple[FillArea, ...]:
     cell_m2 = tally.stack.grid.cell_area_m2
     volumes = np.bincount(labels.ravel(), weights=cells[..., VOLUME].ravel()) * cell_m2
     total = float(volumes.sum())
-    small = [
-        i for i in range(1, len(volumes)) if volumes[i] < _SMALL_M3 and volumes[i] < _SMALL_SHARE * total
-    ]
+    small = [i for i in range(1, len(volumes)) if volumes[i] < _SMALL_M3 and volumes[i] < _SMALL_SHARE * total]
     labels = np.where(np.isin(labels, small), 0, labels)
     order = sorted(set(np.unique(labels)) - {0}, key=lambda i: (-volumes[i], i))
     rank = np.full(len(volumes), -1)

@@ -19,13 +19,14 @@ from earthwork.quantities.lift_kernel import (
     LOWEST,
     VOLUME,
     count_columns,
+    count_plain,
 )
 from earthwork.quantities.tile import Tile
 
 _COARSE_M = 5.0  #: side of the cells on which fill areas are told apart, where the site is small enough
 _COARSE_CELLS = 160  #: at most along a side
+_CHUNK = 2048  #: cells across that are counted at one time
 _OVERVIEW_CELLS = 1024  #: of the map that lift outlines are drawn on, at most along a side
-_NONE = np.empty((0, 0))
 
 
 @dataclass(frozen=True)
@@ -98,7 +99,7 @@ class LiftTally:
         self.from_finished = np.array([start == "finished" for _, start in stack.bands_below_m], dtype=np.bool_)
         self.order = np.array(sorted(range(len(below)), key=lambda i: -below[i]), dtype=np.int64)
         self._cells: dict[int, np.ndarray] = {}  #: coarse row → (columns, 5)
-        self._overview: dict[int, np.ndarray] = {}  #: overview row → (columns, 3)
+        self._overview: list[tuple[int, int, np.ndarray, np.ndarray]] = []  #: row, column, bottoms, tops
         self._parts: list[Records] = []
         self._loose = 0
 
@@ -110,39 +111,86 @@ class LiftTally:
         if weight is not None and not weight.any():
             return
         window, coarse = tile.window, self.coarse
+        plain = not self.stack.excavations and not len(self.below) and weight is None
+        counted = self._count_plain(tile) if plain else self._count(tile, weight)
+        if counted is None:
+            return
+        records, cells = counted
+        self._parts.append(records)
+        self._loose += len(records.keys)
+        _add_cells(self._cells, window.row // coarse.side, window.column // coarse.side, cells, coarse.columns)
+        if self.overview_wanted:
+            self._sample(tile, weight)
+
+    def _count_plain(self, tile: Tile) -> tuple[Records, np.ndarray] | None:
+        """Count with the bins of a sample of the tile, and again with all that it needs should they not do."""
+        top, stripped, window = tile.subgrade, tile.stripped, tile.window
+        for step in (16, 1):
+            low = np.minimum(top[::step, ::step], stripped[::step, ::step])
+            first, bins = self._bins(low, top[::step, ::step], spare=0 if step == 1 else 8)
+            if bins == 0:
+                continue
+            cells = self._room(tile)
+            keys, moments = self._record_room(tile, cells, bins)
+            blocks = min(max(_CHUNK // self.coarse.side, 1), cells.shape[1])
+            # numpy's zeros cost nothing until they are touched, those made in a kernel do
+            tables, crossings = np.zeros((blocks, 2, 4 * bins)), np.zeros((blocks, 1, 2, bins, 3))
+            count = count_plain(
+                tile.depth, top, stripped, window.row, window.column, self.coarse.side, self.coarse.columns,
+                self.lift_m, first, tables, crossings, cells, keys, moments,
+            )  # fmt: skip
+            if count >= 0:
+                return Records(keys[:count].copy(), moments[:count].copy()), cells
+        return None
+
+    def _count(self, tile: Tile, weight: np.ndarray | None) -> tuple[Records, np.ndarray] | None:
+        top, stripped, window = tile.subgrade, tile.stripped, tile.window
         dug = bool(self.stack.excavations)
-        top, stripped = tile.subgrade, tile.stripped
-        bottom = tile.removal_bottom if dug else _NONE.astype(top.dtype)
+        nothing = np.empty((0, 0), top.dtype)
+        bottom = tile.removal_bottom if dug else nothing
         first, bins = self._bins(bottom if dug else np.minimum(top, stripped), top)
         if bins == 0:
-            return
-        here = _Pieces.of(window, coarse)
-        overview = here.overview(coarse) if self.overview_wanted else np.empty((0, 0, 3))
-        blocks = here.cells.shape[0] * here.cells.shape[1]
-        kinds = 2 * (1 + len(self.below))
-        room = min(blocks * kinds * bins, window.height * window.width * (2 + kinds))
-        keys, moments = np.empty(room, np.int64), np.empty((room, 3))
-        wants_finished = bool(self.from_finished.any())
+            return None
+        cells = self._room(tile)
+        keys, moments = self._record_room(tile, cells, bins)
         count = count_columns(
-            tile.depth, top, stripped, bottom, _NONE if weight is None else weight,
-            tile.finished if wants_finished else _NONE.astype(top.dtype),
-            self.below, self.from_finished, self.order, window.row, window.column, coarse.side, coarse.fine,
-            coarse.columns, self.lift_m, first, bins, here.cells, overview, keys, moments,
+            tile.depth, top, stripped, bottom, np.empty((0, 0)) if weight is None else weight,
+            tile.finished if self.from_finished.any() else nothing,
+            self.below, self.from_finished, self.order, window.row, window.column, self.coarse.side,
+            self.coarse.columns, self.lift_m, first, bins, cells, keys, moments,
         )  # fmt: skip
-        self._parts.append(Records(keys[:count].copy(), moments[:count].copy()))
-        self._loose += count
-        _add_cells(self._cells, here.coarse_row, here.coarse_column, here.cells, self.coarse.columns)
-        if self.overview_wanted:
-            width = -(-coarse.grid.columns // coarse.fine)
-            _add_overview(self._overview, here.fine_row, here.fine_column, overview, width)
+        return Records(keys[:count].copy(), moments[:count].copy()), cells
+
+    def _room(self, tile: Tile) -> np.ndarray:
+        """Coarse cells that a tile touches, with nothing counted."""
+        window, side = tile.window, self.coarse.side
+        return _no_cells(_touched(window.row, window.height, side), _touched(window.column, window.width, side))
+
+    def _record_room(self, tile: Tile, cells: np.ndarray, bins: int) -> tuple[np.ndarray, np.ndarray]:
+        """Room for as many records as a tile can make."""
+        kinds = 2 * (1 + len(self.below))
+        most = min(cells.shape[0] * cells.shape[1] * kinds * bins, tile.window.height * tile.window.width * (2 + kinds))
+        return np.empty(most, np.int64), np.empty((most, 3))
+
+    def _sample(self, tile: Tile, weight: np.ndarray | None) -> None:
+        """Keep bottom and top of the fill at the middle of each overview cell."""
+        window, fine = tile.window, self.coarse.fine
+        row = -(window.row - fine // 2) % fine
+        column = -(window.column - fine // 2) % fine
+        here = (slice(row, None, fine), slice(column, None, fine))
+        top, stripped = tile.subgrade[here], tile.stripped[here]
+        bottom = tile.removal_bottom[here] if self.stack.excavations else np.minimum(top, stripped)
+        filled = top > bottom
+        if weight is not None:
+            filled &= weight[here] > 0.5
+        if not filled.any():
+            return
+        bottom, top = np.where(filled, bottom, np.nan), np.where(filled, top, np.nan)
+        self._overview.append(((window.row + row) // fine, (window.column + column) // fine, bottom, top))
 
     def merge(self, other: LiftTally) -> None:
         _merge_cells(self._cells, other._cells)
-        for row, values in other._overview.items():
-            if row in self._overview:
-                self._overview[row] += values
-            else:
-                self._overview[row] = values
+        self._overview += other._overview
         self._parts += other._parts
         self._loose += other._loose
         if self._loose > 1_000_000:
@@ -154,7 +202,7 @@ class LiftTally:
         # further parts may add half as much again before the next time
         self._loose = -len(whole.keys) // 2
 
-    def _bins(self, low: np.ndarray, top: np.ndarray) -> tuple[int, int]:
+    def _bins(self, low: np.ndarray, top: np.ndarray, spare: int = 0) -> tuple[int, int]:
         """Lowest bin and number of bins between two surfaces; (0, 0) where there is no data."""
         least = float(np.fmin.reduce(low, axis=None, initial=np.inf))
         most = float(np.fmax.reduce(top, axis=None, initial=-np.inf))
@@ -166,7 +214,7 @@ class LiftTally:
                 f"elevations from {least:g} to {most:g} m make {last - first:,} lifts of {self.lift_m:g} m; "
                 "check the nodata values, or give a thicker lift"
             )
-        return first, last - first + 2
+        return first - spare, last - first + 2 + 2 * spare
 
     # --- what was counted -------------------------------------------------------------------------------------------
 
@@ -193,47 +241,18 @@ class LiftTally:
 
     @property
     def overview(self) -> np.ndarray:
-        """(rows, columns, 3) on the overview: area [cells], mean removal bottom and subgrade under fill [m] or NaN."""
+        """(rows, columns, 2): removal bottom and subgrade under fill [m] at the middles of overview cells, or NaN."""
         fine = self.coarse.fine
-        shape = (-(-self.stack.grid.rows // fine), -(-self.stack.grid.columns // fine), 3)
-        whole = np.zeros(shape)
-        for row, values in self._overview.items():
-            whole[row] = values
-        area = whole[..., :1]
-        whole[..., 1:] = np.divide(whole[..., 1:], area, out=np.full((*shape[:2], 2), np.nan), where=area > 0)
+        whole = np.full((-(-self.stack.grid.rows // fine), -(-self.stack.grid.columns // fine), 2), np.nan)
+        for row, column, bottom, top in self._overview:
+            here = whole[row : row + len(top), column : column + top.shape[1]]
+            here[..., 0], here[..., 1] = bottom, top
         return whole
 
 
-@dataclass(frozen=True)
-class _Pieces:
-    """Where a tile lies on the coarse grid and on the overview, with room for what it adds there."""
-
-    coarse_row: int
-    coarse_column: int
-    fine_row: int
-    fine_column: int
-    shape: tuple[int, int]
-    cells: np.ndarray
-
-    @classmethod
-    def of(cls, window, coarse: CoarseGrid) -> _Pieces:
-        rows = _span(window.row, window.height, coarse.side)
-        columns = _span(window.column, window.width, coarse.side)
-        fine_rows = _span(window.row, window.height, coarse.fine)
-        fine_columns = _span(window.column, window.width, coarse.fine)
-        return cls(
-            rows[0], columns[0], fine_rows[0], fine_columns[0], (fine_rows[1], fine_columns[1]),
-            _no_cells(rows[1], columns[1]),
-        )  # fmt: skip
-
-    def overview(self, coarse: CoarseGrid) -> np.ndarray:
-        return np.zeros((*self.shape, 3))
-
-
-def _span(start: int, length: int, side: int) -> tuple[int, int]:
-    """First block, and number of blocks, that cells ``start … start + length`` touch."""
-    first = start // side
-    return first, (start + length - 1) // side - first + 1
+def _touched(start: int, length: int, side: int) -> int:
+    """Number of blocks of ``side`` cells that cells ``start … start + length`` touch."""
+    return (start + length - 1) // side - start // side + 1
 
 
 def _no_cells(rows: int, columns: int) -> np.ndarray:
@@ -264,14 +283,6 @@ def _widen(into: np.ndarray, values: np.ndarray) -> None:
     into[:, sums] += values[:, sums]
     into[:, LOWEST] = np.minimum(into[:, LOWEST], values[:, LOWEST])
     into[:, HIGHEST] = np.maximum(into[:, HIGHEST], values[:, HIGHEST])
-
-
-def _add_overview(into: dict[int, np.ndarray], row0: int, column0: int, overview: np.ndarray, columns: int) -> None:
-    for i, values in enumerate(overview):
-        whole = into.get(row0 + i)
-        if whole is None:
-            whole = into[row0 + i] = np.zeros((columns, 3))
-        whole[column0 : column0 + len(values)] += values
 
 
 def _joined(parts: list[Records]) -> Records:
