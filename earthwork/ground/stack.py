@@ -184,9 +184,12 @@ class StackReader:
         for reader in (self.existing, self.finished, *self.bottoms.values()):
             reader.close()
 
-    def read_depth(self, window: Window) -> Arrays:
-        """The depth alone, of a site without layers."""
+    def read_depth(self, window: Window, with_finished: bool = False) -> Arrays:
+        """The depth alone, of a site without layers; and the finished ground where it is wanted."""
         existing, finished = self.existing.read(window), self.finished.read(window)
+        if with_finished:
+            into = existing if existing.dtype >= finished.dtype else None
+            return {"depth": np.subtract(finished, existing, out=into), "finished": finished}
         return {"depth": np.subtract(finished, existing, out=finished if finished.dtype >= existing.dtype else None)}
 
     def read(self, window: Window) -> Arrays:

@@ -8,7 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGHEST, LOWEST, VOLUME
-from earthwork.quantities.lift_tally import LiftTally
+from earthwork.quantities.lift_sums import bench_sums
+from earthwork.quantities.lift_tally import LiftTally, Records
 
 #: Mean fill over a coarse cell that makes it part of a fill area: a quarter of a lift, at most this [m]. Survey noise
 #: of 5 cm makes 2 cm of false fill.
@@ -63,15 +64,15 @@ def fill_areas(tally: LiftTally) -> tuple[FillArea, ...]:
     rank = np.full(len(volumes), -1)
     for k, i in enumerate(order):
         rank[i] = k
-    curves = _Curves(tally, rank[labels])
-    areas = [
-        FillArea(f"fill {k + 1}", curves.benches(k, float(cells[labels == i][:, LOWEST].min())), labels == i)
-        for k, i in enumerate(order)
-    ]
+    bases = [float(cells[labels == i][:, LOWEST].min()) for i in order]
+    highest = [float(cells[labels == i][:, HIGHEST].max()) for i in order]
+    records = tally.records
+    benches = _benches(tally, records, rank[labels], bases, highest)
+    areas = [FillArea(f"fill {k + 1}", benches[k], labels == i) for k, i in enumerate(order)]
     loose = (labels == 0) & (cells[..., VOLUME] > 0)
     if loose.any():
-        lowest, highest = float(cells[loose][:, LOWEST].min()), float(cells[loose][:, HIGHEST].max())
-        areas.append(FillArea("small fills", (curves.whole(-1, lowest, highest),), loose, is_small=True))
+        span = float(cells[loose][:, LOWEST].min()), float(cells[loose][:, HIGHEST].max())
+        areas.append(FillArea("small fills", (_whole(tally, records, loose, span),), loose, is_small=True))
     return tuple(areas)
 
 
@@ -100,82 +101,55 @@ def label_fills(cells: np.ndarray, lift_m: float) -> np.ndarray:
     return np.where((labels == 0) & (cells[..., VOLUME] > 0), beside, labels)
 
 
-class _Curves:
-    """Column ends of every fill area by bin of elevation."""
-
-    def __init__(self, tally: LiftTally, area_of_cell: np.ndarray) -> None:
-        coarse, self.kind, self.end, self.bin, self.moments = tally.unpacked()
-        self.area = area_of_cell.ravel()[coarse]
-        self.lift_m = tally.lift_m
-        self.kinds = 1 + len(tally.below)
-        self.cell_m2 = tally.stack.grid.cell_area_m2
-
-    def benches(self, area: int, base_m: float) -> tuple[Bench, ...]:
-        """Benches of one lift each from the lowest removal bottom to the last that has any fill."""
-        t = self.lift_m
-        origin = math.floor(base_m / t)
-        offset = min(base_m / t - origin, 1.0 - 1e-15)
-        rows = np.flatnonzero(self.area == area)
-        lift = self.bin[rows] - origin
-        below = _below(self.moments[rows], offset)
-        count = int(lift.max()) + 1
-        volumes = np.zeros((self.kinds, count))
-        standing = np.zeros((self.kinds, count + 1))
-        ends = np.zeros((2, count))
-        for kind in range(self.kinds):
-            for end, sign in ((0, 1.0), (1, -1.0)):
-                of = (self.kind[rows] == kind) & (self.end[rows] == end)
-                moments = self.moments[rows][of, :2]
-                # ends under the edge in their bin belong to the lift that ends there, those over it to the next
-                for lower, (a, first) in ((1, below[of].T), (0, (moments - below[of]).T)):
-                    at = np.maximum(lift[of] - lower, 0)
-                    volumes[kind] += sign * np.bincount(at, a * (offset + at + 1 - lift[of]) - first, count)
-                    standing[kind] += sign * np.bincount(at + 1, a, count + 1)
-                    if kind == 0:
-                        ends[end] += np.bincount(at, a, count)
-            # a column that started lower fills every lift above it, until its top
-            volumes[kind] += np.cumsum(standing[kind])[:count]
-        footprint = np.cumsum(ends[0]) - np.concatenate([[0.0], np.cumsum(ends[1])[:-1]])
-        volumes *= t * self.cell_m2
-        return tuple(
-            Bench(
-                bottom_m=float(base_m + t * j),
-                top_m=float(base_m + t * (j + 1)),
-                area_m2=float(footprint[j] * self.cell_m2),
-                compacted_m3=float(volumes[0, j]),
-                bands_m3=tuple(float(v) for v in volumes[1:, j]),
+def _benches(
+    tally: LiftTally, records: Records, area_of_cell: np.ndarray, bases: list[float], highest: list[float]
+) -> list[tuple[Bench, ...]]:
+    """Benches of each area, of one lift each, from its lowest removal bottom to its last fill."""
+    if not bases:
+        return []
+    t, bands = tally.lift_m, len(tally.below)
+    origins = [math.floor(base / t) for base in bases]
+    offsets = [min(base / t - origin, 1.0 - 1e-15) for base, origin in zip(bases, origins, strict=True)]
+    counts = [math.floor(top / t) - origin + 2 for top, origin in zip(highest, origins, strict=True)]
+    starts = np.concatenate([[0], np.cumsum([count + 1 for count in counts])])
+    volumes, standing = np.zeros((1 + bands, starts[-1] + 1)), np.zeros((1 + bands, starts[-1] + 2))
+    ends = np.zeros((3, starts[-1] + 1))
+    bench_sums(
+        records.keys, records.moments, bands, area_of_cell.ravel().astype(np.int64),
+        np.array(origins, np.int64), np.array(offsets), starts, volumes, standing, ends,
+    )  # fmt: skip
+    cell_m2 = tally.stack.grid.cell_area_m2
+    areas = []
+    for base, start, count in zip(bases, starts, counts, strict=False):
+        own = slice(start, start + count)
+        cubic = (volumes[:, own] + np.cumsum(standing[:, own], axis=1)) * t * cell_m2
+        # columns that have started less those that have ended below, each once though a depth row may part it
+        footprint = np.cumsum(ends[0, own]) - np.concatenate([[0.0], np.cumsum(ends[1, own])[:-1]]) - ends[2, own]
+        areas.append(
+            tuple(
+                Bench(
+                    bottom_m=base + t * j,
+                    top_m=base + t * (j + 1),
+                    area_m2=float(footprint[j] * cell_m2),
+                    compacted_m3=float(cubic[:, j].sum()),
+                    bands_m3=tuple(cubic[1:, j].tolist()),
+                )
+                for j in np.flatnonzero(footprint > 1e-9 * footprint.max()).tolist()
             )
-            for j in np.flatnonzero(footprint > 1e-9 * footprint.max())
         )
-
-    def whole(self, area: int, lowest_m: float, highest_m: float) -> Bench:
-        """All fill of an area as one bench."""
-        rows = self.area == area
-        sums = np.zeros(self.kinds)
-        place = (self.bin * self.moments[:, 0] + self.moments[:, 1]) * self.lift_m * self.cell_m2
-        for kind in range(self.kinds):
-            of = rows & (self.kind == kind)
-            sums[kind] = place[of & (self.end == 1)].sum() - place[of & (self.end == 0)].sum()
-        tops = rows & (self.kind == 0) & (self.end == 1)
-        area_m2 = float(self.moments[tops, 0].sum() * self.cell_m2)
-        return Bench(lowest_m, highest_m, area_m2, float(sums[0]), tuple(float(s) for s in sums[1:]))
+    return areas
 
 
-def _below(moments: np.ndarray, offset: float) -> np.ndarray:
-    """Area and first moment of the column ends that lie under ``offset`` in their bin, shape (n, 2).
-
-    The ends of a bin are taken as spread evenly about their mean with the variance that they have, which is exact for
-    level and for evenly sloping ground; ends at one height stay together. The rest keeps what is left, so that no
-    volume is lost whatever the ends are.
-    """
-    area = moments[:, 0]
-    safe = np.where(area > 0, area, 1.0)
-    mean = moments[:, 1] / safe
-    variance = np.maximum(moments[:, 2] / safe - mean**2, 0.0)
-    half = np.sqrt(3.0 * variance)
-    half = np.minimum(half, np.maximum(np.minimum(mean, 1.0 - mean), 0.0))
-    spread = half > 1e-7
-    width = np.where(spread, 2.0 * half, 1.0)
-    share = np.where(spread, np.clip((offset - (mean - half)) / width, 0.0, 1.0), (mean < offset).astype(float))
-    centre = np.where(spread, mean - half + 0.5 * share * width, mean)
-    return np.column_stack([area * share, area * share * centre])
+def _whole(tally: LiftTally, records: Records, cells: np.ndarray, span: tuple[float, float]) -> Bench:
+    """All fill of some coarse cells as one bench."""
+    bands = len(tally.below)
+    inside = np.where(cells.ravel(), 0, -1).astype(np.int64)
+    volumes, standing, ends = np.zeros((1 + bands, 1)), np.zeros((1 + bands, 2)), np.zeros((3, 1))
+    origin = math.floor(span[1] / tally.lift_m) + 2  # above everything, so that all of it falls into one lift
+    bench_sums(
+        records.keys, records.moments, bands, inside, np.array([origin]), np.array([0.0]), np.array([0]),
+        volumes, standing, ends,
+    )  # fmt: skip
+    cubic = volumes[:, 0] * tally.lift_m * tally.stack.grid.cell_area_m2
+    area = float((ends[0, 0] - ends[2, 0]) * tally.stack.grid.cell_area_m2)
+    return Bench(*span, area, float(cubic.sum()), tuple(cubic[1:].tolist()))

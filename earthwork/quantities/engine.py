@@ -34,7 +34,7 @@ class Tally(Protocol):
     """A question about the ground. Merging is associative, and always done from north to south.
 
     A tally that asks only for the depth of a site without layers may say ``depth_only = True``: when all do, the
-    surfaces are not kept.
+    surfaces are not kept. One that asks for finished ground (or subgrade) as well says ``wants_finished = True`` too.
     """
 
     def empty(self) -> Tally:
@@ -131,6 +131,7 @@ class Walk:
         self.tallies = tallies
         self.progress = progress
         self.grid: Grid = stack.grid
+        self.wants_finished = any(getattr(tally, "wants_finished", False) for tally in tallies)
         self.depth_only = not stack.layered and all(getattr(tally, "depth_only", False) for tally in tallies)
         self.edges = edges
         self.tile_cells = tile_cells
@@ -199,7 +200,7 @@ class Walk:
             if self.stop.is_set():
                 return
             window = Window(row, left, stop - row, right - left)
-            arrays = reader.read_depth(window) if self.depth_only else reader.read(window)
+            arrays = reader.read_depth(window, self.wants_finished) if self.depth_only else reader.read(window)
             if not first:
                 edges_north.append({name: a[:2].copy() for name, a in arrays.items()})
             if not last:

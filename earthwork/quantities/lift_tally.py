@@ -1,4 +1,4 @@
-"""Tally of fill by elevation: what every lift of every fill area is worked out from, in the same pass as the volumes."""
+"""Tally of fill by elevation: every lift of every fill area comes from it, in the same pass as the volumes."""
 
 from __future__ import annotations
 
@@ -11,7 +11,6 @@ from earthwork.errors import GroundError
 from earthwork.ground.grid import Grid
 from earthwork.ground.stack import Stack
 from earthwork.quantities.lift_kernel import (
-    BIN_BITS,
     BIN_ZERO,
     FOOTPRINT,
     GROUND,
@@ -19,12 +18,13 @@ from earthwork.quantities.lift_kernel import (
     LOWEST,
     VOLUME,
     count_columns,
-    count_plain,
+    kinds_of,
 )
+from earthwork.quantities.lift_plain import count_plain
 from earthwork.quantities.tile import Tile
 
 _COARSE_M = 5.0  #: side of the cells on which fill areas are told apart, where the site is small enough
-_COARSE_CELLS = 160  #: at most along a side
+_COARSE_CELLS = 128  #: at most along a side
 _CHUNK = 2048  #: cells across that are counted at one time
 _OVERVIEW_CELLS = 1024  #: of the map that lift outlines are drawn on, at most along a side
 
@@ -39,7 +39,7 @@ class CoarseGrid:
 
     @classmethod
     def of(cls, grid: Grid) -> CoarseGrid:
-        """Coarse cells of about 5 m, but no more than 160 along a side of the grid.
+        """Coarse cells of about 5 m, but no more than 128 along a side of the grid.
 
         >>> CoarseGrid.of(Grid(500, 600, 0, 0, 1.0, 1.0)).side
         5
@@ -98,10 +98,13 @@ class LiftTally:
         self.below = np.array(below, dtype=np.float64)
         self.from_finished = np.array([start == "finished" for _, start in stack.bands_below_m], dtype=np.bool_)
         self.order = np.array(sorted(range(len(below)), key=lambda i: -below[i]), dtype=np.int64)
-        self._cells: dict[int, np.ndarray] = {}  #: coarse row → (columns, 5)
+        self._cells: list[tuple[int, int, np.ndarray]] = []  #: coarse row, column, cells from there on
         self._overview: list[tuple[int, int, np.ndarray, np.ndarray]] = []  #: row, column, bottoms, tops
         self._parts: list[Records] = []
         self._loose = 0
+
+    depth_only = True  #: engine: without layers, depth and finished ground are all that is asked for
+    wants_finished = True
 
     def empty(self) -> LiftTally:
         return LiftTally(self.stack, self.lift_m, overview=self.overview_wanted)
@@ -118,16 +121,17 @@ class LiftTally:
         records, cells = counted
         self._parts.append(records)
         self._loose += len(records.keys)
-        _add_cells(self._cells, window.row // coarse.side, window.column // coarse.side, cells, coarse.columns)
+        self._cells.append((window.row // coarse.side, window.column // coarse.side, cells))
         if self.overview_wanted:
             self._sample(tile, weight)
 
     def _count_plain(self, tile: Tile) -> tuple[Records, np.ndarray] | None:
         """Count with the bins of a sample of the tile, and again with all that it needs should they not do."""
-        top, stripped, window = tile.subgrade, tile.stripped, tile.window
+        top, window = tile.subgrade, tile.window
         for step in (16, 1):
-            low = np.minimum(top[::step, ::step], stripped[::step, ::step])
-            first, bins = self._bins(low, top[::step, ::step], spare=0 if step == 1 else 8)
+            high = top[::step, ::step]
+            low = np.minimum(high, high - tile.depth[1:-1:step, 1:-1:step])
+            first, bins = self._bins(low, high, spare=0 if step == 1 else 8)
             if bins == 0:
                 continue
             cells = self._room(tile)
@@ -136,25 +140,25 @@ class LiftTally:
             # numpy's zeros cost nothing until they are touched, those made in a kernel do
             tables, crossings = np.zeros((blocks, 2, 4 * bins)), np.zeros((blocks, 1, 2, bins, 3))
             count = count_plain(
-                tile.depth, top, stripped, window.row, window.column, self.coarse.side, self.coarse.columns,
-                self.lift_m, first, tables, crossings, cells, keys, moments,
+                tile.depth, top, window.row, window.column, self.coarse.side, self.coarse.columns, self.lift_m, first,
+                tables, crossings, cells, keys, moments,
             )  # fmt: skip
             if count >= 0:
                 return Records(keys[:count].copy(), moments[:count].copy()), cells
         return None
 
     def _count(self, tile: Tile, weight: np.ndarray | None) -> tuple[Records, np.ndarray] | None:
-        top, stripped, window = tile.subgrade, tile.stripped, tile.window
+        top, window = tile.subgrade, tile.window
         dug = bool(self.stack.excavations)
         nothing = np.empty((0, 0), top.dtype)
         bottom = tile.removal_bottom if dug else nothing
-        first, bins = self._bins(bottom if dug else np.minimum(top, stripped), top)
+        first, bins = self._bins(bottom if dug else np.minimum(top, top - tile.depth[1:-1, 1:-1]), top)
         if bins == 0:
             return None
         cells = self._room(tile)
         keys, moments = self._record_room(tile, cells, bins)
         count = count_columns(
-            tile.depth, top, stripped, bottom, np.empty((0, 0)) if weight is None else weight,
+            tile.depth, top, bottom, np.empty((0, 0)) if weight is None else weight,
             tile.finished if self.from_finished.any() else nothing,
             self.below, self.from_finished, self.order, window.row, window.column, self.coarse.side,
             self.coarse.columns, self.lift_m, first, bins, cells, keys, moments,
@@ -168,7 +172,7 @@ class LiftTally:
 
     def _record_room(self, tile: Tile, cells: np.ndarray, bins: int) -> tuple[np.ndarray, np.ndarray]:
         """Room for as many records as a tile can make."""
-        kinds = 2 * (1 + len(self.below))
+        kinds = 2 * kinds_of(len(self.below))
         most = min(cells.shape[0] * cells.shape[1] * kinds * bins, tile.window.height * tile.window.width * (2 + kinds))
         return np.empty(most, np.int64), np.empty((most, 3))
 
@@ -178,8 +182,9 @@ class LiftTally:
         row = -(window.row - fine // 2) % fine
         column = -(window.column - fine // 2) % fine
         here = (slice(row, None, fine), slice(column, None, fine))
-        top, stripped = tile.subgrade[here], tile.stripped[here]
-        bottom = tile.removal_bottom[here] if self.stack.excavations else np.minimum(top, stripped)
+        top = tile.subgrade[here]
+        low = top - tile.depth[1:-1, 1:-1][here]
+        bottom = tile.removal_bottom[here] if self.stack.excavations else np.minimum(top, low)
         filled = top > bottom
         if weight is not None:
             filled &= weight[here] > 0.5
@@ -189,7 +194,7 @@ class LiftTally:
         self._overview.append(((window.row + row) // fine, (window.column + column) // fine, bottom, top))
 
     def merge(self, other: LiftTally) -> None:
-        _merge_cells(self._cells, other._cells)
+        self._cells += other._cells
         self._overview += other._overview
         self._parts += other._parts
         self._loose += other._loose
@@ -223,20 +228,16 @@ class LiftTally:
         """All column ends, one row a key."""
         return _joined(self._parts).compacted()
 
-    def unpacked(self) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
-        """Records as (coarse cell, kind, end, bin, moments); kind 0 is all fill, 1 + i what lies in depth row i."""
-        records = self.records
-        packed = records.keys >> BIN_BITS
-        bins = (records.keys & ((1 << BIN_BITS) - 1)) - BIN_ZERO
-        kinds = 1 + len(self.below)
-        return packed // (2 * kinds), packed // 2 % kinds, packed % 2, bins, records.moments
-
     @property
     def cells(self) -> np.ndarray:
         """(coarse rows, coarse columns, 5): VOLUME [cell·m], FOOTPRINT, GROUND [cells], LOWEST, HIGHEST [m]."""
         whole = _no_cells(self.coarse.rows, self.coarse.columns)
-        for row, values in self._cells.items():
-            whole[row] = values
+        sums = [VOLUME, FOOTPRINT, GROUND]
+        for row, column, cells in self._cells:
+            here = whole[row : row + cells.shape[0], column : column + cells.shape[1]]
+            here[..., sums] += cells[..., sums]
+            np.minimum(here[..., LOWEST], cells[..., LOWEST], out=here[..., LOWEST])
+            np.maximum(here[..., HIGHEST], cells[..., HIGHEST], out=here[..., HIGHEST])
         return whole
 
     @property
@@ -260,29 +261,6 @@ def _no_cells(rows: int, columns: int) -> np.ndarray:
     cells[..., LOWEST] = np.inf
     cells[..., HIGHEST] = -np.inf
     return cells
-
-
-def _add_cells(into: dict[int, np.ndarray], row0: int, column0: int, cells: np.ndarray, columns: int) -> None:
-    for i, values in enumerate(cells):
-        whole = into.get(row0 + i)
-        if whole is None:
-            whole = into[row0 + i] = _no_cells(1, columns)[0]
-        _widen(whole[column0 : column0 + len(values)], values)
-
-
-def _merge_cells(into: dict[int, np.ndarray], other: dict[int, np.ndarray]) -> None:
-    for row, values in other.items():
-        if row in into:
-            _widen(into[row], values)
-        else:
-            into[row] = values
-
-
-def _widen(into: np.ndarray, values: np.ndarray) -> None:
-    sums = [VOLUME, FOOTPRINT, GROUND]
-    into[:, sums] += values[:, sums]
-    into[:, LOWEST] = np.minimum(into[:, LOWEST], values[:, LOWEST])
-    into[:, HIGHEST] = np.maximum(into[:, HIGHEST], values[:, HIGHEST])
 
 
 def _joined(parts: list[Records]) -> Records:

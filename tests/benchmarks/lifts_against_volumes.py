@@ -2,8 +2,8 @@
 
     python tests/benchmarks/lifts_against_volumes.py FOLDER [N ...]
 
-FOLDER takes the rasters (N × N cells, default 10000). Goal: at most 1.3 times. The passes take turns; each figure is the
-median of five.
+FOLDER takes the rasters (N × N cells, default 10000). Goal: at most 1.3 times. The passes take turns; each figure is
+the median of five.
 """
 
 from __future__ import annotations

@@ -1,0 +1,289 @@
+"""Lift volumes against closed forms, against clipping every cell, and against the volumes of the same pass."""
+
+import math
+from pathlib import Path
+
+import numpy as np
+import pytest
+import rasterio
+from rasterio.transform import from_origin
+
+from earthwork.errors import GroundError
+from earthwork.plan.fill_areas import fill_areas, label_fills
+from earthwork.quantities.lift_tally import CoarseGrid, LiftTally
+from earthwork.quantities.site_ground import open_site
+from earthwork.quantities.volumes import count_volumes
+from earthwork.site import check_site
+
+
+def write(path: Path, array: np.ndarray, cell: float = 1.0, dtype: str = "float64") -> None:
+    profile = {"driver": "GTiff", "height": array.shape[0], "width": array.shape[1], "count": 1, "dtype": dtype,
+               "crs": "EPSG:32614", "transform": from_origin(500_000, 4_400_000, cell, cell)}  # fmt: skip
+    with rasterio.open(path, "w", **profile) as file:
+        file.write(array.astype(dtype), 1)
+
+
+def counted(folder, existing, finished, *, cell=1.0, lift=0.2, dtype="float64", walk=None, **tables):
+    write(folder / "existing.tif", existing, cell, dtype)
+    write(folder / "finished.tif", finished, cell, dtype)
+    document = {
+        "site": {"name": "test", "units": "metric"},
+        "ground": {"existing": "existing.tif", "finished": "finished.tif", "ground_scale": 1.0},
+        **tables,
+    }
+    site = check_site(document, folder)
+    ground = open_site(site)
+    tally = LiftTally(ground.stack, lift)
+    volumes = count_volumes(site, ground, tallies=[tally], **(walk or {}))
+    return fill_areas(tally), volumes.total, tally
+
+
+def centres(n, cell=1.0):
+    x = (np.arange(n) + 0.5) * cell
+    return x[None, :], x[:, None]
+
+
+def total(areas):
+    return math.fsum(area.compacted_m3 for area in areas)
+
+
+def test_a_level_pad_on_level_ground_is_built_in_equal_lifts(tmp_path):
+    x, y = centres(60)
+    pad = 1.0 * ((abs(x - 30) < 10) & (abs(y - 30) < 15))
+    (area,), volumes, _ = counted(tmp_path, np.full((60, 60), 100.0), 100.0 + pad)
+    assert [round(b.bottom_m, 9) for b in area.benches] == [100.0, 100.2, 100.4, 100.6, 100.8]
+    for bench in area.benches:
+        assert bench.area_m2 == pytest.approx(600.0)
+        assert bench.compacted_m3 == pytest.approx(120.0, rel=1e-9)
+    assert total([area]) == pytest.approx(volumes.fill_m3, rel=1e-12)
+
+
+def test_a_stepped_pyramid(tmp_path):
+    x, y = centres(100)
+    steps = sum(0.5 * ((abs(x - 50) < half) & (abs(y - 50) < half)) for half in (40, 30, 20))
+    (area,), volumes, _ = counted(tmp_path, np.full((100, 100), 20.0), 20.0 + steps, lift=0.25)
+    by_hand = [80 * 80 * 0.25] * 2 + [60 * 60 * 0.25] * 2 + [40 * 40 * 0.25] * 2
+    assert [b.compacted_m3 for b in area.benches] == pytest.approx(by_hand, rel=1e-9)
+    assert [b.area_m2 for b in area.benches] == pytest.approx([6400, 6400, 3600, 3600, 1600, 1600])
+    assert total([area]) == pytest.approx(volumes.fill_m3, rel=1e-12)
+
+
+def test_a_wedge(tmp_path):
+    # ground falls 2 m over 100 m to the east, the grade is level at its high end: lift k reaches back to x = 100 − 10
+    # k
+    x, _ = centres(100)
+    existing = np.broadcast_to(50.0 - 0.02 * x, (40, 100))
+    (area,), volumes, _ = counted(tmp_path, existing, np.full((40, 100), 50.0))
+    low = 50.0 - 0.02 * 99.5
+    assert area.bottom_m == pytest.approx(low, abs=1e-12)
+    for bench in area.benches[:-1]:
+        z0, z1 = bench.bottom_m, bench.top_m
+        # between two elevations a wedge holds ∫ width·(z − low) dz: 40 m wide, 50 m longer for each metre of height,
+        # and half a cell beyond the lowest centre
+        exact = 40 * 50 * ((z1 - low + 0.01) ** 2 - (z0 - low + 0.01) ** 2) / 2
+        first = bench is area.benches[0]
+        assert bench.compacted_m3 == pytest.approx(exact, rel=2e-2 if first else 1e-3)
+    assert total([area]) == pytest.approx(40 * 100 * 1.0, rel=1e-9)
+    assert total([area]) == pytest.approx(volumes.fill_m3, rel=1e-12)
+
+
+def test_a_cone(tmp_path):
+    x, y = centres(220, 0.5)
+    radius, height = 50.0, 10.0
+    cone = np.maximum(height * (1 - np.hypot(x - 55, y - 55) / radius), 0.0)
+    (area,), volumes, _ = counted(tmp_path, np.full((220, 220), 5.0), 5.0 + cone, cell=0.5, lift=0.5)
+    slice_volume = [
+        math.pi * radius**2 / (3 * height**2) * ((height - z) ** 3 - (height - z - 0.5) ** 3)
+        for z in np.arange(0, 10, 0.5)
+    ]
+    assert len(area.benches) == 20
+    for bench, exact in zip(area.benches[:18], slice_volume[:18], strict=True):
+        assert bench.compacted_m3 == pytest.approx(exact, rel=2e-3)
+    assert total([area]) == pytest.approx(volumes.fill_m3, rel=1e-12)
+
+
+def rolling(n=150, seed=3):
+    x, y = centres(n)
+    ground = 100 + 0.03 * x + 2.5 * np.sin(x / 23) * np.cos(y / 31)
+    pads = ((abs(x - 40) < 20) & (abs(y - 60) < 30)) * 1.0 + ((abs(x - 115) < 18) & (abs(y - 90) < 35)) * 2.0
+    grade = np.where(pads == 1, 103.0, np.where(pads == 2, 105.4, ground))
+    return ground, grade
+
+
+def clipped(ground, grade, low, high, where):
+    """Fill between two elevations, cell by cell, without the split at the zero line."""
+    bottom = np.minimum(ground, grade)
+    return np.where(where, np.clip(np.minimum(grade, high) - np.maximum(bottom, low), 0, None), 0).sum()
+
+
+def test_every_lift_is_what_clipping_every_cell_gives(tmp_path):
+    ground, grade = rolling()
+    areas, volumes, _ = counted(tmp_path, ground, grade)
+    assert [area.name for area in areas] == ["fill 1", "fill 2"]
+    split = volumes.fill_m3 - volumes.unsplit_fill_m3
+    x, _ = centres(150)
+    sides = {"fill 1": x > 78, "fill 2": x < 78} if areas[0].bottom_m > 101 else {"fill 1": x < 78, "fill 2": x > 78}
+    for area in areas:
+        for bench in area.benches:
+            low = -np.inf if bench is area.benches[0] else bench.bottom_m
+            exact = clipped(ground, grade, low, bench.top_m, np.broadcast_to(sides[area.name], ground.shape))
+            assert bench.compacted_m3 == pytest.approx(exact, abs=0.003 * area.compacted_m3 / 10 + split)
+    assert total(areas) == pytest.approx(volumes.fill_m3, rel=1e-12)
+
+
+@pytest.mark.parametrize("walk", [{"threads": 1}, {"threads": 3}, {"tile_cells": 700, "band_rows": 17}])
+@pytest.mark.parametrize("layers", [False, True])
+def test_threads_change_no_digit_and_tiles_nothing_that_counts(tmp_path, walk, layers):
+    ground, grade = rolling()
+    tables = {}
+    if layers:
+        tables = {
+            "over_excavation": [{"name": "all", "depth": 0.7}],
+            "fill": {"relative_compaction": 95, "by_depth": [{"below": 1.5, "relative_compaction": 98}]},
+        }
+    reference, _, _ = counted(tmp_path, ground, grade, **tables)
+    again, _, _ = counted(tmp_path, ground, grade, walk=walk, **tables)
+    assert len(reference) == len(again)
+    for a, b in zip(reference, again, strict=True):
+        assert a.name == b.name
+        ours, theirs = ([bench.compacted_m3 for bench in area.benches] for area in (a, b))
+        if "threads" in walk:
+            assert ours == theirs
+        else:
+            assert ours == pytest.approx(theirs, rel=1e-11, abs=1e-9)
+
+
+@pytest.mark.parametrize("measured_from", ["finished", "subgrade"])
+def test_refill_and_depth_bands_add_up_to_the_volumes(tmp_path, measured_from):
+    ground, grade = rolling()
+    areas, volumes, _ = counted(
+        tmp_path, ground, grade,
+        strip=[{"material": "topsoil", "depth": 0.15}],
+        section=[{"name": "slab", "thickness": 0.3}],
+        over_excavation=[{"name": "all", "depth": 1.1}],
+        fill={"relative_compaction": 95, "by_depth": [
+            {"below": 1.0, "measured_from": measured_from, "relative_compaction": 97},
+            {"below": 2.2, "measured_from": "subgrade", "relative_compaction": 99}]},
+    )  # fmt: skip
+    assert volumes.over_excavation_m3 > 0
+    assert min(volumes.bands_m3) > 0
+    assert total(areas) == pytest.approx(volumes.refill_and_fill_m3, rel=1e-10)
+    for i, band in enumerate(volumes.bands_m3):
+        ours = math.fsum(bench.bands_m3[i] for area in areas for bench in area.benches)
+        assert ours == pytest.approx(band, rel=1e-9)
+    for area in areas:
+        for bench in area.benches:
+            assert sum(bench.bands_m3) <= bench.compacted_m3 * (1 + 1e-9) + 1e-9
+
+
+def test_plain_and_layered_ways_count_the_same(tmp_path):
+    ground, grade = rolling()
+    plain, _, _ = counted(tmp_path, ground, grade)
+    layered, _, _ = counted(tmp_path, ground, grade, over_excavation=[{"name": "nothing", "depth": 0.0}])
+    assert len(plain) == len(layered)
+    for a, b in zip(plain, layered, strict=True):
+        assert [x.compacted_m3 for x in a.benches] == pytest.approx([x.compacted_m3 for x in b.benches], rel=1e-9)
+        assert [x.area_m2 for x in a.benches] == pytest.approx([x.area_m2 for x in b.benches], rel=1e-9)
+
+
+def test_noise_does_not_make_fills(tmp_path):
+    ground, grade = rolling()
+    noise = np.random.default_rng(5).normal(0, 0.03, ground.shape)
+    areas, volumes, _ = counted(tmp_path, ground + noise, grade)
+    assert [area.name for area in areas] == ["fill 1", "fill 2", "small fills"]
+    small = areas[-1]
+    assert small.is_small
+    assert len(small.benches) == 1
+    # noise of sd s makes s/√(2π) of false fill on untouched ground
+    untouched = (grade == ground).sum()
+    expected = 0.03 / math.sqrt(2 * math.pi) * untouched
+    assert 0.75 * expected < small.compacted_m3 < expected  # what lies beside a fill counts with it
+    assert total(areas) == pytest.approx(volumes.fill_m3, rel=1e-12)
+
+
+def test_fills_closer_than_a_coarse_cell_are_one(tmp_path):
+    x, y = centres(120)
+    first = (abs(x - 30) < 15) & (abs(y - 60) < 20)
+    for gap, count in ((3, 1), (20, 2)):
+        second = (x > 45 + gap) & (x < 75 + gap) & (abs(y - 60) < 20)
+        areas, _, _ = counted(tmp_path, np.full((120, 120), 10.0), 10.0 + 0.6 * (first | second))
+        assert len(areas) == count
+
+
+def test_thin_ends_stay_with_their_fill(tmp_path):
+    # 1 in 1000: the last 40 m are under 5 cm thick, the last coarse cell is half a centimetre
+    x, _ = centres(200)
+    areas, volumes, _ = counted(tmp_path, np.broadcast_to(30 - 0.001 * x, (30, 200)), np.full((30, 200), 30.0))
+    assert [area.name for area in areas] == ["fill 1"]
+    assert total(areas) == pytest.approx(volumes.fill_m3, rel=1e-12)
+
+
+def test_no_fill_gives_no_areas(tmp_path):
+    areas, volumes, _ = counted(tmp_path, np.full((20, 20), 10.0), np.full((20, 20), 9.0))
+    assert volumes.fill_m3 == 0
+    assert areas == ()
+
+
+def test_missing_ground_and_limits(tmp_path):
+    import geopandas
+    from shapely.geometry import box
+
+    ground, grade = rolling()
+    ground = ground.copy()
+    ground[40:50, 30:45] = np.nan
+    limits = geopandas.GeoDataFrame(geometry=[box(500_010.3, 4_399_870.5, 500_140.7, 4_399_990.2)], crs="EPSG:32614")
+    limits.to_file(tmp_path / "limits.gpkg")
+    write(tmp_path / "existing.tif", ground)
+    write(tmp_path / "finished.tif", grade)
+    site = check_site(
+        {
+            "site": {"name": "test", "units": "metric"},
+            "ground": {"existing": "existing.tif", "finished": "finished.tif", "limits": "limits.gpkg",
+                       "ground_scale": 1.0},
+        },
+        tmp_path,
+    )  # fmt: skip
+    opened = open_site(site)
+    tally = LiftTally(opened.stack, 0.3)
+    volumes = count_volumes(site, opened, tallies=[tally]).total
+    assert volumes.missing_area_m2 > 100
+    assert total(fill_areas(tally)) == pytest.approx(volumes.fill_m3, rel=1e-12)
+
+
+def test_overview_holds_bottom_and_top_of_fill(tmp_path):
+    ground, grade = rolling()
+    _, _, tally = counted(tmp_path, ground, grade)
+    overview = tally.overview
+    assert overview.shape == (150, 150, 2)
+    filled = grade > ground
+    np.testing.assert_allclose(overview[filled][:, 0], ground[filled], atol=1e-9)
+    np.testing.assert_allclose(overview[filled][:, 1], grade[filled], atol=1e-9)
+    assert np.isnan(overview[~filled]).all()
+
+
+def test_coarse_grid_follows_cell_and_extent(tmp_path):
+    from earthwork.ground.grid import Grid
+
+    assert CoarseGrid.of(Grid(100, 100, 0, 0, 2.0, 2.0)).side == 3
+    large = CoarseGrid.of(Grid(10_000, 9_000, 0, 0, 1.0, 1.0))
+    assert large.fine == 10
+    assert large.side % large.fine == 0
+    assert large.rows <= 128
+
+
+def test_impossible_lifts_are_refused(tmp_path):
+    ground, grade = rolling()
+    with pytest.raises(GroundError, match=r"lift thickness is 0 m; it must be more than 0"):
+        counted(tmp_path, ground, grade, lift=0.0)
+    with pytest.raises(GroundError, match=r"make .* lifts of 1e-06 m; check the nodata values"):
+        counted(tmp_path, ground, grade, lift=1e-6)
+
+
+def test_labels_join_by_corners():
+    cells = np.zeros((4, 4, 5))
+    cells[..., 2] = 25.0
+    for row, column in ((0, 0), (1, 1), (3, 3)):
+        cells[row, column, :2] = (25.0, 25.0)
+    labels = label_fills(cells, 0.2)
+    assert labels[0, 0] == labels[1, 1] != 0
+    assert labels[3, 3] not in (0, labels[0, 0])
