@@ -6,6 +6,7 @@ import shutil
 import threading
 import warnings
 from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from math import ceil
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -117,7 +118,7 @@ class DepthRasterWriter:
         row, column, height, width = self._extent(block)
         if filled < height * width:
             self._early[block] = filled
-        with self._env:
+        with _write_errors(self._path), self._env:
             self._file.write(array, 1, window=((row, row + height), (column, column + width)))
 
     def finish(self) -> None:
@@ -134,6 +135,7 @@ class DepthRasterWriter:
         if not levels:
             return
         with (
+            _write_errors(self._path),
             rasterio.Env(
                 GDAL_CACHEMAX=64_000_000,
                 COMPRESS_OVERVIEW="DEFLATE",
@@ -153,21 +155,17 @@ class DepthRasterWriter:
             OutputError: the file is cut off.
         """
         import rasterio
-        from rasterio.errors import BandOverviewError, RasterioError
 
         size = self._path.stat().st_size
-        try:
-            with rasterio.open(self._path) as file:
-                for level, factor in enumerate([1, *levels]):
-                    for name in _block_names(self.grid, factor):
-                        offset, length = (
-                            file.get_tag_item(f"BLOCK_{what}_{name}", "TIFF", bidx=1, ovr=level - 1 if level else None)
-                            for what in ("OFFSET", "SIZE")
-                        )
-                        if offset is None or length is None or int(offset) + int(length) > size:
-                            raise cut_off(self._path)
-        except (OSError, RasterioError, BandOverviewError) as error:
-            raise cut_off(self._path, error) from None
+        with _write_errors(self._path), rasterio.open(self._path) as file:
+            for level, factor in enumerate([1, *levels]):
+                for name in _block_names(self.grid, factor):
+                    offset, length = (
+                        file.get_tag_item(f"BLOCK_{what}_{name}", "TIFF", bidx=1, ovr=level - 1 if level else None)
+                        for what in ("OFFSET", "SIZE")
+                    )
+                    if offset is None or length is None or int(offset) + int(length) > size:
+                        raise cut_off(self._path)
 
     def abandon(self) -> None:
         """Close the file unfinished; it is to be removed."""
@@ -175,6 +173,17 @@ class DepthRasterWriter:
             self._pending.clear()
             if not self._file.closed:
                 self._file.close()
+
+
+@contextmanager
+def _write_errors(path: Path) -> Iterator[None]:
+    """Turn what the raster library raises when it cannot write into one message."""
+    from rasterio.errors import BandOverviewError, RasterioError
+
+    try:
+        yield
+    except (OSError, RasterioError, BandOverviewError) as error:
+        raise cut_off(path, error) from None
 
 
 def _block_names(grid: Grid, factor: int) -> Iterator[str]:

@@ -52,11 +52,12 @@ def draw_balance_curve(
     axes.plot(x, y, color=colors.INK, linewidth=1.6)
     axes.axhline(target, color=colors.INK, linewidth=0.8)
     axes.set_xlim(min(x), max(x))
-    _name_sides(axes, x, y, target)
+    _name_sides(axes, y, target)
     at = 0.0 if shift_m is None else shift_m / length
-    _mark(axes, x, y, 0.0, "as designed", units, above=at <= 0.0)
+    near = abs(at) < 0.25 * (max(x) - min(x))
+    _mark(axes, x, y, 0.0, "as designed", units, above=at <= 0.0 or not near)
     if shift_m is not None:
-        _mark(axes, x, y, at, "balanced", units, above=at > 0.0)
+        _mark(axes, x, y, at, "balanced", units, above=at > 0.0 or not near)
     unit = units.label("length")
     axes.set_xlabel(f"shift of the grade that may move, {unit}   (+ raises it)")
     axes.set_ylabel(f"surplus of compacted fill, {units.label('soil_volume')}")
@@ -74,20 +75,18 @@ def _plain_numbers(step: float) -> Callable[[float, Any], str]:
     return lambda value, _: number(value, step).replace("-", "−")
 
 
-def _name_sides(axes: Axes, x: Sequence[float], y: Sequence[float], target: float) -> None:
-    """Name the areas above and below the target, each at its wide end."""
-    for word, value in (("SURPLUS: soil left over", max(y)), ("SHORTAGE: soil to bring in", min(y))):
-        if (value > target) != word.startswith("SURPLUS"):
-            continue
-        at_left = y[0] == value
-        edge = x[0] if at_left else x[-1]
+def _name_sides(axes: Axes, y: Sequence[float], target: float) -> None:
+    """Name what is above and below the target, at the end that is farther from where the curve crosses it."""
+    low, high = axes.get_xlim()
+    at_left = sum(value >= target for value in y) > len(y) / 2
+    for text, above in (("▲ surplus", True), ("▼ shortage", False)):
         axes.annotate(
-            word,
-            (edge, target + 0.35 * (value - target)),
-            xytext=(8 if at_left else -8, 0),
+            text,
+            (low if at_left else high, target),
+            xytext=(6 if at_left else -6, 5 if above else -5),
             textcoords="offset points",
             ha="left" if at_left else "right",
-            va="center",
+            va="bottom" if above else "top",
             fontweight="bold",
             path_effects=halo(),
         )

@@ -110,29 +110,40 @@ class Frame:
     def label_zones(self, axes: Axes, zones: Sequence[tuple[str, Any]], taken: list[Any]) -> None:
         """Write each zone's name inside it, the largest first, clear of the boxes taken (pixels).
 
-        A name that finds no room is left out; the table beside the map has them all.
+        A long name is shortened until it fits into its zone; one that finds no room is left out, for the tables have it.
         """
         for name, shape in sorted(zones, key=lambda z: -z[1].area):
-            label = axes.text(
-                0.0,
-                0.0,
-                wrapped(name),
-                fontsize=7.5,
-                fontstyle="italic",
-                ha="center",
-                va="center",
-                path_effects=halo(2.6),
-                zorder=8,
-                linespacing=1.05,
-            )
-            for place in places_in(shape):
-                label.set_position(place)
-                box = label.get_window_extent()
-                if self.inside(axes, box) and not any(box.overlaps(other) for other in taken):
+            places = places_in(shape)
+            for k, text in enumerate(shorter(name)):
+                label = axes.text(0.0, 0.0, text, **_ZONE_LABEL, path_effects=halo(2.6))
+                box = self._place(axes, label, shape, places, taken, within=k < len(shorter(name)) - 1)
+                if box is not None:
                     taken.append(box)
                     break
-            else:
                 label.remove()
+
+    def _place(
+        self, axes: Axes, label: Any, shape: Any, places: list[tuple[float, float]], taken: list[Any], *, within: bool
+    ) -> Any:
+        """Put a label at the first place where it fits; its box in pixels, or None where there is none."""
+        import shapely
+        from matplotlib.transforms import Bbox
+
+        size = label.get_window_extent()
+        to_map = axes.transData.inverted()
+        for place in places:
+            x, y = axes.transData.transform(place)
+            box = Bbox.from_bounds(x - size.width / 2, y - size.height / 2, size.width, size.height)
+            if not self.inside(axes, box) or any(box.overlaps(other) for other in taken):
+                continue
+            if within:
+                west, south = to_map.transform((box.x0, box.y0))
+                east, north = to_map.transform((box.x1, box.y1))
+                if not shape.contains(shapely.box(west, south, east, north)):
+                    continue
+            label.set_position(place)
+            return box
+        return None
 
     def inside(self, axes: Axes, box: Any) -> bool:
         """Whether a box in pixels lies on the map."""
@@ -172,6 +183,22 @@ class Frame:
             arrowprops={"arrowstyle": "-|>", "color": colors.INK, "lw": 1.2},
         )
         axes.text(east, bottom + 0.52, "N", ha="center", fontweight="bold")
+
+
+_ZONE_LABEL: dict[str, Any] = {
+    "fontsize": 7.5, "fontstyle": "italic", "ha": "center", "va": "center", "zorder": 8, "linespacing": 1.05
+}  # fmt: skip
+
+
+def shorter(name: str) -> list[str]:
+    """A name for a map, from whole to short.
+
+    >>> shorter("Lot 01, Cooper Ridge Section 4")
+    ['Lot 01, Cooper\\nRidge Section 4', 'Lot 01,\\nCooper Ridge\\nSection 4', 'Lot 01']
+    """
+    first = name.split(",")[0].split(":")[0].split(" - ")[0]
+    texts = [wrapped(name, 18), wrapped(name, 12, 4), wrapped(first, 14, 1)]
+    return list(dict.fromkeys(texts))
 
 
 def places_in(shape: Any, along: int = 9) -> list[tuple[float, float]]:

@@ -15,11 +15,11 @@ from earthwork.units import UNITS
 _AREA_COLUMNS = (
     Column("zone", "zone"),
     Column("area_m2", "area"),
-    Column("cut_m3", "cut, bank"),
-    Column("fill_m3", "fill, comp."),
-    Column("cut_minus_fill_m3", "cut − fill", sign=True),
-    Column("max_cut_m", "deepest cut"),
-    Column("max_fill_m", "highest fill"),
+    Column("cut_m3", "cut,\nbank"),
+    Column("fill_m3", "fill,\ncompacted"),
+    Column("cut_minus_fill_m3", "cut −\nfill", sign=True),
+    Column("max_cut_m", "deepest\ncut"),
+    Column("max_fill_m", "highest\nfill"),
     Column("missing_area_m2", "no data"),
 )
 _MATERIAL_COLUMNS = (
