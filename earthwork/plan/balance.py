@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -21,6 +21,8 @@ from earthwork.soils.card import SoilCard, soil_cards, soil_warnings
 
 if TYPE_CHECKING:
     import pandas
+
+    from earthwork.plan.pad_grades import PadGrades
 
 
 _MOVEMENT_COLUMNS = ["direction", "material", "reason", "dry_mass_t", "bank_m3", "loose_m3", "compacted_m3", "loads"]
@@ -57,6 +59,7 @@ class BalanceResult(Result):
     grade_shift_nearest: GradeShift | None
     grade_curve: tuple[tuple[float, float], ...]  #: (shift [m], surplus [m³ compacted])
     target_surplus_m3: float
+    pad_grades: PadGrades | None = None  #: each pad's own grade, where the site asks for it
 
     @property
     def available_compacted_m3(self) -> float:
@@ -111,6 +114,7 @@ class BalanceResult(Result):
                 {"from": r.source, "to": r.sink, "material": r.material, "dry_mass_t": r.dry_mass_kg / 1000}
                 for r in self.ledger
             ],
+            "pad_grades": self.pad_grades.to_dict() if self.pad_grades else None,
             "ledger_closure_t": self.settlement.open_kg / 1000,
         }
 
@@ -120,11 +124,13 @@ class BalanceResult(Result):
         result = self.to_dict()
         movements = [{"direction": "import", **m.to_dict()} for m in self.imports]
         movements += [{"direction": "export", **m.to_dict()} for m in self.exports]
+        pads = {"pad_grades": pd.DataFrame(result["pad_grades"]["pads"])} if self.pad_grades else {}
         return {
             "materials": pd.DataFrame(result["materials"]),
             "movements": pd.DataFrame(movements, columns=_MOVEMENT_COLUMNS),
             "grade_curve": pd.DataFrame(result["grade_curve"]),
             "ledger": pd.DataFrame(result["ledger"]),
+            **pads,
         }
 
 
@@ -178,7 +184,13 @@ def balance(
     curve = dict(seen.surplus)
     step = model.balance.step or site.units.to_si(0.01, "length")
     root = find_shift(curve, model.balance.target_surplus, step, seen.evaluate)
-    return _result(site, cards, volumes, seen, root, sorted(trials.shifts))
+    result = _result(site, cards, volumes, seen, root, sorted(trials.shifts))
+    if model.balance.pad_moves is None:
+        return result
+    from earthwork.plan.pad_grades import move_pads
+
+    grades = move_pads(site, ground, cards, lambda v: account(model, cards, v), threads=threads)
+    return replace(result, pad_grades=grades, warnings=(*result.warnings, *grades.warnings))
 
 
 class _Seen:

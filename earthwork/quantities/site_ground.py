@@ -34,6 +34,7 @@ class SiteGround:
 
     stack: Stack
     surfaces: SurfaceSet
+    worked_shape: Any = None  #: areas of sections and over-excavations, where they count as disturbed [CRS unit]
     design: BuiltDesign | None = None  #: what is built, where the site has a [design]
     zone_names: tuple[str, ...] = ()
     zones: Rings | None = None
@@ -108,9 +109,9 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
     limits = opener.shape(model.ground.limits, "ground.limits") if model.ground.limits else opener.surfaces.footprint
     design = _design(opener, limits)
     disturbed = opener.rings(model.ground.disturbed, "ground.disturbed")
-    worked = None if model.ground.disturbed else _worked(opener)
+    worked = None if model.ground.disturbed else areas.union_area(_worked(opener))
     if design is not None and disturbed is None:
-        disturbed, worked = areas.rings_on(opener.grid, [areas.union_area([design.lines.area, *(worked or [])])]), None
+        disturbed = areas.rings_on(opener.grid, [areas.union_area([design.lines.area, worked])])
     stack = Stack(
         grid=opener.grid,
         existing=opener.surfaces.existing,
@@ -119,7 +120,7 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
         coverage=area_share,
         limits=areas.rings_on(opener.grid, [limits]) if limits is not None else None,
         disturbed=disturbed,
-        worked=areas.rings_on(opener.grid, [areas.union_area(worked)]) if worked else None,
+        worked=None if worked is None or worked.is_empty else areas.rings_on(opener.grid, [worked]),
         move=opener.rings(model.balance.shift_area, "balance.shift_area") if moving else None,
         moving=moving,
         bands_below_m=tuple((row.below, row.measured_from) for row in model.fill.by_depth) if model.fill else (),
@@ -130,6 +131,7 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
         stack=stack,
         surfaces=opener.surfaces,
         design=design,
+        worked_shape=worked,
         limits_area_m2=areas.ground_area_m2(limits, opener.grid) if limits is not None else None,
         warnings=tuple(dict.fromkeys(opener.warnings)),
         **zones,

@@ -51,7 +51,40 @@ def page(site: Site, result: Any) -> Page:
     else:
         blocks.append(Notes(heading="Over the gate", lines=("Nothing comes in and nothing leaves.",)))
     blocks.append(Facts(heading="What would mend it", rows=_remedies(site, balance)))
+    if balance["pad_grades"]:
+        blocks += _pad_grades(balance["pad_grades"], site)
     return Page(title=f"{site.name}: earthwork balance", blocks=tuple(blocks))
+
+
+_PAD_COLUMNS = (
+    Column("pad", "pad"),
+    Column("held_by", "held by"),
+    Column("elevation_before_m", "drawn at"),
+    Column("elevation_after_m", "move to"),
+    Column("shift_m", "shift", sign=True),
+    Column("saves", "saves\nmoney"),
+)
+
+
+def _pad_grades(grades: dict[str, Any], site: Site) -> list[Block]:
+    """Each pad's own grade, and what the site becomes by them."""
+    units = site.units
+    pads = [{**pad, "held_by": pad["held_by"] or "nothing", "saves": round(pad["saves"])} for pad in grades["pads"]]
+
+    def change(key: str, **options: Any) -> str:
+        before, after = (show(grades[f"{key}_{when}_m3"], "soil_volume", units, **options) for when in ("before", "after"))
+        return f"{before} → {after}"
+
+    rows = (
+        ("cut, bank", change("cut"), ""),
+        ("fill, compacted", change("fill"), ""),
+        ("surplus", change("surplus", sign=True), "compacted; volumes are exact, of the design built again"),
+        ("cost", f"{plain(grades['cost_before'], 0)} → {plain(grades['cost_after'], 0)}", "money, by simple unit costs"),
+    )
+    return [
+        table_of(pads, _PAD_COLUMNS, units, heading="Each pad at its own grade, at least cost", text_columns=2),
+        Facts(rows=rows),
+    ]
 
 
 def _answer(site: Site, balance: dict[str, Any]) -> tuple[tuple[str, str, str], ...]:

@@ -11,11 +11,13 @@ from earthwork.site.base import Area, Section
 from earthwork.site.values import (
     AnyPercent,
     Distance,
+    Elevation,
     Length,
     NotNegative,
     Percent,
     PositiveNumber,
     PositiveStress,
+    Shift,
     Stress,
     Text,
     Thickness,
@@ -104,3 +106,57 @@ class Keys(Section):
     tilt_percent: NotNegative = Field(default=2.0, description="its fall into the slope, percent")
     bench_width: Length = Field(default=3.0, description="width of the benches above it")
     count: bool = Field(default=False, description="count them in the balance as dug and refilled")
+
+
+class PadLimit(Section):
+    """How low and high one pad may lie."""
+
+    pad: Text = Field(description="name of the pad")
+    lowest: Elevation | None = Field(default=None, description="lowest elevation; default: that of the range")
+    highest: Elevation | None = Field(default=None, description="highest elevation; default: that of the range")
+
+
+class PadStep(Section):
+    """How much two pads may differ."""
+
+    between: tuple[Text, Text] = Field(description="names of the two pads")
+    greatest: Thickness = Field(description="greatest difference of their elevations")
+
+
+class PadMoves(Section):
+    """Lets the balance give each pad of a [design] its own grade, at least cost."""
+
+    range: tuple[Shift, Shift] = Field(default=(-1.5, 1.5), description="lowest and highest shift of any pad, + up")
+    fixed: tuple[Text, ...] = Field(default=(), description="names of pads that stay")
+    groups: tuple[tuple[Text, ...], ...] = Field(default=(), description="lists of pads that move together")
+    limit: tuple[PadLimit, ...] = Field(default=(), description="limits of single pads")
+    greatest_step: Thickness | None = Field(
+        default=None, description="greatest difference between neighbours; default: any"
+    )
+    neighbours_within: Distance = Field(default=30.0, description="pads this near each other are neighbours")
+    step: tuple[PadStep, ...] = Field(default=(), description="differences between single pads")
+    average_distance: Length | None = Field(
+        default=None, description="haul on the site; default: between the centres of cut and of fill"
+    )
+    import_cost: NotNegative | None = Field(
+        default=None, description="money per compacted volume brought; default: price and haul from the first borrow"
+    )
+    export_cost: NotNegative | None = Field(
+        default=None,
+        description="money per compacted volume taken away; default: price and haul to the first disposal",
+    )
+    dig_cost: NotNegative = Field(default=0.0, description="money per bank volume dug")
+    fill_cost: NotNegative = Field(default=0.0, description="money per compacted volume placed")
+
+    @model_validator(mode="after")
+    def _ordered(self) -> PadMoves:
+        if self.range[0] > self.range[1]:
+            raise ValueError("give the lower end of range first")
+        for limit in self.limit:
+            if limit.lowest is not None and limit.highest is not None and limit.lowest > limit.highest:
+                raise ValueError(f'give a lowest under the highest of pad "{limit.pad}"')
+        names = [name for group in self.groups for name in group]
+        for name in names:
+            if names.count(name) > 1:
+                raise ValueError(f'give pad "{name}" in one group only')
+        return self

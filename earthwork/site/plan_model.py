@@ -7,6 +7,7 @@ from typing import Annotated
 from pydantic import Field, model_validator
 
 from earthwork.site.base import Area, Section
+from earthwork.site.pads_model import PadMoves
 from earthwork.site.values import (
     Evaporation,
     Flow,
@@ -42,6 +43,7 @@ class Balance(Section):
     shift_range: tuple[Shift, Shift] = Field(
         default=(-3.0, 3.0), description="lowest and highest shift, + up"
     )
+    pad_moves: PadMoves | None = Field(default=None, description="gives each pad of a design its own grade")
 
 
 class Dust(Section):

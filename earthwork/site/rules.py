@@ -19,6 +19,8 @@ def cross_faults(model: SiteModel) -> Iterator[str]:
     yield from _fill(model)
     yield from _names(model)
     yield from work_faults(model)
+    if model.balance.pad_moves is not None and model.design is None:
+        yield "balance.pad_moves: pads move only where a [design] builds them; give [design] instead of ground.finished"
     yield from haul_faults(model)
     low, high = model.balance.shift_range
     if low > high:
