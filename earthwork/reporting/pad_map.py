@@ -69,9 +69,7 @@ def _around(result: PadsResult) -> Grid:
     row, column = max(int(np.floor(top)), 0), max(int(np.floor(left)), 0)
     rows, columns = min(int(np.ceil(bottom)), grid.rows) - row, min(int(np.ceil(right)), grid.columns) - column
     corner = grid.point(row, column)
-    return Grid(
-        rows, columns, *corner, grid.cell_east, grid.cell_north, grid.unit_m, grid.ground_scale, grid.crs
-    )
+    return Grid(rows, columns, *corner, grid.cell_east, grid.cell_north, grid.unit_m, grid.ground_scale, grid.crs)
 
 
 def _step(fields: Sequence[PadField], factor: float) -> float:
@@ -151,9 +149,7 @@ def _box(axes: Axes, bounds: Sequence[float]) -> Any:
     return Bbox(axes.transData.transform([bounds[:2], bounds[2:]]))
 
 
-def _place(
-    axes: Axes, frame: Frame, shape: Any, text: str, taken: list[Any], others: list[Any] | None
-) -> bool:
+def _place(axes: Axes, frame: Frame, shape: Any, text: str, taken: list[Any], others: list[Any] | None) -> bool:
     """Write a label beside a shape, clear of the other pads, or inside it; clear of what is written already.
 
     Without ``others`` it is written inside only.
@@ -192,9 +188,7 @@ def _place(
     return False
 
 
-def _legend(
-    panel: Axes, frame: Frame, result: PadsResult, step: float, numbered: bool, site: Site
-) -> None:
+def _legend(panel: Axes, frame: Frame, result: PadsResult, step: float, numbered: bool, site: Site) -> None:
     columns = frame.columns if frame.legend_below else (0.0, 0.0, 0.0)
     unit = site.units.label("length")
     panel.text(columns[0], 0.9, "Thickness of fill", fontweight="bold")
@@ -268,9 +262,7 @@ def write_pad_shapes(result: PadsResult, path: Path) -> None:
         factor = result.units.factor("length")
         lines = design.lines.lines
         rows = pd.DataFrame({"name": [line.name for line in lines], "kind": [line.kind for line in lines]})
-        shapes = [
-            shapely.transform(line.geometry, lambda c: c / [1.0, 1.0, factor], include_z=True) for line in lines
-        ]
+        shapes = [shapely.transform(line.geometry, lambda c: c / [1.0, 1.0, factor], include_z=True) for line in lines]
         write_shapes(path, "design_lines", shapes, rows, crs=crs, append=True)
 
 

@@ -67,7 +67,9 @@ def _section(result: PadsResult, report: PadReport, place: PadPlace, reader: Any
     metres = grid.unit_m * grid.ground_scale
     start, way = np.array(change.start), np.array(change.end) - np.array(change.start)
     way = way / np.hypot(*way)
-    reach = float(np.hypot(*(np.array(place.polygon.bounds[2:]) - np.array(place.polygon.bounds[:2])))) + change.length_m
+    reach = (
+        float(np.hypot(*(np.array(place.polygon.bounds[2:]) - np.array(place.polygon.bounds[:2])))) + change.length_m
+    )
     line = shapely.LineString([start - reach / metres * 2 * way, start + reach / metres * 2 * way])
 
     def span(shape: Any) -> tuple[float, float]:
@@ -83,9 +85,7 @@ def _section(result: PadsResult, report: PadReport, place: PadPlace, reader: Any
     # One point for each cell that the line meets, or the lines would go down in steps.
     fresh = np.r_[True, (np.diff(rows) != 0) | (np.diff(columns) != 0)]
     station, rows, columns = station[fresh], rows[fresh], columns[fresh]
-    window = Window(
-        int(rows.min()), int(columns.min()), int(np.ptp(rows)) + 1, int(np.ptp(columns)) + 1
-    )
+    window = Window(int(rows.min()), int(columns.min()), int(np.ptp(rows)) + 1, int(np.ptp(columns)) + 1)
     arrays = reader.read(window)
     at = rows - window.row, columns - window.column
     return PadSection(
@@ -138,12 +138,20 @@ def _draw(axes: Axes, section: PadSection, site: Site) -> None:
         linewidth=0, zorder=1,
     )  # fmt: skip
     axes.plot(station, existing, color=colors.CUT[0], linewidth=1.1, linestyle=(0, (4, 2)), label="existing", zorder=3)
-    axes.plot(station, bottom, color=colors.EXPORT, linewidth=1.1, linestyle=(0, (1, 1.2)), label="removal bottom", zorder=3)
+    axes.plot(
+        station, bottom, color=colors.EXPORT, linewidth=1.1, linestyle=(0, (1, 1.2)), label="removal bottom", zorder=3
+    )
     axes.plot(station, subgrade, color=colors.FILL[3], linewidth=1.3, label="subgrade", zorder=4)
     if np.nanmax(np.abs(finished - subgrade)) * factor > 0.02 or site.model.section:
         axes.plot(station, finished, color=colors.FAINT, linewidth=0.9, label="finished", zorder=3)
     axes.plot(
-        station[on_pad], subgrade[on_pad], color=colors.FILL[3], linewidth=3.2, solid_capstyle="butt", label="pad", zorder=5
+        station[on_pad],
+        subgrade[on_pad],
+        color=colors.FILL[3],
+        linewidth=3.2,
+        solid_capstyle="butt",
+        label="pad",
+        zorder=5,
     )
     low, high = _span([existing, bottom, subgrade, finished])
     axes.set_ylim(low, high + 0.12 * (high - low))
@@ -153,7 +161,9 @@ def _draw(axes: Axes, section: PadSection, site: Site) -> None:
         axes.axvline(edge / factor, color=colors.FAINT, linewidth=0.7, linestyle=(0, (2, 2)), zorder=2, label=label)
     y = high + 0.07 * (high - low)
     a, b = (s / factor for s in section.steepest)
-    axes.annotate("", (b, y), (a, y), arrowprops={"arrowstyle": "|-|,widthA=0.25,widthB=0.25", "color": colors.INK, "lw": 0.9})
+    axes.annotate(
+        "", (b, y), (a, y), arrowprops={"arrowstyle": "|-|,widthA=0.25,widthB=0.25", "color": colors.INK, "lw": 0.9}
+    )
     _title(axes, section, site)
     plain_axes(axes)
     unit = site.units.label("length")

@@ -160,10 +160,17 @@ def _write_page(result: ReportResult, folder: ReportFolder, inputs: list[dict[st
     path.write_text(text, encoding="utf-8")
 
 
+def _write_workbook(result: ReportResult, folder: ReportFolder, inputs: list[dict[str, Any]]) -> None:
+    from earthwork.reporting.workbook.write import write_workbook
+
+    write_workbook(result.parts, folder.path("workbook.xlsx"))
+
+
 #: By group, in the order of the work: what the stage is called, and what writes it.
 _WRITERS: dict[str, tuple[str, Callable[[ReportResult, ReportFolder, list[dict[str, Any]]], None]]] = {
     "json": ("writing the document", _write_json),
     "tables": ("writing the tables", _write_tables),
     "maps": ("drawing maps and charts", _write_maps),
     "page": ("setting the page", _write_page),
+    "workbook": ("writing the workbook", _write_workbook),
 }

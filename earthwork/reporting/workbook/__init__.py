@@ -1,0 +1,1 @@
+"""The workbook: the quantities and plans of a site with live formulas."""
