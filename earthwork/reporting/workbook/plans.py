@@ -31,9 +31,13 @@ def plan_sheet(sheet: Sheet, rows: Sequence[Row], columns: Sequence[Column], *, 
     """Write rows under heads, with totals; the row of the totals."""
     first = sheet.head([c.head for c in columns], freeze=freeze)
     letters = {c.key: i for i, c in enumerate(columns)}
+
+    def in_row(row: int) -> Callable[[str], str]:
+        return lambda key: at(row, letters[key])
+
     for row, entry in enumerate(rows, start=first):
         for i, column in enumerate(columns):
-            _cell(sheet, row, i, column, entry, lambda key, row=row: at(row, letters[key]))
+            _cell(sheet, row, i, column, entry, in_row(row))
     last = first + len(rows) - 1
     sheet.text(last + 1, 0, "all", "key")
     for i, column in enumerate(columns):
