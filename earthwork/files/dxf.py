@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -30,9 +30,7 @@ def write_dxf(
 
     with open(path, "w", encoding="ascii", errors="replace", newline="\n") as file, r12writer(file) as drawing:
         for surface in surfaces:
-            layer, vertices = layer_name(surface.name), surface.vertices.round(4)
-            for corners in vertices[surface.triangles]:
-                drawing.add_3dface(corners.tolist(), layer=layer, color=_COLORS["surface"])
+            file.writelines(_faces(surface))
         for line in breaklines:
             points = line.points.round(4).tolist()
             drawing.add_polyline(points, layer=layer_name(line.kind), color=_COLORS["line"])
@@ -48,6 +46,15 @@ def write_dxf(
                 drawing.add_text(
                     plain_text(name), insert=(inner.x, inner.y), height=size, layer=layer_name(f"{layer} names")
                 )
+
+
+def _faces(surface: Triangles) -> Iterator[str]:
+    """The faces of a surface as entities; a triangle's last corner is written twice, as the format asks."""
+    head = f"0\n3DFACE\n8\n{layer_name(surface.name)}\n62\n{_COLORS['surface']}\n"
+    corners = [f"{x:.4f}\n2{{0}}\n{y:.4f}\n3{{0}}\n{z:.4f}\n" for x, y, z in surface.vertices.tolist()]
+    for a, b, c in surface.triangles.tolist():
+        ends = zip((a, b, c, c), "0123", strict=True)
+        yield head + "".join(f"1{k}\n{corners[i].replace('{0}', k)}" for i, k in ends)
 
 
 def _rings(shape: Any) -> list[list[tuple[float, ...]]]:

@@ -89,8 +89,12 @@ def _units(unit_m: float) -> str:
 
 def _attribute(text: str) -> str:
     """A quoted attribute; what XML cannot hold becomes a question mark."""
-    return quoteattr("".join(c if c in "\t\n\r" or 32 <= ord(c) < 0xFFFE and not 0xD800 <= ord(c) < 0xE000 or
-                             ord(c) > 0xFFFF else "?" for c in text))  # fmt: skip
+    return quoteattr("".join(c if _is_xml(ord(c)) else "?" for c in text))
+
+
+def _is_xml(code: int) -> bool:
+    """Whether XML 1.0 has a character."""
+    return code in (9, 10, 13) or 32 <= code < 0xD800 or 0xE000 <= code < 0xFFFE or code > 0xFFFF
 
 
 def _write_surface(file: IO[str], surface: Triangles, breaklines: Sequence[Breakline]) -> None:

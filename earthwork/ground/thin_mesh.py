@@ -46,7 +46,8 @@ def thin_mesh(heights: np.ndarray, tolerance_m: float, most_triangles: int | Non
 
     Args:
         heights: (rows, columns) [m]; NaN = no data, where there are no triangles.
-        tolerance_m: no point is farther from its triangle; doubled until there are no more triangles than ``most_triangles``.
+        tolerance_m: no point is farther from its triangle; raised until there are no more triangles than
+            ``most_triangles``.
 
     >>> mesh = thin_mesh(np.zeros((5, 5)), 0.01)
     >>> len(mesh.triangles), len(mesh.heights)
@@ -54,17 +55,37 @@ def thin_mesh(heights: np.ndarray, tolerance_m: float, most_triangles: int | Non
     """
     padded, side = _padded(heights)
     errors = _errors(padded, side)
-    while True:
-        corners = _triangles(errors, side, tolerance_m)
-        corners = corners[np.isfinite(padded[corners[..., 0], corners[..., 1]]).all(axis=1)]
-        # beyond this the tolerance has swallowed all relief and more of it would change nothing
-        if most_triangles is None or len(corners) <= most_triangles or tolerance_m > 1e4:
-            break
-        tolerance_m *= 2.0
+    corners = _covered(errors, padded, side, tolerance_m)
+    if most_triangles is not None and len(corners) > most_triangles:
+        tolerance_m, corners = _few_enough(errors, padded, side, tolerance_m, most_triangles)
     flat = corners[..., 0] * padded.shape[1] + corners[..., 1]
     used, triangles = np.unique(flat, return_inverse=True)
     rows, columns = np.divmod(used, padded.shape[1])
     return Mesh(rows, columns, padded[rows, columns], triangles.reshape(-1, 3), tolerance_m)
+
+
+def _covered(errors: np.ndarray, padded: np.ndarray, side: int, tolerance_m: float) -> np.ndarray:
+    """The triangles of a tolerance whose corners all have data, (triangles, 3, 2)."""
+    corners = _triangles(errors, side, tolerance_m)
+    return corners[np.isfinite(padded[corners[..., 0], corners[..., 1]]).all(axis=1)]
+
+
+def _few_enough(errors: np.ndarray, padded: np.ndarray, side: int, low: float, most: int) -> tuple[float, np.ndarray]:
+    """The least tolerance found, to about a tenth, that leaves no more triangles than asked for."""
+    low, high = max(low, 1e-6), max(low, 1e-6)
+    corners = _covered(errors, padded, side, high)
+    # beyond this all relief is swallowed, and more tolerance would change nothing
+    while len(corners) > most and high < 1e4:
+        low, high = high, 2.0 * high
+        corners = _covered(errors, padded, side, high)
+    for _ in range(3):
+        middle = (low * high) ** 0.5
+        finer = _covered(errors, padded, side, middle)
+        if len(finer) <= most:
+            high, corners = middle, finer
+        else:
+            low = middle
+    return high, corners
 
 
 def _padded(heights: np.ndarray) -> tuple[np.ndarray, int]:

@@ -15,6 +15,7 @@ from earthwork.reporting.figures import number, round_step
 from earthwork.reporting.maps import limits_shape
 from earthwork.reporting.report.map_data import Arrow, LiftRow, MapContent, Outline
 from earthwork.reporting.report.parts import Parts
+from earthwork.site.haul_rules import ON_SITE_STOCKPILE
 
 #: Ground by stratum, from the top down: earths of our own, apart in lightness.
 _GROUND = ("#E3C78F", "#8C8FA3", "#B98B73", "#5E6B5A", "#D8D4C8", "#7A5C86")
@@ -52,7 +53,7 @@ class MapView:
 def map_view(parts: Parts) -> MapView:
     """What the map of a report shows."""
     units = parts.site.units
-    scales = {"depth": _depth_scale(parts), "thickness": _thickness_scale(parts)}
+    scales = {"depth": depth_scale(parts), "thickness": _thickness_scale(parts)}
     layers = [("depth", "Depth"), ("thickness", "Fill thickness")]
     if parts.surfaces.materials:
         scales["material"] = _material_scale(parts.surfaces.materials)
@@ -62,7 +63,7 @@ def map_view(parts: Parts) -> MapView:
         scales["lifts"] = Scale((), _LIFTS, _LIFT_NAMES, outside="#EFEEE9")
         layers.append(("lifts", "Lifts"))
     layers += [("finished", "Finished grade"), ("existing", "Existing ground")]
-    outlines, arrows = _outlines(parts), _arrows(parts)
+    outlines, arrows = outlines_of(parts), _arrows(parts)
     content = MapContent(outlines=outlines, arrows=arrows, lifts=lifts, fills=fills, extra=_extra(parts, scales))
     every = parts.surfaces.every
     cells = "one cell" if every == 1 else f"{every} × {every} cells, of which it shows the mean,"
@@ -109,7 +110,8 @@ def _legend(name: str, scale: Scale) -> tuple[tuple[str, str, bool], ...]:
     return tuple((color, label, "cut" in label) for color, label in rows)
 
 
-def _depth_scale(parts: Parts) -> Scale:
+def depth_scale(parts: Parts) -> Scale:
+    """The classes of depth that all maps of a report share."""
     factor = parts.site.units.factor("length")
     classes = classes_for(parts.surfaces.depth / factor, NO_CHANGE_M / factor)
     bounds = tuple(float(b) * factor for b in classes.bounds[1:-1])
@@ -153,7 +155,8 @@ def _extra(parts: Parts, scales: Mapping[str, Scale]) -> dict[str, Any]:
 # --- over the surfaces ----------------------------------------------------------------------------------------------
 
 
-def _outlines(parts: Parts) -> list[Outline]:
+def outlines_of(parts: Parts) -> list[Outline]:
+    """Limits, zones, pads, buildings and barriers of a site."""
     ground, model = parts.ground, parts.site.model
     found = []
     limits = limits_shape(ground)
@@ -192,29 +195,29 @@ def _arrows(parts: Parts) -> list[Arrow]:
     haul = parts.documents.get("haul")
     if not haul:
         return []
-    places = {b["block"]: (b["easting_m"], b["northing_m"], b["kind"]) for b in haul["blocks"]}
-    unit = parts.ground.stack.grid.unit_m
-    paths = _paths(parts, unit)
+    kinds = {b["block"]: b["kind"] for b in haul["blocks"]}
     arrows = []
-    for i, move in enumerate(haul["moves"]):
-        start, end = places[move["from"]], places[move["to"]]
-        kind = "import" if start[2] == "borrow" else "export" if end[2] == "disposal" else "site"
-        straight = ((start[0] / unit, start[1] / unit), (end[0] / unit, end[1] / unit))
+    for move, path in zip(haul["moves"], haul_paths(parts), strict=True):
+        kind = move_kind(move, kinds)
         mass = show(move["dry_mass_t"], "mass", parts.site.units, si=1000.0)
         label = f"{move['material']}: {move['from']} to {move['to']}, {mass} dry"
-        arrows.append(Arrow(paths.get(i) or straight, label, move["dry_mass_t"], kind))
+        arrows.append(Arrow(path, label, move["dry_mass_t"], kind))
     return arrows
 
 
-def _paths(parts: Parts, unit_m: float) -> dict[int, tuple[tuple[float, float], ...]]:
-    """The ways really driven, by number of the move, where the haul tells them (CRS units)."""
-    lines = getattr(parts.results["haul"], "paths", None) or ()
-    found = {}
-    for i, line in enumerate(lines):
-        points = list(getattr(line, "coords", line) or ())
-        if len(points) > 1:
-            found[i] = tuple((float(p[0]), float(p[1])) for p in points)
-    return found
+def move_kind(move: Mapping[str, Any], kinds: Mapping[str, str]) -> str:
+    """Whether a move comes to the site, leaves it or stays on it: import, export or site."""
+    if kinds.get(move["from"]) == "borrow":
+        return "import"
+    off_site = kinds.get(move["to"]) == "disposal" and move["to"] != ON_SITE_STOCKPILE
+    return "export" if off_site else "site"
+
+
+def haul_paths(parts: Parts) -> list[tuple[tuple[float, float], ...]]:
+    """The way of each move as driven, CRS coordinates."""
+    result = parts.results["haul"]
+    frame = result.areas.frame
+    return [tuple((float(e), float(n)) for e, n in frame.map(move.points)) for move in result.moves]
 
 
 def _lifts(parts: Parts) -> tuple[list[LiftRow], np.ndarray | None]:

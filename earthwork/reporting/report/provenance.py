@@ -9,6 +9,7 @@ from typing import Any
 from earthwork.reporting.basis import missing_line, not_counted_line, sample_line, scale_line, subgrade_line
 from earthwork.reporting.display import plain, show
 from earthwork.reporting.report.parts import Parts
+from earthwork.site import Site
 
 _METHOD = (
     "Cut and fill are between stripped ground and subgrade, cell by cell; cells that cross the zero line are split by "
@@ -52,6 +53,17 @@ def _surfaces(parts: Parts) -> list[str]:
         else:
             texts.append(f"{name}: {file}{_dated(parts.site.resolve(file))}")
     return texts
+
+
+def inputs_date(site: Site) -> datetime.date | None:
+    """Date of the newest surface file of a site; None without any."""
+    dates = []
+    for name in ("existing", "finished"):
+        file = getattr(getattr(site.model.ground, name), "file", None)
+        if file is not None and site.resolve(file).exists():
+            changed = site.resolve(file).stat().st_mtime
+            dates.append(datetime.datetime.fromtimestamp(changed, tz=datetime.UTC).date())
+    return max(dates, default=None)
 
 
 def _dated(path: Path) -> str:

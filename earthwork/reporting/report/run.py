@@ -166,6 +166,18 @@ def _write_workbook(result: ReportResult, folder: ReportFolder, inputs: list[dic
     write_workbook(result.parts, folder.path("workbook.xlsx"))
 
 
+def _write_exchange(result: ReportResult, folder: ReportFolder, inputs: list[dict[str, Any]]) -> None:
+    from earthwork.reporting.report.exchange import write_exchange
+
+    write_exchange(result.parts, folder)
+
+
+def _write_model(result: ReportResult, folder: ReportFolder, inputs: list[dict[str, Any]]) -> None:
+    from earthwork.reporting.report.exchange import write_model
+
+    write_model(result.parts, folder)
+
+
 #: By group, in the order of the work: what the stage is called, and what writes it.
 _WRITERS: dict[str, tuple[str, Callable[[ReportResult, ReportFolder, list[dict[str, Any]]], None]]] = {
     "json": ("writing the document", _write_json),
@@ -173,4 +185,6 @@ _WRITERS: dict[str, tuple[str, Callable[[ReportResult, ReportFolder, list[dict[s
     "maps": ("drawing maps and charts", _write_maps),
     "page": ("setting the page", _write_page),
     "workbook": ("writing the workbook", _write_workbook),
+    "gis": ("writing layers and surfaces", _write_exchange),
+    "model": ("writing the 3D model", _write_model),
 }

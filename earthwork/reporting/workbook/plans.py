@@ -6,6 +6,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any
 
+from earthwork.reporting.report.map_content import move_kind
 from earthwork.reporting.report.parts import Parts
 from earthwork.reporting.workbook.book import TONNE, Book, Head, Sheet, at
 from earthwork.reporting.workbook.materials import Materials
@@ -69,53 +70,74 @@ def _cell(sheet: Sheet, row: int, i: int, column: Column, entry: Row, cell: Call
 # --- haul -----------------------------------------------------------------------------------------------------------
 
 
-def haul_sheet(book: Book, parts: Parts, materials: Materials) -> None:
+class HaulSheet:
     """Moves with loads, work and cost: they follow the truck, the rate and the materials."""
-    haul = parts.site.model.haul
-    assert haul is not None
-    sheet = book.sheet("Haul", f"{parts.site.name}: haul", "Delivered, after loss. Loads are decimal per move.")
-    sheet.text(2, 0, "money per dry mass × distance")
-    rate = "$" + at(2, 3)[0] + "$3"
-    sheet.number(2, 3, haul.cost, "price", style="input")
-    truck = haul.truck
-    if truck is not None:
-        sheet.text(2, 4, "heaped volume")
-        sheet.number(2, 5, truck.heaped_volume, "soil_volume", style="input")
-        sheet.text(2, 6, "payload, moist")
-        sheet.number(2, 7, truck.payload, "mass", style="input")
-    sheet.row = 4
-    k = materials.mass_factor
 
-    def bank(cell: Callable[[str], str], move: Row) -> str:
-        return f"{cell('dry_mass_t')}/({materials.cells[move['material']].bank}*{k})"
+    def __init__(self, book: Book, parts: Parts, materials: Materials) -> None:
+        haul = parts.site.model.haul
+        assert haul is not None
+        self.book, self.parts, self.materials, self.haul = book, parts, materials, haul
+        self.kinds = {b["block"]: b["kind"] for b in parts.documents["haul"]["blocks"]}
+        note = "Delivered, after loss. Loads are decimal per move; a move over the gate keeps to the road payload."
+        self.sheet = book.sheet("Haul", f"{parts.site.name}: haul", note)
 
-    def loose(cell: Callable[[str], str], move: Row) -> str:
-        return f"{cell('bank_m3')}*{materials.cells[move['material']].per_bank_loose}"
+    def write(self) -> None:
+        """Write all of the sheet."""
+        sheet, truck = self.sheet, self.haul.truck
+        sheet.text(2, 0, f"money per {self.book.unit('mass')}·{self.book.unit('road')} of dry mass")
+        sheet.number(2, 2, self.haul.cost, "price", style="input")
+        if truck is not None:
+            road = truck.payload if truck.road_payload is None else truck.road_payload
+            for column, label, value, kind in (
+                (3, "heaped volume", truck.heaped_volume, "soil_volume"), (5, "payload, moist", truck.payload, "mass"),
+                (7, "payload on roads", road, "mass"),
+            ):  # fmt: skip
+                sheet.text(2, column, label)
+                sheet.number(2, column + 1, value, kind, style="input")
+        sheet.row = 4
+        plan_sheet(sheet, self.parts.documents["haul"]["moves"], self._columns(), freeze=3)
 
-    def loads(cell: Callable[[str], str], move: Row) -> str | None:
-        if truck is None:
+    def _columns(self) -> list[Column]:
+        by_distance = self.haul.cost_by == "distance"
+        return [
+            Column("from", Head("from", None, 26)), Column("to", Head("to", None, 26)),
+            Column("material", Head("material", None, 16)),
+            Column("dry_mass_t", Head("dry mass", "mass"), TONNE, total=True),
+            Column("bank_m3", Head("bank", "soil_volume"), formula=self._bank, total=True),
+            Column("loose_m3", Head("loose", "soil_volume"), formula=self._loose, total=True),
+            Column("compacted_m3", Head("compacted", "soil_volume"), total=True),
+            Column("distance_m", Head("distance", "road")),
+            Column("loads", Head("loads", "decimal"), formula=self._loads, total=self.haul.truck is not None),
+            Column("work", Head("dry mass × distance", "decimal", unit=f"{self.book.unit('mass')}·{self.book.unit('road')}"),
+                   formula=lambda cell, move: f"{cell('dry_mass_t')}*{cell('distance_m')}", value=self._work, total=True),
+            Column("hauling", Head("cost of hauling", "money"), value=self._hauling, total=True,
+                   formula=(lambda cell, move: f"{cell('work')}*$C$3") if by_distance else None),
+            Column("other", Head("prices and rehandling", "money"), total=True,
+                   value=lambda move: move["cost"] - self._hauling(move)),
+            Column("cost", Head("cost", "money"), total=True,
+                   formula=lambda cell, move: f"{cell('hauling')}+{cell('other')}"),
+        ]  # fmt: skip
+
+    def _bank(self, cell: Callable[[str], str], move: Row) -> str:
+        return f"{cell('dry_mass_t')}/({self.materials.cells[move['material']].bank}*{self.materials.mass_factor})"
+
+    def _loose(self, cell: Callable[[str], str], move: Row) -> str:
+        return f"{cell('bank_m3')}*{self.materials.cells[move['material']].per_bank_loose}"
+
+    def _loads(self, cell: Callable[[str], str], move: Row) -> str | None:
+        if self.haul.truck is None:
             return None
-        moist = f"{cell('dry_mass_t')}*(1+{materials.cells[move['material']].water}/100)"
-        return f"MAX({cell('loose_m3')}/$F$3,{moist}/$H$3)"
+        payload = "$G$3" if move_kind(move, self.kinds) == "site" else "$I$3"
+        moist = f"{cell('dry_mass_t')}*(1+{self.materials.cells[move['material']].water}/100)"
+        return f"MAX({cell('loose_m3')}/$E$3,{moist}/{payload})"
 
-    def work(move: Row) -> float:
-        return book.shown(move["dry_mass_t"], "mass", TONNE) * book.shown(move["distance_m"], "road")
+    def _work(self, move: Row) -> float:
+        mass = self.book.shown(move["dry_mass_t"], "mass", TONNE)
+        return mass * self.book.shown(move["distance_m"], "road")
 
-    columns = [
-        Column("from", Head("from", None, 26)), Column("to", Head("to", None, 26)),
-        Column("material", Head("material", None, 16)),
-        Column("dry_mass_t", Head("dry mass", "mass"), TONNE, total=True),
-        Column("bank_m3", Head("bank", "soil_volume"), formula=bank, total=True),
-        Column("loose_m3", Head("loose", "soil_volume"), formula=loose, total=True),
-        Column("compacted_m3", Head("compacted", "soil_volume"), total=True),
-        Column("distance_m", Head("distance", "road")),
-        Column("loads", Head("loads", "decimal"), formula=loads, total=truck is not None),
-        Column("work", Head("dry mass × distance", "decimal", unit=f"{book.unit('mass')}·{book.unit('road')}"),
-               formula=lambda cell, move: f"{cell('dry_mass_t')}*{cell('distance_m')}", value=work, total=True),
-        Column("money", Head("cost of moving", "money"), formula=lambda cell, move: f"{cell('work')}*{rate}",
-               value=lambda move: work(move) * haul.cost, total=True),
-    ]  # fmt: skip
-    plan_sheet(sheet, parts.documents["haul"]["moves"], columns, freeze=3)
+    def _hauling(self, move: Row) -> float:
+        """Money for the way alone; by truck hours all of the cost is in it."""
+        return float(move["cost"] if self.haul.cost_by == "time" else self._work(move) * self.haul.cost)
 
 
 # --- lifts ----------------------------------------------------------------------------------------------------------

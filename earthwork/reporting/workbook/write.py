@@ -9,7 +9,7 @@ from earthwork.reporting.report.parts import Parts
 from earthwork.reporting.workbook.balance import BalanceSheet
 from earthwork.reporting.workbook.book import Book
 from earthwork.reporting.workbook.materials import by_material_sheet, materials_sheet, quantities_sheet
-from earthwork.reporting.workbook.plans import haul_sheet, lifts_sheet, pads_sheet, water_sheet
+from earthwork.reporting.workbook.plans import HaulSheet, lifts_sheet, pads_sheet, water_sheet
 
 
 def write_workbook(parts: Parts, path: Path) -> None:
@@ -30,7 +30,7 @@ def write_workbook(parts: Parts, path: Path) -> None:
             by_material_sheet(book, parts, materials)
             BalanceSheet(book, parts, materials).write()
             if "haul" in parts.results:
-                haul_sheet(book, parts, materials)
+                HaulSheet(book, parts, materials).write()
         for name, write in (("lifts", lifts_sheet), ("water", water_sheet), ("pads", pads_sheet)):
             if name in parts.results:
                 write(book, parts)
