@@ -84,10 +84,10 @@ PHASE_LINES = [[(282, 520), (276, 230), (250, -10)], [(425, 520), (420, 330), (4
 
 #: name, line, speed [km/h], steepest grade [%]
 HAUL_ROADS = [
-    ("hill road", [(122, 312), (104, 285), (96, 235), (104, 186)], 18.0, 10.0),
-    ("west road", [(104, 186), (170, 180), (262, 200), (292, 252), (322, 288)], 30.0, 6.0),
-    ("south road", [(262, 200), (300, 160), (352, 140), (380, 122)], 25.0, 8.0),
-    ("ridge road", [(372, 352), (402, 372), (452, 376)], 20.0, 10.0),
+    ("hill road", [(122, 312), (104, 285), (96, 235), (104, 186)], 18.0, 15.0),
+    ("west road", [(104, 186), (170, 180), (262, 200), (292, 252), (322, 288)], 30.0, 10.0),
+    ("south road", [(262, 200), (300, 160), (352, 140), (380, 122)], 25.0, 10.0),
+    ("ridge road", [(372, 352), (402, 372), (452, 376)], 20.0, 15.0),
 ]
 BASELINE = [(95, 360), (120, 345), (345, 318), (480, 372), (540, 396)]
 
@@ -296,7 +296,9 @@ def phases(limits: Polygon) -> list[tuple[Polygon, dict]]:
     for cut in cuts:
         pieces = [piece for whole in pieces for piece in split(whole, cut).geoms]
     pieces.sort(key=lambda piece: piece.centroid.x)
-    return [(piece, {"phase": name}) for piece, name in zip(pieces, PHASES, strict=True)]
+    return [
+        (piece, {"phase": name, "order": i + 1}) for i, (piece, name) in enumerate(zip(pieces, PHASES, strict=True))
+    ]
 
 
 def no_go() -> dict[str, Polygon]:
