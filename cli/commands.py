@@ -43,7 +43,10 @@ def new(
     directory: Annotated[Path, typer.Argument(metavar="DIR", help="A folder that is new or empty.")],
     units: Annotated[str, typer.Option("--units", metavar="metric|us", help="Units of its numbers.")] = "metric",
 ) -> None:
-    """Write a commented starter site that runs at once, with small surfaces and a plan of an invented site."""
+    """Write a commented starter site that runs at once.
+
+    It has small surfaces and a plan of an invented place; change it into yours, a line at a time.
+    """
     from earthwork.files.starter import new
 
     site = new(directory, units=units)
@@ -53,7 +56,10 @@ def new(
 @app.command()
 @with_shared
 def check(site: SiteFile, how: Shared) -> None:
-    """Check a site file and every file it names, and say which commands it has everything for."""
+    """Check a site file and every file it names.
+
+    Says which commands the site has everything for. The surfaces are read once, so that every block is tried.
+    """
     from .flow import perform
 
     perform("check", site, how)
@@ -73,9 +79,9 @@ def volumes(
     *,
     how: Shared,
 ) -> None:
-    """Cut and fill between stripped ground and subgrade, by zone and material.
+    """Cut and fill, by zone and by material.
 
-    Runs from a site file, or straight from two rasters with --existing and --finished.
+    Volumes run from stripped ground to subgrade. Give a site file, or two rasters with --existing and --finished.
     """
     from .flow import perform, site_of_files
 
@@ -98,9 +104,9 @@ def soil(
     *,
     how: Shared,
 ) -> None:
-    """The soil card of each material: densities, shrink and swell, water contents, placing target.
+    """The soil card of each material.
 
-    With --points it fits the compaction curve of a file, without a site file.
+    Densities in the bank, loose and compacted, shrink and swell, water contents, the target to place at. With --points it fits the compaction curve of a file, without a site file.
     """
     from .flow import perform, site_of_bench
 
@@ -112,7 +118,11 @@ def soil(
 @app.command()
 @with_shared
 def balance(site: SiteFile, how: Shared) -> None:
-    """Balance the site in dry mass: surplus or shortage, imports, exports, the grade shift that mends it."""
+    """Surplus or shortage, imports and exports, grade shift.
+
+    Soil is followed as dry mass, from cut to fill. Says what a point of shrinkage and a step of grade are worth, and
+    which shift of the grade that may move would balance the site.
+    """
     from .flow import perform
 
     perform("balance", site, how)
@@ -121,7 +131,10 @@ def balance(site: SiteFile, how: Shared) -> None:
 @app.command()
 @with_shared
 def pads(site: SiteFile, how: Shared) -> None:
-    """What each building pad stands on: fill thickness, class, flags, settlement screen, undercuts, setbacks."""
+    """What each building pad stands on.
+
+    Fill thickness, class and flags, a settlement screen, undercuts that would mend a transition, setbacks.
+    """
     from .flow import perform
 
     perform("pads", site, how)
@@ -140,9 +153,9 @@ def report(
     *,
     how: Shared,
 ) -> None:
-    """The whole job in one pass: page, interactive map, tables, maps, workbook, GIS files, 3D model.
+    """The whole job in one pass, as a folder of files.
 
-    Goes into the folder "report" beside the site file, or into --out.
+    A page with an interactive map, tables, maps, a workbook, GIS files and a 3D model. Goes into the folder "report" beside the site file, or into --out.
     """
     from .flow import perform_report
 
