@@ -130,6 +130,15 @@ def balance(site: SiteFile, how: Shared) -> None:
 
 @app.command()
 @with_shared
+def haul(site: SiteFile, how: Shared) -> None:
+    """Plan the haul: which earth goes where, how far, in how many loads, at what cost; with proof and mass curve."""
+    from .flow import perform
+
+    perform("haul", site, how)
+
+
+@app.command()
+@with_shared
 def pads(site: SiteFile, how: Shared) -> None:
     """What each building pad stands on.
 

@@ -71,7 +71,7 @@ class HaulCosts:
         """Cost of a kilogram from each source to each sink (n, m), over the best stockpile where it has to wait."""
         phase = phases.hauled_in(self.dug, self.filled)
         price = self._prices()
-        fixed = np.array([self.fixed_units(s.material) for s in self.places.sources])
+        fixed = np.array([self.fixed_units(s.material) for s in self.places.sources], float)
         cost = (self.units(self.from_place, self.to_place, phase) + fixed[:, None]) * price
         waiting = phases.waits(self.dug, self.filled)
         if waiting.any():
@@ -82,9 +82,11 @@ class HaulCosts:
     def _prices(self) -> Array:
         """Money for a kilogram over one unit (n, m): loads to and from places off the site keep to the road's limit."""
         sources, sinks = self.places.sources, self.places.sinks
-        site = np.array([self.price(s.material) for s in sources])[:, None]
-        road = np.array([self.price(s.material, on_road=True) for s in sources])[:, None]
-        off = np.array([s.kind == "borrow" for s in sources])[:, None] | np.array([off_site(s) for s in sinks])[None, :]
+        site = np.array([self.price(s.material) for s in sources], float)[:, None]
+        road = np.array([self.price(s.material, on_road=True) for s in sources], float)[:, None]
+        comes = np.array([s.kind == "borrow" for s in sources], bool)
+        leaves = np.array([off_site(s) for s in sinks], bool)
+        off = comes[:, None] | leaves[None, :]
         return np.where(off, road, site)
 
     def rounds(self) -> phases.Rounds:

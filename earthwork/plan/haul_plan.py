@@ -113,7 +113,8 @@ class _Planner:
 
     def _weights(self) -> Array:
         """Volume that a kilogram makes, by class of source and of sink."""
-        return np.array([[sink.m3_per_kg.get(m, 1.0) for sink in self.kinds] for m in self.row_materials])
+        rows = [[sink.m3_per_kg.get(m, 1.0) for sink in self.kinds] for m in self.row_materials]
+        return np.array(rows, float).reshape(len(self.row_materials), len(self.kinds))
 
     def _moves(self, table: Array, row_class: Array, column_class: Array) -> Costs:
         """Cost of a kilogram from each source to each sink."""

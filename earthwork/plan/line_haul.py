@@ -72,6 +72,7 @@ class LineHaul:
     cut_m3: np.ndarray
     fill_m3: np.ndarray
     sections_m2: np.ndarray
+    beyond_m3: tuple[float, float]  #: of the cut and the fill, what lies beyond the ends of the line
     outside_cut_m3: float
     outside_fill_m3: float
 
@@ -80,12 +81,13 @@ class LineHaul:
         return np.diff(self.curve.stations_m)
 
     def checks(self) -> dict[str, dict[str, float]]:
-        """Cut and fill by the grid, by average end areas and by the prismoidal formula [m³]."""
+        """Cut and fill beside the line, not beyond its ends: by the grid, by end areas and by the prismoidal
+        formula."""
         found = {}
         for i, (what, grid) in enumerate((("cut", self.cut_m3), ("fill", self.fill_m3))):
             ends, middles = self.sections_m2[i, ::2], self.sections_m2[i, 1::2]
             found[what] = {
-                "grid_m3": float(grid.sum()),
+                "grid_m3": float(grid.sum()) - self.beyond_m3[i],
                 "end_area_m3": float(average_end_area_m3(ends, self.spacing_m).sum()),
                 "prismoidal_m3": float(prismoidal_m3(ends, middles, self.spacing_m).sum()),
             }
@@ -175,6 +177,9 @@ def line_haul(site: Site, cards: dict[str, SoilCard], tally: LineTally) -> LineH
             spec.freehaul, borrow_cost=spec.borrow_cost, overhaul_cost=spec.overhaul_price, station_m=station
         )
     outside = dict(zip(stations.channels, stations.outside * cell, strict=True))
+    beyond = dict.fromkeys(("cut", "fill", "over_excavation", "scarify"), 0.0)
+    for (what, _, _), amount in zip(stations.channels, stations.beyond * cell, strict=True):
+        beyond[what] += float(amount)
     return LineHaul(
         curve=curve,
         start_m=spec.start,
@@ -185,6 +190,7 @@ def line_haul(site: Site, cards: dict[str, SoilCard], tally: LineTally) -> LineH
         cut_m3=cut,
         fill_m3=fill,
         sections_m2=tally.sections.areas,
+        beyond_m3=(beyond["cut"], beyond["fill"] - beyond["over_excavation"]),
         outside_cut_m3=float(sum(v for (what, _, _), v in outside.items() if what == "cut")),
         outside_fill_m3=float(sum(v for (what, _, _), v in outside.items() if what == "fill")),
     )

@@ -15,6 +15,8 @@ from earthwork.plan.visibility import Array
 #: Nodes of a net; more roads get a wider spacing.
 _NODES = 1000
 _SPACING_M = 10.0
+#: Length over which the grade of a road is taken.
+_WINDOW_M = 30.0
 
 Elevations = Callable[[Array], Array]
 
@@ -133,7 +135,13 @@ def _within_grade(road: Road, line: Array, elevations: Elevations | None) -> tup
     step = np.hypot(*np.diff(line, axis=0).T)
     if road.grade_limit is None or elevations is None:
         return np.ones(len(step), bool), None
-    grade = np.abs(np.diff(elevations(line))) / np.maximum(step, 1e-9)
+    # A grade is felt over the length of a truck's run, not over a metre: half a window each way from the middle.
+    at = np.concatenate([[0.0], np.cumsum(step)])
+    middle = (at[:-1] + at[1:]) / 2
+    low, high = np.maximum(middle - _WINDOW_M / 2, 0.0), np.minimum(middle + _WINDOW_M / 2, at[-1])
+    grade = np.abs(_heights(line, at, high, elevations) - _heights(line, at, low, elevations)) / np.maximum(
+        high - low, 1e-9
+    )
     steep = np.nan_to_num(grade) > road.grade_limit
     if not steep.any():
         return ~steep, None
@@ -143,3 +151,8 @@ def _within_grade(road: Road, line: Array, elevations: Elevations | None) -> tup
         f'haul road "{road.name}": {step[steep].sum():.0f} m of it are steeper than its limit of '
         f"{100 * road.grade_limit:.3g} %, up to {100 * grade[worst]:.3g} %; they are not driven",
     )
+
+
+def _heights(line: Array, at: Array, where: Array, elevations: Elevations) -> Array:
+    """Heights at distances along a line."""
+    return elevations(np.column_stack([np.interp(where, at, line[:, k]) for k in (0, 1)]))

@@ -133,9 +133,7 @@ class Costs:
 
     def scaled(self, row_factor: Array) -> Costs:
         """Costs of another unit per class of row: each cost is divided by ``row_factor[row class]``."""
-        return replace(
-            self, rate=self.rate / row_factor[self.row_class], table=self.table / row_factor[:, None]
-        )
+        return replace(self, rate=self.rate / row_factor[self.row_class], table=self.table / row_factor[:, None])
 
     def with_slack(self, spare_rows: Array, spare_columns: Array) -> Costs:
         """Append a row that may serve the spare columns at no cost, and a column that the spare rows may
@@ -174,6 +172,8 @@ class Costs:
             return np.sqrt(east * east + north * north)
         n, m = self.distance.shape
         i, j = np.arange(len(self.rate))[rows], np.arange(len(self.way))[columns]
+        if n == 0 or m == 0:
+            return np.zeros((len(i), len(j)))
         block = self.distance[np.ix_(np.minimum(i, n - 1), np.minimum(j, m - 1))]
         block[i >= n] = 0.0
         block[:, j >= m] = 0.0

@@ -15,8 +15,8 @@ class TransportInfeasible(PlanError):
     """Supplies and needs do not fit: the columns can be served by the rows only, and those fall short by
     ``amount``.
 
-    ``shortage`` is true where needs lack a supply, false where supplies lack a place to go. The amount is in the unit of
-    the first of the columns that lack, or of the first of the rows.
+    ``shortage`` is true where needs lack a supply, false where supplies lack a place to go. The amount is in the unit
+    of the first of the columns that lack, or of the first of the rows.
     """
 
     def __init__(self, *, rows: Array, columns: Array, amount: float, shortage: bool) -> None:
@@ -38,10 +38,7 @@ def name_infeasible(supply: Array, need: Array, costs: Costs) -> TransportInfeas
     total = supply.sum()
     allowed = np.isfinite(costs.block())
     plan = (
-        ot.emd(
-            supply / total, need / total, (~allowed).astype(float), numItermax=10**9, check_marginals=False
-        )
-        * total
+        ot.emd(supply / total, need / total, (~allowed).astype(float), numItermax=10**9, check_marginals=False) * total
     )
     columns, rows, lacking, closed = _cut(plan, allowed, need, supply)
     if closed and lacking > CLOSING_ERROR * total:

@@ -64,9 +64,7 @@ def solve_linear_program(
             _refuse_unmet(problem, key, solution)
             return _plan(problem, key, solution, worst, tight, turn)
         key = np.union1d(key, new)
-    raise PlanError(
-        f"haul: no proof after {_ROUNDS} rounds of candidates. Please report it with the site file"
-    )
+    raise PlanError(f"haul: no proof after {_ROUNDS} rounds of candidates. Please report it with the site file")
 
 
 def _with_limits(supply: Array, need: Array, weight: Array) -> tuple[Array, Array]:
@@ -78,9 +76,7 @@ def _with_limits(supply: Array, need: Array, weight: Array) -> tuple[Array, Arra
 
 
 def _highest(costs: Costs) -> float:
-    return (
-        max(float(np.abs(block[np.isfinite(block)]).max(initial=0.0)) for _, block in _blocks(costs)) or 1.0
-    )
+    return max(float(np.abs(block[np.isfinite(block)]).max(initial=0.0)) for _, block in _blocks(costs)) or 1.0
 
 
 def _blocks(costs: Costs):
@@ -138,9 +134,7 @@ def _solve(problem: _Problem, key: Array) -> _Solution:
         options={"primal_feasibility_tolerance": _TOLERANCE, "dual_feasibility_tolerance": _TOLERANCE},
     )
     if result.status != 0:
-        raise PlanError(
-            f"haul: the linear program stopped: {result.message}. Please report it with the site file"
-        )
+        raise PlanError(f"haul: the linear program stopped: {result.message}. Please report it with the site file")
     prices = result.eqlin.marginals * problem.highest
     left = np.where(spare, 0.0, result.x[k:]) * total
     return _Solution(result.x[:k] * total, prices[:n], prices[n:] / unit, left[:n], left[n:] * unit)
@@ -185,9 +179,7 @@ def _refuse_unmet(problem: _Problem, key: Array, solution: _Solution) -> None:
     raise TransportInfeasible(rows=rows[stuck], columns=columns[helps], amount=amount, shortage=False)
 
 
-def _plan(
-    problem: _Problem, key: Array, solution: _Solution, worst: float, tight: Array, turns: int
-) -> TransportPlan:
+def _plan(problem: _Problem, key: Array, solution: _Solution, worst: float, tight: Array, turns: int) -> TransportPlan:
     n, m = problem.costs.shape
     used = solution.amount > 1e-12 * problem.supply.sum()
     i, j, amount = key[used] // m, key[used] % m, solution.amount[used]
@@ -248,5 +240,5 @@ def _certificate(
         worst_reduced_cost=worst / problem.highest,
         moves_checked=checked,
         highest_cost=problem.highest,
-        method=f"linear program, {turns} rounds, priced over all moves",
+        method=f"linear program, {turns} round{'' if turns == 1 else 's'}, priced over all moves",
     )

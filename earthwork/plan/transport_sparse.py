@@ -42,17 +42,14 @@ def solve_with_candidates(
         new = np.setdiff1d(new, key, assume_unique=True)
         if not new.size:
             used = flow > 0
-            method = f"network simplex over {len(key)} candidate moves, {turn} rounds, priced over all moves"
+            rounds = f"{turn} round{'' if turn == 1 else 's'}"
+            method = f"network simplex over {len(key)} candidate moves, {rounds}, priced over all moves"
             return key[used] // columns, key[used] % columns, flow[used], u, v, method
         key = np.union1d(_thinned(key, flow, u, v, costs), new)
-    raise PlanError(
-        f"haul: no proof after {_ROUNDS} rounds of candidates. Please report it with the site file"
-    )
+    raise PlanError(f"haul: no proof after {_ROUNDS} rounds of candidates. Please report it with the site file")
 
 
-def _solve_candidates(
-    supply: Array, need: Array, costs: Costs, key: Array
-) -> tuple[Array, Array, Array, float]:
+def _solve_candidates(supply: Array, need: Array, costs: Costs, key: Array) -> tuple[Array, Array, Array, float]:
     """Units on each candidate move, prices of rows and columns, and the highest cost of a candidate."""
     import ot
     from scipy.sparse import coo_array
@@ -70,9 +67,7 @@ def _solve_candidates(
         check_marginals=False,
     )
     if log["result_code"] != 1:
-        raise PlanError(
-            f"haul: the network solver stopped: {log['warning']}. Please report it with the site file"
-        )
+        raise PlanError(f"haul: the network solver stopped: {log['warning']}. Please report it with the site file")
     plan = plan.tocoo()
     flow = np.zeros(len(key))
     flow[np.searchsorted(key, plan.row.astype(np.int64) * costs.shape[1] + plan.col)] = plan.data * _UNITS
@@ -89,9 +84,7 @@ def _thinned(key: Array, flow: Array, u: Array, v: Array, costs: Costs) -> Array
     return key[(flow > 0) | (reduced <= limit)]
 
 
-def _start(
-    supply: Array, need: Array, costs: Costs, pricing: _Pricing, unit: float
-) -> tuple[Array, Array, Array]:
+def _start(supply: Array, need: Array, costs: Costs, pricing: _Pricing, unit: float) -> tuple[Array, Array, Array]:
     """First candidates and prices, from the clusters."""
     rows, columns = _clusters(costs, supply), _clusters(costs.transposed, need)
     coarse = _coarse_costs(costs, rows, columns, supply, need)

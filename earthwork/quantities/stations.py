@@ -44,7 +44,8 @@ class Baseline:
 class StationTally:
     """Amounts by station: every cell belongs to the nearest point of the line, those beyond an end to that end.
 
-    ``sums`` (intervals, channels) [cell·m], channels as for blocks without rules; ``outside``: what lies off the width.
+    ``sums`` (intervals, channels) [cell·m], channels as for blocks without rules; ``beyond``: what of it lies beyond
+    the ends of the line; ``outside``: what lies off the width.
     """
 
     def __init__(self, stack: Stack, line: Baseline) -> None:
@@ -52,6 +53,7 @@ class StationTally:
         self.line = line
         self.channels: tuple[Channel, ...] = tuple(c for c in channels_of(stack) if c[0] in _COUNTED and c[2] < 0)
         self.sums = np.zeros((len(line.edges) - 1, len(self.channels)))
+        self.beyond = np.zeros(len(self.channels))
         self.outside = np.zeros(len(self.channels))
 
     def empty(self) -> StationTally:
@@ -71,11 +73,12 @@ class StationTally:
         starts = np.concatenate([[0.0], np.cumsum(np.hypot(*np.diff(self.line.points, axis=0).T))])
         _by_station(
             values, window.row, window.column, *size, self.line.points, near, starts, self.line.edges,
-            self.line.width_m, self.sums, self.outside,
+            self.line.width_m, self.sums, self.beyond, self.outside,
         )  # fmt: skip
 
     def merge(self, other: StationTally) -> None:
         self.sums += other.sums
+        self.beyond += other.beyond
         self.outside += other.outside
 
     def _values(self, tile: Tile) -> np.ndarray:
@@ -103,7 +106,7 @@ def _near_segments(points: np.ndarray, box: tuple[float, float, float, float]) -
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _by_station(values, row, column, east, north, points, near, starts, edges, width, sums, outside):
+def _by_station(values, row, column, east, north, points, near, starts, edges, width, sums, beyond, outside):
     channels, height, wide = values.shape
     intervals = len(edges) - 1
     for i in range(height):
@@ -132,8 +135,11 @@ def _by_station(values, row, column, east, north, points, near, starts, edges, w
                     outside[c] += values[c, i, j]
                 continue
             k = min(max(np.searchsorted(edges, station, side="right") - 1, 0), intervals - 1)
+            past = station <= 0.0 or station >= edges[-1]
             for c in range(channels):
                 sums[k, c] += values[c, i, j]
+                if past:
+                    beyond[c] += values[c, i, j]
 
 
 class SectionTally:

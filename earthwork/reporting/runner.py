@@ -29,6 +29,7 @@ _MODULES = {
     "proctor": "earthwork.reporting.proctor_page",
     "balance": "earthwork.reporting.balance_page",
     "pads": "earthwork.reporting.pads_page",
+    "haul": "earthwork.reporting.haul_page",
     "report": "earthwork.reporting.report.answers_page",
 }
 
