@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Any
 from earthwork.errors import SiteFileError, Warning
 from earthwork.plan.account import Account, MaterialAccount, account, unlayered_material
 from earthwork.plan.grade_shift import Root, ShiftTally, find_shift, trial_shifts
+from earthwork.plan.keys import KeysResult, KeysTally, keys_result, with_keys
 from earthwork.plan.movements import LedgerRow, Movement, Settlement, settle
 from earthwork.quantities.engine import Progress, Tally, walk
 from earthwork.quantities.site_ground import SiteGround, open_site
@@ -59,6 +60,7 @@ class BalanceResult(Result):
     grade_shift_nearest: GradeShift | None
     grade_curve: tuple[tuple[float, float], ...]  #: (shift [m], surplus [m³ compacted])
     target_surplus_m3: float
+    keys: KeysResult | None = None  #: keys and benches, where the site counts them
     pad_grades: PadGrades | None = None  #: each pad's own grade, where the site asks for it
 
     @property
@@ -114,6 +116,7 @@ class BalanceResult(Result):
                 {"from": r.source, "to": r.sink, "material": r.material, "dry_mass_t": r.dry_mass_kg / 1000}
                 for r in self.ledger
             ],
+            "keys": self.keys.to_dict() if self.keys else None,
             "pad_grades": self.pad_grades.to_dict() if self.pad_grades else None,
             "ledger_closure_t": self.settlement.open_kg / 1000,
         }
@@ -177,26 +180,40 @@ def balance(
     low, high = model.balance.shift_range
     main = VolumesTally(ground)
     trials = ShiftTally(ground.stack, trial_shifts(low, high))
-    walk(ground.stack, [main, trials, *tallies], threads=threads, progress=progress)
+    keys = KeysTally(ground.stack.grid) if model.keys.count else None
+    walk(ground.stack, [main, trials, *([keys] if keys else []), *tallies], threads=threads, progress=progress)
     volumes = volumes_result(site, ground, main)
-    seen = _Seen(model, cards, ground, threads)
+    dug = keys_result(keys, model.keys, cards, (), ground) if keys else None
+
+    def counted(volumes: AreaVolumes) -> AreaVolumes:
+        return volumes if dug is None else with_keys(volumes, dug, ground)
+
+    seen = _Seen(model, cards, ground, threads, counted)
     seen.take(trials)
     curve = dict(seen.surplus)
     step = model.balance.step or site.units.to_si(0.01, "length")
     root = find_shift(curve, model.balance.target_surplus, step, seen.evaluate)
-    result = _result(site, cards, volumes, seen, root, sorted(trials.shifts))
+    result = replace(_result(site, cards, volumes, seen, root, sorted(trials.shifts)), keys=dug)
     if model.balance.pad_moves is None:
         return result
     from earthwork.plan.pad_grades import move_pads
 
-    grades = move_pads(site, ground, cards, lambda v: account(model, cards, v), threads=threads)
+    grades = move_pads(site, ground, cards, lambda v: account(model, cards, counted(v)), threads=threads)
     return replace(result, pad_grades=grades, warnings=(*result.warnings, *grades.warnings))
 
 
 class _Seen:
     """Every shift that was evaluated, with its volumes and its surplus."""
 
-    def __init__(self, model: SiteModel, cards: dict[str, SoilCard], ground: SiteGround, threads: int | None) -> None:
+    def __init__(
+        self,
+        model: SiteModel,
+        cards: dict[str, SoilCard],
+        ground: SiteGround,
+        threads: int | None,
+        counted: Callable[[AreaVolumes], AreaVolumes],
+    ) -> None:
+        self.counted = counted
         self.model = model
         self.cards = cards
         self.ground = ground
@@ -207,7 +224,7 @@ class _Seen:
     def take(self, tally: ShiftTally) -> None:
         for shift, sums in tally.sums.items():
             self.volumes[shift] = area_volumes(self.ground, sums, None, 0.0)
-            self.surplus[shift] = account(self.model, self.cards, self.volumes[shift]).surplus_m3
+            self.surplus[shift] = account(self.model, self.cards, self.counted(self.volumes[shift])).surplus_m3
 
     def evaluate(self, shifts: Sequence[float]) -> dict[float, float]:
         """Surplus at further shifts, in one pass over the ground."""
@@ -233,8 +250,9 @@ def _result(
     shown: list[float],
 ) -> BalanceResult:
     model = site.model
-    here = account(model, cards, volumes.total)
-    settled = settle(model, cards, here, volumes.total)
+    total = seen.counted(volumes.total)
+    here = account(model, cards, total)
+    settled = settle(model, cards, here, total)
     found = _grade_shift(seen, root.rounded_m, root.exact_m) if root.exact_m is not None else None
     nearest = None if found else _grade_shift(seen, root.nearest_m, root.nearest_m)
     warnings = [*volumes.warnings, *soil_warnings(cards)]

@@ -8,7 +8,7 @@ into the balance only where the site file asks for it.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -20,6 +20,7 @@ from earthwork.quantities.tile import Tile
 if TYPE_CHECKING:
     from earthwork.quantities.pad_ground import PadPlace
     from earthwork.quantities.site_ground import SiteGround
+    from earthwork.quantities.volumes import AreaVolumes
     from earthwork.site.model import Keys
     from earthwork.soils.card import SoilCard
 
@@ -202,6 +203,17 @@ def keys_result(
     fills.sort(key=lambda fill: -fill.area_m2)
     volume = sum(fill.key_m3 + fill.benches_m3 for fill in fills)
     return KeysResult(tuple(fills), table.count, _cost(volume, cards, ground))
+
+
+def with_keys(volumes: AreaVolumes, keys: KeysResult, ground: SiteGround) -> AreaVolumes:
+    """Volumes of a site with keys and benches among the over-excavation: dug from the uppermost stratum, and refilled."""
+    dug = dict(volumes.over_excavation_by_material)
+    if ground.stack.strata:
+        name = ground.stack.strata[0].material
+        dug[name] = dug.get(name, 0.0) + keys.volume_m3
+    return replace(
+        volumes, over_excavation_m3=volumes.over_excavation_m3 + keys.volume_m3, over_excavation_by_material=dug
+    )
 
 
 def _toe_length_m(share: np.ndarray, ground: CoarseFill, steep: np.ndarray, tally: KeysTally) -> float:

@@ -52,7 +52,8 @@ def not_counted(site: Site) -> list[str]:
     missing = [] if site.model.allowance else ["trench, footing and pool spoil (no allowance is given)"]
     if not site.model.strip:
         missing.append("stripping (none is given)")
-    return [*missing, "keys and benches", "slope overbuild", "dewatering"]
+    keys = [] if site.model.keys.count else ["keys and benches"]
+    return [*missing, *keys, "slope overbuild", "dewatering"]
 
 
 def not_counted_line(site: Site) -> str:

@@ -216,3 +216,27 @@ def test_moves_need_a_design(designed):
     path.write_text(text[:start].replace("[ground]", '[ground]\nfinished = "finished.tif"') + text[stop:])
     with pytest.raises(SiteFileError, match=r"pads move only where a \[design\] builds them"):
         earthwork.balance(path)
+
+
+# --- keys and benches in the balance -----------------------------------------------------------------------------
+
+
+def test_keys_are_counted_where_the_site_asks(site, tmp_path):  # noqa: F811
+    # Ground rising 1:4; 3 m of fill over the whole width.
+    site(existing=lambda e, n: 100 + 0.25 * e, finished=lambda e, n: 100 + 0.25 * e + 3.0 * ((e > 20) & (e < 70)))
+    path = tmp_path / "site.toml"
+    plain = earthwork.balance(path)
+    path.write_text(path.read_text() + "[keys]\ncount = true\n")
+    counted = earthwork.balance(path)
+    assert plain.keys is None
+    volume = counted.keys.volume_m3
+    # 100 m of key of 1.89 m² and benches of 0.375 m on 5000 m².
+    assert volume == pytest.approx(100 * 1.89 + 5000 * 0.375, rel=0.02)
+    card = counted.cards["silt"]
+    assert counted.required_compacted_m3 - plain.required_compacted_m3 == pytest.approx(volume)
+    gained = counted.available_compacted_m3 - plain.available_compacted_m3
+    assert gained == pytest.approx(volume * card.effective_factor)
+    lost = plain.surplus_compacted_m3 - counted.surplus_compacted_m3
+    assert lost == pytest.approx(counted.keys.compacted_cost_m3)
+    assert counted.to_dict()["ledger_closure_t"] == pytest.approx(0, abs=1e-6)
+    assert counted.volumes.total.over_excavation_m3 == plain.volumes.total.over_excavation_m3
