@@ -39,6 +39,10 @@ def write_maps(
     zones = list(zip(ground.zone_names, ground.zone_shapes, strict=True))
     if zones:
         write_zones(volumes, folder, command)
+    if ground.design is not None:
+        from earthwork.reporting.design_shapes import write_design
+
+        write_design(ground.design, folder, command, site.units)
     if depths.map is None:
         return
     draw_cut_fill_map(

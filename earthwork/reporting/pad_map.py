@@ -242,7 +242,7 @@ def _limit(site: Site) -> float:
 
 
 def write_pad_shapes(result: PadsResult, path: Path) -> None:
-    """Write the pads with all attributes, the ground that was judged, and the lines of a design as a GeoPackage."""
+    """Write the pads with all attributes, the ground that was judged, and the steepest changes as a GeoPackage."""
     table = display_table(result.tables()["pads"], result.units)
     crs = result.grid.crs
     write_shapes(path, "pads", [place.polygon for place in result.places], table, crs=crs)
@@ -254,16 +254,6 @@ def write_pad_shapes(result: PadsResult, path: Path) -> None:
 
         rows = pd.DataFrame({"pad": [name for name, _ in steep]})
         write_shapes(path, "steepest_change", [line for _, line in steep], rows, crs=crs, append=True)
-    design = result.ground.design
-    if design is not None:
-        import pandas as pd
-        import shapely
-
-        factor = result.units.factor("length")
-        lines = design.lines.lines
-        rows = pd.DataFrame({"name": [line.name for line in lines], "kind": [line.kind for line in lines]})
-        shapes = [shapely.transform(line.geometry, lambda c: c / [1.0, 1.0, factor], include_z=True) for line in lines]
-        write_shapes(path, "design_lines", shapes, rows, crs=crs, append=True)
 
 
 def _steepest_lines(pads: Sequence[PadReport]) -> list[tuple[str, Any]]:

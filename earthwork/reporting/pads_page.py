@@ -20,7 +20,7 @@ _FILL_COLUMNS = (
     Column("fill_share_percent", "fill"),
     Column("min_fill_m", "least"),
     Column("mean_fill_m", "mean"),
-    Column("p95_fill_m", "95 %"),
+    Column("p95_fill_m", "95th %"),
     Column("max_fill_m", "greatest"),
 )
 _CHANGE_COLUMNS = (
@@ -94,7 +94,7 @@ def _basis(site: Site, pads: list[dict[str, Any]]) -> tuple[str, ...]:
     deep, difference = (show(v, "length", site.units) for v in (table.deep_fill, table.differential_fill))
     return (
         "Thickness of fill is from the removal bottom (after stripping and undercut) to subgrade. " + judged,
-        f"Deep fill: 95 % of the footprint reaches {deep}. Transition: cut and fill both over "
+        f"Deep fill: the 95th percentile of thickness reaches {deep}. Transition: cut and fill both over "
         f"{plain(table.transition_share, 1)} %. Differences are flagged from {difference}.",
         f"Distortion is measured over {show(table.gauge_length, 'length', site.units)} and flagged beyond 1 in "
         f"{table.distortion_limit:g}.",
@@ -141,7 +141,7 @@ def _undercut_row(pad: dict[str, Any], site: Site) -> tuple[str, str, str]:
     undercut = pad["undercut"]
     asked = show(undercut["asked_m"], "length", site.units)
     cost = undercut["compacted_cost_m3"]
-    note = f"dug and refilled, for {asked} of fill everywhere"
+    note = f"dug and refilled, for {asked} of fill everywhere (an [[over_excavation]] from subgrade)"
     if cost is not None:
         note += f"; it takes {show(cost, 'soil_volume', site.units)} of compacted soil from the balance"
     return pad["pad"], show(undercut["volume_m3"], "soil_volume", site.units), note
@@ -167,5 +167,9 @@ def draw(site: Site, result: Any, folder: OutputFolder, tallies: Any) -> None:
     from earthwork.reporting.pad_sections import draw_pad_sections
 
     write_pad_shapes(result, folder.path("pads_shapes.gpkg"))
+    if result.ground.design is not None:
+        from earthwork.reporting.design_shapes import write_design
+
+        write_design(result.ground.design, folder, "pads", site.units)
     draw_pad_map(site, result, folder.path("pads_map.png"))
     draw_pad_sections(site, result, folder.path("pads_sections.png"))

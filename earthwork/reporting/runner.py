@@ -100,7 +100,7 @@ def run_command(
 
 def patterns(command: str) -> tuple[str, ...]:
     """Shell patterns of the names of the files that a command may write."""
-    endings = ("csv", "tif", "gpkg", "png")
+    endings = ("csv", "tif", "gpkg", "png", "dxf")
     return (f"{command}.json", f"{command}.csv", *(f"{command}_*.{ending}" for ending in endings))
 
 

@@ -3,6 +3,7 @@
 import json
 import math
 
+import ezdxf
 import numpy as np
 import pyogrio.raw
 import pytest
@@ -301,6 +302,17 @@ def test_designed_pads_bring_their_lines(site, tmp_path):
     result = earthwork.pads(path)
     assert result["A"].slopes.fill_height_m > 0.5
     assert main(["pads", str(path), "--out", str(tmp_path / "out"), "--quiet"]) == 0
-    lines, shapes = _layer(tmp_path / "out" / "pads_shapes.gpkg", "design_lines")
+    lines, shapes = _layer(tmp_path / "out" / "pads_design.gpkg", "lines")
+    drawing = ezdxf.readfile(tmp_path / "out" / "pads_design.dxf")
+    kinds = {"TOP OF FILL", "TOE OF FILL", "TOE OF CUT", "TOP OF CUT"}
+    assert {entity.dxf.layer for entity in drawing.modelspace()} == kinds
+    top = next(e for e in drawing.modelspace() if e.dxf.layer == "TOP OF FILL")
+    # A level line is a flat polyline with its elevation; the others are 3D polylines.
+    assert (top.dxftype(), round(top.dxf.elevation, 9)) == ("LWPOLYLINE", 102.5)
+    toe = next(e for e in drawing.modelspace() if e.dxf.layer == "TOE OF FILL")
+    assert toe.dxftype() == "POLYLINE"
+    assert all(100 < point.z < 102.5 for point in toe.points())
+    _, (area,) = _layer(tmp_path / "out" / "pads_design.gpkg", "area")
+    assert area.area > 1600
     assert set(lines["kind"]) == {"top of fill", "toe of fill", "toe of cut", "top of cut"}
     assert all(isinstance(g, LineString) and g.has_z for g in shapes)
