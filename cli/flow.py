@@ -61,10 +61,16 @@ def perform_report(site: Path, how: Shared, only: Sequence[str]) -> None:
             progress=progress,
             stage=progress.begin,
         )
-    _show(Outcome("report", checked, result, result.written), how)
+    _show(Outcome("report", checked, result, result.written), how, after=_where(result.written, how))
 
 
-def _show(outcome: Outcome, how: Shared) -> None:
+def _where(written: Sequence[Path], how: Shared) -> str:
+    """Where to look; a path stays on one line, however long it is."""
+    page = next((str(path) for path in written if path.name == "report.html"), None)
+    return f"\nOpen in a browser: {page}" if page and not how.json else ""
+
+
+def _show(outcome: Outcome, how: Shared, after: str = "") -> None:
     """Warnings and the files written on stderr, the result on stdout."""
     say_warnings(outcome.result.warnings)
     if not how.quiet:
@@ -74,6 +80,8 @@ def _show(outcome: Outcome, how: Shared) -> None:
         print_json(outcome.json())
     else:
         print_page(outcome.page())
+    if after:
+        print(after)
     if how.strict and outcome.result.warnings:
         raise typer.Exit(3)
 

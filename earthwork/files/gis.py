@@ -239,6 +239,8 @@ def write_shapes(
     import pyogrio.raw
     import shapely
 
+    # The format notes when a layer changed; with a fixed time the same layers give the same bytes.
+    pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": "2000-01-01T00:00:00.000Z"})
     fields = [str(name) for name in table.columns]
     kinds = {type(shape).__name__ for shape in shapes}
     several = any(kind.startswith("Multi") for kind in kinds)

@@ -1,4 +1,4 @@
-"""What ``report`` shows on the screen: its answers, what is left out, and where to look."""
+"""What ``report`` shows on the screen: its answers and what is left out."""
 
 from __future__ import annotations
 
@@ -19,7 +19,4 @@ def page(site: Site, result: Any) -> Page:
     if parts.left_out:
         lines = tuple(f"{name}: {why}" for name, why in parts.left_out.items())
         blocks.append(Notes(heading="Not in this report", lines=lines))
-    written = {path.name: path for path in result.written}
-    if "report.html" in written:
-        blocks.append(Notes(heading="Open in a browser", lines=(str(written["report.html"]),)))
     return Page(title=f"{site.name}: report", blocks=tuple(blocks))

@@ -126,8 +126,9 @@ def map_document(surfaces: SurfaceMap, content: MapContent, *, most_characters: 
     shown, planes = fitting_planes(surfaces, most_characters)
     if fills is not None:
         ratio = shown.every // surfaces.every
-        planes["fill"] = pack(fills[ratio // 2 :: ratio, ratio // 2 :: ratio][: shown.grid.rows, : shown.grid.columns]
-                              if ratio > 1 else fills, 1.0)  # fmt: skip
+        rows, columns = (np.arange(n) * ratio + ratio // 2 for n in (shown.grid.rows, shown.grid.columns))
+        near = np.ix_(np.minimum(rows, fills.shape[0] - 1), np.minimum(columns, fills.shape[1] - 1))
+        planes["fill"] = pack(fills[near], 1.0)
     grid = shown.grid
     return {
         "grid": {
