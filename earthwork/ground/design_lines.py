@@ -51,11 +51,14 @@ class DesignLines:
     area: Any
 
 
-def design_lines(design: Design) -> DesignLines:
-    """Trace a design: edges exactly, daylight lines by linear interpolation between cell centres."""
+def design_lines(design: Design, area: Any = None) -> DesignLines:
+    """Trace a design: edges exactly, daylight lines by linear interpolation between cell centres.
+
+    ``area`` is that of :func:`design_area`, where it is known already.
+    """
     tracer = _Tracer(design)
     try:
-        area = tracer.area()
+        area = tracer.area() if area is None else area
         lines = [*tracer.edge_lines(), *tracer.daylight_lines(area)]
     finally:
         tracer.close()
@@ -134,9 +137,12 @@ class _Tracer:
 
     def edge_lines(self) -> Iterator[DesignLine]:
         """Edges of pads and roads, split where they pass from cut to fill."""
+        footprints = np.array([e.footprint for e in self.design.elements], dtype=object)
+        tree = shapely.STRtree(footprints)
         for index, element in enumerate(self.design.elements):
-            others = [e.footprint for i, e in enumerate(self.design.elements) if i != index]
-            inside_others = shapely.union_all(others) if others else None
+            touching = tree.query(element.footprint, predicate="intersects")
+            others = footprints[touching[touching != index]]
+            inside_others = shapely.union_all(others) if len(others) else None
             for a, b in _segments(element.walls):
                 yield DesignLine("retaining edge", element.name, self._line(np.vstack([a, b])))
             for chain in _chains(element):
@@ -233,12 +239,12 @@ def _slope_field(design: Design, built: Built, window: Window) -> np.ndarray | N
     field[sloped] = np.maximum(gap[sloped], 1e-9)
     lattice = design.lattice
     x0, y0 = lattice.first(window)
-    pairs = _beside(built, sloped)
-    inner = built.kind == INSIDE
-    for (index, kind), beside in pairs.items():
-        held = beside & inner
-        field[held] = np.maximum(field[held], np.maximum(gap[held], 1e-3))
-        rows, columns = np.nonzero(beside & (built.kind == UNTOUCHED) & np.isfinite(built.ground))
+    for index, kind, at, beside in _beside(built, sloped):
+        rows, columns = np.nonzero(beside & (built.kind[at] == INSIDE))
+        rows, columns = rows + at[0].start, columns + at[1].start
+        field[rows, columns] = np.maximum(field[rows, columns], np.maximum(gap[rows, columns], 1e-3))
+        rows, columns = np.nonzero(beside & (built.kind[at] == UNTOUCHED) & np.isfinite(built.ground[at]))
+        rows, columns = rows + at[0].start, columns + at[1].start
         x, y = x0 + columns * lattice.dx, y0 + rows * lattice.dy
         fill, cut, _, _ = _faces(design.elements[index], x, y)
         over = fill - built.ground[rows, columns] if kind == FILL_SLOPE else built.ground[rows, columns] - cut
@@ -246,14 +252,21 @@ def _slope_field(design: Design, built: Built, window: Window) -> np.ndarray | N
     return field
 
 
-def _beside(built: Built, sloped: np.ndarray) -> dict[tuple[int, int], np.ndarray]:
-    """For each element and kind of slope, the cells next to it that are no slope."""
-    found: dict[tuple[int, int], np.ndarray] = {}
-    edge = sloped & _grown(~sloped)
-    for index, kind in np.unique(np.column_stack([built.owner[edge], built.kind[edge]]), axis=0):
-        own = edge & (built.owner == index) & (built.kind == kind)
-        found[int(index), int(kind)] = _grown(own) & ~sloped
-    return found
+def _beside(built: Built, sloped: np.ndarray) -> Iterator[tuple[int, int, tuple[slice, slice], np.ndarray]]:
+    """For each element and kind of slope, a box around its outer cells, and in it the cells next to them, no slope."""
+    rows, columns = np.nonzero(sloped & _grown(~sloped))
+    keys = built.owner[rows, columns].astype(np.int64) * 4 + built.kind[rows, columns]
+    order = np.argsort(keys, kind="stable")
+    cuts = np.flatnonzero(np.diff(keys[order])) + 1
+    for group in np.split(order, cuts):
+        r, c = rows[group], columns[group]
+        at = (
+            slice(max(int(r.min()) - 1, 0), int(r.max()) + 2),
+            slice(max(int(c.min()) - 1, 0), int(c.max()) + 2),
+        )
+        own = np.zeros(sloped[at].shape, bool)
+        own[r - at[0].start, c - at[1].start] = True
+        yield int(keys[group[0]] // 4), int(keys[group[0]] % 4), at, _grown(own) & ~sloped[at]
 
 
 def _grown(mask: np.ndarray) -> np.ndarray:
@@ -323,10 +336,10 @@ def _flush(run: list[np.ndarray], over: float) -> Iterator[tuple[str, np.ndarray
     if len(run) < 2:
         return
     points = np.array(run)
-    keep = np.ones(len(points), bool)
-    for k in range(1, len(points) - 1):
-        before, after = points[k] - points[k - 1], points[k + 1] - points[k]
-        keep[k] = np.linalg.norm(np.cross(before, after)) > 1e-9 * np.linalg.norm(before) * np.linalg.norm(after)
+    before, after = points[1:-1] - points[:-2], points[2:] - points[1:-1]
+    bend = np.linalg.norm(np.cross(before, after), axis=1)
+    straight = bend <= 1e-9 * np.linalg.norm(before, axis=1) * np.linalg.norm(after, axis=1)
+    keep = np.r_[True, ~straight, True]
     if np.hypot(*(points[-1] - points[0])[:2]) > 1e-6 or len(points) > 2:
         yield ("top of fill" if over > 0 else "toe of cut"), points[keep]
 

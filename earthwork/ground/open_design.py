@@ -17,7 +17,7 @@ from earthwork.errors import GroundError, Warning
 from earthwork.files.vectors import NamedLine, NamedPolygon, read_lines
 from earthwork.ground.design import Design, build_design
 from earthwork.ground.design_checks import Inspection, inspect_design
-from earthwork.ground.design_lines import DesignLines, design_lines
+from earthwork.ground.design_lines import DesignLines, design_area, design_lines
 from earthwork.ground.elements import PadShape, RoadShape, SideSlope
 from earthwork.ground.grid import Grid
 from earthwork.ground.surfaces import Surface
@@ -52,9 +52,14 @@ class BuiltDesign:
         return inspect_design(self.design, self.limits)
 
     @cached_property
+    def area(self) -> Any:
+        """The ground that pads, roads and their slopes take up, a polygon in CRS coordinates."""
+        return design_area(self.design)
+
+    @cached_property
     def lines(self) -> DesignLines:
         """Toe, top and daylight lines, and the ground that the design takes up."""
-        return design_lines(self.design)
+        return design_lines(self.design, self.area)
 
     def raised(self, shifts_m: dict[str, float]) -> BuiltDesign:
         """The same design with some pads at other elevations.

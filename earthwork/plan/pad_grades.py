@@ -263,7 +263,7 @@ class _Mover:
             built = self.built.raised(moved)
             stack = replace(ground.stack, finished=built.design)
             if self.site.model.ground.disturbed is None and stack.disturbed is not None:
-                shape = areas.union_area([built.lines.area, ground.worked_shape])
+                shape = areas.union_area([built.area, ground.worked_shape])
                 stack = replace(stack, disturbed=areas.rings_on(stack.grid, [shape]))
             ground = replace(ground, stack=stack)
         tally = VolumesTally(replace(ground, zone_names=(), zones=None))

@@ -111,7 +111,7 @@ def open_site(site: Site, *, moving: bool = False) -> SiteGround:
     disturbed = opener.rings(model.ground.disturbed, "ground.disturbed")
     worked = None if model.ground.disturbed else areas.union_area(_worked(opener))
     if design is not None and disturbed is None:
-        disturbed = areas.rings_on(opener.grid, [areas.union_area([design.lines.area, worked])])
+        disturbed = areas.rings_on(opener.grid, [areas.union_area([design.area, worked])])
     stack = Stack(
         grid=opener.grid,
         existing=opener.surfaces.existing,

@@ -61,18 +61,20 @@ def volumes(design):
 
 
 def exact_fill(
-    polygon: Polygon, grade, ground_plane, gradient, *, mitred=False, inside=None, directions=1440
+    polygon: Polygon, grade, ground_plane, gradient, *, mitred=False, inside=None, directions=1440, also=()
 ):
     """Exact fill volume of a convex pad whose grade and ground are planes (z0, rise east, rise north).
 
     The fill face of a convex pad is concave: its volume is that of a convex polyhedron, bounded by the pad's
     plane, the planes of the given gradient through its edges, at round corners planes tangent to the cones
-    (``directions`` around the whole circle), and the ground; ``inside`` is a place where it is thick.
+    (``directions`` around the whole circle), and the ground; ``inside`` is a place where it is thick,
+    ``also`` more half-spaces.
     """
     z = lambda p: grade[0] + grade[1] * p[0] + grade[2] * p[1]  # noqa: E731
     corners = np.array(polygon.exterior.coords)[:-1]
     # Each row: a half-space a·x + b·y + c·z + d ≤ 0.
     spaces = [
+        *also,
         (-grade[1], -grade[2], 1.0, -grade[0]),
         (ground_plane[1], ground_plane[2], -1.0, ground_plane[0]),
     ]

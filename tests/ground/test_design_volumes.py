@@ -99,6 +99,23 @@ def test_a_tilted_pad_equals_an_exact_polyhedron():
     assert fill == pytest.approx(exact, rel=2e-5)
 
 
+@pytest.mark.parametrize("mitred", [False, True])
+def test_a_pad_over_a_ridge_equals_two_exact_polyhedra(mitred):
+    # The ground falls by 10 % to both sides of the line at 100 east; the solid is cut there into two convex halves.
+    polygon = affinity.rotate(box(80, 85, 125, 115), 15)
+    pad = PadShape("A", polygon, 105.0, TWO)
+    fill = volumes(design_of(grid_of(200, 0.25), lambda e, n: 104 - 0.1 * np.abs(e - 100), pad, mitred=mitred))[1]
+    halves = 0.0
+    for plane, inside, cut in (
+        ((94.0, 0.1, 0.0), (95, 100), (1, 0, 0, -100)),
+        ((114.0, -0.1, 0.0), (105, 100), (-1, 0, 0, 100)),
+    ):
+        halves += exact_fill(
+            polygon, (105.0, 0, 0), np.array(plane), 0.5, mitred=mitred, inside=inside, also=[cut]
+        )
+    assert fill == pytest.approx(halves, rel=1e-4)
+
+
 def test_an_embankment_on_a_side_slope_has_the_closed_form_section():
     # Crest of width b, height h over the centre line, ground rising at r = 1/n across, side slopes 1/s:
     # the section's area is (s (b/2)² /n² + ... ) by subtracting two triangles; worked with coordinates here:
