@@ -15,7 +15,7 @@ __version__ = "0.1.0"
 _HOME = {
     "Site": "earthwork.site",
     "volumes": "earthwork.quantities.volumes",
-    "soil": "earthwork.soils.card",
+    "soil": "earthwork.plan.soil",
     "proctor": "earthwork.soils.bench",
     "fit_proctor_file": "earthwork.soils.bench",
     "check": "earthwork.plan.check",

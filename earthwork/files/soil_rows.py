@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 
 from earthwork.errors import EarthworkError, FileError
@@ -178,8 +178,13 @@ class SoilRows:
         """The different texts that rows have in the first of the columns that is filled."""
         return list(dict.fromkeys(text for row in rows if (text := self.first_text(row, columns))))
 
-    def rows(self, material: str | None) -> Iterator[Row]:
-        """The rows of a material, all when the table names none; exact repeats once."""
+    def rows(self, material: str | None, known: Sequence[str] = ()) -> Iterator[Row]:
+        """The rows of a material, all when the table names none; exact repeats once.
+
+        Args:
+            material: the name; None takes all rows.
+            known: names of all materials of the site; rows of another name are noted, since they count for none.
+        """
         column = next((c for c in MATERIAL_COLUMNS if c in self.table.columns), None)
         wanted = [
             row for row in self.table.rows
@@ -188,6 +193,8 @@ class SoilRows:
         if not wanted and column is not None:
             there = ", ".join(dict.fromkeys(t for row in self.table.rows if (t := row.text(column))))
             raise FileError(f"{self.table.path}: no row has {column} = {material}; it has {there or 'no names'}")
+        if column is not None and material is not None:
+            self._note_lost(column, known)
         seen: dict[tuple[tuple[str, str], ...], int] = {}
         doubled = []
         for row in wanted:
@@ -200,6 +207,22 @@ class SoilRows:
         if doubled:
             self.notes.append(
                 ("duplicate-rows", f"{self.table.path}: the same in every cell, counted once: {', '.join(doubled)}")
+            )
+
+    def _note_lost(self, column: str, known: Sequence[str]) -> None:
+        """Say which rows are of no material of the site."""
+        names = {name.lower() for name in known}
+        lost = []
+        for row in self.table.rows:
+            text = row.text(column)
+            if text is None:
+                lost.append(f"{row.number} (no name)")
+            elif names and text.lower() not in names:
+                lost.append(f"{row.number} ({text})")
+        if lost:
+            listed = ", ".join(lost[:_LISTED]) + (f" and {len(lost) - _LISTED} more" if len(lost) > _LISTED else "")
+            self.notes.append(
+                ("rows-of-no-material", f"{self.table.path}: of no material of the site, and left out: row {listed}")
             )
 
     def skipped(self, rows: list[Row], what: str) -> None:

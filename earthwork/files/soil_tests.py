@@ -7,7 +7,7 @@ and column.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
@@ -27,6 +27,7 @@ from earthwork.files.table_reader import Row, read_source_table
 from earthwork.site import Site
 from earthwork.soils import in_place, phase
 from earthwork.soils.effort import same_method
+from earthwork.soils.located import waiting_tests
 from earthwork.soils.records import CurvePoint, DensityTest, MaterialTests
 
 
@@ -39,7 +40,9 @@ class Reading:
     notes: tuple[tuple[str, str], ...] = ()
 
 
-def read_compaction_points(path: Path, *, material: str | None = None, method: str | None = None) -> Reading:
+def read_compaction_points(
+    path: Path, *, material: str | None = None, method: str | None = None, known: Sequence[str] = ()
+) -> Reading:
     """Points of a compaction curve, or raw bench data reduced to points.
 
     Args:
@@ -49,12 +52,13 @@ def read_compaction_points(path: Path, *, material: str | None = None, method: s
             endings).
         material: the rows to take where a column ``material`` says.
         method: the rows to take where a column ``method`` says; efforts are never mixed.
+        known: names of all materials of the site; rows of other names are noted.
 
     Raises:
         FileError: the message lists every fault with row and column.
     """
     reader = SoilRows(read_source_table(path))
-    rows = _of_method(reader, list(reader.rows(material)), method)
+    rows = _of_method(reader, list(reader.rows(material, known)), method)
     density = _density_reader(reader, _CURVE_WAYS)
     points: list[CurvePoint] = []
     empty: list[Row] = []
@@ -80,7 +84,9 @@ def read_compaction_points(path: Path, *, material: str | None = None, method: s
     return Reading(points=tuple(points), notes=tuple(reader.notes))
 
 
-def read_density_tests(path: Path, *, material: str | None = None, length_m: float = 1.0) -> Reading:
+def read_density_tests(
+    path: Path, *, material: str | None = None, length_m: float = 1.0, known: Sequence[str] = ()
+) -> Reading:
     """In-place density tests, raw readings reduced.
 
     Args:
@@ -91,6 +97,7 @@ def read_density_tests(path: Path, *, material: str | None = None, length_m: flo
             ``gauge_water_offset_*``).
         material: the rows to take where a column ``material`` says.
         length_m: the unit of depths and elevations whose column names none [m].
+        known: names of all materials of the site; rows of other names are noted.
 
     Raises:
         FileError: the message lists every fault with row and column.
@@ -99,7 +106,7 @@ def read_density_tests(path: Path, *, material: str | None = None, length_m: flo
     density = _density_reader(reader, _FIELD_WAYS)
     tests: list[DensityTest] = []
     empty: list[Row] = []
-    for row in reader.rows(material):
+    for row in reader.rows(material, known):
         before = len(reader.faults)
         water = reader.water_content(row)
         gauge = _gauge(reader, row) if water is None else None
@@ -117,6 +124,7 @@ def read_density_tests(path: Path, *, material: str | None = None, length_m: flo
                 name=reader.first_text(row, NAME_COLUMNS),
                 group=reader.first_text(row, GROUP_COLUMNS),
                 method=reader.first_text(row, METHOD_COLUMNS),
+                material=reader.first_text(row, MATERIAL_COLUMNS),
                 oversize_percent=reader.percent(row, "oversize_percent"),
                 depth_m=reader.length(row, "depth", length_m),
                 easting=reader.optional(row, "easting"),
@@ -201,7 +209,7 @@ _FROM_CONE: _Way = (
     (("hole_soil_mass", MASS), ("sand_used_mass", MASS), ("cone_sand_mass", MASS), ("sand_density", DENSITY)),
     in_place.sand_cone_moist_density,
 )
-_CURVE_WAYS: tuple[_Way, ...] = (_FROM_MOULD,)
+_CURVE_WAYS: tuple[_Way, ...] = (_FROM_MOULD, _FROM_CYLINDER)
 _FIELD_WAYS: tuple[_Way, ...] = (_FROM_CONE, _FROM_CYLINDER)
 
 
@@ -281,19 +289,47 @@ def read_site_tests(site: Site) -> dict[str, MaterialTests]:
             readings.get("field", none).tests,
             notes,
         )
+    faults = faults or _shared_faults(site, found)
     if faults:
         raise FileError("\n".join(dict.fromkeys(faults)))
     return found
 
 
+def _shared_faults(site: Site, found: dict[str, MaterialTests]) -> list[str]:
+    """Files of in-place tests that several materials name, with rows that tell no material and no place."""
+    owners: dict[tuple[str, Path], list[str]] = {}
+    for name, material in site.model.material.items():
+        if material.bank.tests is not None:
+            owners.setdefault(("bank", site.resolve(material.bank.tests)), []).append(name)
+        if material.field is not None:
+            owners.setdefault(("field", site.resolve(material.field.tests)), []).append(name)
+    faults = []
+    for (kind, path), names in owners.items():
+        lost = [place for name in names for place in _untold(site, name, found[name], kind)]
+        if len(names) > 1 and lost:
+            way = "" if kind == "field" else ", or easting, northing and elevation of each test (and the strata)"
+            faults.append(
+                f"{path}: the tests of {' and of '.join(names)}, but {lost[0]} does not say which it is "
+                f"of; add a column material{way}"
+            )
+    return faults
+
+
+def _untold(site: Site, name: str, tests: MaterialTests, kind: str) -> list[str]:
+    """Places of the tests that neither their row nor the ground gives to a material."""
+    told = set(waiting_tests(site.model, name, tests)) if kind == "bank" else set()
+    return [test.place for test in getattr(tests, kind) if not test.material and test not in told]
+
+
 def _sources(site: Site, name: str) -> dict[str, Callable[[], Reading]]:
     """What to read for a material, by kind."""
     material = site.model.material[name]
+    known = tuple(site.model.material)
     sources: dict[str, Callable[[], Reading]] = {}
-    density_tests = partial(read_density_tests, material=name, length_m=site.units.factor("length"))
+    density_tests = partial(read_density_tests, material=name, length_m=site.units.factor("length"), known=known)
     if material.proctor is not None and material.proctor.tests is not None:
         path, method = site.resolve(material.proctor.tests), material.proctor.method
-        sources["curve"] = partial(read_compaction_points, path, material=name, method=method)
+        sources["curve"] = partial(read_compaction_points, path, material=name, method=method, known=known)
     if material.bank.tests is not None:
         sources["bank"] = partial(density_tests, site.resolve(material.bank.tests))
     if material.field is not None:

@@ -86,7 +86,7 @@ def read_source_table(path: Path) -> SourceTable:
     checked = [Row(number, _cells(path, number, names, cells, separator)) for number, cells in body]
     if not checked:
         raise FileError(f"{path}: a header and no rows; give a row per test")
-    decimal_comma = separator != "," and _uses_decimal_comma(path, checked)
+    decimal_comma = (separator != "," or _surely_decimal(checked)) and _uses_decimal_comma(path, checked)
     return SourceTable(path, tuple(n for n in names if n), tuple(checked), decimal_comma)
 
 
@@ -239,6 +239,13 @@ def _uses_decimal_comma(path: Path, rows: Sequence[Row]) -> bool:
             "commas and decimal points in one file; write all numbers in one way"
         )
     return "," in first
+
+
+def _surely_decimal(rows: Sequence[Row]) -> bool:
+    """Whether quoted cells between commas have commas that cannot be for thousands: ``"10,5"``."""
+    bare = [cell.strip().removesuffix("%").strip() for row in rows for cell in row.cells.values()]
+    commas = [cell for cell in bare if _COMMA.fullmatch(cell)]
+    return any(len(re.split("[,eE]", cell)[1]) != 3 for cell in commas)
 
 
 def _number(cell: str, *, decimal_comma: bool) -> float | str:

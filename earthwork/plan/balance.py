@@ -13,12 +13,13 @@ from earthwork.plan.grade_shift import Root, ShiftTally, find_shift, trial_shift
 from earthwork.plan.keys import KeysResult, KeysTally, keys_result, with_keys
 from earthwork.plan.movements import LedgerRow, Movement, Settlement, settle
 from earthwork.quantities.engine import Progress, Tally, walk
+from earthwork.quantities.placed_tests import site_cards
 from earthwork.quantities.site_ground import SiteGround, open_site
 from earthwork.quantities.volumes import AreaVolumes, VolumesResult, VolumesTally, area_volumes, volumes_result
 from earthwork.results import Result
 from earthwork.site import Site, load_site
 from earthwork.site.model import SiteModel
-from earthwork.soils.card import SoilCard, soil_cards, soil_warnings
+from earthwork.soils.card import SoilCard, soil_warnings
 
 if TYPE_CHECKING:
     import pandas
@@ -175,7 +176,7 @@ def balance(
             f"{site.path or site.name}: balance needs at least one [[stratum]] (what the cut is made of), "
             "or a [[borrow]] with its material"
         )
-    cards = soil_cards(site)
+    cards = site_cards(site)
     ground = open_site(site, moving=True)
     low, high = model.balance.shift_range
     main = VolumesTally(ground)

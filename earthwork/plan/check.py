@@ -7,12 +7,13 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from earthwork.quantities.engine import Progress
+from earthwork.quantities.placed_tests import doubtful_places, site_cards, site_tests
 from earthwork.quantities.site_ground import open_site
 from earthwork.quantities.volumes import VolumesResult, count_volumes
 from earthwork.results import Result
 from earthwork.site import Site, load_site
 from earthwork.site.model import SiteModel
-from earthwork.soils.card import SoilCard, soil_cards, soil_warnings
+from earthwork.soils.card import SoilCard, soil_warnings
 
 if TYPE_CHECKING:
     import pandas
@@ -63,11 +64,13 @@ def check(site: Site | str | Path, *, threads: int | None = None, progress: Prog
         EarthworkError: the first thing that is wrong; all faults of the site file, or of the soils, in one message.
     """
     site = site if isinstance(site, Site) else load_site(site)
-    cards = soil_cards(site) if site.model.material and site.model.fill else {}
-    volumes = count_volumes(site, open_site(site), threads=threads, progress=progress)
+    cards = site_cards(site) if site.model.material and site.model.fill else {}
+    ground = open_site(site)
+    volumes = count_volumes(site, ground, threads=threads, progress=progress)
+    doubts = doubtful_places(site, ground, site_tests(site)) if cards else ()
     return CheckResult(
         units=site.units,
-        warnings=tuple(dict.fromkeys([*volumes.warnings, *soil_warnings(cards)])),
+        warnings=tuple(dict.fromkeys([*volumes.warnings, *soil_warnings(cards), *doubts])),
         volumes=volumes,
         cards=cards,
         needs=needs(site.model),

@@ -26,13 +26,14 @@ from earthwork.plan.transport import Certificate
 from earthwork.quantities.blocks import BlockTally, ReliefTally
 from earthwork.quantities.engine import Progress, Tally, walk
 from earthwork.quantities.haul_areas import HaulAreas, open_haul_areas
+from earthwork.quantities.placed_tests import site_cards
 from earthwork.quantities.site_ground import SiteGround, open_site
 from earthwork.quantities.volumes import VolumesResult, VolumesTally, volumes_result
 from earthwork.results import Result
 from earthwork.site import Site, load_site
 from earthwork.site.haul_rules import ON_SITE_STOCKPILE
 from earthwork.site.model import Stockpile
-from earthwork.soils.card import SoilCard, soil_cards, soil_warnings
+from earthwork.soils.card import SoilCard, soil_warnings
 
 if TYPE_CHECKING:
     import pandas
@@ -198,7 +199,7 @@ def haul(
     site = site if isinstance(site, Site) else load_site(site)
     if site.model.haul is None:
         raise SiteFileError(f"{site.path or site.name}: haul needs [haul]; an empty one plans with its defaults")
-    cards = soil_cards(site)
+    cards = site_cards(site)
     ground = open_site(site)
     counted = HaulTallies(site, ground)
     main = VolumesTally(ground)

@@ -18,10 +18,11 @@ from earthwork.plan.settlement import DistortionLimit, blanket_asked_m, limits_e
 from earthwork.quantities.engine import Progress, Tally, walk
 from earthwork.quantities.pad_ground import PadPlace, open_pads
 from earthwork.quantities.pads import PadField, PadsTally, PadSums
+from earthwork.quantities.placed_tests import site_cards
 from earthwork.quantities.site_ground import SiteGround, open_site
 from earthwork.results import Result
 from earthwork.site import Site, load_site
-from earthwork.soils.card import SoilCard, soil_cards, soil_warnings
+from earthwork.soils.card import SoilCard, soil_warnings
 
 if TYPE_CHECKING:
     import pandas
@@ -175,7 +176,7 @@ def pads(
         raise SiteFileError(f"{where}: pads needs a [pads] section")
     if not model.stratum and not model.borrow:
         raise SiteFileError(f"{where}: pads needs at least one [[stratum]], or a [[borrow]] with its material")
-    cards = soil_cards(site)
+    cards = site_cards(site)
     ground = open_site(site)
     warnings = [*ground.warnings, *soil_warnings(cards)]
     grid = ground.stack.grid

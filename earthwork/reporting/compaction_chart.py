@@ -48,11 +48,12 @@ class ChartContent:
     target: State | None = None
     bank: State | None = None
     field: tuple[State, ...] = field(default=())
+    levels: tuple[tuple[str, float], ...] = ()  #: (name, dry density) of a soil that is judged without water content
 
 
 def chart_of_card(card: SoilCard, site_name: str) -> ChartContent | None:
-    """The chart of a material; None when it has no compaction maximum with an optimum."""
-    if card.max_dry_density_kg_m3 is None or card.optimum_water_content_percent is None:
+    """The chart of a material; None when it has no compaction maximum."""
+    if card.max_dry_density_kg_m3 is None:
         return None
     window = card.placing_window()
     tests = card.field_log.tests.tests if card.field_log else ()
@@ -62,19 +63,22 @@ def chart_of_card(card: SoilCard, site_name: str) -> ChartContent | None:
     if card.bank_water_content_percent is not None:
         bank = (card.bank_water_content_percent, card.bank_dry_density_kg_m3)
     whole = _Whole(card)
-    notes = [card.method or "typical values, no test"]
+    optimum = card.optimum_water_content_percent
+    notes = [card.method or ("minimum and maximum density" if optimum is None else "typical values, no test")]
     if card.oversize is not None and card.oversize.percent:
         notes.append(f"corrected for {card.oversize.percent:g} % oversize")
     if card.relative_compaction_percent is not None:
         notes.append(
-            f"required {card.relative_compaction_percent:.4g} %, expected {card.expected_compaction_percent:.4g} %"
+            f"required {card.relative_compaction_percent:.1f} %, expected {card.expected_compaction_percent:.1f} % "
+            "of the maximum"
         )
     return ChartContent(
         title=f"{site_name}: {card.material}",
         note="; ".join(notes),
         specific_gravity=card.specific_gravity,
         **(whole.curve(card.curve) if card.curve else {}),
-        peak=(card.optimum_water_content_percent, card.max_dry_density_kg_m3),
+        peak=None if optimum is None else (optimum, card.max_dry_density_kg_m3),
+        levels=_levels(card) if optimum is None else (),
         window=window.polygon if window else None,
         target=target,
         bank=bank,
@@ -82,6 +86,17 @@ def chart_of_card(card: SoilCard, site_name: str) -> ChartContent | None:
             (t.water_content_percent, t.dry_density_kg_m3) for t in tests if t.water_content_percent is not None
         ),
     )
+
+
+def _levels(card: SoilCard) -> tuple[tuple[str, float], ...]:
+    """The dry densities that a free-draining soil is judged between."""
+    named = (
+        ("maximum", card.max_dry_density_kg_m3),
+        ("expected", card.fill_dry_density_kg_m3),
+        ("required", card.required_dry_density_kg_m3),
+        ("minimum", card.min_dry_density_kg_m3),
+    )
+    return tuple((name, density) for name, density in named if density is not None)
 
 
 def chart_of_curve(curve: CompactionCurve, title: str) -> ChartContent:
@@ -147,6 +162,7 @@ def draw_compaction_chart(content: ChartContent, path: Path, *, units: UnitSyste
     _draw_saturation(axes, content, factor, limits[0])
     if content.window is not None and not content.window.is_empty:
         _draw_window(axes, content.window, factor)
+    _draw_levels(axes, content.levels, factor, units)
     _draw_curve(axes, content, factor)
     _draw_states(axes, content, factor, units)
     axes.set_xlabel("water content, % of dry mass")
@@ -171,6 +187,11 @@ def _limits(content: ChartContent) -> tuple[tuple[float, float], tuple[float, fl
         low, bottom, high, _ = content.window.bounds
         # A window without limits of water content runs to bone dry; it may run out of the chart.
         states += [(w, bottom) for w in (low, high) if w > 0]
+    if content.levels:
+        # Any water content goes, so the chart runs from bone dry to full voids at the loosest.
+        loosest = min(density for _, density in content.levels)
+        room_for = float(phase.zero_air_voids_water_content_percent(loosest, content.specific_gravity))
+        states += [(w, d) for _, d in content.levels for w in (0.0, room_for)]
     waters, densities = [w for w, _ in states], [d for _, d in states]
     room = max(0.08 * (max(waters) - min(waters)), 1.0)
     height = max(max(densities) - min(densities), 60.0)
@@ -215,6 +236,24 @@ def _draw_window(axes: Axes, window: shapely.Polygon, factor: float) -> None:
         axes.fill(
             *zip(*corners, strict=True), facecolor=colors.FILL[0], edgecolor=colors.FILL[2], linewidth=1.0,
             hatch="//", alpha=0.55, zorder=1, label="placing window" if i == 0 else None,
+        )  # fmt: skip
+
+
+def _draw_levels(axes: Axes, levels: Sequence[tuple[str, float]], factor: float, units: UnitSystem) -> None:
+    """Dry densities that hold at any water content, as lines across the chart, each with its name."""
+    left, right = axes.get_xlim()
+    for name, density in levels:
+        ends = name in ("maximum", "minimum")
+        axes.axhline(
+            density / factor, color=colors.CUT[0] if ends else colors.FILL[3], linewidth=1.6 if ends else 1.1,
+            linestyle="-" if ends else (0, (5, 2)), zorder=4,
+        )  # fmt: skip
+        # Expected and required run close: one is named over its line, the other under it.
+        under = name == "required"
+        axes.annotate(
+            f"{name} {show(density, 'density', units)}", (left if ends else right, density / factor),
+            xytext=(6 if ends else -6, -3 if under else 3), textcoords="offset points", ha="left" if ends else "right",
+            va="top" if under else "bottom", fontsize=8, fontweight="bold", path_effects=halo(2.5), zorder=8,
         )  # fmt: skip
 
 

@@ -144,19 +144,17 @@ def _kind(material: Material, units: UnitSystem) -> Facts:
     parts = (("gravel_percent", "gravel"), ("sand_percent", "sand"), ("fines_percent", "fines"))
     grading = ", ".join(f"{name} {plain(soil[key], 0)} %" for key, name in parts if soil[key] is not None)
     rows: list[Row] = [
-        ("group (ASTM D2487)", f"{soil['symbol']}, {soil['name']}", f"{grading}; {limits}"),
-        ("governing test", means["governing_test"], ""),
-        ("plant", means["plant"], ""),
-        ("water in its fines", means["water_holding"], ""),
-        ("binding", means["binding"], ""),
+        ("group (ASTM D2487)", soil["symbol"], f"{soil['name']}; {grading}; {limits}"),
+        ("governing test", "", means["governing_test"]),
+        ("plant", "", means["plant"]),
+        ("water in its fines", "", means["water_holding"]),
+        ("binding", "", means["binding"]),
     ]
     if suction is not None:
-        ends = (
-            f"{plain(suction['target_kpa'], 0)} kPa at the target, "
-            f"{plain(suction['after_wetting_kpa'], 0)} kPa once wet"
-        )
-        rows.append(("matric suction, estimate", ends, f"{suction['sensitivity']} ({suction['relation']})"))
-    rows += [("beware" if i == 0 else "", caution, "") for i, caution in enumerate(means["cautions"])]
+        ends = f"at the target, {plain(suction['after_wetting_kpa'], 0)} kPa once wet: {suction['sensitivity']}"
+        target = f"{plain(suction['target_kpa'], 0)} kPa"
+        rows.append(("matric suction, estimate", target, f"{ends} ({suction['relation']})"))
+    rows += [("beware" if i == 0 else "", "", caution) for i, caution in enumerate(means["cautions"])]
     return Facts(heading=f"{material['material']}: what soil it is", rows=tuple(rows))
 
 

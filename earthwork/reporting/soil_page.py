@@ -20,6 +20,7 @@ _ROWS: tuple[tuple[str, str] | None, ...] = (
     ("loose_dry_density_kg_m3", "dry density, loose"),
     ("fill_dry_density_kg_m3", "dry density, fill as it will be"),
     ("max_dry_density_kg_m3", "maximum dry density"),
+    ("min_dry_density_kg_m3", "minimum dry density"),
     ("optimum_water_content_percent", "optimum water content"),
     None,
     ("relative_compaction_percent", "compaction required"),

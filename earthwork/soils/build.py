@@ -132,6 +132,7 @@ def _with_fill(context: Context, card: SoilCard, bank: Bank, peak: Peak | None, 
     if indices is not None:
         card = replace(
             card,
+            min_dry_density_kg_m3=indices.min_dry_density,
             fill_relative_density_percent=relative_density_percent(
                 made.dry_density, indices.min_dry_density, indices.max_dry_density
             ),

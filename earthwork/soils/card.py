@@ -1,6 +1,6 @@
 """The soil card: what one material weighs, dry, in the bank, loose and compacted, and what the fill asks of it.
 
-``soil_cards(site)`` gives a card per material; ``soil(site)`` is the command. Only dry mass is conserved,
+``soil_cards(site)`` gives a card per material. Only dry mass is conserved,
 so a card turns a dry mass into a volume of each state and back, and every other figure follows from its dry
 densities.
 """
@@ -10,7 +10,6 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cached_property
-from pathlib import Path
 from typing import TYPE_CHECKING, Any, Literal
 
 from earthwork.errors import SoilError, Warning
@@ -26,7 +25,6 @@ if TYPE_CHECKING:
     from earthwork.soils.in_place import TestSet
     from earthwork.soils.placing import FieldLog
     from earthwork.soils.records import MaterialTests
-    from earthwork.soils.result import SoilResult
     from earthwork.soils.suction import SuctionEstimate
     from earthwork.soils.uncertainty import ShrinkUncertainty
     from earthwork.soils.window import PlacingWindow
@@ -79,6 +77,7 @@ class SoilCard:
     method: str | None = None
     max_dry_density_kg_m3: float | None = None
     optimum_water_content_percent: float | None = None
+    min_dry_density_kg_m3: float | None = None  #: index minimum of a free-draining soil
     laboratory_max_dry_density_kg_m3: float | None = None
     laboratory_optimum_water_content_percent: float | None = None
     relative_compaction_percent: float | None = None
@@ -268,6 +267,7 @@ class SoilCard:
             "method": self.method,
             "max_dry_density_kg_m3": self.max_dry_density_kg_m3,
             "optimum_water_content_percent": self.optimum_water_content_percent,
+            "min_dry_density_kg_m3": self.min_dry_density_kg_m3,
             "laboratory_max_dry_density_kg_m3": self.laboratory_max_dry_density_kg_m3,
             "laboratory_optimum_water_content_percent": self.laboratory_optimum_water_content_percent,
             "relative_compaction_percent": self.relative_compaction_percent,
@@ -332,20 +332,19 @@ def soil_cards(site: Site, tests: Mapping[str, MaterialTests] | None = None) -> 
     """
     from earthwork.files.soil_tests import read_site_tests
     from earthwork.soils.build import build_cards
+    from earthwork.soils.located import waiting_tests
 
-    return build_cards(site, read_site_tests(site) if tests is None else tests)
+    if tests is None:
+        tests = read_site_tests(site)
+        lost = [name for name, own in tests.items() if waiting_tests(site.model, name, own)]
+        if lost:
+            raise SoilError(
+                f"material.{lost[0]}.bank.tests: rows name no material, and only the ground tells it; "
+                "use earthwork.soil(site), or name the material of each row in a column material"
+            )
+    return build_cards(site, tests)
 
 
 def soil_warnings(cards: dict[str, SoilCard]) -> tuple[Warning, ...]:
     """The warnings of all cards, each once, in order."""
     return tuple(dict.fromkeys(warning for card in cards.values() for warning in card.warnings))
-
-
-def soil(site: Site | str | Path) -> SoilResult:
-    """The soil cards of a checked site, or of the site file at a path, as a result; see :func:`soil_cards`."""
-    from earthwork.site import Site, load_site
-    from earthwork.soils.result import SoilResult
-
-    site = site if isinstance(site, Site) else load_site(site)
-    cards = soil_cards(site)
-    return SoilResult(units=site.units, warnings=soil_warnings(cards), cards=tuple(cards.values()))

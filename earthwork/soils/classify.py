@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise
@@ -14,6 +15,9 @@ from earthwork.errors import SoilError
 GRAVEL_MM = 75.0
 SAND_MM = 4.75
 FINES_MM = 0.075
+#: Points of percent passing by which a grading is carried on below its finest sieve: D10 of a soil with up to 12 %
+#: fines, which dual symbols need.
+CARRIED_ON_PERCENT = 2.0
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -36,13 +40,28 @@ class Grading:
         return float(np.interp(np.log(opening_mm), np.log(sizes), percents))
 
     def size_mm(self, percent: float) -> float | None:
-        """Diameter [mm] that a percentage is finer than (D10, D30, D60); None when it was not reached."""
+        """Diameter [mm] that a percentage is finer than (D10, D30, D60); None when it was not reached.
+
+        A little below the finest sieve the line through the two finest is carried on, as [ASTM-D2487] allows
+        for D10.
+        """
         sizes = np.array([size for size, _ in self.passing])
         percents = np.array([value for _, value in self.passing])
+        if self.carried_on(percent):
+            (coarse, more), (fine, less) = self.passing[-2:]
+            slope = math.log(coarse / fine) / (more - less)
+            return math.exp(math.log(fine) - slope * (less - percent))
         if not percents.min() <= percent <= percents.max():
             return None
         order = np.argsort(percents, kind="stable")
         return float(np.exp(np.interp(percent, percents[order], np.log(sizes[order]))))
+
+    def carried_on(self, percent: float) -> bool:
+        """Whether the size at a percentage lies below the finest sieve, near enough to carry the line on."""
+        if len(self.passing) < 2:
+            return False
+        (_, more), (_, less) = self.passing[-2:]
+        return less - CARRIED_ON_PERCENT <= percent < less < more
 
     @property
     def uniformity(self) -> float | None:
@@ -133,6 +152,8 @@ def classify(
         uniformity = curvature = None
     else:
         assert grading is not None
+        if fines <= 12 and grading.carried_on(10):
+            notes.append("D10 lies below the finest sieve; it is carried on from the two finest")
         symbol, name, uniformity, curvature = _coarse(grading, gravel, sand, fines, liquid_limit, plasticity, organic)
     return Classification(
         symbol=symbol, name=name, gravel_percent=gravel, sand_percent=sand, fines_percent=fines,

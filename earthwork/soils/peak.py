@@ -11,6 +11,7 @@ from earthwork.soils.context import Context
 from earthwork.soils.curve import CompactionCurve, fit_curve
 from earthwork.soils.effort import NOMINAL_ENERGY_KJ_M3, Rammer, compaction_energy_kj_m3, effort_of, same_method
 from earthwork.soils.relative_density import FINES_LIMIT_PERCENT
+from earthwork.soils.typical import TYPICAL_METHOD
 from earthwork.soils.uncertainty import Part
 
 
@@ -41,6 +42,13 @@ def compaction_peak(context: Context, gravity: float, soil: Classification | Non
     if typical is None or typical.max_dry_density_kg_m3 is None or stated or material.use != "fill":
         return None
     assert typical.optimum_water_content_percent is not None
+    if context.fill.method is not None and not same_method(context.fill.method, TYPICAL_METHOD):
+        context.fault(
+            "typical",
+            f'its typical maximum is for standard effort, and [fill] asks for "{context.fill.method}"; percentages of '
+            "one effort mean nothing for the other. Give proctor by that method, or a shrink_percent_of_bank",
+        )
+        return None
     dry, wet = typical.max_dry_density_kg_m3, typical.optimum_water_content_percent
     shown = (
         f"{context.density(dry.middle)} ({context.density(dry.low)} to {context.density(dry.high)}, standard effort)"

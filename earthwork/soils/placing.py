@@ -133,7 +133,7 @@ def _compacted(context: Context, bank: Bank, peak: Peak, gravity: float) -> Fill
             "clay and till can be; otherwise check that both are dry and of the same soil",
         )  # fmt: skip
     if context.material.relative_density is not None and context.fill.relative_density is not None:
-        return _of_relative_density(context, peak)
+        return _of_relative_density(context, peak, gravity)
     required = context.fill.relative_compaction
     log = _field_log(context, peak, required, gravity)
     if context.fill.expected_compaction is not None:
@@ -142,12 +142,7 @@ def _compacted(context: Context, bank: Bank, peak: Peak, gravity: float) -> Fill
             _compare_with_log(context, expected, log)
     elif log is not None:
         expected, source = log.compaction.mean, f"{log.compaction.count} field tests"
-        if expected < required:
-            context.warn(
-                "compaction-short", "field.tests",
-                f"the mean reached, {expected:.1f} %, is under the required {required:g} %; the fill does "
-                "not comply",
-            )  # fmt: skip
+        _doubt_short(context, log)
     else:
         expected, source = assumed_expectation(context, context.fill), "assumed"
     return FillState(
@@ -157,16 +152,24 @@ def _compacted(context: Context, bank: Bank, peak: Peak, gravity: float) -> Fill
     )  # fmt: skip
 
 
-def _of_relative_density(context: Context, peak: Peak) -> FillState:
+def _of_relative_density(context: Context, peak: Peak, gravity: float) -> FillState:
     indices, fill = context.material.relative_density, context.fill
     assert indices is not None
     assert fill.relative_density is not None
     low, high = indices.min_dry_density, indices.max_dry_density
+    required = dry_density_of_relative(fill.relative_density, low, high)
+    log = _field_log(context, peak, 100 * required / high, gravity)
     expected = fill.expected_relative_density
-    source = "stated"
-    part = None
-    if expected is None:
+    if expected is not None:
+        density, source = dry_density_of_relative(expected, low, high), "stated"
+        if log is not None:
+            _compare_with_log(context, 100 * density / high, log, "expected_relative_density")
+    elif log is not None:
+        density, source = high * log.compaction.mean / 100, f"{log.compaction.count} field tests"
+        _doubt_short(context, log)
+    else:
         expected, source = min(fill.relative_density + OVERSHOOT_DENSITY_POINTS, 100.0), "assumed"
+        density = dry_density_of_relative(expected, low, high)
         context.assume("expected_compaction_percent")
         context.note(
             Warning(
@@ -175,13 +178,12 @@ def _of_relative_density(context: Context, peak: Peak) -> FillState:
                 "the crew reaches",
             )
         )
-    density = dry_density_of_relative(expected, low, high)
-    required = dry_density_of_relative(fill.relative_density, low, high)
+    part = _compaction_part(100 * density / high, source, log)
     if source == "assumed":
         part = Part(name="compaction", relative_sd=even_sd(2 * (density - required)) / density)
     return FillState(
         dry_density=density, source=peak.source, required=100 * required / high, expected=100 * density / high,
-        expected_from=source, required_dry_density=required, part=part,
+        expected_from=source, required_dry_density=required, part=part, log=log,
     )  # fmt: skip
 
 
@@ -212,7 +214,7 @@ def _field_log(context: Context, peak: Peak, required: float, gravity: float) ->
         listed = ", ".join(short[:8]) + (f" and {len(short) - 8} more" if len(short) > 8 else "")
         context.warn(
             "tests-short", "field.tests",
-            f"{len(short)} of {len(used)} tests are under the required {required:g} %: {listed}",
+            f"{len(short)} of {len(used)} tests are under the required {required:.4g} %: {listed}",
         )  # fmt: skip
     return FieldLog(
         tests=tests, compaction=compaction, percents=tuple(percents), required_percent=required, short=short
@@ -231,14 +233,22 @@ def maximum_of(context: Context, peak: Peak, test: DensityTest) -> float:
         return peak.dry_density
 
 
-def _compare_with_log(context: Context, stated: float, log: FieldLog) -> None:
+def _doubt_short(context: Context, log: FieldLog) -> None:
+    reached, required = log.compaction.mean, log.required_percent
+    if reached < required:
+        context.warn(
+            "compaction-short", "field.tests",
+            f"the mean reached, {reached:.1f} %, is under the required {required:.4g} %; the fill does not comply",
+        )  # fmt: skip
+
+
+def _compare_with_log(context: Context, stated: float, log: FieldLog, key: str = "expected_compaction") -> None:
     error = log.compaction.standard_error
     if error is not None and abs(stated - log.compaction.mean) > _DOUBT * error:
         context.warn(
             "compaction-differs", "field.tests",
             f"the field tests reach {log.compaction.mean:.1f} % in the mean (standard error {error:.2f}), "
-            "not the "
-            f"fill.expected_compaction = {stated:g}; take that out to use the tests",
+            f"not the {stated:.4g} % of fill.{key}; take that out to use the tests",
         )  # fmt: skip
 
 

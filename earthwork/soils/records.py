@@ -29,11 +29,18 @@ class DensityTest:
     name: str = ""
     group: str = ""  #: stratum, lift or area that the crew notes
     method: str = ""
+    material: str = ""  #: as its row names it; empty where the place has to tell
     oversize_percent: float | None = None  #: in this test's own soil; None takes the material's
     depth_m: float | None = None
     easting: float | None = None
     northing: float | None = None
     elevation_m: float | None = None
+
+    @property
+    def placed(self) -> bool:
+        """Whether it says where it was taken: in plan, and how deep."""
+        deep = self.elevation_m is not None or self.depth_m is not None
+        return self.easting is not None and self.northing is not None and deep
 
     @property
     def label(self) -> str:

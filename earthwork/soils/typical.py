@@ -13,6 +13,8 @@ from typing import Any
 from earthwork.errors import SoilError
 from earthwork.units import FOOT_M, POUND_KG
 
+#: The test that the compaction figures of the table are of.
+TYPICAL_METHOD = "ASTM D698"
 _PCF = POUND_KG / FOOT_M**3
 _KN_M3 = 1000 / 9.80665
 

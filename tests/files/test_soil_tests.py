@@ -47,6 +47,7 @@ def states(path: Path, **options) -> list[tuple[float, float]]:
         "moisture_content_percent,dry_density_g_cm3\n10.5,1.7\n12,1.75\n",
         "water_content_fraction,dry_density_t_m3\n0.105,1.7\n0.12,1.75\n",
         "dry_density_kg_m3,remark,water_content_percent\n1700,\"two\nlines, one cell\",10.5\n1750,,12 %\n",
+        'water_content_percent,dry_density_t_m3\n"10,5","1,70"\n"12,0","1,75"\n',
         "point,water_content_percent,dry_density_kg_m3\n1,10.5,1700\n2,-,1720\n3,n/a,\n4,12,1750\n",
     ],
 )  # fmt: skip
@@ -241,3 +242,26 @@ def test_columns_of_a_table(write) -> None:
     assert table.columns == ("test_no", "dry_density_kg_m3", "water_percent")
     assert table.decimal_comma
     assert table.number(table.rows[0], "water_percent") == 12.5
+
+
+def test_quoted_commas_that_may_be_for_thousands_are_refused(write) -> None:
+    path = write('water_content_percent,dry_density_kg_m3\n10,"1,700"\n12,"1,750"\n')
+    with pytest.raises(FileError, match="row 2, column dry_density_kg_m3: '1,700' may have a decimal comma"):
+        read_compaction_points(path)
+
+
+def test_rows_of_no_material_are_told(write) -> None:
+    path = write(
+        "test,material,dry_density_kg_m3\na,loess,1430\nb,losse,1440\nc,,1450\nd,shale,2250\ne,Loess,1420\n"
+    )
+    reading = read_density_tests(path, material="loess", known=("loess", "shale"))
+    assert [test.name for test in reading.tests] == ["a", "e"]
+    assert reading.notes == (
+        ("rows-of-no-material", f"{path}: of no material of the site, and left out: row 3 (losse), 4 (no name)"),
+    )
+
+
+def test_a_curve_from_columns_of_a_cylinder(write) -> None:
+    # 2,000 g in 1,000 cm³ at 25 %: 1,600 kg/m³ dry.
+    text = "cylinder_volume_cm3,cylinder_mass_g,cylinder_and_soil_mass_g,water_content_percent\n1000,4200,6200,25\n"
+    assert states(write(text)) == [(25.0, 1600.0)]

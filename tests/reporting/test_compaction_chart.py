@@ -16,6 +16,7 @@ from earthwork.soils.curve import fit_curve
 from earthwork.soils.records import CurvePoint, DensityTest, MaterialTests
 from earthwork.units import METRIC, US, UnitSystem
 from tests.soils.test_card import FILL, LOESS, site
+from tests.soils.test_card_from_tests import SAND
 
 POINTS = tuple(CurvePoint(w, 1760 - 6 * (w - 16) ** 2) for w in (11, 13, 15, 17, 19)) + (CurvePoint(25.0, 1745.0),)
 BANK = tuple(DensityTest(d, 7.5) for d in (1410, 1430, 1450))
@@ -69,6 +70,17 @@ def test_states_are_those_of_the_whole_soil() -> None:
 def test_no_chart_without_a_compaction_test() -> None:
     rock = {"use": "rock", "bank": {"dry_density": 2250}, "fill": {"dry_density": 2000}, "loose": {"swell_percent": 45}}
     assert chart_of_card(soil_cards(site(rock))["loess"], "x") is None
+
+
+def test_a_free_draining_soil_is_shown_between_its_densities(tmp_path: Path) -> None:
+    card = soil_cards(site(SAND, fill={"relative_compaction": 95, "relative_density": 70}))["loess"]
+    content = chart_of_card(card, "x")
+    assert content is not None
+    assert content.peak is None
+    assert [name for name, _ in content.levels] == ["maximum", "expected", "required", "minimum"]
+    assert dict(content.levels)["required"] == pytest.approx(1800 * 1500 / (1800 - 0.7 * 300))
+    draw_compaction_chart(content, tmp_path / "a.png", units=METRIC)
+    assert has(tmp_path / "a.png", colors.CUT[0])
 
 
 @pytest.mark.parametrize("units", [METRIC, US])

@@ -45,7 +45,7 @@ def test_tests_and_how_sure_they_are(tmp_path: Path) -> None:
 def test_group_plant_and_cautions() -> None:
     made = site(GRADED)
     text = text_of(page(made, earthwork.soil(made)))
-    assert "group (ASTM D2487) | CL, lean clay" in text
+    assert "group (ASTM D2487) | CL | lean clay" in text
     assert "sheepsfoot" in text
     assert "matric suction, estimate" in text
     assert "collapsible" in text

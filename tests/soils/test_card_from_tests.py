@@ -247,6 +247,32 @@ def test_relative_density_expectation_is_assumed() -> None:
     assert [w.code for w in card.warnings] == ["compaction-assumed"]
 
 
+def test_relative_density_from_a_test_log() -> None:
+    # Mean 1,710 of 1,800 is 95 %; 70 % relative density is 1500 / 15.9 = 94.34 %, 1,698.1 kg/m³: one test is short.
+    fill = {"relative_compaction": 95, "relative_density": 70}
+    log = tuple(DensityTest(d, 6.0, name=str(d)) for d in (1690.0, 1710.0, 1730.0))
+    made = site({**SAND, "field": {"tests": "log.csv"}}, fill=fill)
+    card = soil_cards(made, {"loess": MaterialTests(field=log)})["loess"]
+    assert card.fill_dry_density_kg_m3 == pytest.approx(1710.0)
+    assert card.expected_compaction_percent == pytest.approx(95.0)
+    assert card.expected_compaction_from == "3 field tests"
+    assert card.field_log is not None
+    assert card.field_log.short == ("1690.0",)
+    # Scatter 20 of 1,710, three tests.
+    assert card.uncertainty.relative_sd == pytest.approx(20 / 1710 / 3**0.5)
+    stated = site({**SAND, "field": {"tests": "log.csv"}}, fill={**fill, "expected_relative_density": 90})
+    doubted = soil_cards(stated, {"loess": MaterialTests(field=log)})["loess"]
+    assert doubted.fill_relative_density_percent == pytest.approx(90)
+    assert any("not the 98.04 % of fill.expected_relative_density" in w.message for w in doubted.warnings)
+
+
+def test_typical_maximum_is_of_standard_effort() -> None:
+    made = site(changed(typical="loess", proctor=None), fill={**FILL, "method": "ASTM D1557"})
+    with pytest.raises(SoilError, match=r"typical maximum is for standard effort, and \[fill\] asks for .ASTM D1557."):
+        soil_cards(made)
+    assert soil_cards(site(changed(typical="loess", proctor=None), fill={**FILL, "method": "ASTM D698"}))
+
+
 def test_percent_of_the_vibrated_maximum() -> None:
     card = soil_cards(site(SAND, fill={"relative_compaction": 95, "expected_compaction": 96}))["loess"]
     assert card.fill_dry_density_kg_m3 == pytest.approx(0.96 * 1800)

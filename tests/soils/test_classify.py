@@ -131,6 +131,21 @@ def test_sizes_are_read_off_by_logarithm() -> None:
     assert grading.size_mm(5) is None
 
 
+def test_d10_a_little_below_the_finest_sieve() -> None:
+    # 8 points an octave from 0.15 to 0.075 mm: two more points are a quarter of an octave, D10 = 0.075 / 2^(1/4).
+    grading = grading_of([(4.75, 100), (0.425, 60), (0.15, 20), (0.075, 12)])
+    assert grading.size_mm(10) == pytest.approx(0.075 / 2**0.25)
+    soil = classify(grading)
+    assert soil.symbol == "SW-SM"
+    assert soil.uniformity == pytest.approx(0.425 / 0.06307, rel=1e-3)
+    assert soil.notes == ("D10 lies below the finest sieve; it is carried on from the two finest",)
+    assert grading_of([(0.15, 20), (0.075, 12)]).size_mm(9.9) is None
+
+
+def test_a_flat_end_of_the_grading_is_not_carried_on() -> None:
+    assert grading_of([(4.75, 100), (0.15, 11), (0.075, 11)]).size_mm(10) is None
+
+
 @pytest.mark.parametrize(
     ("call", "message"),
     [
@@ -141,7 +156,7 @@ def test_sizes_are_read_off_by_logarithm() -> None:
         (lambda: classify(grading_of([(2, 100), (1, 90)])), r"does not reach the 0\.075 mm"),
         (lambda: classify(grading_of([(4.75, 100), (2, 99), (0.075, 2)]), liquid_limit=30), "give both"),
         (lambda: classify(None, liquid_limit=30, plastic_limit=31), "must be more than 0 and at most"),
-        (lambda: classify(grading_of([(75, 100), (4.75, 40), (0.075, 12)])), "needs D10, D30 and D60"),
+        (lambda: classify(grading_of([(50, 55), (4.75, 40), (0.075, 4)])), "needs D10, D30 and D60"),
     ],
 )
 def test_gradings_that_do_not_tell(call, message: str) -> None:

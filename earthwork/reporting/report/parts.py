@@ -14,13 +14,14 @@ from earthwork.plan.check import needs
 from earthwork.quantities.cell_probe import CellProbe
 from earthwork.quantities.engine import Progress, Tally
 from earthwork.quantities.one_pass import OnePass
+from earthwork.quantities.placed_tests import site_cards
 from earthwork.quantities.site_ground import SiteGround, open_site
 from earthwork.quantities.surface_map import SurfaceMap, SurfaceMapTally
 from earthwork.reporting.report.groups import COMMANDS
 from earthwork.reporting.runner import call, module_of
 from earthwork.results import Result
 from earthwork.site import Site
-from earthwork.soils.card import SoilCard, soil_cards
+from earthwork.soils.card import SoilCard
 
 
 @dataclass(frozen=True)
@@ -52,7 +53,7 @@ class Parts:
     @cached_property
     def cards(self) -> dict[str, SoilCard]:
         """Soil cards by material; none where the site has no soils."""
-        return soil_cards(self.site) if "soil" in self.results else {}
+        return site_cards(self.site) if "soil" in self.results else {}
 
     @property
     def warnings(self) -> tuple[Warning, ...]:
