@@ -66,7 +66,9 @@ class BankState(Section):
     dry_density: Density | None = Field(default=None, description="dry density in the ground")
     moist_density: Density | None = Field(default=None, description="or moist density; needs water_content")
     water_content: WaterContent | None = Field(default=None, description="water content in the ground, % of dry mass")
-    tests: FileName | None = Field(default=None, description="or a CSV of in-place density tests; rows name their material, or their place tells it")
+    tests: FileName | None = Field(
+        default=None, description="or a CSV of in-place density tests; rows name their material, or their place tells it"
+    )
 
     @model_validator(mode="after")
     def _one_way(self) -> BankState:

@@ -3,8 +3,9 @@
 The factor is ρbank / (ρmax × Rc). Its relative variance is the sum of those of its three parts ([TAYLOR],
 product rule for independent errors): the mean bank density, the maximum density, and the mean compaction
 that crews reach. Scatter of tests enters by the standard error of their mean, because the job averages over
-it. Where the compaction was measured against that same maximum its error cancels in the lifts tested; it stays
-in, for the lifts to come (docs/method-soil.md). Tests close together in place or time are not independent, and then the true uncertainty is larger.
+it. Where the compaction was measured against that same maximum, its error cancels in the lifts tested; it
+stays in, for the lifts to come (docs/method-soil.md). Tests close together in place or time are not
+independent, and then the true uncertainty is larger.
 """
 
 from __future__ import annotations
