@@ -260,6 +260,10 @@ def _refuse_invalid(shapes: np.ndarray, names: list[str], where: str) -> None:
     )
 
 
+#: What the GeoPackage standard calls the lack of a CRS (srs_id 0 and −1); some readers hand it on as if it were one.
+_UNDEFINED = ("Undefined geographic SRS", "Undefined Cartesian SRS")
+
+
 def _file_crs(
     meta: dict, path: Path, shapes: np.ndarray, crs: CRS | None, where: str, warnings: list[Warning]
 ) -> CRS | None:
@@ -271,6 +275,8 @@ def _file_crs(
             there = parse_crs(text)
         except ValueError:
             there = None
+    if there is not None and there.name in _UNDEFINED:
+        there = None
     if there is not None and there.is_geographic and path.suffix.lower() in (".geojson", ".json"):
         # a GeoJSON without a CRS counts as degrees by its standard; many programs write map coordinates all
         # the same

@@ -39,7 +39,7 @@ def new_figure(width: float, height: float) -> Figure:
 
     matplotlib.rcParams.update(_RC)
     # A name may hold characters that the font lacks; it shows boxes for them.
-    warnings.filterwarnings("ignore", message="Glyph .* missing from font", category=UserWarning)
+    warnings.filterwarnings("ignore", message="Glyph .* missing from", category=UserWarning)
     figure = Figure(figsize=(width, height), dpi=DPI, facecolor=PAPER)
     FigureCanvasAgg(figure)
     return figure

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import contextlib
 import json
+import sqlite3
 import subprocess
 import sys
 from pathlib import Path
@@ -174,6 +176,18 @@ def test_no_crs_in_the_file(tmp_path):
     assert square.polygon.bounds == (E, N, E + 10, N + 10)
     assert [w.code for w in warnings] == ["crs-missing"]
     assert "that of the surfaces, EPSG:32611" in warnings[0].message
+
+
+@pytest.mark.parametrize("srs_id", [0, -1])
+def test_the_two_ways_in_which_a_geopackage_names_no_crs(tmp_path, srs_id):
+    path = write(tmp_path / "z.gpkg", [box(0, 0)], crs=None, layer="z", name=["a"])
+    with contextlib.closing(sqlite3.connect(path)) as database, database:
+        database.execute(f"UPDATE gpkg_geometry_columns SET srs_id = {srs_id}")
+        database.execute(f"UPDATE gpkg_contents SET srs_id = {srs_id}")
+    warnings = []
+    assert polygons(path, warnings=warnings)[0].polygon.equals(box(0, 0))
+    assert [w.code for w in warnings] == ["crs-missing"]
+    assert polygons(path, crs=None)[0].polygon.equals(box(0, 0))
 
 
 def test_no_crs_of_the_surfaces(tmp_path):
