@@ -121,8 +121,8 @@ def _draw_depths(axes: Axes, depth: np.ndarray, classes: Classes, frame: Frame) 
         zorder=1,
     )
     coarse, east, north = frame.thinned(depth, 500)
-    if coarse.shape[0] < 2 or coarse.shape[1] < 2:
-        return
+    # Few cells are drawn as the squares that they are, and so is their hatching.
+    coarse, east, north = frame.to_edges(*_as_squares(coarse, east, north))
     low = float(np.nanmin(coarse)) if np.isfinite(coarse).any() else 0.0
     # Dark lines on the light classes, light lines on the dark ones: the hatching shows on both.
     for deep, shallow, color in (
@@ -144,11 +144,14 @@ def _draw_depths(axes: Axes, depth: np.ndarray, classes: Classes, frame: Frame) 
 
 
 def _draw_zero_line(axes: Axes, depth: np.ndarray, classes: Classes, frame: Frame) -> None:
-    """Where cut meets fill, and where either meets untouched ground; specks of survey noise are left out."""
-    thin, east, north = frame.thinned(depth, 900)
-    if thin.shape[0] < 2 or thin.shape[1] < 2:
+    """Where cut meets fill, and where either meets untouched ground; specks of survey noise are left out.
+
+    Ground without data is neither: no line runs around it, and specks of it do not break the line.
+    """
+    thin, east, north = frame.to_edges(*frame.thinned(depth, 900))
+    sign = np.ma.masked_invalid(np.clip(_specks_closed(thin) / classes.least, -1.0, 1.0))
+    if not sign.count():
         return
-    sign = np.clip(np.nan_to_num(thin, nan=0.0) / classes.least, -1.0, 1.0)
     shortest = 0.03 * max(frame.extent[1] - frame.extent[0], frame.extent[3] - frame.extent[2])
     for level in (-0.5, 0.5):
         if not (sign.min() < level < sign.max()):
@@ -162,6 +165,32 @@ def _draw_zero_line(axes: Axes, depth: np.ndarray, classes: Classes, frame: Fram
             axes.plot(line[:, 0], line[:, 1], color=colors.INK, linewidth=0.9, zorder=4)
 
 
+def _as_squares(field: np.ndarray, east: np.ndarray, north: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """A coarse field with every cell divided, so that contours follow the edges of its cells."""
+    parts = -(-200 // max(field.shape))
+    if parts == 1:
+        return field, east, north
+
+    def divided(centres: np.ndarray, step: float) -> np.ndarray:
+        inner = ((np.arange(parts) + 0.5) / parts - 0.5) * step
+        return (centres[:, None] + inner).ravel()
+
+    across = east[1] - east[0] if east.size > 1 else north[0] - north[1] if north.size > 1 else 1.0
+    down = north[1] - north[0] if north.size > 1 else -across
+    return np.repeat(np.repeat(field, parts, 0), parts, 1), divided(east, across), divided(north, down)
+
+
+def _specks_closed(field: np.ndarray, reach: float = 2.0) -> np.ndarray:
+    """The field with gaps of up to ``reach`` cells filled by what is next to them."""
+    from scipy.ndimage import distance_transform_edt
+
+    missing = np.isnan(field)
+    if not missing.any() or missing.all():
+        return field
+    away, nearest = distance_transform_edt(missing, return_indices=True)
+    return np.where(away <= reach, field[tuple(nearest)], np.nan)
+
+
 def _length(line: np.ndarray) -> float:
     return float(np.hypot(*np.diff(line, axis=0).T).sum())
 
@@ -172,22 +201,25 @@ def _draw_spots(axes: Axes, depth: np.ndarray, classes: Classes, frame: Frame, t
         value = depth[row, column]
         east, north = frame.grid.point(row + 0.5, column + 0.5)
         text = f"{'C' if value < 0 else 'F'} {number(abs(value), 0.1)}"
-        label = axes.annotate(
-            text,
-            (east, north),
-            xytext=(3, 3),
-            textcoords="offset points",
-            fontsize=7.5,
-            fontweight="bold",
-            path_effects=halo(2.2),
-            zorder=7,
-        )
-        box = label.get_window_extent()
-        if any(box.overlaps(other) for other in taken) or not frame.inside(axes, box):
+        for right, above in ((1, 1), (-1, 1), (1, -1), (-1, -1)):
+            label = axes.annotate(
+                text,
+                (east, north),
+                xytext=(3 * right, 3 * above),
+                textcoords="offset points",
+                ha="left" if right > 0 else "right",
+                va="bottom" if above > 0 else "top",
+                fontsize=7.5,
+                fontweight="bold",
+                path_effects=halo(2.2),
+                zorder=7,
+            )
+            box = label.get_window_extent()
+            if frame.inside(axes, box) and not any(box.overlaps(other) for other in taken):
+                taken.append(box)
+                axes.plot([east], [north], marker="+", markersize=5, color=colors.INK, zorder=7, path_effects=halo(1.6))
+                break
             label.remove()
-            continue
-        taken.append(box)
-        axes.plot([east], [north], marker="+", markersize=5, color=colors.INK, zorder=7, path_effects=halo(1.6))
 
 
 def spots(depth: np.ndarray, least: float, count: int = _SPOTS) -> list[tuple[int, int]]:

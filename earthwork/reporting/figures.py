@@ -59,7 +59,7 @@ def plain_axes(axes: Axes) -> None:
     axes.tick_params(length=3)
 
 
-def round_step(span: float, parts: int) -> float:
+def round_step(span: float, parts: float) -> float:
     """A round step (1, 2 or 5 times a power of ten) that cuts a span into about so many parts.
 
     >>> round_step(7.3, 4), round_step(930, 5)

@@ -20,6 +20,8 @@ if TYPE_CHECKING:
 #: Inches around the map.
 _LEFT, _RIGHT, _TOP, _BOTTOM, _PANEL, _GAP = 0.75, 0.2, 0.75, 0.55, 2.75, 0.25
 _MAP_WIDTH, _MAP_HEIGHT, _LEAST_HEIGHT = 7.6, 7.2, 4.9
+#: Least sides of the map: a strip has empty paper beside it, where its labels and coordinates find room.
+_LEAST_MAP_WIDTH, _LEAST_MAP_HEIGHT = 1.8, 1.2
 #: A site wider than this share of its height has its legend under the map.
 _WIDE, _WIDE_WIDTH, _LEGEND_HEIGHT = 0.5, 9.8, 3.0
 
@@ -40,9 +42,9 @@ class Frame:
         west, south, east, north = grid.bounds
         ratio = (north - south) / (east - west)
         if ratio < _WIDE:
-            return cls(grid, units, _WIDE_WIDTH, _WIDE_WIDTH * ratio, legend_below=True)
+            return cls(grid, units, _WIDE_WIDTH, max(_WIDE_WIDTH * ratio, _LEAST_MAP_HEIGHT), legend_below=True)
         width = min(_MAP_WIDTH, _MAP_HEIGHT / ratio)
-        return cls(grid, units, width, width * ratio)
+        return cls(grid, units, max(width, _LEAST_MAP_WIDTH), width * ratio)
 
     @property
     def columns(self) -> tuple[float, float, float]:
@@ -60,22 +62,36 @@ class Frame:
 
     @property
     def extent(self) -> tuple[float, float, float, float]:
-        """(west, east, south, north), as pictures are placed."""
+        """(west, east, south, north) of the grid, as pictures are placed."""
         west, south, east, north = self.grid.bounds
         return west, east, south, north
+
+    @property
+    def view(self) -> tuple[float, float, float, float]:
+        """(west, east, south, north) of the map: the grid in the middle, true to scale."""
+        west, east, south, north = self.extent
+        per_inch = max((east - west) / self.map_width, (north - south) / self.map_height)
+        beside = (per_inch * self.map_width - (east - west)) / 2
+        above = (per_inch * self.map_height - (north - south)) / 2
+        return west - beside, east + beside, south - above, north + above
 
     def map_axes(self, figure: Figure) -> Axes:
         """Axes for the map, with a few coordinates."""
         width, height = self.size
         bottom = height - _TOP - self.map_height
         axes = figure.add_axes((_LEFT / width, bottom / height, self.map_width / width, self.map_height / height))
-        west, east, south, north = self.extent
+        west, east, south, north = self.view
         axes.set_xlim(west, east)
         axes.set_ylim(south, north)
         axes.set_aspect("auto")
-        step = max(round_step(east - west, 4), round_step(north - south, 4))
-        for axis, low, high in ((axes.xaxis, west, east), (axes.yaxis, south, north)):
+        # Upright northings need room above the first easting, which stands at the same corner.
+        for axis, low, high, inches, room in (
+            (axes.xaxis, west, east, self.map_width, 0.0),
+            (axes.yaxis, south, north, self.map_height, 0.32),
+        ):
+            step = round_step(high - low, min(4.0, inches / 0.85))
             ticks = np.arange(np.ceil(low / step) * step, high, step)
+            ticks = ticks[ticks >= low + room * (high - low) / inches]
             axis.set_ticks(ticks, [number(t, step) for t in ticks])
         axes.tick_params(length=3, labelsize=7)
         for label in axes.get_yticklabels():
@@ -106,6 +122,17 @@ class Frame:
         north = self.grid.north - (rows + 0.5) * self.grid.cell_north
         east = self.grid.west + (columns + 0.5) * self.grid.cell_east
         return field[np.ix_(rows, columns)], east, north
+
+    def to_edges(
+        self, field: np.ndarray, east: np.ndarray, north: np.ndarray
+    ) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        """A field of cell centres with its outer values repeated on the edges of the grid: contours reach them."""
+        west_edge, east_edge, south_edge, north_edge = self.extent
+        return (
+            np.pad(field, 1, mode="edge"),
+            np.concatenate([[west_edge], east, [east_edge]]),
+            np.concatenate([[north_edge], north, [south_edge]]),
+        )
 
     def label_zones(self, axes: Axes, zones: Sequence[tuple[str, Any]], taken: list[Any]) -> None:
         """Write each zone's name inside it, the largest first, clear of the boxes taken (pixels).
@@ -154,8 +181,8 @@ class Frame:
         """A bar of a round ground length and an arrow to grid north, under the legend."""
         width, height = self.size
         length = self.units.factor("length")
-        ground = (self.extent[1] - self.extent[0]) * self.grid.unit_m * self.grid.ground_scale / length
-        bar = round_step(ground, 5)
+        ground = (self.view[1] - self.view[0]) * self.grid.unit_m * self.grid.ground_scale / length
+        bar = round_step(ground, self.map_width / 1.5)
         inches = bar / ground * self.map_width
         axes = figure.add_axes((0, 0, 1, 1))
         axes.set_xlim(0, width)

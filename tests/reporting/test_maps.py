@@ -9,8 +9,9 @@ from earthwork.ground.grid import Grid
 from earthwork.quantities.depth_map import DepthMap, coarse_grid
 from earthwork.reporting import colors
 from earthwork.reporting.balance_curve import draw_balance_curve
-from earthwork.reporting.cut_fill_map import classes_for, draw_cut_fill_map, spots
-from earthwork.reporting.figures import round_step, wrapped
+from earthwork.reporting.cut_fill_map import Classes, _draw_zero_line, classes_for, draw_cut_fill_map, spots
+from earthwork.reporting.figures import new_figure, round_step, wrapped
+from earthwork.reporting.map_frame import Frame
 from earthwork.units import METRIC, US
 
 
@@ -46,6 +47,40 @@ def test_spots_are_extremes_and_apart():
     depth -= 4 * np.exp(-((row - 90) ** 2 + (column - 80) ** 2) / 80)
     assert spots(depth, 0.5) == [(30, 20), (90, 80)]
     assert spots(np.full((5, 5), np.nan), 0.5) == []
+
+
+def _zero_lines(depth):
+    """Lines that the map draws where cut meets fill, as arrays of (easting, northing)."""
+    frame = Frame.around(Grid(*depth.shape, 0.0, 100.0, 1.0, 1.0), METRIC)
+    axes = frame.map_axes(new_figure(*frame.size))
+    _draw_zero_line(axes, depth, Classes(1.0, 0.01), frame)
+    return [line.get_xydata() for line in axes.lines]
+
+
+def test_no_zero_line_runs_around_ground_without_data():
+    depth = np.full((100, 80), 2.0)
+    depth[20:60, 30:70] = np.nan
+    assert _zero_lines(depth) == []
+
+
+def test_the_zero_line_crosses_specks_without_data_and_reaches_the_edges():
+    depth = np.where(np.arange(80) < 40, -1.0, 1.0) * np.ones((100, 1))
+    depth[::7, 38:42] = np.nan
+    lines = _zero_lines(depth)
+    assert len(lines) == 2  # from cut to none, and from none to fill
+    for line in lines:
+        assert np.ptp(line[:, 1]) == 100.0
+        assert np.all(np.abs(line[:, 0] - 40.0) < 1.5)
+
+
+@pytest.mark.parametrize("shape", [(200, 5000), (5000, 200), (300, 400)])
+def test_a_map_is_true_to_scale_with_the_ground_in_its_middle(shape):
+    frame = Frame.around(Grid(*shape, 1000.0, 9000.0, 1.0, 1.0), METRIC)
+    west, east, south, north = frame.view
+    assert (east - west) / frame.map_width == pytest.approx((north - south) / frame.map_height)
+    assert (west + east) / 2 == pytest.approx(1000.0 + shape[1] / 2)
+    assert (south + north) / 2 == pytest.approx(9000.0 - shape[0] / 2)
+    assert min(frame.map_width, frame.map_height) >= 1.2
 
 
 def test_coarse_grids_keep_the_corner_and_cover_the_ground():
