@@ -15,6 +15,8 @@ if TYPE_CHECKING:
 
 #: Width where no terminal says its own.
 _PIPE_WIDTH = 110
+#: Longer values are sentences: they stand where notes do, and are wrapped.
+_LONGEST_VALUE = 24
 _PLAIN = {
     "²": "2", "³": "3", "−": "-", "–": "-", "—": "-", "×": "x", "·": "*", "±": "+/-", "≥": ">=", "≤": "<=",
     "→": "->", "…": "...", "°": " deg", "½": "1/2", "“": '"', "”": '"', "‘": "'", "’": "'", "─": "-",
@@ -128,8 +130,10 @@ def _facts(rows: tuple[tuple[str, str, str], ...]) -> Any:
     grid.add_column(no_wrap=True)
     grid.add_column(justify="right", no_wrap=True)
     grid.add_column()
-    for row in rows:
-        grid.add_row(*(Text(("  " if i == 0 else "") + printable(text)) for i, text in enumerate(row)))
+    for label, value, note in rows:
+        if len(value) > _LONGEST_VALUE:
+            value, note = "", f"{value}; {note}" if note else value
+        grid.add_row(Text("  " + printable(label)), Text(printable(value)), Text(printable(note)))
     return grid
 
 

@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
+import shapely
+
 from earthwork.errors import GroundError, Warning
 from earthwork.files.vectors import NamedPolygon, read_polygons
 from earthwork.ground import areas
@@ -39,7 +41,8 @@ class SiteGround:
     zone_names: tuple[str, ...] = ()
     zones: Rings | None = None
     zone_shapes: tuple[Any, ...] = ()
-    zone_areas_m2: tuple[float, ...] = ()
+    zone_areas_m2: tuple[float, ...] = ()  #: inside the ground that counts
+    zone_beyond_m2: tuple[float, ...] = ()  #: beyond what the surfaces cover, where the site has no limits
     limits_area_m2: float | None = None
     warnings: tuple[Warning, ...] = ()
 
@@ -199,10 +202,41 @@ def _zones(opener: _Opener, limits: Any) -> dict[str, Any]:
         opener.polygons(zones.area, "zones", zones.name), square_m=areas.square_metres(opener.grid)
     )
     opener.warnings += warnings
-    shapes = [p.geometry if limits is None else areas.only_polygons(p.geometry & limits) for p in polygons]
+    # Without stated limits a zone may reach beyond what the surfaces cover; that part is missing in the zone alone.
+    stated = opener.site.model.ground.limits is not None
+    ground = shapely.box(*opener.grid.bounds) if limits is None else limits
+    inside = [areas.only_polygons(p.geometry & ground) for p in polygons]
+    beyond = [0.0 if stated else areas.ground_area_m2(p.geometry - ground, opener.grid) for p in polygons]
+    opener.warnings += _zone_warnings(opener, [p.name for p in polygons], inside, beyond)
+    shapes = [p.geometry for p in polygons] if limits is None else inside
     return {
         "zone_names": tuple(p.name for p in polygons),
         "zone_shapes": tuple(shapes),
         "zones": areas.rings_on(opener.grid, shapes),
-        "zone_areas_m2": tuple(areas.ground_area_m2(s, opener.grid) for s in shapes),
+        "zone_areas_m2": tuple(areas.ground_area_m2(s, opener.grid) for s in inside),
+        "zone_beyond_m2": tuple(beyond),
     }
+
+
+def _zone_warnings(opener: _Opener, names: list[str], inside: list[Any], beyond: list[float]) -> list[Warning]:
+    """Zones that have no ground at all, and zones of which a part has none."""
+    warnings = []
+    units = opener.site.units
+    without = [name for name, shape in zip(names, inside, strict=True) if shape.is_empty]
+    if without:
+        listed = ", ".join(repr(n) for n in without[:3]) + (f" and {len(without) - 3} more" if len(without) > 3 else "")
+        message = f"no ground of the site lies in zone {listed}; check that the zones are of this site and carry the right CRS"
+        warnings.append(Warning("zone-without-ground", message))
+    partly = [
+        (lost, name)
+        for name, shape, lost in zip(names, inside, beyond, strict=True)
+        if not shape.is_empty and lost > max(0.01, 1e-6 * areas.ground_area_m2(shape, opener.grid))
+    ]
+    if partly:
+        lost, name = max(partly)
+        share = f"{units.from_si(lost, 'area'):,.0f} {units.label('area')}"
+        which = f"zone {name!r} reaches" if len(partly) == 1 else f"{len(partly)} zones reach"
+        most = f"by {share}" if len(partly) == 1 else f"the most {name!r}, by {share}"
+        message = f"{which} beyond what the surfaces cover, {most}; that part has no data and is in no figure"
+        warnings.append(Warning("zone-beyond-ground", message))
+    return warnings

@@ -242,7 +242,12 @@ class VolumesResult(Result):
         given = self.ground.surfaces.site.model.ground.survey_error
         if given is None:
             return None
-        errors = {"noise_m": given.noise, "correlated_m": given.correlated, "range_m": given.range, "bias_m": given.bias}
+        errors = {
+            "noise_m": given.noise,
+            "correlated_m": given.correlated,
+            "range_m": given.range,
+            "bias_m": given.bias,
+        }
         cell, total = self.ground.stack.grid.cell_area_m2, self.total
         whole = volume_error(total.area_m2, cell, **errors)
         return {
@@ -370,13 +375,14 @@ def volumes_result(site: Site, ground: SiteGround, tally: VolumesTally) -> Volum
         missing = max(ground.limits_area_m2 - counted, 0.0)
     missing = missing if missing > 1e-9 * counted else 0.0
     total = area_volumes(ground, tally.total, None, missing)
+    lost = [_zone_lost(ground, tally, i) for i in range(len(ground.zone_names))]
     zones = tuple(
-        area_volumes(ground, tally.zones.get(i, Sums.none(ground.stack)), name, _zone_missing(ground, tally, i))
+        area_volumes(ground, tally.zones.get(i, Sums.none(ground.stack)), name, lost[i] + ground.zone_beyond_m2[i])
         for i, name in enumerate(ground.zone_names)
     )
     outside = None
     if zones:
-        outside_missing = max(missing - sum(zone.missing_area_m2 for zone in zones), 0.0)
+        outside_missing = max(missing - sum(lost), 0.0)
         outside = area_volumes(ground, tally.outside, None, outside_missing if outside_missing > 1e-6 else 0.0)
     warnings = (*ground.warnings, *_missing_warning(site, ground, tally, missing))
     return VolumesResult(
@@ -384,7 +390,8 @@ def volumes_result(site: Site, ground: SiteGround, tally: VolumesTally) -> Volum
     )
 
 
-def _zone_missing(ground: SiteGround, tally: VolumesTally, zone: int) -> float:
+def _zone_lost(ground: SiteGround, tally: VolumesTally, zone: int) -> float:
+    """Ground of the site in a zone that has no data [m²]."""
     area = ground.zone_areas_m2[zone]
     counted = float(tally.zones[zone].values[0]) * ground.stack.grid.cell_area_m2 if zone in tally.zones else 0.0
     lost = area - counted

@@ -10,6 +10,7 @@ from earthwork.reporting.display import display_key, plain, show
 from earthwork.reporting.page import Block, Column, Facts, Notes, Page, table_of
 from earthwork.results import Result
 from earthwork.site import Site
+from earthwork.units import UnitSystem
 
 _MATERIAL_COLUMNS = (
     Column("material", "material"),
@@ -72,14 +73,20 @@ def _pad_grades(grades: dict[str, Any], site: Site) -> list[Block]:
     pads = [{**pad, "held_by": pad["held_by"] or "nothing", "saves": round(pad["saves"])} for pad in grades["pads"]]
 
     def change(key: str, **options: Any) -> str:
-        before, after = (show(grades[f"{key}_{when}_m3"], "soil_volume", units, **options) for when in ("before", "after"))
+        before, after = (
+            show(grades[f"{key}_{when}_m3"], "soil_volume", units, **options) for when in ("before", "after")
+        )
         return f"{before} → {after}"
 
     rows = (
         ("cut, bank", change("cut"), ""),
         ("fill, compacted", change("fill"), ""),
         ("surplus", change("surplus", sign=True), "compacted; volumes are exact, of the design built again"),
-        ("cost", f"{plain(grades['cost_before'], 0)} → {plain(grades['cost_after'], 0)}", "money, by simple unit costs"),
+        (
+            "cost",
+            f"{plain(grades['cost_before'], 0)} → {plain(grades['cost_after'], 0)}",
+            "money, by simple unit costs",
+        ),
     )
     return [
         table_of(pads, _PAD_COLUMNS, units, heading="Each pad at its own grade, at least cost", text_columns=2),
@@ -99,7 +106,7 @@ def _answer(site: Site, balance: dict[str, Any]) -> tuple[tuple[str, str, str], 
         (
             "needed",
             show(balance["required_compacted_m3"], "soil_volume", units),
-            "compacted: fill, over-excavation refill, scarifying, allowances",
+            f"compacted: {_needs(balance['required'], units)}",
         ),
     ]
     word = "SURPLUS" if surplus >= 0 else "SHORTAGE"
@@ -114,6 +121,22 @@ def _answer(site: Site, balance: dict[str, Any]) -> tuple[tuple[str, str, str], 
         note = f"stripped; {respread} respread, {left} left over"
         rows.append(("topsoil", show(topsoil["stripped_m3"], "soil_volume", units), note))
     return tuple(rows)
+
+
+_NEEDS = {
+    "fill_m3": "fill", "over_excavation_refill_m3": "over-excavation refill", "scarify_m3": "scarifying",
+    "allowance_m3": "allowances", "section_m3": "sections",
+}  # fmt: skip
+
+
+def _needs(required: dict[str, float], units: UnitSystem) -> str:
+    """What the site needs compacted soil for, each with its volume."""
+    parts = [
+        f"{name} {plain(units.from_si(required[key], 'soil_volume'), 0)}"
+        for key, name in _NEEDS.items()
+        if required[key]
+    ]
+    return ", ".join(parts) or "nothing"
 
 
 def _remedies(site: Site, balance: dict[str, Any]) -> tuple[tuple[str, str, str], ...]:

@@ -43,7 +43,8 @@ def page(site: Site, result: Result) -> Page:
 
 
 def _areas(site: Site, volumes: dict[str, Any]) -> Block:
-    columns = [c for c in _AREA_COLUMNS if c.key != "missing_area_m2" or volumes["total"]["missing_area_m2"]]
+    missing = any(area["missing_area_m2"] for area in (volumes["total"], *volumes["zones"]))
+    columns = [c for c in _AREA_COLUMNS if c.key != "missing_area_m2" or missing]
     zones = sorted(volumes["zones"], key=lambda z: -(z["cut_m3"] + z["fill_m3"]))
     zones = zones if len(zones) > 24 else volumes["zones"]
     totals = []
@@ -75,8 +76,10 @@ def other_lines(site: Site, volumes: dict[str, Any]) -> tuple[tuple[str, str, st
 
 
 def _acreage(area_m2: float, site: Site) -> str:
+    """A large area as people say it; nothing for a small one."""
     unit, name = ("ha", "ha") if site.units.name == "metric" else ("acre", "acres")
-    return f"{area_m2 / UNITS['area'][unit]:.2f} {name}"
+    area = area_m2 / UNITS["area"][unit]
+    return f"{area:,.2f} {name}" if area >= 0.1 else ""
 
 
 def tallies(site: Site, folder: OutputFolder) -> tuple[Any, ...]:

@@ -165,3 +165,16 @@ def test_a_folder_that_cannot_be_written(run, starters, tmp_path):
     code, out, err = run("soil", starters["metric"], "--out", tmp_path / "file" / "below")
     assert (code, out) == (2, "")
     assert "cannot be written" in err
+
+
+def test_long_values_leave_the_labels_whole(capsys):
+    from earthwork_cli.terminal import print_page
+
+    from earthwork.reporting.page import Facts, Page
+
+    long = "sheepsfoot or padfoot roller, with a pneumatic one to seal the surface " * 2
+    print_page(Page("x", (Facts((("group of the soil", long, ""), ("governing test", "short", "and a note"))),)))
+    text = capsys.readouterr().out
+    assert "group of the soil" in text
+    assert "…" not in text
+    assert " ".join(text.split()).count("sheepsfoot") == 2

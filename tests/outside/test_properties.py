@@ -90,6 +90,31 @@ def test_zones_and_the_rest_add_up_to_the_site(tmp_path, volumes):
         assert zone["area_m2"] + zone["missing_area_m2"] == pytest.approx(lot.area, rel=1e-9)
 
 
+def test_what_has_no_data_is_counted_in_the_zone_and_outside_of_all_zones(tmp_path, earthwork):
+    """Ground of 40 × 30 m with a hole of 6 × 5 m; a zone of 20 × 20 m reaches 8 m beyond it, and holds 4 × 5 m of the hole."""
+    ground = np.full((30, 40), 5.0)
+    ground[10:15, 30:36] = np.nan
+    files = write_pair(tmp_path, ground, np.full((30, 40), 6.0), cell=1.0, corner=(0.0, 30.0))
+    zone = write_polygons(tmp_path / "zone.gpkg", [shapely.box(28, 0, 48, 20).difference(shapely.box(34, 5, 36, 30))])
+    arguments = [x for key, path in files.items() for x in (f"--{key}", path)]
+    ran = earthwork("volumes", *arguments, "--zones", zone, "--zone-name", "name", "--json")
+    total, (zone,), outside = (ran.result[key] for key in ("total", "zones", "outside_zones"))
+    assert (total["area_m2"], total["missing_area_m2"]) == (1170, 30)
+    assert (zone["area_m2"], zone["missing_area_m2"]) == (pytest.approx(190), pytest.approx(20 + 160))
+    assert (outside["area_m2"], outside["missing_area_m2"]) == (pytest.approx(980), pytest.approx(10))
+    assert "zone-beyond-ground" in ran.warning_codes
+
+
+def test_a_zone_elsewhere_is_named(tmp_path, earthwork):
+    files = write_pair(tmp_path, np.full((30, 40), 5.0), np.full((30, 40), 6.0), cell=1.0, corner=(0.0, 30.0))
+    zones = write_polygons(tmp_path / "zone.gpkg", [shapely.box(0, 0, 20, 20), shapely.box(900, 0, 920, 20)])
+    arguments = [x for key, path in files.items() for x in (f"--{key}", path)]
+    ran = earthwork("volumes", *arguments, "--zones", zones, "--zone-name", "name", "--json")
+    (warning,) = [w for w in ran.document["warnings"] if w["code"].startswith("zone")]
+    assert warning["code"] == "zone-without-ground"
+    assert repr(ran.result["zones"][1]["zone"]) in warning["message"]
+
+
 def test_cutting_a_zone_in_two_adds_up(tmp_path, volumes):
     files = write_pair(tmp_path, *two_grounds())
     zone = shapely.Point(620, 810).buffer(61.7)
