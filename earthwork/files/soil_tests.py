@@ -30,6 +30,9 @@ from earthwork.soils.effort import same_method
 from earthwork.soils.located import waiting_tests
 from earthwork.soils.records import CurvePoint, DensityTest, MaterialTests
 
+#: Share by which a dry density may differ from what the moist one in its row says, as rounding does.
+_SAME_DENSITY = 0.01
+
 
 @dataclass(frozen=True)
 class Reading:
@@ -126,7 +129,7 @@ def read_density_tests(
                 method=reader.first_text(row, METHOD_COLUMNS),
                 material=reader.first_text(row, MATERIAL_COLUMNS),
                 oversize_percent=reader.percent(row, "oversize_percent"),
-                depth_m=reader.length(row, "depth", length_m),
+                depth_m=_depth(reader, row, length_m),
                 easting=reader.optional(row, "easting"),
                 northing=reader.optional(row, "northing"),
                 elevation_m=reader.length(row, "elevation", length_m),
@@ -135,6 +138,14 @@ def read_density_tests(
     reader.skipped(empty, "density")
     reader.finish()
     return Reading(tests=tuple(tests), notes=tuple(reader.notes))
+
+
+def _depth(reader: SoilRows, row: Row, length_m: float) -> float | None:
+    depth = reader.length(row, "depth", length_m)
+    if depth is not None and depth < 0:
+        reader.fault(row, "depth", "it is less than 0; depths count down from the ground. Heights go into elevation")
+        return None
+    return depth
 
 
 def material_and_method(
@@ -229,9 +240,10 @@ def _density_reader(reader: SoilRows, ways: tuple[_Way, ...]) -> Callable[[Row, 
 
     def read(row: Row, water: float | None) -> float | None:
         dry = reader.density(row, "dry_density") if has_dry else None
-        if dry is not None:
-            return dry
         moist = reader.density(row, "moist_density") if has_moist else None
+        if dry is not None:
+            _same_density(reader, row, dry, moist, water)
+            return dry
         for inputs, reduce in raw if moist is None else ():
             values = [reader.quantity(row, name, units) for name, units in inputs]
             if all(value is not None for value in values):
@@ -248,6 +260,19 @@ def _density_reader(reader: SoilRows, ways: tuple[_Way, ...]) -> Callable[[Row, 
         return float(phase.dry_density(moist, water))
 
     return read
+
+
+def _same_density(reader: SoilRows, row: Row, dry: float, moist: float | None, water: float | None) -> None:
+    """A row that gives dry and moist density must mean one soil; the rounding of either may differ."""
+    if moist is None or water is None:
+        return
+    dried = float(phase.dry_density(moist, water))
+    if abs(dried - dry) > _SAME_DENSITY * dry:
+        reader.fault(
+            row, "dry_density",
+            f"{dry:.0f} kg/m³ is given, but the moist density {moist:.0f} kg/m³ at {water:g} % is {dried:.0f} kg/m³ "
+            "dry; keep the right one",
+        )  # fmt: skip
 
 
 def _gauge(reader: SoilRows, row: Row) -> in_place.GaugeReduction | None:

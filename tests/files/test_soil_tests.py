@@ -265,3 +265,19 @@ def test_a_curve_from_columns_of_a_cylinder(write) -> None:
     # 2,000 g in 1,000 cm³ at 25 %: 1,600 kg/m³ dry.
     text = "cylinder_volume_cm3,cylinder_mass_g,cylinder_and_soil_mass_g,water_content_percent\n1000,4200,6200,25\n"
     assert states(write(text)) == [(25.0, 1600.0)]
+
+
+@pytest.mark.parametrize(
+    ("rows", "message"),
+    [
+        # 1,620 kg/m³ moist at 8 % is 1,500 dry.
+        (
+            "moist_density_kg_m3,dry_density_kg_m3,water_content_percent\n1620,1500,8\n1620,1620,8\n",
+            "row 3, column dry_density: 1620 kg/m³ is given, but the moist density 1620 kg/m³ at 8 % is 1500 kg/m³ dry",
+        ),
+        ("depth,dry_density_kg_m3\n1.2,1500\n-1.2,1500\n", "row 3, column depth: it is less than 0"),
+    ],
+)
+def test_rows_that_contradict_themselves(write, rows: str, message: str) -> None:
+    with pytest.raises(FileError, match=message):
+        read_density_tests(write(rows))
