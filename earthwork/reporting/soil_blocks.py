@@ -100,6 +100,10 @@ def _test_rows(material: Material, units: UnitSystem) -> Iterator[Row]:
     )
     yield "compaction reached", f"{plain(log['relative_compaction_percent'], 1)} %", note
     yield "  under the required", f"{log['short_count']} of {log['count']}", ", ".join(log["short"][:8])
+    outside = log["outside_window"]
+    if outside is not None:
+        names = ", ".join(text.split(":")[0] for text in outside[:8])
+        yield "  outside the window", f"{len(outside)} of {log['count']}", names
 
 
 def _set_row(label: str, tests: dict[str, Any], units: UnitSystem) -> Row:

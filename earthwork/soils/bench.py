@@ -11,6 +11,7 @@ from earthwork.errors import SiteFileError, SoilError, Warning
 from earthwork.results import Result
 from earthwork.site import Site, check_site
 from earthwork.soils import phase
+from earthwork.soils.context import density_text
 from earthwork.soils.curve import CompactionCurve, Form, fit_curve
 from earthwork.soils.inputs import ASSUMED_GRAVITY
 from earthwork.soils.records import MaterialTests
@@ -114,6 +115,7 @@ def proctor(site: Site, tests: Mapping[str, MaterialTests] | None = None) -> Pro
             curve = fit_curve(
                 found[name].curve, specific_gravity=gravity, method=material.proctor.method,
                 form=material.proctor.fit, where=where,
+                show=lambda value: density_text(value, site.units),
             )  # fmt: skip
         except SoilError as error:
             faults.append(str(error))

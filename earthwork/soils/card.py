@@ -24,7 +24,7 @@ if TYPE_CHECKING:
     from earthwork.soils.curve import CompactionCurve
     from earthwork.soils.in_place import TestSet
     from earthwork.soils.placing import FieldLog
-    from earthwork.soils.records import MaterialTests
+    from earthwork.soils.records import DensityTest, MaterialTests
     from earthwork.soils.suction import SuctionEstimate
     from earthwork.soils.uncertainty import ShrinkUncertainty
     from earthwork.soils.window import PlacingWindow
@@ -210,6 +210,22 @@ class SoilCard:
             target=target,
         )  # fmt: skip
 
+    def window_faults(self) -> tuple[tuple[DensityTest, str], ...]:
+        """Tests in the fill that lie outside the placing window, each with the names of the rules that it breaks.
+
+        A test with oversize of its own is judged at the card's density of the same percent of maximum. Tests
+        without a water content are judged by density alone.
+        """
+        window, log = self.placing_window(), self.field_log
+        if window is None or log is None or self.max_dry_density_kg_m3 is None:
+            return ()
+        found = []
+        for test, percent in zip(log.tests.tests, log.percents, strict=True):
+            broken = window.broken_rules(test.water_content_percent, self.max_dry_density_kg_m3 * percent / 100)
+            if broken:
+                found.append((test, "; ".join(broken)))
+        return tuple(found)
+
     # --- dry mass to volume and back --------------------------------------------------------------
 
     def dry_density_kg_m3(self, state: State, *, band: int | None = None) -> float:
@@ -252,6 +268,14 @@ class SoilCard:
     def loaded_moist_mass_kg(self, dry_mass_kg: phase.Value) -> phase.Value:
         """Mass that a truck carries for a dry mass [kg]."""
         return dry_mass_kg * self.loaded_moist_factor
+
+    def _field_dict(self) -> dict[str, Any] | None:
+        if self.field_log is None:
+            return None
+        outside = None
+        if self.placing_window() is not None:
+            outside = [f"{test.label}: {why}" for test, why in self.window_faults()]
+        return {**self.field_log.to_dict(), "outside_window": outside}
 
     def to_dict(self) -> dict[str, Any]:
         """The card as the contract's ``result.materials[]``."""
@@ -299,7 +323,7 @@ class SoilCard:
             "tests": {
                 "proctor": _dict(self.curve),
                 "bank": _dict(self.bank_tests),
-                "field": _dict(self.field_log),
+                "field": self._field_dict(),
             },
             "bands": [band.to_dict() for band in self.bands],
             "window": _dict(self.placing_window()),

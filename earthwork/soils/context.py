@@ -11,6 +11,17 @@ from earthwork.soils.typical import Range, TypicalSoil
 from earthwork.units import UnitSystem
 
 
+def in_si(density_kg_m3: float) -> str:
+    """A density as text in kg/m³: what pure functions say where nobody asks for another unit."""
+    return f"{density_kg_m3:.0f} kg/m³"
+
+
+def density_text(density_kg_m3: float, units: UnitSystem) -> str:
+    """A density as text, in the unit of a site."""
+    digits = 1 if units.name == "us" else 0
+    return f"{units.from_si(density_kg_m3, 'density'):.{digits}f} {units.label('density')}"
+
+
 @dataclass
 class Context:
     """One card in the making: faults, warnings and assumptions gather here, so that one message names them all."""
@@ -44,8 +55,7 @@ class Context:
 
     def density(self, value: float) -> str:
         """A density as text, in the site's unit."""
-        digits = 1 if self.units.name == "us" else 0
-        return f"{self.units.from_si(value, 'density'):.{digits}f} {self.units.label('density')}"
+        return density_text(value, self.units)
 
     def length(self, value: float) -> str:
         return f"{self.units.from_si(value, 'length'):g} {self.units.label('length')}"

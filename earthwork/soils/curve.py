@@ -10,7 +10,7 @@ choice is worth.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any, Literal
 
@@ -18,6 +18,7 @@ import numpy as np
 
 from earthwork.errors import SoilError, Warning
 from earthwork.soils import phase
+from earthwork.soils.context import in_si
 from earthwork.soils.curve_forms import FORMS, Fit, fit_form
 from earthwork.soils.records import CurvePoint, DensityTest
 
@@ -121,6 +122,7 @@ def fit_curve(
     method: str = "",
     form: Form = "auto",
     where: str = "compaction curve",
+    show: Callable[[float], str] = in_si,
 ) -> CompactionCurve:
     """Fit a compaction curve through test points.
 
@@ -130,13 +132,14 @@ def fit_curve(
         method: the standard of the test, kept with the result.
         form: ``auto``, or the form to use.
         where: opens each message.
+        show: a dry density [kg/m³] as text, for messages.
 
     Raises:
         SoilError: a density at or above that of the grains; fewer than four different water contents; no
             peak inside the data, which is either a free-draining soil or too few points; no point on one
             side of the peak.
     """
-    used, left_out, warnings = _possible(points, specific_gravity, where)
+    used, left_out, warnings = _possible(points, specific_gravity, where, show)
     water = np.array([point.water_content_percent for point in used])
     density = np.array([point.dry_density_kg_m3 for point in used])
     different = len(np.unique(water))
@@ -169,13 +172,13 @@ def _names(left_out: Sequence[tuple[CurvePoint, str]]) -> str:
 
 
 def _possible(
-    points: Sequence[CurvePoint], gravity: float, where: str
+    points: Sequence[CurvePoint], gravity: float, where: str, show: Callable[[float], str]
 ) -> tuple[list[CurvePoint], list[tuple[CurvePoint, str]], list[Warning]]:
     """The points that can be, those that cannot with the reason, and what to say about it."""
     grain = gravity * phase.WATER_DENSITY_KG_M3
     faults = [
-        f"{_label(p)}: dry density is {p.dry_density_kg_m3:.0f} kg/m³; it must be below the grain density "
-        f"{grain:.0f} kg/m³ (specific gravity {gravity:g})"
+        f"{_label(p)}: dry density is {show(p.dry_density_kg_m3)}; it must be below the grain density "
+        f"{show(grain)} (specific gravity {gravity:g})"
         for p in points
         if not 0 < p.dry_density_kg_m3 < grain
     ]

@@ -101,7 +101,7 @@ def _tested_peak(context: Context, gravity: float) -> Peak | None:
     try:
         curve = fit_curve(
             context.tests.curve, specific_gravity=gravity, method=proctor.method, form=proctor.fit,
-            where=context.key("proctor.tests"),
+            where=context.key("proctor.tests"), show=context.density,
         )  # fmt: skip
     except SoilError as error:
         context.faults += str(error).split("\n")

@@ -333,7 +333,7 @@ def check_placing(
         air_voids_max_percent=context.fill.air_voids_max, target=(target, made.dry_density),
     )  # fmt: skip
     try:
-        limits.check(context.key())
+        limits.check(context.key(), show=context.density)
     except SoilError as error:
         context.faults.append(str(error))
 

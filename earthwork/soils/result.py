@@ -70,6 +70,7 @@ def _point_rows(card: SoilCard) -> Iterator[dict[str, Any]]:
 
 def _test_rows(card: SoilCard) -> Iterator[dict[str, Any]]:
     top, log = card.max_dry_density_kg_m3, card.field_log
+    outside = dict(card.window_faults())
     if card.bank_tests is not None:
         used = [(t, None if top is None else 100 * t.dry_density_kg_m3 / top, None) for t in card.bank_tests.tests]
         out = [(t, None, reason) for t, reason in card.bank_tests.left_out]
@@ -77,7 +78,8 @@ def _test_rows(card: SoilCard) -> Iterator[dict[str, Any]]:
     if log is not None:
         placed = [(t, percent, None) for t, percent in zip(log.tests.tests, log.percents, strict=True)]
         out = [(t, None, reason) for t, reason in log.tests.left_out]
-        yield from (_test_row(card, "fill", *entry) for entry in [*placed, *out])
+        for entry in [*placed, *out]:
+            yield {**_test_row(card, "fill", *entry), "outside_window": outside.get(entry[0])}
 
 
 def _test_row(

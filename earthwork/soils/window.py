@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING, Any
@@ -11,6 +11,7 @@ import numpy as np
 
 from earthwork.errors import SoilError
 from earthwork.soils import phase
+from earthwork.soils.context import in_si
 
 if TYPE_CHECKING:
     import shapely
@@ -42,40 +43,56 @@ class PlacingWindow:
     air_voids_max_percent: float | None = None
     target: tuple[float, float] | None = None
 
-    def faults(self, water_content_percent: float, dry_density_kg_m3: float) -> list[str]:
-        """The rules that a state breaks, in words; empty inside the window. Its edges belong to it."""
-        return list(self._faults(water_content_percent, dry_density_kg_m3))
+    def faults(
+        self, water_content_percent: float, dry_density_kg_m3: float, *, show: Callable[[float], str] = in_si
+    ) -> list[str]:
+        """The rules that a state breaks, in words; empty inside the window. Its edges belong to it.
+
+        Args:
+            water_content_percent, dry_density_kg_m3: the state.
+            show: a dry density [kg/m³] as text.
+        """
+        return [text for _, text in self._faults(water_content_percent, dry_density_kg_m3, show)]
+
+    def broken_rules(self, water_content_percent: float | None, dry_density_kg_m3: float) -> list[str]:
+        """The rules that a state breaks, by name; without a water content only that of density can be told."""
+        if water_content_percent is None:
+            return ["too loose"] if self._is_loose(dry_density_kg_m3) else []
+        return [name for name, _ in self._faults(water_content_percent, dry_density_kg_m3, in_si)]
 
     def contains(self, water_content_percent: float, dry_density_kg_m3: float) -> bool:
         """Whether a state lies in the window, edges included."""
         return not self.faults(water_content_percent, dry_density_kg_m3)
 
-    def _faults(self, water: float, density: float) -> Iterator[str]:
-        tiny = 1e-9
-        if density < self.min_dry_density_kg_m3 * (1 - tiny):
-            yield (f"dry density {density:.0f} kg/m³ is under the required {self.min_dry_density_kg_m3:.0f} kg/m³")
+    def _is_loose(self, density: float) -> bool:
+        return density < self.min_dry_density_kg_m3 * (1 - 1e-9)
+
+    def _faults(self, water: float, density: float, show: Callable[[float], str]) -> Iterator[tuple[str, str]]:
+        """Name and words of each broken rule."""
+        if self._is_loose(density):
+            yield "too loose", f"dry density {show(density)} is under the required {show(self.min_dry_density_kg_m3)}"
         if self.water_content_percent is not None:
             low, high = self.water_content_percent
-            if water < low - tiny:
-                yield f"water content {water:.1f} % is drier than {low:.1f} %"
-            if water > high + tiny:
-                yield f"water content {water:.1f} % is wetter than {high:.1f} %"
+            if water < low - 1e-9:
+                yield "too dry", f"water content {water:.1f} % is drier than {low:.1f} %"
+            if water > high + 1e-9:
+                yield "too wet", f"water content {water:.1f} % is wetter than {high:.1f} %"
         if not 0 < density < self.specific_gravity * phase.WATER_DENSITY_KG_M3:
-            yield f"dry density {density:.0f} kg/m³ is not below that of the grains"
+            yield "impossible", f"dry density {show(density)} is not below that of the grains"
             return
         saturation = float(phase.saturation_percent(density, max(water, 0.0), self.specific_gravity))
         if saturation > 100 + 1e-6:
-            yield f"saturation {saturation:.1f} % is beyond zero air voids: the state is impossible"
+            yield "impossible", f"saturation {saturation:.1f} % is beyond zero air voids: the state is impossible"
         if self.saturation_percent is not None:
             low, high = self.saturation_percent
             if saturation < low - 1e-6:
-                yield f"saturation {saturation:.1f} % is under {low:g} %"
+                yield "saturation too low", f"saturation {saturation:.1f} % is under {low:g} %"
             if saturation > high + 1e-6 and saturation <= 100 + 1e-6:
-                yield f"saturation {saturation:.1f} % is over {high:g} %"
+                yield "saturation too high", f"saturation {saturation:.1f} % is over {high:g} %"
         if self.air_voids_max_percent is not None:
             air = float(phase.air_voids_percent(density, max(water, 0.0), self.specific_gravity))
             if air > self.air_voids_max_percent + 1e-6:
-                yield f"air voids {air:.1f} % are over {self.air_voids_max_percent:g} %"
+                yield "too much air", f"air voids {air:.1f} % are over {self.air_voids_max_percent:g} %"
 
     def upper_dry_density(self, water: np.ndarray) -> np.ndarray:
         """The highest dry density allowed at water contents [%]: zero air voids, or the saturation limit under it."""
@@ -139,8 +156,8 @@ class PlacingWindow:
             found.append((low + high) / 2)
         return np.array(found)
 
-    def check(self, where: str) -> None:
-        """Refuse a window that no state fits, or whose target lies outside.
+    def check(self, where: str, *, show: Callable[[float], str] = in_si) -> None:
+        """Refuse a window that no state fits, or whose target lies outside; densities in words by ``show``.
 
         Raises:
             SoilError: with the reason.
@@ -148,12 +165,12 @@ class PlacingWindow:
         # A window of one water content has no area, and its target may still lie on it.
         if self.polygon.is_empty and (self.target is None or self.faults(*self.target)):
             raise SoilError(
-                f"{where}: no state fits the placing window: at {self.min_dry_density_kg_m3:.0f} kg/m³ and "
+                f"{where}: no state fits the placing window: at {show(self.min_dry_density_kg_m3)} and "
                 "denser, its water "
                 "content, saturation and air-voids limits leave no room under zero air voids. Widen one of "
                 "them"
             )
-        if self.target is not None and (broken := self.faults(*self.target)):
+        if self.target is not None and (broken := self.faults(*self.target, show=show)):
             raise SoilError(f"{where}: the target lies outside the placing window: {'; '.join(broken)}")
 
     def to_dict(self) -> dict[str, Any]:

@@ -98,6 +98,21 @@ def test_the_log_tells_what_crews_reach(tmp_path: Path) -> None:
     assert "expected_compaction_percent" not in card.assumed
 
 
+def test_tests_outside_the_placing_window_are_named(tmp_path: Path) -> None:
+    # Window 15 to 18 %, at least 95 % of 1,760 = 1,672; Gs 2.68: 1,750 at 17.9 % is saturated to 90.2 %.
+    made = site({**TESTED, "bank": {"tests": "b"}, "field": {"tests": "f"}},
+                fill={**FILL, "water_content_window": [-1.0, 2.0], "saturation_window": [60, 90]})  # fmt: skip
+    states = {"in": (1700, 16.0), "dry": (1700, 14.9), "wet": (1700, 18.1), "loose": (1670, 16.0), "full": (1750, 17.9),
+              "bare": (1660, None)}  # fmt: skip
+    log = tuple(DensityTest(float(d), w, name=name) for name, (d, w) in states.items())
+    points = tuple(CurvePoint(w, 1760 - 6 * (w - 16) ** 2) for w in (11, 13, 15, 17, 19, 21))
+    card = soil_cards(made, {"loess": MaterialTests(points, (DensityTest(1430.0, 7.5),), log)})["loess"]
+    assert {test.name: broken for test, broken in card.window_faults()} == {
+        "dry": "too dry", "wet": "too wet", "loose": "too loose", "full": "saturation too high", "bare": "too loose",
+    }  # fmt: skip
+    assert card.to_dict()["tests"]["field"]["outside_window"][0] == "dry: too dry"
+
+
 def test_a_stated_mean_that_the_log_contradicts(tmp_path: Path) -> None:
     card = card_of(tmp_path, {**TESTED, "field": {"tests": "log.csv"}}, fill={**FILL, "expected_compaction": 99})
     assert card.expected_compaction_percent == 99
