@@ -191,7 +191,7 @@ def balance(
 
     seen = _Seen(model, cards, ground, threads, counted)
     seen.take(trials)
-    curve = dict(seen.surplus)
+    curve = {shift: surplus for shift, surplus in seen.surplus.items() if low <= shift <= high}
     step = model.balance.step or site.units.to_si(0.01, "length")
     root = find_shift(curve, model.balance.target_surplus, step, seen.evaluate)
     result = replace(_result(site, cards, volumes, seen, root, sorted(trials.shifts)), keys=dug)
@@ -273,10 +273,31 @@ def _result(
         account=here,
         settlement=settled,
         grade_shift=found,
-        grade_shift_note=root.note,
+        grade_shift_note=None if found else _no_shift_note(site, seen.surplus),
         grade_shift_nearest=nearest,
         grade_curve=tuple((s, seen.surplus[s]) for s in shown),
         target_surplus_m3=model.balance.target_surplus,
+    )
+
+
+def _no_shift_note(site: Site, surplus: dict[float, float]) -> str:
+    """Why there is no grade shift, in the site's units."""
+    low, high = site.model.balance.shift_range
+    if low == high:
+        return "balance.shift_range leaves no room for a shift"
+    length, volume = site.units.label("length"), site.units.label("soil_volume")
+
+    def shown(value: float, dimension: str, digits: str) -> str:
+        return f"{site.units.from_si(value, dimension):{digits}}".replace("-", "−")
+
+    ends = " to ".join(
+        f"{shown(surplus[s], 'soil_volume', ',.0f')} {volume} at {shown(s, 'length', '+.2f')} {length}"
+        for s in (high, low)
+    )
+    target = shown(site.model.balance.target_surplus, "soil_volume", ",.0f")
+    return (
+        f"no shift between {shown(low, 'length', '.2f')} and {shown(high, 'length', '.2f')} {length} gives a surplus of "
+        f"{target} {volume}: it runs from {ends}"
     )
 
 

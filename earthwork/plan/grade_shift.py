@@ -72,16 +72,15 @@ def _part(tile: Tile, moving: np.ndarray) -> tuple[Tile, np.ndarray | None]:
 
 @dataclass(frozen=True)
 class Root:
-    """Where the surplus meets the target, or the nearest to it within the range."""
+    """Where the surplus meets the target, exactly and at a step that can be staked; None where no shift in range does."""
 
     exact_m: float | None
     rounded_m: float | None
-    nearest_m: float
-    note: str | None
+    nearest_m: float  #: the shift that comes nearest
 
 
 def trial_shifts(low_m: float, high_m: float) -> list[float]:
-    """Shifts of the main pass: even over the range, and zero."""
+    """Shifts of the main pass: even over the range, and zero, which may lie outside of it."""
     return sorted({0.0, *(float(s) for s in np.linspace(low_m, high_m, TRIALS))})
 
 
@@ -89,35 +88,29 @@ def find_shift(curve: dict[float, float], target: float, step_m: float, evaluate
     """Refine a curve of surplus against shift until the shift of the target surplus is known.
 
     Args:
-        curve: surplus [m³] at the trial shifts [m]; what is evaluated is added to it.
+        curve: surplus [m³] at the trial shifts [m], the ends of the range among them; what is evaluated is added to it.
         target: surplus wanted [m³].
         step_m: the shift is rounded to this [m].
         evaluate: gives the surplus at further shifts, in one pass over the ground.
     """
+    low, high = min(curve), max(curve)
     for pass_number in range(REFINEMENTS):
         bracket = _bracket(curve, target)
         if bracket is None:
-            nearest = min(curve, key=lambda s: (abs(curve[s] - target), abs(s)))
-            low, high = min(curve), max(curve)
-            note = (
-                f"no shift between {low:g} and {high:g} m gives a surplus of {target:,.0f} m³: it runs from "
-                f"{curve[high]:,.0f} m³ at {high:+g} m to {curve[low]:,.0f} m³ at {low:+g} m"
-            )
-            return Root(None, None, nearest, note)
+            return Root(None, None, min(curve, key=lambda s: (abs(curve[s] - target), abs(s))))
         guess = _guess(curve, bracket, target)
-        rounded = _round(guess, step_m)
+        rounded = _round(guess, step_m, low, high)
         spread = (bracket[1] - bracket[0]) * (0.02, 0.01, 0.0)[pass_number]
-        wanted = {guess, rounded, guess - spread, guess + spread} - set(curve)
-        wanted = {s for s in wanted if min(curve) <= s <= max(curve)}
+        wanted = {s for s in (guess, rounded, guess - spread, guess + spread) if low <= s <= high} - set(curve)
         if wanted:
             curve.update(evaluate(sorted(wanted)))
         if abs(curve[guess] - target) <= 1e-6 * max(abs(v) for v in curve.values()) and pass_number:
             break
     exact = min(curve, key=lambda s: abs(curve[s] - target))
-    rounded = _round(exact, step_m)
+    rounded = _round(exact, step_m, low, high)
     if rounded not in curve:
         curve.update(evaluate([rounded]))
-    return Root(exact, rounded, exact, None)
+    return Root(exact, rounded, exact)
 
 
 def _bracket(curve: dict[float, float], target: float) -> tuple[float, float] | None:
@@ -144,6 +137,13 @@ def _guess(curve: dict[float, float], bracket: tuple[float, float], target: floa
     return float(brentq(through, low, high, xtol=1e-12))
 
 
-def _round(shift: float, step_m: float) -> float:
-    steps = round(shift / step_m)
-    return steps * step_m if math.isfinite(shift) else shift
+def _round(shift: float, step_m: float, low: float, high: float) -> float:
+    """The nearest whole step that lies in the range; the shift itself where none does.
+
+    >>> _round(0.47, 0.2, -1.5, 0.5), _round(0.47, 0.2, -1.5, 0.45), _round(0.47, 3.0, 0.4, 0.5)
+    (0.4, 0.4, 0.47)
+    """
+    slack = 1e-9 * step_m
+    steps = min(max(round(shift / step_m), math.ceil((low - slack) / step_m)), math.floor((high + slack) / step_m))
+    rounded = steps * step_m
+    return rounded if low - slack <= rounded <= high + slack else shift

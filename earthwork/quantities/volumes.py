@@ -237,8 +237,11 @@ class VolumesResult(Result):
             for name in names
         ]
 
-    def survey_error(self) -> dict[str, float] | None:
-        """Standard deviations of the volumes from the error of the survey; None where the site gives none."""
+    def survey_error(self) -> dict[str, float | None] | None:
+        """Standard deviations of the volumes from the error of the survey; None where the site gives none.
+
+        Independent noise alone understates them by one to two orders: without a correlated part and a bias they are None.
+        """
         given = self.ground.surfaces.site.model.ground.survey_error
         if given is None:
             return None
@@ -249,6 +252,11 @@ class VolumesResult(Result):
             "bias_m": given.bias,
         }
         cell, total = self.ground.stack.grid.cell_area_m2, self.total
+        untouched = max(total.area_m2 - total.disturbed_area_m2, 0.0)
+        false_cut = {"false_cut_m3": false_volume_m3(given.noise, given.correlated, untouched)}
+        if not (given.correlated or given.bias):
+            keys = ("cut_sd_m3", "fill_sd_m3", "cut_minus_fill_sd_m3", "noise_m3", "correlated_m3", "bias_m3")
+            return {**dict.fromkeys(keys), **false_cut}
         whole = volume_error(total.area_m2, cell, **errors)
         return {
             "cut_sd_m3": volume_error(total.cut_area_m2, cell, **errors).total_m3,
@@ -257,9 +265,7 @@ class VolumesResult(Result):
             "noise_m3": whole.noise_m3,
             "correlated_m3": whole.correlated_m3,
             "bias_m3": whole.bias_m3,
-            "false_cut_m3": false_volume_m3(
-                given.noise, given.correlated, max(total.area_m2 - total.disturbed_area_m2, 0.0)
-            ),
+            **false_cut,
         }
 
     def to_dict(self) -> dict[str, Any]:

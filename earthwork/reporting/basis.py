@@ -100,13 +100,19 @@ def error_lines(site: Site, volumes: dict[str, Any]) -> list[str]:
     error = volumes.get("survey_error")
     if not error:
         return []
-    cut, fill, false = (
-        show(error[key], "soil_volume", site.units) for key in ("cut_sd_m3", "fill_sd_m3", "false_cut_m3")
+    false = show(error["false_cut_m3"], "soil_volume", site.units)
+    noise = (
+        f"On untouched ground its noise makes up to {false} of false cut and as much false fill, which are not removed."
     )
-    return [
-        f"Error of the survey (one standard deviation): cut ± {cut}, fill ± {fill}. On untouched ground its noise makes "
-        f"up to {false} of false cut and as much false fill, which are not removed."
-    ]
+    if error["cut_sd_m3"] is None:
+        line = (
+            "Error of the survey: not given for the volumes, since noise that is independent in each cell understates it by "
+            "one to two orders; state the correlated part and the bias in ground.survey_error too."
+        )
+    else:
+        cut, fill = (show(error[key], "soil_volume", site.units) for key in ("cut_sd_m3", "fill_sd_m3"))
+        line = f"Error of the survey (one standard deviation): cut ± {cut}, fill ± {fill}."
+    return [f"{line} {noise}"]
 
 
 def sample_line(site: Site, volumes: dict[str, Any]) -> str:

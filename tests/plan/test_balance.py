@@ -87,7 +87,37 @@ def test_no_shift_in_range_says_so_and_gives_the_nearest(make_site):
     b = balanced(make_site, balance={"shift_range": [-0.02, 0.05]})
     assert b.grade_shift is None
     assert b.grade_shift_nearest.shift_m == pytest.approx(-0.02)
-    assert "no shift between -0.02 and 0.05 m" in b.grade_shift_note
+    # 5000 ((1 − s) 8/9 − (1 + s)) at s = 0.05 and −0.02
+    assert b.grade_shift_note == (
+        "no shift between −0.02 and 0.05 m gives a surplus of 0 m³: it runs from −1,028 m³ at +0.05 m to −367 m³ at −0.02 m"
+    )
+
+
+@pytest.mark.parametrize(("shift_range", "nearest"), [([-0.5, -0.1], -0.1), ([0.1, 0.5], 0.1)])
+def test_no_shift_is_found_outside_of_the_range(make_site, shift_range, nearest):
+    # It balances at −1/17 = −0.0588, which lies between the range and zero, or beyond zero.
+    b = balanced(make_site, balance={"shift_range": shift_range})
+    assert b.grade_shift is None
+    assert b.grade_shift_nearest.shift_m == pytest.approx(nearest)
+
+
+def test_a_range_without_room_for_a_shift(make_site):
+    b = balanced(make_site, balance={"shift_range": [0, 0]})
+    assert (b.grade_shift, b.grade_shift_note) == (None, "balance.shift_range leaves no room for a shift")
+
+
+def test_a_coarse_step_stays_in_the_range(make_site):
+    # −0.0588 rounds to −0.1, below the range: −0 is the only step in it.
+    b = balanced(make_site, balance={"shift_range": [-0.07, 0.05], "step": 0.1})
+    assert b.grade_shift.shift_m == 0
+    assert b.grade_shift.shift_exact_m == pytest.approx(-1 / 17, abs=1e-9)
+
+
+def test_the_note_is_in_the_units_of_the_site(make_site):
+    loess = {**LOESS, "bank": {"dry_density": 100, "water_content": 10},
+             "proctor": {**LOESS["proctor"], "max_dry_density": 110}}  # fmt: skip
+    b = balanced(make_site, units="us", material={"loess": loess}, balance={"shift_range": [0.5, 1.5]})
+    assert "no shift between 0.50 and 1.50 ft gives a surplus of 0 yd³" in b.grade_shift_note
 
 
 def test_surplus_leaves(make_site):
@@ -240,3 +270,12 @@ def test_loads_go_by_the_limit_that_governs():
     # By weight: 100 m³ loose fill 10 trucks of 10 m³, but 250 t need 13 of 20 t.
     assert whole_loads(HaulTruck(heaped_volume=10, payload=20.0), 100.0, 250_000.0) == 13
     assert whole_loads(None, 1.0, 1.0) is None
+
+
+@pytest.mark.parametrize(("survey", "known"), [({"noise": 0.05}, False), ({"noise": 0.05, "bias": 0.01}, True)])
+def test_error_of_the_survey_is_never_that_of_noise_alone(make_site, survey, known):
+    ground = {"survey_error": survey}
+    error = earthwork.volumes(make_site(*step(), ground=ground)).survey_error()
+    # Half the site is cut: 5000 m². Noise 0.05 · √5000 = 3.54 m³, bias 0.01 · 5000 = 50 m³.
+    assert error["cut_sd_m3"] == (pytest.approx((12.5 + 2500) ** 0.5) if known else None)
+    assert error["false_cut_m3"] == 0  # all is disturbed

@@ -2,7 +2,7 @@
 
 import pytest
 
-from earthwork.reporting.basis import missing_line, not_counted, scale_line, subgrade_line
+from earthwork.reporting.basis import error_lines, missing_line, not_counted, scale_line, subgrade_line
 from earthwork.reporting.page import Column, column_texts, table_of
 from earthwork.reporting.plain_page import page as plain_page
 from earthwork.results import Result
@@ -95,6 +95,19 @@ def test_missing_ground(tmp_path):
     site = _site(tmp_path)
     assert missing_line(site, _volumes()) == "No ground is missing: both surfaces have data everywhere."
     assert missing_line(site, _volumes(missing_area_m2=100.0)).startswith("Missing: 100 m² (10.0 %)")
+
+
+def test_noise_alone_is_no_error_of_a_volume(tmp_path):
+    none = {"cut_sd_m3": None, "fill_sd_m3": None, "false_cut_m3": 200.0}
+    (line,) = error_lines(_site(tmp_path), {**_volumes(), "survey_error": none})
+    assert "±" not in line
+    assert "understates" in line
+    assert "200 m³ of false cut" in line
+    (line,) = error_lines(
+        _site(tmp_path), {**_volumes(), "survey_error": {**none, "cut_sd_m3": 90.0, "fill_sd_m3": 80.0}}
+    )
+    assert "cut ± 90.0 m³, fill ± 80.0 m³" in line
+    assert error_lines(_site(tmp_path), {**_volumes(), "survey_error": None}) == []
 
 
 def test_any_result_has_a_page(tmp_path):
