@@ -43,7 +43,7 @@ class Grading:
         """Diameter [mm] that a percentage is finer than (D10, D30, D60); None when it was not reached.
 
         A little below the finest sieve the line through the two finest is carried on, as [ASTM-D2487] allows
-        for D10.
+        for D10 (from memory).
         """
         sizes = np.array([size for size, _ in self.passing])
         percents = np.array([value for _, value in self.passing])

@@ -10,7 +10,7 @@ from earthwork.errors import SoilError
 from earthwork.units import WATER_DENSITY_KG_M3
 
 #: Largest share of oversize [% of dry mass] for which the correction holds, by the sieve that splits
-#: ([ASTM-D4718], scope; from memory). Beyond it the coarse particles touch and the finer fraction is not
+#: ([ASTM-D4718], scope). Beyond it the coarse particles touch and the finer fraction is not
 #: compacted between them.
 OVERSIZE_LIMIT_PERCENT = {"4.75 mm": 40.0, "19 mm": 30.0}
 #: Below this share the standard lets the correction be left out ([ASTM-D4718], scope).

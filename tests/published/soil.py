@@ -164,7 +164,7 @@ RELATIVE_DENSITY = {"percent": 82.0, "low": 14.2, "high": 16.9, "dry": 16.341, "
 LEE_SINGH = {0.0: 80.0, 50.0: 90.0, 82.0: 96.4, 100.0: 100.0}
 
 #: Scopes of the standards [%]: ASTM D698 oversize over 19 mm, D4253 and D4254 fines, D4718 least oversize
-#: (read); D4718 most oversize over 4.75 and 19 mm (memory).
+#: and most oversize over 4.75 and 19 mm (2015 edition). Read.
 SCOPES = {"d4253_fines": 15.0, "d4718_least": 5.0, "d4718_over_475": 40.0, "d4718_over_19": 30.0}
 
 #: Density units in kg/m3: pound per cubic foot; kg/m3 in lb/yd3; lb/ft3 in kN/m3. Definitions; computed.
