@@ -69,11 +69,11 @@ class HaulCosts:
 
     def per_kg(self) -> Array:
         """Cost of a kilogram from each source to each sink (n, m), over the best stockpile where it has to wait."""
-        phase = phases.hauled_in(self.dug, self.filled)
+        phase = phases.hauled_in(self.dug[:, None], self.filled[None, :])
         price = self._prices()
         fixed = np.array([self.fixed_units(s.material) for s in self.places.sources], float)
         cost = (self.units(self.from_place, self.to_place, phase) + fixed[:, None]) * price
-        waiting = phases.waits(self.dug, self.filled)
+        waiting = phases.waits(self.dug[:, None], self.filled[None, :])
         if waiting.any():
             rounds = self.rounds()
             cost = np.where(waiting, rounds.cost, cost)

@@ -20,6 +20,8 @@ Array = np.ndarray
 
 #: Plans with more pairs, over straight distances, keep no matrix of them.
 _MANY_PAIRS = 4_000_000
+#: Pairs whose ways are measured one by one; each takes some tens of bytes.
+_MOST_PAIRS = 25_000_000
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -120,13 +122,25 @@ class _Planner:
         """Cost of a kilogram from each source to each sink."""
         costs = self.costs
         n, m = len(row_class), len(column_class)
-        straight = costs.haul.distance == "straight" and not costs.by_time
-        if straight and n * m > _MANY_PAIRS and not costs.ways.areas.phases:
-            rate = costs.price("") * costs.haul.straight_factor
+        areas, haul = costs.ways.areas, costs.haul
+        open_ground = not areas.barriers and not areas.roads and not areas.built
+        if (
+            n * m > _MANY_PAIRS
+            and (haul.distance == "straight" or open_ground)
+            and not costs.by_time
+            and not areas.phases
+        ):
+            factor = haul.straight_factor if haul.distance == "straight" else 1.0
+            rate = costs.price("") * factor
             return Costs(
                 rate=np.full(n, rate), way=np.ones(m), table=table, row_class=row_class, column_class=column_class,
                 row_place=costs.from_place, column_place=costs.to_place,
             )  # fmt: skip
+        if n * m > _MOST_PAIRS:
+            raise PlanError(
+                f"haul: {n:,} sources and {m:,} sinks make {n * m / 1e6:,.0f} million ways to measure; the most is "
+                f'{_MOST_PAIRS / 1e6:,.0f} million. Make haul.block larger, or take distance = "straight"'
+            )
         return Costs(
             rate=np.ones(n), way=np.ones(m), table=table, row_class=row_class, column_class=column_class,
             distance=costs.per_kg(),
@@ -215,8 +229,8 @@ class _Planner:
     def _legs(self, plan: TransportPlan) -> list[Leg]:
         """The hauls of a plan; those of a material between the same places in a phase are one."""
         costs = self.costs
-        phase = phases.hauled_in(costs.dug, costs.filled)[plan.rows, plan.columns]
-        waiting = phases.waits(costs.dug, costs.filled)[plan.rows, plan.columns]
+        dug, filled = costs.dug[plan.rows], costs.filled[plan.columns]
+        phase, waiting = phases.hauled_in(dug, filled), phases.waits(dug, filled)
         pile = costs.rounds().pile[plan.rows, plan.columns] if waiting.any() else np.zeros(len(phase), np.int64)
         self._check_piles(plan, waiting, pile)
         legs: dict[tuple, Leg] = {}

@@ -23,6 +23,7 @@ from earthwork.plan.roads import RoadNet, lightest_links
 from earthwork.plan.visibility import (
     Array,
     free_lengths,
+    shorten,
     visible_among_corners,
     visible_corners,
 )
@@ -198,17 +199,13 @@ class Ways:
         point, node, last_length, last_effort = self._pairs(ends, arriving=True)
         edges = np.searchsorted(point, np.arange(len(ends) + 1))
         for rows, cost, far in self._from(starts):
-            for j in range(len(ends)):
-                pairs = slice(edges[j], edges[j + 1])
-                if edges[j] == edges[j + 1]:
-                    continue
-                through = cost[:, node[pairs]] + last_effort[pairs]
-                best = through.argmin(axis=1)
-                at = np.arange(len(best))
-                better = through[at, best] < effort[rows, j]
-                effort[rows, j] = np.where(better, through[at, best], effort[rows, j])
-                along = far[at, node[pairs][best]] + last_length[pairs][best]
-                length[rows, j] = np.where(better, along, length[rows, j])
+            some_effort, some_length = effort[rows], length[rows]
+
+            def part(a: int, b: int, cost=cost, far=far, efforts=some_effort, lengths=some_length) -> None:
+                shorten(cost[a:b], far[a:b], edges, node, last_effort, last_length, efforts[a:b], lengths[a:b])
+
+            self._in_parts(len(rows), part)
+            effort[rows], length[rows] = some_effort, some_length
 
     def _seen_nodes(self) -> tuple[Array, Array]:
         """Pairs of nodes that see each other."""
@@ -283,13 +280,15 @@ class Ways:
             graph = coo_array((links, (tails, heads)), shape=(size, size)).tocsr()
             if not before and self.effort is metres:
                 cost = dijkstra(graph, indices=count + rows - first)
-                yield rows, cost[:, :count], cost[:, :count]
+                inner = np.ascontiguousarray(cost[:, :count])
+                yield rows, inner, inner
                 continue
             cost, tree = dijkstra(graph, indices=count + rows - first, return_predecessors=True)
             if before:
                 yield rows, cost[:, :count], tree[:, :count]
             else:
-                yield rows, cost[:, :count], self._lengths(starts[rows], cost, tree, count)
+                lengths = self._lengths(starts[rows], cost, tree, count)
+                yield rows, np.ascontiguousarray(cost[:, :count]), lengths
 
     def _lengths(self, starts: Array, cost: Array, tree: Array, count: int) -> Array:
         """Lengths of the ways whose efforts and trees are given."""

@@ -21,31 +21,22 @@ def phase_numbers(phases: list[int | None]) -> Array:
     return np.array([ALWAYS if p is None else p for p in phases], np.int64)
 
 
-def not_open(dug: Array, filled: Array) -> Array:
-    """Pairs (n, m) of a cut that is opened after the fill is built.
-
-    >>> not_open(np.array([0, 1, ALWAYS]), np.array([0, 1, ALWAYS])).tolist()
-    [[False, False, False], [True, False, False], [False, False, False]]
-    """
-    a, b = dug[:, None], filled[None, :]
-    return (a != ALWAYS) & (b != ALWAYS) & (a > b)
-
-
 def waits(dug: Array, filled: Array) -> Array:
-    """Pairs (n, m) of a cut whose fill is built in a later phase, so that the earth waits on a stockpile.
+    """Where earth waits on a stockpile, because its fill is built in a later phase; arrays that broadcast.
 
-    >>> waits(np.array([0, 1]), np.array([0, 1])).tolist()
+    >>> waits(np.array([0, 1])[:, None], np.array([0, 1])).tolist()
     [[False, True], [False, False]]
     """
-    a, b = dug[:, None], filled[None, :]
-    return (a != ALWAYS) & (b != ALWAYS) & (a < b)
+    return (dug != ALWAYS) & (filled != ALWAYS) & (dug < filled)
 
 
 def hauled_in(dug: Array, filled: Array) -> Array:
-    """Phase (n, m) in which earth is hauled at last: that of the fill, of the cut where it leaves, else the first."""
-    a = np.broadcast_to(dug[:, None], (len(dug), len(filled)))
-    b = np.broadcast_to(filled[None, :], a.shape)
-    return np.maximum(np.where(b != ALWAYS, b, a), 0)
+    """Phase in which earth is hauled at last: that of the fill, of the cut where it leaves, else the first.
+
+    >>> hauled_in(np.array([1, 1, ALWAYS]), np.array([2, ALWAYS, ALWAYS])).tolist()
+    [2, 1, 0]
+    """
+    return np.maximum(np.where(filled != ALWAYS, filled, dug), 0)
 
 
 @dataclass(frozen=True)

@@ -124,9 +124,7 @@ def solve_transport(
         return solve_linear_program(supply, need, costs, weight, spare_rows, spare_columns)
     by_row, by_column = factors[0][costs.row_class], factors[1][costs.column_class]
     try:
-        network = _solve_network(
-            supply * by_row, need / by_column, costs.scaled(factors[0]), spare_rows, spare_columns
-        )
+        network = solve_network(supply * by_row, need / by_column, costs.scaled(factors[0]), spare_rows, spare_columns)
     except TransportInfeasible as error:
         unit = by_column[error.columns[0]] if error.shortage else 1 / by_row[error.rows[0]]
         raise TransportInfeasible(
@@ -227,9 +225,8 @@ def _factors(weight: Array | None, costs: Costs, free: Array) -> tuple[Array, Ar
     return None
 
 
-def _solve_network(
-    supply: Array, need: Array, costs: Costs, spare_rows: Array, spare_columns: Array
-) -> Network:
+def solve_network(supply: Array, need: Array, costs: Costs, spare_rows: Array, spare_columns: Array) -> Network:
+    """Solve a network in one unit, whose spare rows and columns get slack."""
     supply, need = _with_limits(supply, need)
     fixed_supply, fixed_need = math.fsum(supply[~spare_rows]), math.fsum(need[~spare_columns])
     spare_supply, spare_need = math.fsum(supply[spare_rows]), math.fsum(need[spare_columns])
@@ -332,9 +329,7 @@ def to_units(amounts: Array, total: float) -> Array:
     return units
 
 
-def solve_dense(
-    supply: Array, need: Array, costs: Costs, *, unit: float
-) -> tuple[Array, Array, Array, Array, Array]:
+def solve_dense(supply: Array, need: Array, costs: Costs, *, unit: float) -> tuple[Array, Array, Array, Array, Array]:
     """Solve with the whole matrix of costs: rows, columns and units of the moves, prices of rows and of
     columns.
 
@@ -356,9 +351,7 @@ def solve_dense(
         check_marginals=False,
     )
     if log["result_code"] != 1:
-        raise PlanError(
-            f"haul: the network solver stopped: {log['warning']}. Please report it with the site file"
-        )
+        raise PlanError(f"haul: the network solver stopped: {log['warning']}. Please report it with the site file")
     row, column = np.nonzero(plan)
     flow = plan[row, column] * _UNITS
     wrong = forbidden[row, column]

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 
 from earthwork.errors import PlanError
@@ -49,12 +51,12 @@ def name_infeasible(supply: Array, need: Array, costs: Costs) -> TransportInfeas
 
 def _cut(plan: Array, allowed: Array, need: Array, supply: Array) -> tuple[Array, Array, float, bool]:
     """Columns that lack a supply, the rows that could help, the lack, and whether slack is out of it."""
-    wanting: Array = np.asarray(np.where(allowed, 0.0, plan).sum(axis=0) > CLOSING_ERROR * supply.sum())
+    wanting: Any = np.asarray(np.where(allowed, 0.0, plan).sum(axis=0) > CLOSING_ERROR * supply.sum())
     wanting[-1] = False
     helping = np.zeros(len(supply), bool)
     while True:
-        reached: Array = allowed[:, wanting].any(axis=1)
-        more: Array = np.asarray(wanting) | ((plan > 0) & allowed)[reached].any(axis=0)
+        reached: Any = allowed[:, wanting].any(axis=1)
+        more: Any = np.asarray(wanting) | ((plan > 0) & allowed)[reached].any(axis=0)
         if (more == wanting).all() and (reached == helping).all():
             break
         wanting, helping = more, reached

@@ -13,13 +13,13 @@ from typing import NamedTuple
 import numpy as np
 
 from earthwork.errors import PlanError
-from earthwork.plan.transport import GAP_ALLOWED, Certificate, TransportPlan
+from earthwork.plan.transport import GAP_ALLOWED, Certificate, TransportPlan, solve_network
 from earthwork.plan.transport_costs import Array, Costs
 from earthwork.plan.transport_cut import CLOSING_ERROR, TransportInfeasible
 
 #: Moves up to which the first program holds all of them.
 _ALL_MOVES = 200_000
-_CANDIDATES = 10
+_CANDIDATES = 8
 _ROUNDS = 60
 _TOLERANCE = 1e-10
 
@@ -88,19 +88,42 @@ def _blocks(costs: Costs):
 
 
 def _first_candidates(problem: _Problem) -> Array:
-    """All allowed moves of a small problem; of a large one the cheapest of each row and column."""
+    """All allowed moves of a small problem; of a large one those that a pure network close to it would take."""
     n, m = problem.costs.shape
-    found = []
-    few = n * m > _ALL_MOVES
-    for rows, block in _blocks(problem.costs):
-        i, j = np.nonzero(np.isfinite(block))
-        if few:
-            order = np.argpartition(block, min(_CANDIDATES, m - 1), axis=1)[:, :_CANDIDATES]
-            i = np.repeat(np.arange(len(block)), order.shape[1])
-            j = order.ravel()
-            i, j = i[np.isfinite(block[i, j])], j[np.isfinite(block[i, j])]
-        found.append((i + rows.start) * m + j)
-    return np.unique(np.concatenate(found))
+    if n * m <= _ALL_MOVES:
+        found = []
+        for rows, block in _blocks(problem.costs):
+            i, j = np.nonzero(np.isfinite(block))
+            found.append((i + rows.start) * m + j)
+        return np.concatenate(found)
+    solution, used = _like_network(problem)
+    new, _, _ = _price(problem, solution, below=np.inf)
+    return np.union1d(new, used)
+
+
+def _like_network(problem: _Problem) -> tuple[_Solution, Array]:
+    """Prices and moves of the network whose weights are the products of factors that come closest."""
+    costs, (n, m) = problem.costs, problem.costs.shape
+    linked = np.isfinite(costs.table)
+    log = np.where(linked, np.log(np.where(problem.weight > 0, problem.weight, 1.0)), 0.0)
+    by_row, by_column = np.zeros(len(log)), np.zeros(log.shape[1])
+    for _ in range(50):
+        by_row = np.where(linked, log - by_column[None, :], 0.0).sum(axis=1) / np.maximum(linked.sum(axis=1), 1)
+        by_column = np.where(linked, log - by_row[:, None], 0.0).sum(axis=0) / np.maximum(linked.sum(axis=0), 1)
+    rows, columns = np.exp(by_row), np.exp(by_column)
+    of_row, of_column = rows[costs.row_class], columns[costs.column_class]
+    none = np.zeros(0, np.int64)
+    try:
+        network = solve_network(
+            problem.supply * of_row, problem.need / of_column, costs.scaled(rows), problem.spare_rows,
+            problem.spare_columns,
+        )  # fmt: skip
+    except TransportInfeasible:
+        return _Solution(np.zeros(0), np.zeros(n), np.zeros(m), np.zeros(n), np.zeros(m)), none
+    real = (network.rows < n) & (network.columns < m)
+    key = network.rows[real] * m + network.columns[real]
+    prices = network.row_price[:n] * of_row, network.column_price[:m] / of_column
+    return _Solution(np.zeros(0), *prices, np.zeros(n), np.zeros(m)), key
 
 
 def _solve(problem: _Problem, key: Array) -> _Solution:
@@ -145,20 +168,47 @@ def _reduced(problem: _Problem, solution: _Solution, rows: slice, block: Array) 
     return block - solution.row_price[rows, None] - weight * solution.column_price[None, :]
 
 
-def _price(problem: _Problem, solution: _Solution) -> tuple[Array, float, Array]:
-    """Keys of the cheaper moves, the worst reduced cost, and the keys of moves that cost just the same."""
+def _price(problem: _Problem, solution: _Solution, *, below: float | None = None) -> tuple[Array, float, Array]:
+    """Keys of the cheaper moves, the worst reduced cost, and the keys of moves that cost just the same.
+
+    Cheaper moves are the worst few of each row and column whose reduced cost lies below a bound, by default zero.
+    """
     m = problem.costs.shape[1]
     limit = 1e-9 * problem.highest
+    bound = -limit if below is None else below
     new, tight, worst = [], [], 0.0
+    best = np.full((_CANDIDATES, m), np.inf)
+    at = np.full((_CANDIDATES, m), -1)
     for rows, block in _blocks(problem.costs):
         reduced = _reduced(problem, solution, rows, block)
         worst = min(worst, float(reduced.min(initial=0.0)))
-        i, j = np.nonzero(reduced < -limit)
-        order = np.argsort(reduced[i, j], kind="stable")[: _CANDIDATES * (len(block) + m)]
-        new.append((i[order] + rows.start) * m + j[order])
         i, j = np.nonzero(np.abs(reduced) <= limit)
         tight.append((i + rows.start) * m + j)
+        new.append(_fewest(reduced, rows.start, m, bound))
+        best, at = _fewest_by_column(best, at, reduced, rows.start)
+    q, j = np.nonzero((best < bound) & (at >= 0))
+    new.append(at[q, j] * m + j)
     return np.unique(np.concatenate(new)), worst, np.concatenate(tight)
+
+
+def _fewest(reduced: Array, start: int, columns: int, bound: float) -> Array:
+    """Keys of the least few of each row that lie below a bound."""
+    few = min(_CANDIDATES, columns)
+    order = np.argpartition(reduced, few - 1, axis=1)[:, :few]
+    i = np.repeat(np.arange(len(reduced)), few)
+    j = order.ravel()
+    keep = reduced[i, j] < bound
+    return (i[keep] + start) * columns + j[keep]
+
+
+def _fewest_by_column(best: Array, at: Array, reduced: Array, start: int) -> tuple[Array, Array]:
+    """The least few of each column, of those so far and those of a block of rows."""
+    few = min(_CANDIDATES, len(reduced))
+    order = np.argpartition(reduced, few - 1, axis=0)[:few]
+    values = np.vstack([best, np.take_along_axis(reduced, order, axis=0)])
+    places = np.vstack([at, order + start])
+    kept = np.argpartition(values, len(best) - 1, axis=0)[: len(best)]
+    return np.take_along_axis(values, kept, axis=0), np.take_along_axis(places, kept, axis=0)
 
 
 def _refuse_unmet(problem: _Problem, key: Array, solution: _Solution) -> None:

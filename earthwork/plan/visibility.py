@@ -187,3 +187,26 @@ def free_lengths(points, others, walls, out):
             dx, dy = others[j, 0] - points[i, 0], others[j, 1] - points[i, 1]
             free = is_free(points[i, 0], points[i, 1], others[j, 0], others[j, 1], *walls)
             out[i, j] = np.sqrt(dx * dx + dy * dy) if free else np.inf
+
+
+@njit(cache=True, nogil=True)
+def shorten(cost, far, edges, node, last_effort, last_length, effort, length):
+    """Replace efforts (n, m) and lengths of ways, in place, where one through a node is less.
+
+    Args:
+        cost, far: (n, nodes) effort and length from each start to each node.
+        edges, node, last_effort, last_length: the nodes that see end j stand from ``edges[j]`` to ``edges[j + 1]``,
+            with the way from there to the end.
+    """
+    for i in range(len(cost)):
+        for j in range(len(edges) - 1):
+            best = effort[i, j]
+            at = -1
+            for k in range(edges[j], edges[j + 1]):
+                value = cost[i, node[k]] + last_effort[k]
+                if value < best:
+                    best = value
+                    at = k
+            if at >= 0:
+                effort[i, j] = best
+                length[i, j] = far[i, node[at]] + last_length[at]

@@ -285,7 +285,7 @@ def test_scale_of_amounts_and_of_places_does_not_matter(factor):
 
 
 def test_the_certificate_refuses_a_plan_that_is_not_the_cheapest():
-    n = transport._solve_network(
+    n = transport.solve_network(
         np.array([1.0, 1.0]), np.array([1.0, 1.0]), matrix_costs([1, 2], [2, 1]), np.zeros(2, bool), np.zeros(2, bool)
     )
     certify(n)
