@@ -29,6 +29,9 @@ _LINES: tuple[tuple[float, Any, float, str], ...] = (
     (80.0, (0, (2, 2)), 0.9, "right"),
 )
 
+#: Water content [%] under which a side of the window is none that a specification set.
+_DRY = 0.5
+
 State = tuple[float, float]  #: (water content [%], dry density [kg/m³])
 
 
@@ -73,7 +76,7 @@ def chart_of_card(card: SoilCard, site_name: str) -> ChartContent | None:
             "of the maximum"
         )
     return ChartContent(
-        title=f"{site_name}: {card.material}",
+        title=f"{card.material}, {site_name}",
         note="; ".join(notes),
         specific_gravity=card.specific_gravity,
         **(whole.curve(card.curve) if card.curve else {}),
@@ -169,7 +172,7 @@ def draw_compaction_chart(content: ChartContent, path: Path, *, units: UnitSyste
     axes.set_ylabel(f"dry density, {units.label('density')}")
     step = round_step((limits[1][1] - limits[1][0]) / factor, 6)
     axes.yaxis.set_major_formatter(lambda value, _: number(value, step))
-    figure.text(0.11, 0.945, wrapped(content.title, 70, 1), fontsize=12, fontweight="bold")
+    figure.text(0.11, 0.945, wrapped(content.title, 56, 1), fontsize=12, fontweight="bold")
     figure.text(0.11, 0.905, wrapped(content.note, 110, 1), fontsize=8.5, color=colors.FAINT)
     handles, labels = axes.get_legend_handles_labels()
     figure.legend(
@@ -184,9 +187,10 @@ def _limits(content: ChartContent) -> tuple[tuple[float, float], tuple[float, fl
     states = [*content.points, *content.left_out, *content.field]
     states += [s for s in (content.peak, content.target, content.bank) if s is not None]
     if content.window is not None and not content.window.is_empty:
-        low, bottom, high, _ = content.window.bounds
-        # A window without limits of water content runs to bone dry; it may run out of the chart.
-        states += [(w, bottom) for w in (low, high) if w > 0]
+        top = max((density for _, density in states), default=content.window.bounds[3])
+        corners = [corner for part in _parts(content.window) for corner in part.exterior.coords if corner[1] <= top]
+        # A window that nothing limits on the dry side runs to bone dry; it may run out of the chart.
+        states += [c for c in (min(corners, default=(0.0, 0.0)), max(corners, default=(0.0, 0.0))) if c[0] > _DRY]
     if content.levels:
         # Any water content goes, so the chart runs from bone dry to full voids at the loosest.
         loosest = min(density for _, density in content.levels)
@@ -229,9 +233,12 @@ def _name_line(axes: Axes, name: str, line: tuple[np.ndarray, np.ndarray], facto
     )  # fmt: skip
 
 
+def _parts(window: shapely.Polygon) -> list[Any]:
+    return [p for p in getattr(window, "geoms", [window]) if p.geom_type == "Polygon"]
+
+
 def _draw_window(axes: Axes, window: shapely.Polygon, factor: float) -> None:
-    parts = [p for p in getattr(window, "geoms", [window]) if p.geom_type == "Polygon"]
-    for i, part in enumerate(parts):
+    for i, part in enumerate(_parts(window)):
         corners = [(w, d / factor) for w, d in part.exterior.coords]
         axes.fill(
             *zip(*corners, strict=True), facecolor=colors.FILL[0], edgecolor=colors.FILL[2], linewidth=1.0,

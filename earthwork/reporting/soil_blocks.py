@@ -183,5 +183,5 @@ def draw_curves(site: Site, result: ProctorResult, folder: OutputFolder) -> None
     names: list[str] = []
     for material, curve in result.curves:
         names.append(safe_file_name(material, names))
-        title = material if material == site.name else f"{site.name}: {material}"
+        title = material if material == site.name else f"{material}, {site.name}"
         draw_compaction_chart(chart_of_curve(curve, title), folder.path(f"proctor_{names[-1]}.png"), units=site.units)

@@ -16,7 +16,7 @@ from earthwork.soils.classify import Classification, grading_of
 from earthwork.soils.consequences import consequences
 from earthwork.soils.context import Context
 from earthwork.soils.inputs import Bank
-from earthwork.soils.peak import Peak, compaction_peak
+from earthwork.soils.peak import Peak, compaction_peak, warn_of_other_effort
 from earthwork.soils.placing import FillState, bands, check_placing, fill_state, target_water
 from earthwork.soils.records import MaterialTests
 from earthwork.soils.relative_density import relative_density_percent
@@ -46,6 +46,7 @@ def build_cards(site: Site, tests: Mapping[str, MaterialTests]) -> dict[str, Soi
     faults: list[str] = []
     for name, material in materials.items():
         context = Context(name, material, fill, site.units, tests.get(name, MaterialTests()))
+        warn_of_other_effort(context, materials)
         card = _card(context)
         faults += context.faults
         if card is not None:

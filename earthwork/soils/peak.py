@@ -2,9 +2,11 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 from earthwork.errors import SoilError
+from earthwork.site.model import Material
 from earthwork.soils import oversize, phase
 from earthwork.soils.classify import Classification
 from earthwork.soils.context import Context
@@ -64,6 +66,21 @@ def compaction_peak(context: Context, gravity: float, soil: Classification | Non
     optimum = min(optimum, 0.9 * float(phase.zero_air_voids_water_content_percent(top, gravity)))
     part = Part(name="maximum", relative_sd=dry.sd / top)
     return Peak(top, optimum, top, optimum, None, part, "typical values")
+
+
+def warn_of_other_effort(context: Context, materials: Mapping[str, Material]) -> None:
+    """Say so when the percentages of a site hold for materials of two efforts and nothing tells which is meant."""
+    own = context.material.proctor
+    if own is None or context.fill.method is not None:
+        return
+    tested = {name: m.proctor.method for name, m in materials.items() if m.proctor is not None}
+    first = next(iter(tested))
+    if not same_method(tested[first], own.method):
+        context.warn(
+            "methods-mixed", "proctor.method",
+            f'"{own.method}", but that of {first} is "{tested[first]}": one percentage asks for different densities by '
+            "them. Say in fill.method which the specification means",
+        )  # fmt: skip
 
 
 def _check_method(context: Context) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -10,7 +11,13 @@ import pytest
 from PIL import Image
 
 from earthwork.reporting import colors
-from earthwork.reporting.compaction_chart import ChartContent, chart_of_card, chart_of_curve, draw_compaction_chart
+from earthwork.reporting.compaction_chart import (
+    ChartContent,
+    _limits,
+    chart_of_card,
+    chart_of_curve,
+    draw_compaction_chart,
+)
 from earthwork.soils.card import SoilCard, soil_cards
 from earthwork.soils.curve import fit_curve
 from earthwork.soils.records import CurvePoint, DensityTest, MaterialTests
@@ -81,6 +88,17 @@ def test_a_free_draining_soil_is_shown_between_its_densities(tmp_path: Path) -> 
     assert dict(content.levels)["required"] == pytest.approx(1800 * 1500 / (1800 - 0.7 * 300))
     draw_compaction_chart(content, tmp_path / "a.png", units=METRIC)
     assert has(tmp_path / "a.png", colors.CUT[0])
+
+
+def test_a_window_that_tapers_does_not_stretch_the_chart() -> None:
+    # Lines of 60 and 90 % saturation meet at bone dry, far above the chart: they must not pull it to 0 %.
+    card = soil_cards(site(LOESS, fill={**FILL, "saturation_window": [60, 90], "water_content_window": None}))["loess"]
+    content = chart_of_card(card, "Plover Ridge")
+    assert content is not None
+    assert content.title == "loess, Plover Ridge"
+    (dry, wet), _ = _limits(replace(content, bank=None))
+    assert 10 < dry < 15
+    assert 18 < wet < 25
 
 
 @pytest.mark.parametrize("units", [METRIC, US])

@@ -281,6 +281,25 @@ def test_relative_density_from_a_test_log() -> None:
     assert any("not the 98.04 % of fill.expected_relative_density" in w.message for w in doubted.warnings)
 
 
+def test_two_efforts_under_one_percentage_are_doubted() -> None:
+    def warned(**fill: Any) -> list[str]:
+        proctor = {"method": "ASTM D1557", "max_dry_density": 1900, "optimum_water_content": 13}
+        soils = {"loess": LOESS, "twin": changed(proctor={**LOESS["proctor"], "method": "AASHTO T 99"}),
+                 "gravel": changed(proctor=proctor)}  # fmt: skip
+        document = {
+            "site": {"name": "Plover Ridge", "units": "metric"},
+            "ground": {"existing": {"level": 1.0}, "finished": {"level": 2.0}},
+            "material": soils, "fill": {**FILL, **fill},
+        }  # fmt: skip
+        cards = soil_cards(check_site(document, Path()))
+        return [w.message for card in cards.values() for w in card.warnings if w.code == "methods-mixed"]
+
+    (message,) = warned()
+    assert message.startswith('material.gravel.proctor.method: "ASTM D1557", but that of loess is "ASTM D698"')
+    with pytest.raises(SoilError, match=r"material\.gravel\.proctor\.method"):
+        warned(method="ASTM D698")
+
+
 def test_typical_maximum_is_of_standard_effort() -> None:
     made = site(changed(typical="loess", proctor=None), fill={**FILL, "method": "ASTM D1557"})
     with pytest.raises(SoilError, match=r"typical maximum is for standard effort, and \[fill\] asks for .ASTM D1557."):
