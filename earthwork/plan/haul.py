@@ -383,6 +383,13 @@ def _warnings(site: Site, places: Places, moves: Sequence[Move], areas: HaulArea
                 f"{share:.2g} % of the haul runs over ground that the surfaces do not cover; it counts as level there",
             )
         )
-    if site.model.haul and site.model.haul.distance == "straight" and areas.barriers:
+    haul = site.model.haul
+    if haul is not None and haul.cost == 0 and haul.cost_by == "distance":
+        found.append(
+            Warning(
+                "haul-free", "haul.cost is 0: distance costs nothing, so the plan minds prices alone. Give haul.cost"
+            )
+        )
+    if haul is not None and haul.distance == "straight" and areas.barriers:
         found.append(Warning("barriers-ignored", 'haul.distance = "straight": distances run through haul.barriers'))
     return found

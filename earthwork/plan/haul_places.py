@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -104,7 +104,7 @@ class _Builder:
         self._drop_rounding()
         self._borrow()
         self._disposal()
-        return Places(tuple(self.sources), tuple(self.sinks), tuple(self.warnings))
+        return Places(*_told_apart(self.sources, self.sinks), tuple(self.warnings))
 
     # --- blocks ------------------------------------------------------------------------------------------------------
 
@@ -309,3 +309,17 @@ def middle_of(sources: Sequence[Source], sinks: Sequence[Sink]) -> tuple[float, 
     if total <= 0:
         return 0.0, 0.0
     return sum(w * p[0] for w, p in weights) / total, sum(w * p[1] for w, p in weights) / total
+
+
+def _told_apart(sources: Sequence[Source], sinks: Sequence[Sink]) -> tuple[tuple[Source, ...], tuple[Sink, ...]]:
+    """The same places, with a number behind a name that another has: a zone may be called as a square is."""
+    seen: dict[str, int] = {}
+
+    def unique(name: str) -> str:
+        seen[name] = seen.get(name, 0) + 1
+        return name if seen[name] == 1 else unique(f"{name} ({seen[name]})")
+
+    return (
+        tuple(replace(source, name=unique(source.name)) for source in sources),
+        tuple(replace(sink, name=unique(sink.name)) for sink in sinks),
+    )

@@ -285,8 +285,8 @@ def _certificate(
     checked = sum(int(np.count_nonzero(np.isfinite(block))) for _, block in _blocks(problem.costs))
     return Certificate(
         cost=cost,
-        lower_bound=bound,
-        relative_gap=max(0.0, gap),
+        lower_bound=float(bound),
+        relative_gap=max(0.0, float(gap)),
         worst_reduced_cost=worst / problem.highest,
         moves_checked=checked,
         highest_cost=problem.highest,

@@ -21,9 +21,10 @@ def haul_faults(model: SiteModel) -> Iterator[str]:
 
 
 def _places(model: SiteModel) -> Iterator[str]:
-    """Borrow, disposal and stockpile sites share the names of the haul plan."""
+    """Borrow, disposal and stockpile sites and allowances share the names of the haul plan."""
     places = [("borrow", p.name) for p in model.borrow] + [("disposal", p.name) for p in model.disposal]
     places += [("stockpile", p.name) for p in model.stockpile]
+    places += [("allowance", a.name) for a in model.allowance] if places else []
     names = [name for _, name in places]
     for i, (table, name) in enumerate(places):
         if name == ON_SITE_STOCKPILE:

@@ -404,6 +404,19 @@ def test_threads_change_nothing(make_haul):
     assert haul(site, threads=1).to_dict() == haul(site, threads=2).to_dict()
 
 
+def test_a_zone_that_is_called_as_a_square_is_told_apart(make_haul, tmp_path):
+    write_shapes(tmp_path / "plan.gpkg", "lots", [shapely.box(0, 0, 5, 20)], lot=["A1"])
+    zones = {"area": {"file": "plan.gpkg", "layer": "lots"}, "name": "lot"}
+    result = haul(make_haul(*cut_and_fill(), haul={"by": "zones"}, zones=zones))
+    names = [b.block for b in result.blocks]
+    assert len(names) == len(set(names))
+    assert {"A1 loess", "A1 loess (2)"} <= set(names)
+
+
+def test_haul_that_costs_nothing_is_told(make_haul):
+    assert "haul-free" in {w.code for w in haul(make_haul(*cut_and_fill(), haul={"cost": 0.0})).warnings}
+
+
 # --- phases -------------------------------------------------------------------------------------------------------
 
 
@@ -599,6 +612,13 @@ def test_a_material_that_no_tip_takes_is_named(make_haul):
         haul(make_haul(*cut_and_fill(), disposal=[tip], material={"loess": LOESS, "topsoil": TOPSOIL}))
 
 
+def test_a_rule_without_a_source_names_fill_and_material(make_haul):
+    rule = {"name": "top metre", "materials": ["shale"], "top": 1.0}
+    site = make_haul(*cut_and_fill(), haul={"rule": [rule]}, material={"loess": LOESS, "shale": SHALE})
+    with pytest.raises(PlanError, match=r'"B1 fill, top metre" needs 100 m³ \(compacted\) of shale, and 100 m³ of it'):
+        haul(site)
+
+
 def test_a_block_with_no_way_out_is_named(make_haul, tmp_path):
     ring = shapely.box(-5, -5, 15, 25) - shapely.box(-1, -1, 11, 21)
     write_shapes(tmp_path / "plan.gpkg", "wall", [ring])
@@ -654,6 +674,13 @@ def test_phases_without_an_order(make_haul, tmp_path):
             'stockpile: the name "x" is given to a disposal as well',
         ),
         ({"haul": {"truck": {"heaped_volume": 10, "payload": 15, "power": 200}}}, "haul.truck.empty_mass: missing"),
+        (
+            {
+                "allowance": [{"name": "pit", "material": "loess", "volume": 5.0}],
+                "borrow": [{"name": "pit", "at": [0.0, 0.0], "material": "loess"}],
+            },
+            'allowance: the name "pit" is given to a borrow as well',
+        ),
         (
             {"baseline": {"line": "x.gpkg", "overhaul_price": 2.0}},
             "baseline.overhaul_price: it needs baseline.freehaul",
