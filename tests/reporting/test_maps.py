@@ -83,6 +83,16 @@ def test_a_map_is_true_to_scale_with_the_ground_in_its_middle(shape):
     assert min(frame.map_width, frame.map_height) >= 1.2
 
 
+@pytest.mark.parametrize("title", ["Mill", "x" * 500, "Larkspur Campus and its long approach road: cut and fill"])
+def test_titles_stay_on_the_sheet(title):
+    frame = Frame.around(Grid(900, 100, 0.0, 0.0, 1.0, 1.0), METRIC)
+    figure = new_figure(*frame.size)
+    frame.draw_titles(figure, title, "")
+    box = figure.texts[0].get_window_extent()
+    assert box.x1 <= frame.size[0] * figure.dpi
+    assert box.width > 0
+
+
 def test_coarse_grids_keep_the_corner_and_cover_the_ground():
     coarse, joined = coarse_grid(Grid(20_000, 9_999, 10.0, 50.0, 0.5, 0.5), 1500)
     assert (joined, coarse.rows, coarse.columns) == (14, 1429, 715)
