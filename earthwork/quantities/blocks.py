@@ -92,7 +92,8 @@ class BlockTally:
         window = tile.window
         rest = np.ones((window.height, window.width)) if tile.weight is None else tile.weight.copy()
         regions = self.layout.regions
-        for region in touching(regions, window) if regions is not None else ():
+        for region in () if regions is None else touching(regions, window):
+            assert regions is not None
             found = polygon_share(regions, region, window)
             if found is None:
                 continue
