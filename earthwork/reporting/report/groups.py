@@ -20,7 +20,7 @@ GROUPS: dict[str, tuple[str, tuple[str, ...]]] = {
         "layers and surfaces for GIS, design and stake-out",
         (
             "site.gpkg", "fill_thickness.tif", "surfaces.xml", "surfaces.dxf", "stakeout.txt",
-            *(f"{c}_*.{ending}" for c in COMMANDS for ending in ("tif", "gpkg", "geojson")),
+            *(f"{c}_*.{ending}" for c in COMMANDS for ending in ("tif", "gpkg", "geojson", "dxf")),
         ),
     ),
     "model": ("a 3D model", ("site.glb",)),
