@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+import shapely
 
 from earthwork.reporting import colors
 from earthwork.reporting.cut_fill_map import COLORS, NO_CHANGE_M, classes_for
@@ -172,6 +173,8 @@ def outlines_of(parts: Parts) -> list[Outline]:
         found += _layer(parts, "pads", model.pads.area, model.pads.name, _pad_notes(parts))
         if model.pads.building is not None:
             found += _layer(parts, "buildings", model.pads.building, None, {})
+    elif ground.design is not None:
+        found += [Outline("pads", pad.name, shapely.force_2d(pad.polygon)) for pad in ground.design.pads]
     if model.haul is not None and model.haul.barriers is not None:
         found += _layer(parts, "barriers", model.haul.barriers, None, {})
     return found

@@ -83,9 +83,7 @@ def gather(
     """
     missing = needs(site.model)
     names = [name for name in COMMANDS if not missing.get(name) and hasattr(earthwork, name)]
-    left_out = {
-        name: f"the site file has no {' and no '.join(missing[name])}" for name in COMMANDS if missing.get(name)
-    }
+    left_out = {name: f"the site file lacks {', '.join(missing[name])}" for name in COMMANDS if missing.get(name)}
     ground = open_site(site, moving="balance" in names)
     surfaces, probe = SurfaceMapTally(ground.stack), CellProbe(ground.stack)
     gathered = {name: _picture_tallies(name, site, pictures) for name in names}

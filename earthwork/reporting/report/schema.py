@@ -103,7 +103,9 @@ def undescribed(document: Any, schema: Schema, place: str = "") -> list[str]:
     if isinstance(document, dict):
         known = schema.get("properties", {})
         found = [f"{place}.{key}" for key in document if key not in known]
-        return found + [p for key in document if key in known for p in undescribed(document[key], known[key], f"{place}.{key}")]
+        return found + [
+            p for key in document if key in known for p in undescribed(document[key], known[key], f"{place}.{key}")
+        ]
     if isinstance(document, list):
         return sorted({p for inner in document for p in undescribed(inner, schema.get("items", {}), f"{place}[]")})
     return []
