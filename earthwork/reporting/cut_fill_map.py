@@ -107,19 +107,11 @@ def draw_cut_fill_map(
 
 
 def _draw_depths(axes: Axes, depth: np.ndarray, classes: Classes, frame: Frame) -> None:
-    from matplotlib.colors import ListedColormap
-
-    index = np.digitize(np.nan_to_num(depth), classes.bounds[1:-1]).astype(np.float64)
-    index[~np.isfinite(depth)] = np.nan
-    axes.imshow(
-        index,
-        cmap=ListedColormap(COLORS),
-        vmin=-0.5,
-        vmax=8.5,
-        extent=frame.extent,
-        interpolation="nearest",
-        zorder=1,
-    )
+    # Colours rather than numbers: a picture of bytes is drawn with an eighth of the memory.
+    palette = np.array([[int(color[i : i + 2], 16) for i in (1, 3, 5)] + [255] for color in COLORS], np.uint8)
+    picture = palette[np.digitize(np.nan_to_num(depth), classes.bounds[1:-1])]
+    picture[~np.isfinite(depth), 3] = 0
+    axes.imshow(picture, extent=frame.extent, aspect="auto", interpolation="nearest", zorder=1)
     coarse, east, north = frame.thinned(depth, 500)
     # Few cells are drawn as the squares that they are, and so is their hatching.
     coarse, east, north = frame.to_edges(*_as_squares(coarse, east, north))
