@@ -126,8 +126,11 @@ def differential_distance_m(field: PadField, grid: Grid) -> float | None:
 
 def profile(
     start: tuple[float, float], end: tuple[float, float], grid: Grid, beyond_m: float
-) -> Iterator[tuple[float, int, int]]:
-    """Cells along a straight line, and on for a distance at both ends: (station from the start [m], row, column)."""
+) -> Iterator[tuple[float, float, float]]:
+    """Places along a straight line, and on for a distance at both ends: (station from the start [m], row, column).
+
+    Rows and columns are those of the grid's corners: (0.5, 0.5) is the centre of the first cell.
+    """
     metres = grid.unit_m * grid.ground_scale
     length = float(np.hypot(end[0] - start[0], end[1] - start[1])) * metres
     way = (end[0] - start[0]) / length, (end[1] - start[1]) / length
@@ -135,6 +138,6 @@ def profile(
     for station in np.arange(-beyond_m, length + beyond_m + step / 2, step):
         row, column = grid.cell(start[0] + way[0] * station, start[1] + way[1] * station)
         if 0 <= row < grid.rows and 0 <= column < grid.columns:
-            yield float(station), int(row), int(column)
+            yield float(station), float(row), float(column)
 
 

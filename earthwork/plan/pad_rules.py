@@ -26,6 +26,9 @@ if TYPE_CHECKING:
 #: Classes, the worst first.
 CLASSES = ("deep fill", "transition", "fill", "cut")
 
+#: Flags that are no reason to look: every class that holds is named, and what an undercut has mended.
+_NO_WORRY = ("fill", "cut", "transition mended")
+
 #: Natural ground under this share of its compaction maximum is called loose [%]. Common practice: fill is asked to reach
 #: 90 to 95 %.
 LOOSE_PERCENT = 90.0
@@ -72,6 +75,15 @@ def classes_that_hold(
     return tuple(name for name in CLASSES if holds[name])
 
 
+def worries(flags: Sequence[str]) -> tuple[str, ...]:
+    """The flags of a pad that call for a look; that it stands in cut or in fill is none by itself.
+
+    >>> worries(["deep fill", "fill", "differential fill"])
+    ('deep fill', 'differential fill')
+    """
+    return tuple(flag for flag in flags if flag not in _NO_WORRY)
+
+
 @dataclass(frozen=True)
 class NaturalGround:
     """The ground at the removal bottom: the material with the greatest share of the footprint, and what to beware of."""
@@ -80,13 +92,18 @@ class NaturalGround:
     percent_of_maximum: float | None
     flags: tuple[str, ...]
     shares: tuple[tuple[str, float], ...]  #: (material, percent of the footprint)
+    flags_by_material: tuple[tuple[str, tuple[str, ...]], ...] = ()
 
     def to_dict(self) -> dict[str, Any]:
+        flags = dict(self.flags_by_material)
         return {
             "material": self.material,
             "percent_of_maximum": self.percent_of_maximum,
             "flags": list(self.flags),
-            "materials": [{"material": name, "share_percent": share} for name, share in self.shares],
+            "materials": [
+                {"material": name, "share_percent": share, "flags": list(flags.get(name, ()))}
+                for name, share in self.shares
+            ],
         }
 
 
@@ -101,8 +118,9 @@ def natural_ground(shares: Sequence[tuple[str, float]], cards: dict[str, SoilCar
         return NaturalGround(None, None, (), ())
     ordered = tuple(sorted(shares, key=lambda s: -s[1]))
     card = cards.get(ordered[0][0])
-    flags = dict.fromkeys(flag for name, _ in ordered if name in cards for flag in ground_flags(cards[name]))
-    return NaturalGround(ordered[0][0], card.bank_percent_of_maximum if card else None, tuple(flags), ordered)
+    flagged = tuple((name, ground_flags(cards[name])) for name, _ in ordered if name in cards)
+    flags = tuple(dict.fromkeys(flag for _, its in flagged for flag in its))
+    return NaturalGround(ordered[0][0], card.bank_percent_of_maximum if card else None, flags, ordered, flagged)
 
 
 def ground_flags(card: SoilCard) -> tuple[str, ...]:

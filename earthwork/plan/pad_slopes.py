@@ -29,7 +29,8 @@ class SlopesBeside:
     """Slopes beside one pad.
 
     Heights are from the pad's edge to the toe (fill) or the top (cut), to about a cell. Setbacks are what the model
-    code asks for at the highest slope, and hold for slopes steeper than 3:1. ``shortfall_m`` is by how much a building
+    code asks for at the worst place, from the slope's own top or toe, and hold for slopes steeper than 3:1; those steeper
+    than 1:1 are measured from the code's plane of 45°. ``shortfall_m`` is by how much a building
     stands too near, at the worst place; 0 when it does not, None without a building.
     """
 
@@ -59,13 +60,15 @@ def slopes_beside(polygon: Any, building: Any, grid: Grid, finished: ReadFinishe
         return SlopesBeside(0.0, 0.0, 0.0, 0.0, None if building is None else 0.0)
     steps = np.arange(-1, int(np.ceil(REACH_M / cell)) + 1) * cell
     heights = _heights(points, outward, steps / metres, grid, finished)
-    rise, run = _rises(heights, steps)
-    steep = run < SETBACK_STEEPER_THAN * np.abs(rise) * (1 + 1e-9)
-    down, up = np.where(rise < 0, -rise, 0.0), np.where(rise > 0, rise, 0.0)
-    from_top, from_toe = setback_from_top_m(np.where(steep, down, 0)), setback_from_toe_m(np.where(steep, up, 0))
+    slopes = _slopes(heights, steps)
+    down, up = np.maximum(-slopes.rise, 0.0), np.maximum(slopes.rise, 0.0)
+    steep = slopes.run < SETBACK_STEEPER_THAN * np.abs(slopes.rise) * (1 + 1e-9)
+    steep_down, steep_up = np.where(steep, down, 0.0), np.where(steep, up, 0.0)
+    from_top = setback_from_top_m(steep_down, np.maximum(steep_down - slopes.run, 0.0))
+    from_toe = setback_from_toe_m(steep_up, np.where(steep_up > 0, slopes.before_toe, 0.0))
     shortfall = None
     if building is not None:
-        away = shapely.distance(shapely.points(points), building) * metres
+        away = shapely.distance(shapely.points(points), building) * metres + slopes.start
         shortfall = float(max((np.maximum(from_top, from_toe) - away).max(), 0.0))
     return SlopesBeside(
         float(down.max()), float(up.max()), float(np.max(from_top)), float(np.max(from_toe)), shortfall
@@ -107,15 +110,26 @@ def _heights(
     return heights
 
 
-def _rises(heights: np.ndarray, steps: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Rise (+) or fall (−) from the edge to the end of the slope, and how far that is [m], for each ray.
+@dataclass(frozen=True)
+class _Slopes:
+    """The first slope along each ray [m]."""
 
-    A slope must begin within a few cells of the edge; it goes on as long as the ground keeps its direction and no flat
+    rise: np.ndarray  #: + up, − down, from its near to its far end; 0 where there is none
+    run: np.ndarray  #: how far that is
+    start: np.ndarray  #: from the edge of the pad to its near end
+    before_toe: np.ndarray  #: by how much most a place of it is higher than it is far from its near end
+
+
+def _slopes(heights: np.ndarray, steps: np.ndarray) -> _Slopes:
+    """Find the slope along each ray.
+
+    It must begin within a few metres of the edge; it goes on as long as the ground keeps its direction and no flat
     stretch is longer than a bench.
     """
     step = float(steps[1] - steps[0])
     gradients = np.diff(heights, axis=1) / step
-    rise, run = np.zeros(len(heights)), np.full(len(heights), np.inf)
+    count = len(heights)
+    found = _Slopes(np.zeros(count), np.full(count, np.inf), np.zeros(count), np.zeros(count))
     for i, gradient in enumerate(gradients):
         steep = np.abs(gradient) > _STEEP
         first = int(np.argmax(steep))
@@ -127,6 +141,9 @@ def _rises(heights: np.ndarray, steps: np.ndarray) -> tuple[np.ndarray, np.ndarr
                 break
             if sign * gradient[k] > _STEEP:
                 last = k
-        rise[i] = heights[i, last + 1] - heights[i, first]
-        run[i] = (last + 1 - first) * step
-    return rise, run
+        whole = heights[i, first : last + 2] - heights[i, first]
+        found.rise[i] = whole[-1]
+        found.run[i] = (last + 1 - first) * step
+        found.start[i] = max(float(steps[first]), 0.0)
+        found.before_toe[i] = max(float(np.max(whole - step * np.arange(len(whole)))), 0.0)
+    return found

@@ -200,24 +200,37 @@ def limits_exceeded(distortion: float) -> tuple[DistortionLimit, ...]:
 SETBACK_STEEPER_THAN = 3.0
 
 
-def setback_from_top_m(slope_height_m: Value) -> Value:
+def setback_from_top_m(slope_height_m: Value, steeper_by_m: Value = 0.0) -> Value:
     """Least distance of footings from a descending slope: a third of its height, at most 40 ft [ibc-1808.7, fig. 1].
+
+    A slope steeper than 1:1 is measured from a plane of 45° through its toe; ``steeper_by_m`` is how far inside the top
+    that plane comes out: height less run, 0 for flatter slopes [ibc-1808.7].
 
     >>> round(float(setback_from_top_m(30 * 0.3048) / 0.3048), 9)
     10.0
+    >>> float(setback_from_top_m(6.0, 6.0 - 3.0))    # a slope of ½:1, 6 m high
+    5.0
     """
     _at_least("slope height", slope_height_m, 0.0, "m")
-    return np.minimum(np.asarray(slope_height_m) / 3, 40 * FOOT_M)
+    _at_least("height less run", steeper_by_m, 0.0, "m")
+    return np.minimum(np.asarray(slope_height_m) / 3, 40 * FOOT_M) + steeper_by_m
 
 
-def setback_from_toe_m(slope_height_m: Value) -> Value:
+def setback_from_toe_m(slope_height_m: Value, steeper_by_m: Value = 0.0) -> Value:
     """Least distance of buildings from an ascending slope: half of its height, at most 15 ft [ibc-1808.7, fig. 1].
+
+    The toe of a slope steeper than 1:1 is taken where the plane of 45° that touches it meets the ground;
+    ``steeper_by_m`` is how far in front of the toe that is: the most by which a place of the slope is higher than far,
+    0 for flatter slopes [ibc-1808.7].
 
     >>> round(float(setback_from_toe_m(12 * 0.3048) / 0.3048), 9)
     6.0
+    >>> float(setback_from_toe_m(6.0, 6.0 - 3.0))    # a slope of ½:1, 6 m high
+    6.0
     """
     _at_least("slope height", slope_height_m, 0.0, "m")
-    return np.minimum(np.asarray(slope_height_m) / 2, 15 * FOOT_M)
+    _at_least("height less run", steeper_by_m, 0.0, "m")
+    return np.minimum(np.asarray(slope_height_m) / 2, 15 * FOOT_M) + steeper_by_m
 
 
 def blanket_asked_m(greatest_thickness_m: float, blanket_m: float, blanket_ratio: float) -> float:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 import textwrap
 import warnings
+from functools import lru_cache
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -80,14 +81,34 @@ def number(value: float, step: float) -> str:
     return f"{value:,.{places}f}"
 
 
+@lru_cache(maxsize=1)
+def _glyphs() -> frozenset[int]:
+    """The characters that the font of pictures has."""
+    from matplotlib.font_manager import findfont
+    from matplotlib.ft2font import FT2Font
+
+    return frozenset(FT2Font(findfont("DejaVu Sans")).get_charmap())
+
+
+def drawable(text: str) -> str:
+    """A text with a box for each character that the font of pictures does not have, and "?" for one that is none.
+
+    Without that such characters take no room, and lie on top of their neighbours.
+
+    >>> drawable("\U0001f3d7\ufe0f pad")
+    '□ pad'
+    """
+    shown = (c if c.isprintable() else "?" for c in text if not "\ufe00" <= c <= "\ufe0f")
+    return "".join(c if ord(c) in _glyphs() else "□" for c in shown)
+
+
 def wrapped(name: str, width: int = 18, lines: int = 3) -> str:
     """A name on short lines, cut with an ellipsis where it is too long for a picture.
 
     >>> wrapped("Building C, north wing and its yard", 14, 2)
     'Building C,\\nnorth wing and…'
     """
-    clean = " ".join("".join(c if c.isprintable() else "?" for c in name).split())
-    pieces = textwrap.wrap(clean, width) or [""]
+    pieces = textwrap.wrap(" ".join(drawable(name).split()), width) or [""]
     if len(pieces) > lines:
         pieces = [*pieces[: lines - 1], pieces[lines - 1][:width].rstrip() + "…"]
     return "\n".join(pieces)

@@ -15,7 +15,7 @@ import numpy as np
 from earthwork.plan.haul import HaulResult
 from earthwork.reporting import colors
 from earthwork.reporting.display import show
-from earthwork.reporting.figures import halo, new_figure, save_figure, wrapped
+from earthwork.reporting.figures import drawable, halo, new_figure, save_figure, wrapped
 from earthwork.reporting.haul_flows import Flow, bundled, flows_of, grid_around, heaviest, stays_in_block
 from earthwork.reporting.map_frame import Frame, legend_line, legend_panel, legend_swatch
 from earthwork.site import Site
@@ -348,5 +348,5 @@ def _notes(result: HaulResult, site: Site) -> list[str]:
 
 
 def _shortened(text: str, length: int) -> str:
-    clean = "".join(c if c.isprintable() else "?" for c in text)
+    clean = drawable(text)
     return clean if len(clean) <= length else clean[: length - 1] + "…"

@@ -227,9 +227,9 @@ def _notes(result: PadsResult, site: Site) -> list[str]:
         if count:
             lines.append(f"{count} {name}")
     differing = sum("differential fill" in report.flags for report in result.pads)
-    lines = [f"{len(result.pads)} pads: " + ", ".join(lines)] if lines else []
+    lines = [f"{len(result.pads)} {'pad' if len(result.pads) == 1 else 'pads'}: " + ", ".join(lines)] if lines else []
     if differing:
-        lines.append(f"{differing} with a difference over {show(_limit(site), 'length', site.units)}")
+        lines.append(f"{differing} with a difference of {show(_limit(site), 'length', site.units)} or more")
     grounds = sorted({flag for report in result.pads for flag in report.natural_ground.flags})
     if grounds:
         lines.append("natural ground flagged: " + ", ".join(grounds))

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import shapely
 
-from earthwork.ground.grid import Window
+from earthwork.ground.grid import Grid, Window
 from earthwork.plan.pad_measures import profile
 from earthwork.plan.pads import PadReport, PadsResult
 from earthwork.quantities.pad_ground import PadPlace
@@ -80,19 +80,43 @@ def _section(result: PadsResult, report: PadReport, place: PadPlace, reader: Any
     first, last = span(place.polygon)
     judged = span(place.footprint)
     ends = tuple(tuple(start + s / metres * way) for s in (first, last))
-    cells = list(profile(ends[0], ends[1], grid, _BEYOND_M))
-    station, rows, columns = (np.array(v) for v in zip(*cells, strict=True))
-    # One point for each cell that the line meets, or the lines would go down in steps.
-    fresh = np.r_[True, (np.diff(rows) != 0) | (np.diff(columns) != 0)]
-    station, rows, columns = station[fresh], rows[fresh], columns[fresh]
-    window = Window(int(rows.min()), int(columns.min()), int(np.ptp(rows)) + 1, int(np.ptp(columns)) + 1)
+    places = list(profile(ends[0], ends[1], grid, _BEYOND_M))
+    station, rows, columns = (np.array(v) for v in zip(*places, strict=True))
+    window = _window(rows, columns, grid)
     arrays = reader.read(window)
-    at = rows - window.row, columns - window.column
+    existing, bottom, subgrade, finished = (
+        _between_centres(a, rows - window.row, columns - window.column)
+        for a in (arrays["existing"], stack.removal_bottom(arrays), stack.subgrade(arrays), arrays["finished"])
+    )
     return PadSection(
-        report, station, arrays["existing"][at], stack.removal_bottom(arrays)[at], stack.subgrade(arrays)[at],
-        arrays["finished"][at], (0.0, last - first), (judged[0] - first, judged[1] - first),
-        (-first, change.length_m - first),
+        report, station, existing, bottom, subgrade, finished, (0.0, last - first),
+        (judged[0] - first, judged[1] - first), (-first, change.length_m - first),
     )  # fmt: skip
+
+
+def _window(rows: np.ndarray, columns: np.ndarray, grid: Grid) -> Window:
+    """The cells around places given by row and column."""
+    top, left = max(int(rows.min() - 0.5), 0), max(int(columns.min() - 0.5), 0)
+    bottom = min(int(rows.max() + 0.5) + 1, grid.rows)
+    right = min(int(columns.max() + 0.5) + 1, grid.columns)
+    return Window(top, left, bottom - top, right - left)
+
+
+def _between_centres(values: np.ndarray, rows: np.ndarray, columns: np.ndarray) -> np.ndarray:
+    """Values (h, w) at places, bilinear between cell centres: by the nearest cell an oblique slope would go down in steps.
+
+    Beside missing ground it is the value of the cell that the place lies in.
+    """
+    height, width = values.shape
+    i = np.clip(np.floor(rows - 0.5).astype(int), 0, max(height - 2, 0))
+    j = np.clip(np.floor(columns - 0.5).astype(int), 0, max(width - 2, 0))
+    down, right = np.clip(rows - 0.5 - i, 0, 1), np.clip(columns - 0.5 - j, 0, 1)
+    i2, j2 = np.minimum(i + 1, height - 1), np.minimum(j + 1, width - 1)
+    upper = (1 - right) * values[i, j] + right * values[i, j2]
+    lower = (1 - right) * values[i2, j] + right * values[i2, j2]
+    smooth = (1 - down) * upper + down * lower
+    own = values[np.minimum(rows.astype(int), height - 1), np.minimum(columns.astype(int), width - 1)]
+    return np.where(np.isfinite(smooth), smooth, own)
 
 
 def draw_pad_sections(site: Site, result: PadsResult, path: Path) -> None:

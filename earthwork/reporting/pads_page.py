@@ -89,8 +89,11 @@ def _basis(site: Site, pads: list[dict[str, Any]]) -> tuple[str, ...]:
     assert table is not None
     on_buildings = sum(pad["judged_on"] == "building" for pad in pads)
     margin = show(table.building_margin, "length", site.units)
-    judged = f"{on_buildings} of {len(pads)} pads are judged under their building and {margin} around it, "
-    judged += "the others as a whole." if on_buildings < len(pads) else "none as a whole."
+    judged = "All pads are judged as a whole."
+    if on_buildings:
+        of = "All pads" if on_buildings == len(pads) else f"{on_buildings} of {len(pads)} pads"
+        judged = f"{of} are judged under their building and {margin} around it"
+        judged += "." if on_buildings == len(pads) else "; the others as a whole."
     deep, difference = (show(v, "length", site.units) for v in (table.deep_fill, table.differential_fill))
     return (
         "Thickness of fill is from the removal bottom (after stripping and undercut) to subgrade. " + judged,
@@ -126,15 +129,23 @@ def _flag_line(pad: dict[str, Any], site: Site) -> str:
     """The flags of one pad in words; empty for a pad with nothing to say."""
     quiet = ("cut", "fill", "distortion") if pad["distortion_limits"] else ("cut", "fill")
     said = [flag for flag in pad["flags"] if flag not in quiet]
-    natural = pad["natural_ground"]
-    if natural["flags"]:
-        said.append(f"on {natural['material']} that is flagged: {', '.join(natural['flags'])}")
+    said += flagged_ground(pad["natural_ground"])
     if pad["distortion_limits"]:
         worst = pad["distortion_limits"][-1]
         said.append(f"distortion of 1 in {pad['max_distortion']:.0f} ({worst['means']}: 1 in {worst['one_in']:g})")
     if pad["wait_days"]:
         said.append(f"wait {pad['wait_days']:,.0f} days from half-placed fill before building")
     return f"{pad['pad']}: {'; '.join(said)}." if said else ""
+
+
+def flagged_ground(natural: dict[str, Any]) -> list[str]:
+    """What is flagged of the natural ground under a pad, a phrase for each material that is."""
+    said = []
+    for row in natural["materials"]:
+        if row["flags"]:
+            share = "" if row["share_percent"] > 99.5 else f" ({row['share_percent']:.2g} % of it)"
+            said.append(f"on {row['material']}{share}: {', '.join(row['flags'])}")
+    return said
 
 
 def _undercut_row(pad: dict[str, Any], site: Site) -> tuple[str, str, str]:

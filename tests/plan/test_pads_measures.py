@@ -230,6 +230,36 @@ def test_height_of_a_cut_slope_and_a_building_too_near():
     assert found.shortfall_m == pytest.approx(3.0, abs=0.15)
 
 
+def test_a_fall_steeper_than_45_degrees_is_measured_from_a_plane_through_its_toe():
+    # ½:1 down 6 m, so 3 m wide: the plane of 45° through the toe comes out 6 − 3 = 3 m inside the top; 6/3 + 3 = 5 m.
+    found = beside(lambda e, n: 100 - np.minimum(outside(e, n) * 2, 6), cell=0.1, building=box(41, 41, 79, 79))
+    assert found.fill_height_m == pytest.approx(6.0, abs=1e-9)
+    assert found.setback_from_top_m == pytest.approx(5.0, abs=0.11)
+    assert found.shortfall_m == pytest.approx(4.0, abs=0.11)
+
+
+def test_a_rise_steeper_than_45_degrees_is_measured_from_a_plane_that_touches_it():
+    # ½:1 up 6 m, then 2:1 up another 2 m: the plane touches the bend, 6 m up and 3 m off, and meets the pad 3 m in
+    # front of the toe. Half of the whole 8 m, and 3.
+    def height(e, n):
+        d = outside(e, n)
+        return 100 + np.minimum(d * 2, 6) + np.clip(d - 3, 0, 4) / 2
+
+    assert beside(height, cell=0.1).setback_from_toe_m == pytest.approx(7.0, abs=0.11)
+
+
+def test_a_slope_of_one_to_one_is_measured_as_it_stands():
+    found = beside(lambda e, n: 100 - np.minimum(outside(e, n), 6), cell=0.1)
+    assert found.setback_from_top_m == pytest.approx(2.0, abs=0.11)
+
+
+def test_a_slope_that_begins_beyond_the_edge_is_so_much_further_from_the_building():
+    # 2:1 down 9 m from 4 m outside the pad: 3 m are asked for; the building stands 1 + 4 m off.
+    found = beside(lambda e, n: 100 - np.clip(outside(e, n) - 4, 0, 18) / 2, building=box(41, 41, 79, 79))
+    assert found.setback_from_top_m == pytest.approx(3.0, abs=0.1)
+    assert found.shortfall_m == 0.0
+
+
 def test_gentle_slopes_need_no_setback():
     found = beside(lambda e, n: 100 - np.minimum(outside(e, n) / 4, 5), building=box(41, 41, 79, 79))
     assert found.fill_height_m == pytest.approx(5.0, abs=0.13)

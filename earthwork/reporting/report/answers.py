@@ -5,8 +5,10 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any
 
+from earthwork.plan.pad_rules import worries
 from earthwork.reporting.balance_page import shift_text
 from earthwork.reporting.display import plain, show
+from earthwork.reporting.pads_page import flagged_ground
 from earthwork.reporting.report.parts import Parts
 
 
@@ -25,7 +27,7 @@ def summary(parts: Parts) -> dict[str, Any]:
     documents = parts.documents
     balance, water, pads = (documents.get(name) or {} for name in ("balance", "water", "pads"))
     shift = balance.get("grade_shift")
-    flagged = [pad["pad"] for pad in pads.get("pads", ()) if pad.get("flags")]
+    flagged = [pad["pad"] for pad in pads.get("pads", ()) if _worries(pad)]
     return {
         "surplus_compacted_m3": balance.get("surplus_compacted_m3"),
         "surplus_compacted_sd_m3": balance.get("surplus_compacted_sd_m3"),
@@ -152,9 +154,14 @@ def _water(parts: Parts) -> Answer:
 
 def _pads(parts: Parts) -> Answer:
     pads = parts.documents["pads"]["pads"]
-    flagged = [pad for pad in pads if pad["flags"]]
-    names = ", ".join(f"{pad['pad']} ({', '.join(pad['flags'])})" for pad in flagged[:4])
+    flagged = [(pad["pad"], said) for pad in pads if (said := _worries(pad))]
+    names = "; ".join(f"{name}: {', '.join(said)}" for name, said in flagged[:4])
     if len(flagged) > 4:
-        names += f" and {len(flagged) - 4} more"
+        names += f"; and {len(flagged) - 4} more"
     text = f"{len(flagged)} of {len(pads)}"
     return Answer("Pads flagged", text, names or "none of them", "look" if flagged else "good")
+
+
+def _worries(pad: dict[str, Any]) -> list[str]:
+    """What calls for a look at a pad: its flags but plain cut and fill, and what is flagged of the ground under it."""
+    return [*worries(pad["flags"]), *flagged_ground(pad["natural_ground"])]

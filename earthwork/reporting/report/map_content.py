@@ -191,7 +191,7 @@ def _layer(parts: Parts, layer: str, spec: Any, name: str | None, notes: Mapping
 
 def _pad_notes(parts: Parts) -> dict[str, str]:
     pads = parts.documents.get("pads", {}).get("pads", ())
-    return {pad["pad"]: ", ".join([pad["class"], *pad["flags"]]) for pad in pads}
+    return {pad["pad"]: ", ".join(dict.fromkeys([pad["class"], *pad["flags"]])) for pad in pads}
 
 
 def _arrows(parts: Parts) -> list[Arrow]:
