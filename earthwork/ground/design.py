@@ -250,12 +250,18 @@ def build_design(
 
 
 def check_pads(grid: Grid, pads: Sequence[PadShape], roads: Sequence[RoadShape] = ()) -> None:
-    """Refuse pads that overlap, share a name, have no grade or no area, or lie outside the ground: all in one
-    message.
+    """Refuse pads with faults, all in one message; see :func:`pad_faults`.
 
     Raises:
-        GroundError: any of these.
+        GroundError: there are any.
     """
+    faults = pad_faults(grid, pads, roads)
+    if faults:
+        raise GroundError("design: " + "\n  ".join(faults))
+
+
+def pad_faults(grid: Grid, pads: Sequence[PadShape], roads: Sequence[RoadShape] = ()) -> list[str]:
+    """Pads that overlap, share a name, have no grade or no area, or lie outside the ground."""
     faults = []
     names = [pad.name for pad in pads] + [road.name for road in roads]
     for name in sorted({n for n in names if names.count(n) > 1}):
@@ -276,9 +282,7 @@ def check_pads(grid: Grid, pads: Sequence[PadShape], roads: Sequence[RoadShape] 
                 f"{west:.2f} to {east_end:.2f} east, {south:.2f} to {north_end:.2f} north. "
                 "Move it, or extend the surface"
             )
-    faults += _overlaps(grid, pads)
-    if faults:
-        raise GroundError("design: " + "\n  ".join(faults))
+    return faults + _overlaps(grid, pads)
 
 
 def _overlaps(grid: Grid, pads: Sequence[PadShape]) -> list[str]:

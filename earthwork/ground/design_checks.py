@@ -19,6 +19,9 @@ from earthwork.units import UnitSystem
 #: Steps lower than this are within what a grader leaves, and are not called walls [m].
 WALL_OVER_M = 0.05
 
+#: Pads with more cut or fill than this are believed to have a wrong elevation [m].
+FAR_M = 60.0
+
 _RULES = {
     "no-room-for-slope": "no slope fits between {names}: a wall of {height} would be needed at {place}. "
     "Move them apart, bring their grades together, or mark a retaining edge",
@@ -27,6 +30,8 @@ _RULES = {
     "slope-over-limits": "the {kind} slope of {names} runs over the limits: at {place} a wall of {height} would "
     "keep it inside",
     "retaining-wall": "the retaining edge of {names} holds up to {height} at {place}",
+    "far-from-ground": "{names} lies in {kind} of {height} at {place}; check that its elevation is in the site's unit and "
+    "vertical datum",
     "step-at-joint": "{names} meet with a step of {height} at {place}",
 }
 
@@ -35,8 +40,9 @@ _RULES = {
 class Finding:
     """One thing that a design cannot do as drawn.
 
-    ``code`` is no-room-for-slope, slope-off-data, slope-over-limits, retaining-wall or step-at-joint; ``kind`` is
-    "fill" or "cut" where it matters; ``height_m`` is the wall that would be needed, at its highest place.
+    ``code`` is no-room-for-slope, slope-off-data, slope-over-limits, retaining-wall, far-from-ground or step-at-joint;
+    ``kind`` is "fill" or "cut" where it matters; ``height_m`` is the wall that would be needed, at its highest place (the
+    depth of cut or fill where a pad is far from the ground).
     """
 
     code: str
@@ -133,9 +139,10 @@ class _Look:
         own = np.zeros(built.z.shape, bool)
         own[inner] = True
         sloped = own & ((built.kind == FILL_SLOPE) | (built.kind == CUT_SLOPE))
+        gap = np.abs(built.z - built.ground)
+        self._keep_worst("far-from-ground", built, own & (built.kind == INSIDE) & (gap > FAR_M), gap, x0, y0)
         if not sloped.any() and self.limits is None:
             return
-        gap = np.abs(built.z - built.ground)
         self._summarise(built, sloped, x0, y0)
         open_edge = sloped & _beside_nothing(built.z, window, self.design)
         self._keep_worst("slope-off-data", built, open_edge, gap, x0, y0)

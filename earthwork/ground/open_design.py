@@ -5,8 +5,8 @@ from __future__ import annotations
 import difflib
 import math
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
-from functools import cached_property
+from dataclasses import dataclass, replace
+from functools import cached_property, partial
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -15,7 +15,7 @@ from shapely.geometry import LineString
 
 from earthwork.errors import GroundError, Warning
 from earthwork.files.vectors import NamedLine, NamedPolygon, read_lines
-from earthwork.ground.design import Design, build_design
+from earthwork.ground.design import Design, build_design, pad_faults
 from earthwork.ground.design_checks import Inspection, inspect_design
 from earthwork.ground.design_lines import DesignLines, design_area, design_lines
 from earthwork.ground.elements import PadShape, RoadShape, SideSlope
@@ -29,6 +29,10 @@ if TYPE_CHECKING:
 
 Polygons = Callable[["AreaSpec", str, str | None], list[NamedPolygon]]
 
+#: Elevations that a pad can have [m]: from the deepest pits to the highest summits.
+_LOWEST_M, _HIGHEST_M = -1500.0, 9000.0
+#: Side slopes H:V; as for ``design.cut_slope``.
+_STEEPEST, _FLATTEST = 0.05, 100.0
 #: Falls over this are believed to be percent; a fall under 1 % of a percent to be a slip [%].
 _LEAST_FALL_PERCENT = 0.1
 
@@ -114,6 +118,9 @@ def open_design(
             model.retaining, site.directory, crs=grid.crs, what="design.retaining", warnings=warnings
         )
         retaining = shapely.union_all([line.geometry for line in found])
+    # A grade that is missing is among the faults already.
+    known = [pad if math.isfinite(pad.elevation_m) else replace(pad, elevation_m=0.0) for pad in pads]
+    faults += pad_faults(grid, known, roads)
     if faults:
         raise GroundError(f"{site.path or site.name}: design:\n  " + "\n  ".join(faults))
     mitred = model.corners == "mitred"
@@ -153,6 +160,10 @@ class _Attributes:
         return number
 
 
+def _between(value: float, low: float, high: float) -> bool:
+    return low <= value <= high
+
+
 def _as_number(value: Any) -> float | None:
     if value is None or isinstance(value, bool):
         return None
@@ -173,7 +184,9 @@ def _pads(site: Site, model: DesignModel, features: Sequence[NamedPolygon], faul
         if warped:
             polygon = _warped(feature, foot, faults)
         else:
-            elevation = read.number(model.elevation, "its elevation, a number", lambda v: True) * foot
+            rule = f"its elevation, {_LOWEST_M / foot:,.0f} to {_HIGHEST_M / foot:,.0f} {site.units.label('length')}"
+            possible = partial(_between, low=_LOWEST_M / foot, high=_HIGHEST_M / foot)
+            elevation = read.number(model.elevation, rule, possible) * foot
         fall = azimuth = 0.0
         if model.fall is not None and model.fall_direction is not None:
             rule = f"0, or a percentage from {_LEAST_FALL_PERCENT:g} to 50"
@@ -190,11 +203,12 @@ def _pads(site: Site, model: DesignModel, features: Sequence[NamedPolygon], faul
 
 def _slope(model: DesignModel, read: _Attributes | None) -> SideSlope:
     cut, fill = model.cut_slope, model.fill_slope
-    rule = "a ratio of run to height, more than 0 (2 for 2:1)"
+    rule = f"a ratio of run to height, {_STEEPEST:g} to {_FLATTEST:g} (2 for 2:1)"
+    possible = partial(_between, low=_STEEPEST, high=_FLATTEST)
     if read is not None and model.own_cut_slope is not None:
-        cut = read.number(model.own_cut_slope, rule, lambda v: v > 0, missing=cut)
+        cut = read.number(model.own_cut_slope, rule, possible, missing=cut)
     if read is not None and model.own_fill_slope is not None:
-        fill = read.number(model.own_fill_slope, rule, lambda v: v > 0, missing=fill)
+        fill = read.number(model.own_fill_slope, rule, possible, missing=fill)
     return SideSlope(cut, fill, model.bench_every, model.bench_width or 0.0)
 
 

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -20,6 +20,7 @@ from earthwork.plan.haul_moves import Move, moves_of
 from earthwork.plan.haul_places import Places, Sink, Source, middle_of, places_of
 from earthwork.plan.haul_plan import HaulPlan, plan_haul
 from earthwork.plan.haul_ways import HaulWays
+from earthwork.plan.keys import KeysTally, keys_left_out, keys_result
 from earthwork.plan.line_haul import LineHaul, LineTally, line_haul
 from earthwork.plan.relief import Relief
 from earthwork.plan.transport import Certificate
@@ -203,8 +204,13 @@ def haul(
     ground = open_site(site)
     counted = HaulTallies(site, ground)
     main = VolumesTally(ground)
-    walk(ground.stack, [main, *counted.all, *tallies], threads=threads, progress=progress)
-    return haul_result(site, cards, volumes_result(site, ground, main), counted, threads=threads)
+    keys = KeysTally(ground.stack.grid) if site.model.keys.count else None
+    walk(ground.stack, [main, *counted.all, *([keys] if keys else []), *tallies], threads=threads, progress=progress)
+    result = haul_result(site, cards, volumes_result(site, ground, main), counted, threads=threads)
+    if keys is None:
+        return result
+    dug = keys_result(keys, site.model.keys, cards, (), ground)
+    return replace(result, warnings=(*result.warnings, *keys_left_out(dug, "haul plan", site.units)))
 
 
 def haul_result(

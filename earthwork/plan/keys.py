@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import shapely
 
+from earthwork.errors import Warning
 from earthwork.ground.grid import Grid, Window
 from earthwork.quantities.tile import Tile
 
@@ -23,6 +24,7 @@ if TYPE_CHECKING:
     from earthwork.quantities.volumes import AreaVolumes
     from earthwork.site.model import Keys
     from earthwork.soils.card import SoilCard
+    from earthwork.units import UnitSystem
 
 #: Steepness is that of blocks about so wide, so that it is the ground's and not the survey's noise [m].
 _BLOCK_M = 5.0
@@ -180,7 +182,7 @@ def keys_result(
     for number in range(1, count + 1):
         here = labels == number
         area = np.where(here & steep, found.share, 0.0)
-        blocks, top = float(area.sum()), float(found.height[here].max())
+        blocks, top = float(area.sum()), float(found.height[here & steep].max(initial=0.0))
         if blocks * block_m2 < _LEAST_AREA_M2 or top < table.least_height - 1e-9:
             continue
         length = _toe_length_m(np.where(here, found.share, 0.0), found, steep, tally)
@@ -250,7 +252,35 @@ def _name(here: np.ndarray, tally: KeysTally, places: Sequence[PadPlace], number
 def _cost(volume: float, cards: dict[str, SoilCard], ground: SiteGround) -> float | None:
     """What digging and refilling a volume of the uppermost stratum takes from the balance [m³ compacted]."""
     names = [stratum.material for stratum in ground.stack.strata]
-    card = cards.get(names[0]) if names else None
-    if card is None or card.effective_factor is None:
-        return None if volume else 0.0
-    return volume * (1 - card.effective_factor)
+    return refill_cost_m3(volume, cards.get(names[0]) if names else None)
+
+
+def refill_cost_m3(volume_m3: float, card: SoilCard | None) -> float | None:
+    """What digging a volume and refilling it takes from the balance: V (1 − SF (1 − loss)) [m³ compacted].
+
+    All of it where what is dug is waste or topsoil, which is no fill; None where the soil is not known.
+    """
+    if volume_m3 == 0.0:
+        return 0.0
+    if card is None:
+        return None
+    factor = card.effective_factor if card.use in ("fill", "rock") else 0.0
+    return None if factor is None else volume_m3 * (1 - factor)
+
+
+def keys_left_out(keys: KeysResult, plan: str, units: UnitSystem) -> tuple[Warning, ...]:
+    """That a plan does not have the keys and benches that the balance counts; nothing where there are none."""
+    if not keys.counted or keys.volume_m3 == 0.0:
+        return ()
+
+    def shown(volume_m3: float) -> str:
+        return f"{units.from_si(volume_m3, 'soil_volume'):,.0f} {units.label('soil_volume')}"
+
+    message = (
+        f"keys: the balance counts {shown(keys.volume_m3)} of keys and benches, dug and refilled in place; they are not in "
+        f"the {plan}"
+    )
+    if keys.compacted_cost_m3:
+        message += f", which is short of the {shown(keys.compacted_cost_m3)} of compacted soil that they take"
+    message += ". Give them as an [[over_excavation]] where they are dug, and leave keys.count out"
+    return (Warning("keys-not-planned", message),)

@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 from earthwork.errors import PlanError, SiteFileError, Warning
 from earthwork.ground import areas
 from earthwork.ground.grid import Grid
-from earthwork.plan.keys import KeysResult, KeysTally, keys_result
+from earthwork.plan.keys import KeysResult, KeysTally, keys_result, refill_cost_m3
 from earthwork.plan.pad_measures import Steepest, differential_distance_m, steepest
 from earthwork.plan.pad_rules import NaturalGround, Screen, Shares, classes_that_hold, natural_ground
 from earthwork.plan.pad_slopes import SlopesBeside, slopes_beside
@@ -307,12 +307,7 @@ class _Judge:
 
     def _undercut(self, asked: float, thickness: PadField, natural: NaturalGround) -> Undercut:
         volume = thickness.below(asked) * self.grid.cell_area_m2
-        card = self.cards.get(natural.material or "")
-        cost = None
-        if card is not None:
-            factor = card.effective_factor if card.use in ("fill", "rock") else 0.0
-            cost = None if factor is None else volume * (1 - factor)
-        return Undercut(asked, volume, cost)
+        return Undercut(asked, volume, refill_cost_m3(volume, self.cards.get(natural.material or "")))
 
     def _warn_missing(self, place: PadPlace, sums: PadSums) -> None:
         missing = sums.missing * self.grid.cell_area_m2

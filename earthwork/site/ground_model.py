@@ -15,6 +15,7 @@ from earthwork.site.values import (
     Percent,
     Point,
     PositiveNumber,
+    SlopeRatio,
     SoilVolume,
     Text,
     Thickness,
@@ -121,8 +122,8 @@ class Design(Section):
     fall_direction: Text | None = Field(
         default=None, description="attribute with where it falls to, degrees clockwise from grid north"
     )
-    cut_slope: PositiveNumber = Field(description="horizontal run per unit of height, in cut")
-    fill_slope: PositiveNumber = Field(description="horizontal run per unit of height, in fill")
+    cut_slope: SlopeRatio = Field(description="horizontal run per unit of height, in cut")
+    fill_slope: SlopeRatio = Field(description="horizontal run per unit of height, in fill")
     own_cut_slope: Text | None = Field(default=None, description="attribute with a pad's own cut slope")
     own_fill_slope: Text | None = Field(default=None, description="attribute with a pad's own fill slope")
     corners: Literal["round", "mitred"] = Field(

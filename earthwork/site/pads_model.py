@@ -5,7 +5,7 @@ from __future__ import annotations
 from itertools import pairwise
 from typing import Annotated
 
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
 from earthwork.site.base import Area, Section
 from earthwork.site.values import (
@@ -121,6 +121,13 @@ class PadStep(Section):
 
     between: tuple[Text, Text] = Field(description="names of the two pads")
     greatest: Thickness = Field(description="greatest difference of their elevations")
+
+    @field_validator("between")
+    @classmethod
+    def _two(cls, names: tuple[str, str]) -> tuple[str, str]:
+        if names[0] == names[1]:
+            raise ValueError("name two pads that differ")
+        return names
 
 
 class PadMoves(Section):

@@ -159,4 +159,6 @@ Coordinate = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 Point = tuple[Coordinate, Coordinate]
 Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 PositiveNumber = Annotated[float, Field(strict=True, gt=0, allow_inf_nan=False)]
+#: H:V. A steeper face than the lowest is a wall, a flatter one than the highest a slip of the pen.
+SlopeRatio = Annotated[float, Field(strict=True, ge=0.05, le=100, allow_inf_nan=False)]
 NotNegative = Annotated[float, Field(strict=True, ge=0, allow_inf_nan=False)]

@@ -146,6 +146,14 @@ def test_what_cannot_be_built_is_a_warning(site):
     assert 'the fill slope of "A" does not meet the ground inside the data' in warning.message
 
 
+def test_a_grade_in_feet_on_a_metric_site_is_a_warning(site):
+    # 100 m of ground, and 103 m written as 337.93 ft.
+    result = earthwork.volumes(site([box(70, 70, 90, 90)], pad=["A"], grade=[337.93]))
+    (warning,) = [w for w in result.warnings if w.code == "far-from-ground"]
+    assert '"A" lies in fill of 237.93 m' in warning.message
+    assert "check that its elevation is in the site's unit" in warning.message
+
+
 @pytest.mark.parametrize(
     ("pads", "columns", "design", "message"),
     [
@@ -156,7 +164,13 @@ def test_what_cannot_be_built_is_a_warning(site):
          r'pads "A" and "B" overlap by 600 m²'),
         ([PAD, box(10, 10, 20, 20)], {"pad": ["A", "A"], "grade": [103.0, 103.0]}, "", r'the name "A" is given 2 times'),
         ([PAD], {"pad": ["A"], "grade": [103.0], "s": [0.0]}, 'own_cut_slope = "s"',
-         r'pad "A": s is 0; it must be a ratio of run to height, more than 0'),
+         r'pad "A": s is 0; it must be a ratio of run to height, 0.05 to 100'),
+        ([PAD], {"pad": ["A"], "grade": [103.0], "s": [1e9]}, 'own_cut_slope = "s"',
+         r'pad "A": s is 1e\+09; it must be a ratio'),
+        ([PAD], {"pad": ["A"], "grade": [1e300]}, "",
+         r'pad "A": grade is 1e\+300; it must be its elevation, -1,500 to 9,000 m'),
+        ([PAD, box(100, 60, 140, 80)], {"pad": ["A", "A"], "grade": [math.nan, 103.0]}, "",
+         r'(?s)site\.toml: design:.*grade is empty.*given 2 times.*overlap by 600 m²'),
         ([PAD], {"pad": ["A"], "grade": [103.0], "f": [0.02], "to": [90.0]}, 'fall = "f"\nfall_direction = "to"',
          r'pad "A": f is 0\.02; it must be 0, or a percentage from 0\.1 to 50'),
         ([PAD], {"pad": ["A"], "grade": [103.0]}, 'elevation_from = "vertices"',
@@ -184,11 +198,12 @@ def test_bad_design_sections(site, design, message):
         site([PAD], pad=["A"], grade=[103.0], design=design)
 
 
-def test_a_slope_ratio_of_zero_is_refused(site, tmp_path):
+@pytest.mark.parametrize("ratio", ["0", "-2", "1e-9", "1e9"])
+def test_a_slope_ratio_of_zero_or_out_of_all_reason_is_refused(site, tmp_path, ratio):
     site([PAD], pad=["A"], grade=[103.0])
     path = tmp_path / "site.toml"
-    path.write_text(path.read_text().replace("cut_slope = 2.0", "cut_slope = 0"))
-    with pytest.raises(SiteFileError, match=r"design\.cut_slope = 0: it must be"):
+    path.write_text(path.read_text().replace("cut_slope = 2.0", f"cut_slope = {ratio}"))
+    with pytest.raises(SiteFileError, match=r"design\.cut_slope = .*: it must be"):
         earthwork.Site.open(path)
 
 

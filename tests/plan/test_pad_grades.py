@@ -202,6 +202,7 @@ def test_impossible_moves_are_named(designed, moves, message):
         ("range = [1.0, -1.0]", r"give the lower end of range first"),
         ('groups = [["west"], ["west"]]', r'give pad "west" in one group only'),
         ('[[balance.pad_moves.limit]]\npad = "west"\nlowest = 110\nhighest = 100', r"give a lowest under the highest"),
+        ('[[balance.pad_moves.step]]\nbetween = ["west", "west"]\ngreatest = 1', r"name two pads that differ"),
     ],
 )
 def test_bad_moves(designed, moves, message):
@@ -240,3 +241,8 @@ def test_keys_are_counted_where_the_site_asks(site, tmp_path):  # noqa: F811
     assert lost == pytest.approx(counted.keys.compacted_cost_m3)
     assert counted.to_dict()["ledger_closure_t"] == pytest.approx(0, abs=1e-6)
     assert counted.volumes.total.over_excavation_m3 == plain.volumes.total.over_excavation_m3
+    pit = '[haul]\n[[borrow]]\nname = "pit"\nat = [500300.0, 4400050.0]\nmaterial = "silt"\ncapacity = 50000\nprice = 3\n'
+    path.write_text(path.read_text() + pit)
+    (warning,) = [w for w in earthwork.haul(path).warnings if w.code == "keys-not-planned"]
+    assert f"{volume:,.0f} m³ of keys and benches" in warning.message
+    assert f"{counted.keys.compacted_cost_m3:,.0f} m³ of compacted soil" in warning.message

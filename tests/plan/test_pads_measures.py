@@ -12,7 +12,7 @@ from shapely.geometry import box
 from earthwork.ground.areas import rings_on
 from earthwork.ground.grid import Grid
 from earthwork.ground.stack import ExcavationLayer
-from earthwork.plan.keys import KeysTally, bench_depth_m, key_area_m2, keys_result
+from earthwork.plan.keys import KeysTally, bench_depth_m, key_area_m2, keys_result, refill_cost_m3
 from earthwork.plan.pad_measures import differential_distance_m, steepest
 from earthwork.plan.pad_rules import Shares, classes_that_hold
 from earthwork.plan.pad_slopes import slopes_beside
@@ -320,6 +320,27 @@ def test_rules_for_steep_ground_and_height(gradient, top, listed):
     here = (east > 60) & (east < 100)
     finished[50:150][here[50:150]] += top
     assert bool(keys_of(existing, finished).fills) is listed
+
+
+def test_height_is_that_of_the_fill_on_steep_ground():
+    # 1:4 up to 60 east, level from there on: 1 m of fill on the slope runs into 3 m on the level.
+    existing, east = hillside(0.25)
+    existing = np.minimum(existing, 15.0)
+    finished = existing.copy()
+    finished[50:150] = (existing + np.where((east > 20) & (east < 55), 1.0, 0.0))[50:150]
+    finished[50:150] += np.where((east > 70) & (east < 100), 3.0, 0.0)[50:150]
+    finished[50:150] += np.where((east >= 55) & (east <= 70), 0.5, 0.0)[50:150]
+    assert keys_of(existing, finished).fills == ()
+    assert len(keys_of(existing, finished, least_height=0.9).fills) == 1
+
+
+def test_what_refilling_costs():
+    soil = {"effective_factor": 0.8}
+    assert refill_cost_m3(50.0, SimpleNamespace(use="fill", **soil)) == pytest.approx(10.0)
+    # Waste is dug and taken away: all of the refill is missing.
+    assert refill_cost_m3(50.0, SimpleNamespace(use="waste", **soil)) == 50.0
+    assert refill_cost_m3(50.0, None) is None
+    assert refill_cost_m3(0.0, None) == 0.0
 
 
 def test_survey_noise_makes_no_steep_ground():

@@ -89,6 +89,16 @@ def make_site(directory: Path, soil: str = SOIL) -> Path:
     return site
 
 
+def write_pads(path: Path, names: list[str], grades: list[float]) -> None:
+    """The two pads of :func:`make_site` with names and grades, for a ``[design]``."""
+    shapes = [shapely.box(512010, 4461020, 512030, 4461040), shapely.box(512045, 4461020, 512060, 4461040)]
+    pyogrio.raw.write(
+        path, geometry=shapely.to_wkb(np.array(shapes, dtype=object)), fields=["pad", "grade"],
+        field_data=[np.array(names, dtype=object), np.array(grades)], driver="GPKG", geometry_type="Polygon",
+        crs="EPSG:32614",
+    )  # fmt: skip
+
+
 @pytest.fixture(scope="session")
 def hostile_site(tmp_path_factory):
     return make_site(tmp_path_factory.mktemp("hostile"))

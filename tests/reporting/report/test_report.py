@@ -12,6 +12,7 @@ import sys
 import time
 import tomllib
 from pathlib import Path
+from types import SimpleNamespace
 
 import openpyxl
 import pytest
@@ -20,8 +21,9 @@ import earthwork
 from earthwork.errors import OutputError
 from earthwork.files.report_folder import MANIFEST, find_mixed
 from earthwork.quantities.one_pass import OnePass
+from earthwork.reporting.report import answers
 from earthwork.reporting.report.groups import GROUPS, chosen_groups, group_of
-from tests.reporting.report.conftest import HOSTILE, SAMPLES, SOIL, make_site
+from tests.reporting.report.conftest import HOSTILE, SAMPLES, SOIL, make_site, write_pads
 
 
 def names(directory: Path) -> set[str]:
@@ -134,6 +136,40 @@ class Page(html.parser.HTMLParser):
 @pytest.fixture(scope="module")
 def page(sample):
     return Page((sample.directory / "report.html").read_text())
+
+
+def test_a_designed_site_has_its_lines_in_the_report(tmp_path):
+    site = make_site(tmp_path)
+    write_pads(tmp_path / "pads.gpkg", ["level", "high"], [101.0, 102.4])
+    text = site.read_text(encoding="utf-8").replace('finished = "finished.tif"\n', "")
+    design = '[design]\npads = "pads.gpkg"\nname = "pad"\nelevation = "grade"\nelevation_is = "subgrade"\n'
+    site.write_text(f"{text}{design}cut_slope = 2\nfill_slope = 2\n", encoding="utf-8")
+    result = earthwork.report(site, out=tmp_path / "report")
+    assert {"volumes_design.dxf", "volumes_design.gpkg"} <= {p.name for p in (tmp_path / "report").iterdir()}
+    assert group_of("volumes_design.dxf") == "gis"
+    assert result is not None
+
+
+def pad_document(name, flags, *, material="silt", ground=()):
+    rows = [{"material": material, "share_percent": 100.0, "flags": list(ground)}]
+    return {"pad": name, "flags": flags, "natural_ground": {"material": material, "flags": list(ground), "materials": rows}}
+
+
+def test_only_pads_with_something_to_look_at_are_flagged():
+    pads = [
+        pad_document("A", ["fill"]),
+        pad_document("B", ["cut"]),
+        pad_document("C", ["fill", "transition mended"]),
+        pad_document("D", ["deep fill", "fill", "differential fill"]),
+        pad_document("E", ["cut"], material="loess", ground=("collapse",)),
+    ]
+    parts = SimpleNamespace(documents={"pads": {"pads": pads}})
+    answer = answers._pads(parts)
+    assert (answer.value, answer.mark) == ("2 of 5", "look")
+    assert answer.note == "D: deep fill, differential fill; E: on loess: collapse"
+    assert answers.summary(parts)["pads_flagged"] == ["D", "E"]
+    parts.documents["pads"]["pads"] = pads[:3]
+    assert (answers._pads(parts).value, answers._pads(parts).mark) == ("0 of 3", "good")
 
 
 def test_the_answer_box_comes_first_with_the_figures_of_the_balance(page, sample):
