@@ -205,8 +205,7 @@ class _Builder:
         """Centre of mass of an amount with its moments."""
         return self.areas.frame.of_cells(moments[1] / moments[0], moments[2] / moments[0])
 
-    # --- lumps and places
-    # ----------------------------------------------------------------------------------------------
+    # --- lumps and places ----------------------------------------------------------------------------------------
 
     def _allowances(self) -> None:
         """Soil that no surface shows; without a place it lies in the middle of the cut."""

@@ -12,6 +12,7 @@ from earthwork.plan import phases
 from earthwork.plan.haul_costs import HaulCosts
 from earthwork.plan.haul_errors import no_way_error, shortage_error, surplus_error
 from earthwork.plan.haul_places import Places, Sink, Source
+from earthwork.plan.stockpiles import PileProblem, solve_with_piles
 from earthwork.plan.transport import TransportPlan, solve_transport
 from earthwork.plan.transport_costs import Costs
 from earthwork.plan.transport_cut import TransportInfeasible
@@ -22,6 +23,8 @@ Array = np.ndarray
 _MANY_PAIRS = 4_000_000
 #: Pairs whose ways are measured one by one; each takes some tens of bytes.
 _MOST_PAIRS = 25_000_000
+#: Pairs whose straight distances are worked out on the way: a pass over them takes seconds.
+_MOST_STRAIGHT = 1_000_000_000
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -72,14 +75,13 @@ class _Planner:
         self.weight = self._weights()
 
     def plan(self) -> HaulPlan:
-        transport, opened = self._with_openings()
+        transport, pile, opened = self._with_openings()
         fees = sum(place.opening for place in self.every if place.name in opened)
         return HaulPlan(
-            transport=transport, legs=tuple(self._legs(transport)), cost=transport.cost + fees, opened=opened
+            transport=transport, legs=tuple(self._legs(transport, pile)), cost=transport.cost + fees, opened=opened
         )
 
-    # --- the problem
-    # ---------------------------------------------------------------------------------------------------
+    # --- the problem ---------------------------------------------------------------------------------------------
 
     def _classes(self) -> tuple[Array, Array, Array, Array]:
         """Prices by class of source and of sink, the classes, and the scale of each sink.
@@ -124,44 +126,40 @@ class _Planner:
         n, m = len(row_class), len(column_class)
         areas, haul = costs.ways.areas, costs.haul
         open_ground = not areas.barriers and not areas.roads and not areas.built
-        if (
-            n * m > _MANY_PAIRS
-            and (haul.distance == "straight" or open_ground)
-            and not costs.by_time
-            and not areas.phases
-        ):
-            factor = haul.straight_factor if haul.distance == "straight" else 1.0
-            rate = costs.price("") * factor
-            return Costs(
-                rate=np.full(n, rate), way=np.ones(m), table=table, row_class=row_class, column_class=column_class,
-                row_place=costs.from_place, column_place=costs.to_place,
-            )  # fmt: skip
-        if n * m > _MOST_PAIRS:
+        straight = (haul.distance == "straight" or open_ground) and not costs.by_time and not areas.phases
+        most = _MOST_STRAIGHT if straight else _MOST_PAIRS
+        if n * m > most:
             raise PlanError(
-                f"haul: {n:,} sources and {m:,} sinks make {n * m / 1e6:,.0f} million ways to measure; the most is "
-                f'{_MOST_PAIRS / 1e6:,.0f} million. Make haul.block larger, or take distance = "straight"'
+                f"haul: {n:,} sources and {m:,} sinks make {n * m / 1e6:,.0f} million possible moves; the most is "
+                f"{most / 1e6:,.0f} million. Make haul.block larger"
+                + ("" if straight else ', or take distance = "straight"')
             )
+        if straight and n * m > _MANY_PAIRS:
+            factor = haul.straight_factor if haul.distance == "straight" else 1.0
+            return Costs(
+                rate=np.full(n, costs.price("") * factor), way=np.ones(m), table=table, row_class=row_class,
+                column_class=column_class, row_place=costs.from_place, column_place=costs.to_place,
+            )  # fmt: skip
         return Costs(
             rate=np.ones(n), way=np.ones(m), table=table, row_class=row_class, column_class=column_class,
             distance=costs.per_kg(),
         )  # fmt: skip
 
-    # --- solving
-    # -------------------------------------------------------------------------------------------------------
+    # --- solving -------------------------------------------------------------------------------------------------
 
-    def _with_openings(self) -> tuple[TransportPlan, tuple[str, ...]]:
+    def _with_openings(self) -> tuple[TransportPlan, Array, tuple[str, ...]]:
         """The cheapest plan with what places cost to be used at all: branch and bound over those places.
 
         A plan in which undecided places are free to open bounds what any choice of them costs.
         """
         fee = {place.name: place.opening for place in self.every if place.opening > 0}
-        best: tuple[float, TransportPlan, tuple[str, ...]] | None = None
+        best: tuple[float, TransportPlan, Array, tuple[str, ...]] | None = None
         failure: PlanError | None = None
         waiting: list[tuple[frozenset[str], frozenset[str]]] = [(frozenset(), frozenset())]
         while waiting:
             opened, closed = waiting.pop()
             try:
-                plan = self._solve(closed)
+                plan, pile = self._solve(closed)
             except PlanError as error:
                 failure = failure or error
                 continue
@@ -170,7 +168,7 @@ class _Planner:
             used = self._used(plan) & fee.keys()
             total = plan.cost + sum(fee[name] for name in used)
             if best is None or total < best[0]:
-                best = total, plan, tuple(name for name in fee if name in used)
+                best = total, plan, pile, tuple(name for name in fee if name in used)
             undecided = used - opened
             if undecided:
                 name = max(undecided, key=lambda n: (fee[n], n))
@@ -178,23 +176,41 @@ class _Planner:
         if best is None:
             assert failure is not None
             raise failure
-        return best[1], best[2]
+        return best[1:]
 
     def _used(self, plan: TransportPlan) -> set[str]:
         return {self.places.sources[i].name for i in plan.rows} | {self.places.sinks[j].name for j in plan.columns}
 
-    def _solve(self, closed: frozenset[str]) -> TransportPlan:
+    def _solve(self, closed: frozenset[str]) -> tuple[TransportPlan, Array]:
+        """The cheapest plan without some places, and the stockpile of each of its moves that waits."""
         sources, sinks = self.places.sources, self.places.sinks
         supply = np.array([0.0 if s.name in closed else s.mass_kg for s in sources])
         need = np.array([0.0 if s.name in closed else s.volume_m3 for s in sinks]) / self.scale
+        spare_rows = np.array([s.spare for s in sources], bool)
+        spare_columns = np.array([s.spare for s in sinks], bool)
         try:
             plan = solve_transport(
-                supply, need, self.moves, weight=self.weight, spare_rows=np.array([s.spare for s in sources], bool),
-                spare_columns=np.array([s.spare for s in sinks], bool),
-            )  # fmt: skip
+                supply, need, self.moves, weight=self.weight, spare_rows=spare_rows, spare_columns=spare_columns
+            )
         except TransportInfeasible as error:
             raise self._explained(error) from None
-        return replace(plan, unfilled=plan.unfilled * self.scale, column_marginal=plan.column_marginal / self.scale)
+        pile = self._pile_of(plan)
+        overfull = self._overfull(plan, pile)
+        if overfull is not None:
+            problem = PileProblem(self.costs, self.moves, self.weight, supply, need, spare_rows, spare_columns)
+            solved = solve_with_piles(problem)
+            if solved is None:
+                raise overfull
+            plan, pile = solved
+        plan = replace(plan, unfilled=plan.unfilled * self.scale, column_marginal=plan.column_marginal / self.scale)
+        return plan, pile
+
+    def _pile_of(self, plan: TransportPlan) -> Array:
+        """The cheapest stockpile of each move; it counts for moves that wait only."""
+        waiting = phases.waits(self.costs.dug[plan.rows], self.costs.filled[plan.columns])
+        if not waiting.any():
+            return np.zeros(len(plan.rows), np.int64)
+        return self.costs.rounds().pile[plan.rows, plan.columns]
 
     def _explained(self, error: TransportInfeasible) -> PlanError:
         """What lacks what, by name, and by how much."""
@@ -223,16 +239,12 @@ class _Planner:
                 return no_way_error(names, out=axis == 1)
         return None
 
-    # --- legs
-    # ----------------------------------------------------------------------------------------------------------
+    # --- legs ----------------------------------------------------------------------------------------------------
 
-    def _legs(self, plan: TransportPlan) -> list[Leg]:
+    def _legs(self, plan: TransportPlan, pile: Array) -> list[Leg]:
         """The hauls of a plan; those of a material between the same places in a phase are one."""
-        costs = self.costs
-        dug, filled = costs.dug[plan.rows], costs.filled[plan.columns]
+        dug, filled = self.costs.dug[plan.rows], self.costs.filled[plan.columns]
         phase, waiting = phases.hauled_in(dug, filled), phases.waits(dug, filled)
-        pile = costs.rounds().pile[plan.rows, plan.columns] if waiting.any() else np.zeros(len(phase), np.int64)
-        self._check_piles(plan, waiting, pile)
         legs: dict[tuple, Leg] = {}
         for k, (i, j) in enumerate(zip(plan.rows.tolist(), plan.columns.tolist(), strict=True)):
             source, sink = self.places.sources[i], self.places.sinks[j]
@@ -255,26 +267,31 @@ class _Planner:
             replace(whole, start=(east, north), from_name=name, pile=pile),
         ]
 
-    def _check_piles(self, plan: TransportPlan, waiting: Array, pile: Array) -> None:
-        """Refuse a plan that heaps more on a stockpile than it holds."""
+    def _overfull(self, plan: TransportPlan, pile: Array) -> PlanError | None:
+        """What to say of a plan that heaps more on a stockpile than it holds; None where none does."""
+        costs, i, j = self.costs, plan.rows, plan.columns
+        waiting = phases.waits(costs.dug[i], costs.filled[j])
         if not waiting.any():
-            return
-        costs = self.costs
-        i, j = plan.rows[waiting], plan.columns[waiting]
+            return None
         density = np.array([costs.cards[s.material].loose_dry_density_kg_m3 for s in self.places.sources])
-        count = len(costs.ways.areas.phases)
+        count, loose = len(costs.ways.areas.phases), plan.amounts / density[i]
         held = phases.stored(
-            pile[waiting], costs.dug[i], costs.filled[j], plan.amounts[waiting] / density[i], len(costs.piles), count
+            pile[waiting], costs.dug[i[waiting]], costs.filled[j[waiting]], loose[waiting], len(costs.piles), count
         )
         unit, label = costs.ways.units.factor("soil_volume"), costs.ways.units.label("soil_volume")
         for site, volumes in zip(costs.piles, held, strict=True):
-            worst = int(volumes.argmax())
+            stays = np.array([s.name == site.name for s in self.places.sinks], bool)[j]
+            volumes = volumes + np.cumsum(np.bincount(np.maximum(costs.dug[i[stays]], 0), loose[stays], count))
+            worst = int(volumes[:-1].argmax())
             if site.capacity is not None and volumes[worst] > site.capacity * (1 + 1e-9):
-                raise PlanError(
+                return PlanError(
                     f'haul: stockpile "{site.name}" would hold {volumes[worst] / unit:,.0f} {label} (loose) after phase '
-                    f"{costs.ways.areas.phases[worst]}; its capacity is {site.capacity / unit:,.0f} {label}, too small by "
-                    f"{(volumes[worst] - site.capacity) / unit:,.0f}. Raise it, or add a [[stockpile]]"
+                    f"{costs.ways.areas.phases[worst]}, and no other plan spares it enough: its capacity of "
+                    f"{site.capacity / unit:,.0f} {label} is too small by up to "
+                    f"{(volumes[worst] - site.capacity) / unit:,.0f}. "
+                    "Raise it, or add a [[stockpile]] or a [[borrow]]"
                 )
+        return None
 
 
 def _ratio(sink: Sink, other: Sink) -> float | None:

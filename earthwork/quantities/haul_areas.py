@@ -24,6 +24,10 @@ from earthwork.site import Site
 from earthwork.site.model import AreaSpec
 
 
+#: Squares that a site may be divided into.
+_MOST_SQUARES = 250_000
+
+
 @dataclass(frozen=True)
 class Frame:
     """Metres on the ground, east and north of the grid's north-west corner; north is negative on the grid."""
@@ -125,9 +129,11 @@ class _Opener:
             PartRule(rule.top, rule.measured_from, self._rings(rule.area, f'haul.rule "{rule.name}"'))
             for rule in (haul.rule if haul else ())
         )
+        rows, columns = (max(1, round(block / side)) for side in (self.grid.cell_north_m, self.grid.cell_east_m))
+        self._check_count(rows, columns)
         layout = BlockLayout(
-            rows=max(1, round(block / self.grid.cell_north_m)),
-            columns=max(1, round(block / self.grid.cell_east_m)),
+            rows=rows,
+            columns=columns,
             regions=areas.rings_on(self.grid, shapes) if shapes else None,
             divided=tuple(divided),
             rules=rules,
@@ -146,6 +152,19 @@ class _Opener:
         )
 
     # --- blocks ------------------------------------------------------------------------------------------------------
+
+    def _check_count(self, rows: int, columns: int) -> None:
+        """Refuse a division into more squares than a plan can hold."""
+        count = -(-self.grid.rows // rows) * -(-self.grid.columns // columns)
+        if count > _MOST_SQUARES:
+            units = self.site.units
+            side = (self.grid.rows * self.grid.columns * self.grid.cell_area_m2 / _MOST_SQUARES) ** 0.5
+            block = self.site.model.haul.block if self.site.model.haul else 50.0
+            raise SiteFileError(
+                f"{self.site.path or self.site.name}: haul.block = {units.from_si(block, 'length'):g} "
+                f"{units.label('length')}: it makes {count:,} blocks; the most is {_MOST_SQUARES:,}. "
+                f"Take {units.from_si(side, 'length'):.2g} {units.label('length')} or more"
+            )
 
     def _regions(self, phases: list[Any]) -> tuple[list[str | None], list[Any], list[int], list[bool]]:
         """Names, shapes, phases of the regions, and whether squares divide them: whole areas, cut by phases."""

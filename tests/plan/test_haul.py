@@ -456,9 +456,66 @@ def test_a_stockpile_that_is_too_small_is_named(make_haul, tmp_path):
     pile = {"name": "heap", "at": at(25.0, 10.0), "capacity": 100.0}
     tip = {"name": "tip", "at": at(5.0, 60.0)}
     with pytest.raises(
-        PlanError, match=r'stockpile "heap" would hold 141 m³ \(loose\) after phase 1; .* too small by 41'
+        PlanError,
+        match=r'stockpile "heap" would hold 141 m³ \(loose\) after phase 1, .* capacity of 100 m³ is too small by up to 41',
     ):
         haul(phased(make_haul, tmp_path, 1, 2, stockpile=[pile], disposal=[tip]))
+
+
+def test_earth_that_a_stockpile_has_no_room_for_goes_elsewhere(make_haul, tmp_path):
+    # 180 t of fill are 140.6 loose m³; the near heap holds 100 (128 t), 52 t go over the far one.
+    near = {"name": "near", "at": at(25.0, 10.0), "capacity": 100.0, "rehandling": 1.5}
+    far = {"name": "far", "at": at(25.0, 110.0), "rehandling": 1.5}
+    tip = {"name": "tip", "at": at(5.0, 60.0)}
+    result = haul(phased(make_haul, tmp_path, 1, 2, stockpile=[near, far], disposal=[tip]))
+    moves = moved(result)
+    assert moves["A1 phase 1 loess", "near"].dry_mass_t == pytest.approx(128)
+    assert moves["far", "B1 phase 2 fill"].dry_mass_t == pytest.approx(52)
+    assert moves["A1 phase 1 loess", "tip"].dry_mass_t == pytest.approx(140)
+    over_near = 128 * (0.020 + 0.010) + 100 * 1.5
+    over_far = 52 * 2 * 0.0 + 52 * (np.hypot(20, 100) + np.hypot(10, 100)) / 1000 + 52 / 1.28 * 1.5
+    assert result.cost == pytest.approx(over_near + over_far + 140 * 0.050)
+    assert "stockpiles" in result.certificate.method
+    assert result.certificate.relative_gap <= 1e-8
+
+
+def test_a_pit_helps_out_where_a_stockpile_has_no_room(make_haul, tmp_path):
+    heap = {"name": "heap", "at": at(25.0, 10.0), "capacity": 100.0}
+    pit = {"name": "pit", "at": at(35.0, 510.0), "material": "loess", "price": 5.0}
+    tip = {"name": "tip", "at": at(5.0, 60.0)}
+    moves = moved(haul(phased(make_haul, tmp_path, 1, 2, stockpile=[heap], disposal=[tip], borrow=[pit])))
+    assert moves["pit", "B1 phase 2 fill"].dry_mass_t == pytest.approx(52)
+    assert moves["A1 phase 1 loess", "tip"].dry_mass_t == pytest.approx(192)
+
+
+def test_a_stockpile_is_used_again_when_it_is_empty(make_haul, tmp_path):
+    # Three phases in a row from west to east: cut, cut, fill … the heap is filled after 1, emptied in 2, filled again.
+    finished = flat(20, 60)
+    finished[:, :10] -= 0.5  # phase 1: 160 t
+    finished[:, 20:30] += 0.4  # phase 2: 144 t of fill
+    finished[:, 30:40] -= 0.6  # phase 2: 192 t, which serve it at once
+    finished[:, 50:] += 0.6  # phase 3: 216 t
+    thirds = [shapely.box(0, 0, 20, 20), shapely.box(20, 0, 40, 20), shapely.box(40, 0, 60, 20)]
+    write_shapes(tmp_path / "plan.gpkg", "phases", thirds, phase=[1, 2, 3])
+    heap = {"name": "heap", "at": at(30.0, 30.0), "capacity": 130.0}
+    site = make_haul(
+        flat(20, 60), finished, phases={"area": {"file": "plan.gpkg", "layer": "phases"}}, stockpile=[heap],
+        disposal=[{"name": "tip", "at": at(30.0, 90.0)}], haul={"block": 10.0},
+        borrow=[{"name": "pit", "at": at(55.0, 300.0), "material": "loess", "price": 9.0}],
+    )  # fmt: skip
+    result = haul(site)
+    loose, order = {}, {"1": 0, "2": 1, "3": 2}
+    for m in result.moves:
+        if m.to_name == "heap":
+            for t in range(order[m.phase], 3):
+                loose[t] = loose.get(t, 0.0) + m.loose_m3
+        if m.from_name == "heap":
+            for t in range(order[m.phase], 3):
+                loose[t] = loose.get(t, 0.0) - m.loose_m3
+    assert loose[0] <= 130 * (1 + 1e-9)
+    assert loose[1] <= 130 * (1 + 1e-9)
+    assert loose[2] == pytest.approx(0, abs=1e-6)
+    assert sum(m.compacted_m3 for m in result.moves if m.to_name.endswith("fill")) == pytest.approx(200)
 
 
 def test_pads_already_built_are_barriers_for_later_phases(make_haul, tmp_path):
@@ -690,6 +747,20 @@ def test_phases_without_an_order(make_haul, tmp_path):
 def test_rules_of_the_site_file(make_haul, tables, message):
     with pytest.raises(SiteFileError, match=message):
         make_haul(*cut_and_fill(), **tables)
+
+
+def test_too_many_blocks(make_haul, monkeypatch):
+    monkeypatch.setattr("earthwork.quantities.haul_areas._MOST_SQUARES", 100)
+    with pytest.raises(
+        SiteFileError, match=r"haul.block = 1 m: it makes 800 blocks; the most is 100. Take 2.8 m or more"
+    ):
+        haul(make_haul(*cut_and_fill(), haul={"block": 1.0}))
+
+
+def test_too_many_moves(make_haul, monkeypatch):
+    monkeypatch.setattr("earthwork.plan.haul_plan._MOST_STRAIGHT", 5)
+    with pytest.raises(PlanError, match="8 sources and 9 sinks make 0 million possible moves"):
+        haul(make_haul(*cut_and_fill(), haul={"block": 5.0}))
 
 
 def test_a_site_without_haul(make_site):
