@@ -24,7 +24,7 @@ _NODATA = -9999.0
 #: With less room than this on the disk, a file that is cut off was cut off by it.
 _FULL_BYTES = 200_000
 #: Unfinished blocks kept in memory; beyond it the fullest go to the file and are completed there.
-_PENDING_BYTES = 128_000_000
+_PENDING_BYTES = 48_000_000
 
 
 class DepthRasterWriter:
@@ -51,7 +51,7 @@ class DepthRasterWriter:
         self._pending: dict[tuple[int, int], tuple[np.ndarray, int]] = {}
         self._early: dict[tuple[int, int], int] = {}
         self._most = max(8, _PENDING_BYTES // (_BLOCK * _BLOCK * 4))
-        self._env = rasterio.Env(GDAL_CACHEMAX=64_000_000, GTIFF_SRS_SOURCE="EPSG")
+        self._env = rasterio.Env(GDAL_CACHEMAX=32_000_000, GTIFF_SRS_SOURCE="EPSG")
         self._path = path
         with self._env:
             self._file = rasterio.open(
@@ -137,7 +137,7 @@ class DepthRasterWriter:
         with (
             _write_errors(self._path),
             rasterio.Env(
-                GDAL_CACHEMAX=64_000_000,
+                GDAL_CACHEMAX=32_000_000,
                 COMPRESS_OVERVIEW="DEFLATE",
                 PREDICTOR_OVERVIEW="3",
                 GDAL_TIFF_OVR_BLOCKSIZE=str(_BLOCK),

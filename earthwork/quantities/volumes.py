@@ -390,7 +390,7 @@ def volumes_result(site: Site, ground: SiteGround, tally: VolumesTally) -> Volum
     if zones:
         outside_missing = max(missing - sum(lost), 0.0)
         outside = area_volumes(ground, tally.outside, None, outside_missing if outside_missing > 1e-6 else 0.0)
-    warnings = (*ground.warnings, *_missing_warning(site, ground, tally, missing))
+    warnings = (*ground.warnings, *_missing_warning(site, ground, tally, missing), *_idle_warning(total))
     return VolumesResult(
         units=site.units, warnings=warnings, total=total, zones=zones, outside_zones=outside, ground=ground
     )
@@ -402,6 +402,18 @@ def _zone_lost(ground: SiteGround, tally: VolumesTally, zone: int) -> float:
     counted = float(tally.zones[zone].values[0]) * ground.stack.grid.cell_area_m2 if zone in tally.zones else 0.0
     lost = area - counted
     return lost if lost > 1e-9 * max(area, 1.0) else 0.0
+
+
+def _idle_warning(total: AreaVolumes) -> list[Warning]:
+    """Nothing to move is rarely meant: the same file was given twice, or a band, say."""
+    if total.cut_m3 or total.fill_m3 or total.over_excavation_m3 or total.strip_m3:
+        return []
+    return [
+        Warning(
+            "nothing-to-move",
+            "existing ground and subgrade are the same everywhere; check that the two surfaces are the right files",
+        )
+    ]
 
 
 def _missing_warning(site: Site, ground: SiteGround, tally: VolumesTally, missing_m2: float) -> list[Warning]:

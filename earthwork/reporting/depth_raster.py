@@ -25,6 +25,8 @@ class DepthRasterTally:
 
     description = DESCRIPTION
 
+    portable = False  #: all instances write into one file, so they stay on one machine
+
     def __init__(self, path: Path, units: UnitSystem) -> None:
         self.path = path
         self.units = units

@@ -279,3 +279,9 @@ def test_error_of_the_survey_is_never_that_of_noise_alone(make_site, survey, kno
     # Half the site is cut: 5000 m². Noise 0.05 · √5000 = 3.54 m³, bias 0.01 · 5000 = 50 m³.
     assert error["cut_sd_m3"] == (pytest.approx((12.5 + 2500) ** 0.5) if known else None)
     assert error["false_cut_m3"] == 0  # all is disturbed
+
+
+def test_two_surfaces_that_are_the_same_are_told(make_site):
+    level = np.full((5, 5), 10.0)
+    assert "nothing-to-move" in [w.code for w in earthwork.volumes(make_site(level, level)).warnings]
+    assert "nothing-to-move" not in [w.code for w in earthwork.volumes(make_site(level, level + 1)).warnings]
