@@ -20,6 +20,7 @@ from earthwork.quantities.site_ground import SiteGround
 from earthwork.quantities.stations import Baseline, SectionTally, StationTally
 from earthwork.quantities.tile import Tile
 from earthwork.site import Site
+from earthwork.site.model import SiteModel
 from earthwork.soils.card import SoilCard
 from earthwork.units import UnitSystem
 
@@ -147,6 +148,37 @@ def line_haul(site: Site, cards: dict[str, SoilCard], tally: LineTally) -> LineH
     """
     spec, model, stations = site.model.baseline, site.model, tally.stations
     assert spec is not None
+    curve, cut, fill = _curve(model, cards, stations)
+    cell = stations.stack.grid.cell_area_m2
+    station = spec.station or _default_station(site.units)
+    over = curve.overhaul(spec.freehaul) if spec.freehaul is not None else None
+    price = None if spec.overhaul_price is None else spec.overhaul_price / site.units.factor("soil_volume")
+    limit = None
+    if spec.borrow_cost is not None and spec.overhaul_price is not None and spec.freehaul is not None:
+        limit = limit_of_economic_haul_m(
+            spec.freehaul, borrow_cost=spec.borrow_cost, overhaul_cost=spec.overhaul_price, station_m=station
+        )
+    beyond, outside = (_cut_and_fill(stations, sums * cell) for sums in (stations.beyond, stations.outside))
+    return LineHaul(
+        curve=curve,
+        start_m=spec.start,
+        station_m=station,
+        overhaul=over,
+        overhaul_cost=price * over.bank_stations(station) if price is not None and over is not None else None,
+        economic_limit_m=limit,
+        cut_m3=cut,
+        fill_m3=fill,
+        sections_m2=tally.sections.areas,
+        beyond_m3=beyond,
+        outside_cut_m3=outside[0],
+        outside_fill_m3=outside[1],
+    )
+
+
+def _curve(
+    model: SiteModel, cards: dict[str, SoilCard], stations: StationTally
+) -> tuple[MassCurve, np.ndarray, np.ndarray]:
+    """The mass curve, and cut and fill between stripped ground and subgrade by interval [m³]."""
     cell = stations.stack.grid.cell_area_m2
     count = len(stations.sums)
     dug, made, need, cut = (np.zeros(count) for _ in range(4))
@@ -168,32 +200,15 @@ def line_haul(site: Site, cards: dict[str, SoilCard], tally: LineTally) -> LineH
             fill -= amounts
     fill += _of(stations, "fill") * cell
     curve = MassCurve(stations.line.edges, dug, made, need)
-    station = spec.station or _default_station(site.units)
-    over = curve.overhaul(spec.freehaul) if spec.freehaul is not None else None
-    price = None if spec.overhaul_price is None else spec.overhaul_price / site.units.factor("soil_volume")
-    limit = None
-    if spec.borrow_cost is not None and spec.overhaul_price is not None and spec.freehaul is not None:
-        limit = limit_of_economic_haul_m(
-            spec.freehaul, borrow_cost=spec.borrow_cost, overhaul_cost=spec.overhaul_price, station_m=station
-        )
-    outside = dict(zip(stations.channels, stations.outside * cell, strict=True))
-    beyond = dict.fromkeys(("cut", "fill", "over_excavation", "scarify"), 0.0)
-    for (what, _, _), amount in zip(stations.channels, stations.beyond * cell, strict=True):
-        beyond[what] += float(amount)
-    return LineHaul(
-        curve=curve,
-        start_m=spec.start,
-        station_m=station,
-        overhaul=over,
-        overhaul_cost=price * over.bank_stations(station) if price is not None and over is not None else None,
-        economic_limit_m=limit,
-        cut_m3=cut,
-        fill_m3=fill,
-        sections_m2=tally.sections.areas,
-        beyond_m3=(beyond["cut"], beyond["fill"] - beyond["over_excavation"]),
-        outside_cut_m3=float(sum(v for (what, _, _), v in outside.items() if what == "cut")),
-        outside_fill_m3=float(sum(v for (what, _, _), v in outside.items() if what == "fill")),
-    )
+    return curve, cut, fill
+
+
+def _cut_and_fill(stations: StationTally, sums: np.ndarray) -> tuple[float, float]:
+    """Cut and fill between stripped ground and subgrade out of sums by channel."""
+    found = dict.fromkeys(("cut", "fill", "over_excavation", "scarify"), 0.0)
+    for (what, _, _), amount in zip(stations.channels, sums, strict=True):
+        found[what] += float(amount)
+    return found["cut"], found["fill"] - found["over_excavation"]
 
 
 def _of(stations: StationTally, what: str) -> np.ndarray:
