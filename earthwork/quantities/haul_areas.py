@@ -23,7 +23,6 @@ from earthwork.quantities.site_ground import SiteGround
 from earthwork.site import Site
 from earthwork.site.model import AreaSpec
 
-
 #: Squares that a site may be divided into.
 _MOST_SQUARES = 250_000
 
