@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from typing import Any
 
 from earthwork.files.output import OutputFolder
@@ -150,7 +151,9 @@ def flagged_ground(natural: dict[str, Any]) -> list[str]:
 
 def _undercut_row(pad: dict[str, Any], site: Site) -> tuple[str, str, str]:
     undercut = pad["undercut"]
-    asked = show(undercut["asked_m"], "length", site.units)
+    # Rounded up: an undercut of the depth that is printed must mend the transition.
+    depth = math.ceil(site.units.from_si(undercut["asked_m"], "length") * 100 - 1e-6) / 100
+    asked = show(site.units.to_si(depth, "length"), "length", site.units)
     cost = undercut["compacted_cost_m3"]
     note = f"dug and refilled, for {asked} of fill everywhere (an [[over_excavation]] from subgrade)"
     if cost is not None:

@@ -2,6 +2,7 @@
 
 import json
 import math
+import re
 
 import ezdxf
 import numpy as np
@@ -15,6 +16,7 @@ from shapely.geometry import LineString, box
 
 import earthwork
 from earthwork.errors import GroundError, PlanError, SiteFileError
+from earthwork.reporting.pads_page import page
 
 EAST, NORTH = 500_000.0, 4_400_000.0
 CRS = "EPSG:32614"
@@ -118,6 +120,18 @@ def test_an_undercut_that_reaches_the_blanket_mends_a_transition(site):
     shallow = earthwork.pads(site(layers=dug.replace("0.9", "0.8")))["A"]
     assert shallow.class_name == "transition"
     assert shallow.undercut.volume_m3 == pytest.approx(800 * 0.1 + 80 * 0.05, rel=2e-2)
+
+
+def test_the_depth_that_the_page_asks_for_mends_a_transition(site, tmp_path):
+    # Fill of up to 3.5217 m: a third of it is 1.1622 m, which 1.16 would not reach.
+    shape = {"finished": lambda e, n: 105.0217 + 0.0 * e, "existing": lambda e, n: 100 + 0.15 * (e - 20.5)}
+    result = earthwork.pads(site(**shape))
+    assert result["A"].undercut.asked_m == pytest.approx(0.33 * 3.5217)
+    text = page(earthwork.Site.open(tmp_path / "site.toml"), result)
+    (row,) = next(b.rows for b in text.blocks if getattr(b, "heading", "").startswith("Undercut"))
+    (depth,) = re.findall(r"for ([\d.]+) m of fill", row[2])
+    dug = f'[[over_excavation]]\nname = "A"\ndepth = {depth}\nmeasured_from = "subgrade"\narea = "pads.gpkg"\n'
+    assert "transition mended" in earthwork.pads(site(layers=dug, **shape))["A"].flags
 
 
 def test_only_the_building_and_its_margin_are_judged(site, tmp_path):
