@@ -21,6 +21,8 @@ from earthwork.site.haul_rules import ON_SITE_STOCKPILE
 #: Ground by stratum, from the top down: earths of our own, apart in lightness.
 _GROUND = ("#E3C78F", "#8C8FA3", "#B98B73", "#5E6B5A", "#D8D4C8", "#7A5C86")
 _LIFTS = ("#CBE5E2", "#6FB3AC", "#237872", "#F0C534")
+_MOVES = {"site": "#3B3B8F", "import": colors.IMPORT, "export": colors.EXPORT}
+_MOVE_NAMES = {"site": "moved on the site", "import": "comes to the site", "export": "leaves the site"}
 _LIFT_NAMES = ("waits for its turn", "partly built", "at grade", "this lift")
 
 
@@ -45,6 +47,7 @@ class MapView:
     overlays: tuple[tuple[str, str, bool], ...]
     readings: tuple[tuple[str, str], ...]
     legends: tuple[tuple[str, tuple[tuple[str, str, bool], ...]], ...]
+    moves: tuple[tuple[str, str], ...]  #: colours of the haul, by where it goes
     lifts: int
     note: str
     unit: str
@@ -74,6 +77,7 @@ def map_view(parts: Parts) -> MapView:
         overlays=_overlays(outlines, bool(arrows)),
         readings=_readings(parts, outlines),
         legends=tuple((name, _legend(name, scale)) for name, scale in scales.items()),
+        moves=tuple((_MOVES[kind], _MOVE_NAMES[kind]) for kind in _MOVES if any(a.kind == kind for a in arrows)),
         lifts=len(lifts),
         note=f"A point of the map is {cells} of the analysis grid, {side} wide.",
         unit=units.label("length"),
@@ -149,7 +153,7 @@ def _extra(parts: Parts, scales: Mapping[str, Scale]) -> dict[str, Any]:
         "least": NO_CHANGE_M,
         "relief": float(np.ptp(known)) or 1.0,
         "scales": {name: scale.to_dict() for name, scale in scales.items()},
-        "arrow_colors": {"site": "#3B3B8F", "import": colors.IMPORT, "export": colors.EXPORT},
+        "arrow_colors": _MOVES,
     }
 
 

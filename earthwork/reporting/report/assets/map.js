@@ -69,7 +69,7 @@
     return line;
   }
   const outlines = data.outlines.map((o) => ({ ...o, rings: o.rings.map(points) }));
-  const arrows = data.arrows.map((a) => ({ ...a, path: points(a.path) }));
+  const arrows = data.arrows.map((a) => ({ ...a, path: points(a.path) })).sort((a, b) => a.mass - b.mass);
   const heaviest = Math.max(1, ...arrows.map((a) => a.mass));
 
   function inside(outline, c, r) {
@@ -240,7 +240,11 @@
     if (layer === "depth") hatch();
     if (shown.has("contours")) contours(layer === "existing" ? at.existing : at.finished);
     for (const outline of outlines) if (shown.has(outline.layer)) drawOutline(outline);
-    if (shown.has("haul")) for (const arrow of arrows) drawArrow(arrow);
+    if (shown.has("haul")) {
+      // from the lightest up; what is next to nothing waits until one comes closer
+      const least = heaviest * Math.min(0.004, 0.004 / (scale * columns / width) ** 2);
+      for (const arrow of arrows) if (arrow.mass >= least) drawArrow(arrow);
+    }
     if (layer === "depth" || layer === "thickness") spots();
     for (const outline of outlines) if (shown.has(outline.layer) && outline.closed) nameOutline(outline);
     if (section) drawSection();
@@ -328,7 +332,7 @@
   }
   function drawArrow(arrow) {
     const color = data.arrow_colors[arrow.kind], line = arrow.path;
-    const thick = 1.5 + 5 * Math.sqrt(arrow.mass / heaviest);
+    const thick = 0.8 + 5 * Math.sqrt(arrow.mass / heaviest);
     ink.lineCap = "round";
     for (const [style, w] of [["rgba(255,255,255,0.8)", thick + 2], [color, thick]]) {
       trace(line); ink.strokeStyle = style; ink.lineWidth = w; ink.stroke();
@@ -365,7 +369,7 @@
       }
     }
     ink.stroke();
-    $(".contour-step").textContent = withUnit(step);
+    $(".contour-step").textContent = `Contours every ${withUnit(step)}.`;
   }
   function drawCross() {
     const x = toX(cross[0]), y = toY(cross[1]);
@@ -628,9 +632,15 @@
     if (input.checked) layer = input.value;
   }
   for (const input of root.querySelectorAll("input[name=over]")) {
-    const set = () => { if (input.checked) shown.add(input.value); else shown.delete(input.value); draw(); };
+    const set = () => {
+      if (input.checked) shown.add(input.value); else shown.delete(input.value);
+      const key = $(".haul-key");
+      if (key) key.hidden = !shown.has("haul");
+      if (!shown.has("contours")) $(".contour-step").textContent = "";
+      draw();
+    };
     input.addEventListener("change", set);
-    if (input.checked) shown.add(input.value);
+    set();
   }
   const slider = $("[name=lift]");
   if (slider) {
