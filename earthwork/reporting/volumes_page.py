@@ -12,7 +12,7 @@ from earthwork.results import Result
 from earthwork.site import Site
 from earthwork.units import UNITS
 
-_AREA_COLUMNS = (
+AREA_COLUMNS = (
     Column("zone", "zone"),
     Column("area_m2", "area"),
     Column("cut_m3", "cut,\nbank"),
@@ -44,7 +44,7 @@ def page(site: Site, result: Result) -> Page:
 
 def _areas(site: Site, volumes: dict[str, Any]) -> Block:
     missing = any(area["missing_area_m2"] for area in (volumes["total"], *volumes["zones"]))
-    columns = [c for c in _AREA_COLUMNS if c.key != "missing_area_m2" or missing]
+    columns = [c for c in AREA_COLUMNS if c.key != "missing_area_m2" or missing]
     zones = sorted(volumes["zones"], key=lambda z: -(z["cut_m3"] + z["fill_m3"]))
     zones = zones if len(zones) > 24 else volumes["zones"]
     totals = []

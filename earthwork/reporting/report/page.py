@@ -12,7 +12,7 @@ from typing import Any
 import earthwork
 from earthwork.reporting.basis import not_counted
 from earthwork.reporting.display import display_key, plain
-from earthwork.reporting.page import Block, Column, Notes, Table, table_of, unit_label
+from earthwork.reporting.page import LONGEST_TABLE, Block, Column, Notes, Table, table_of, unit_label
 from earthwork.reporting.report import provenance
 from earthwork.reporting.report.answers import answers, verdict
 from earthwork.reporting.report.hand_check import HandCheck
@@ -22,6 +22,7 @@ from earthwork.reporting.report.parts import Parts
 from earthwork.reporting.report.pictures import Picture, pictures_of
 from earthwork.reporting.report.quantities import zone_materials
 from earthwork.reporting.runner import module_of
+from earthwork.reporting.volumes_page import AREA_COLUMNS
 
 #: The page may take this many bytes, map and pictures included; and the map at least and at most this many of them.
 PAGE_BYTES = 8_000_000
@@ -110,6 +111,7 @@ def _context(
         "warnings": parts.warnings,
         "map_pictures": pictures_of("volumes", pictures),
         "parts": {"volumes": _part("volumes", parts, pictures)},
+        "all_zones": _all_zones(parts),
         "by_material": _by_material(parts),
         "sections": sections,
         "checks": checks,
@@ -136,6 +138,15 @@ def _part(name: str, parts: Parts, pictures: Path) -> Part:
         blocks = tuple(b for b in blocks if not (isinstance(b, Notes) and b.heading == "What these volumes are"))
     matrix = _matrix(parts) if name == "haul" else None
     return Part(name, _TITLES.get(name, name), blocks, tuple(pictures_of(name, pictures)), matrix)
+
+
+def _all_zones(parts: Parts) -> Table | None:
+    """Every zone, where there are more than the table of quantities shows."""
+    zones = parts.documents["volumes"]["zones"]
+    if len(zones) <= LONGEST_TABLE:
+        return None
+    heading = f"All {len(zones)} zones, in the order of their file"
+    return table_of(zones, AREA_COLUMNS, parts.site.units, heading=heading, longest=len(zones))
 
 
 def _by_material(parts: Parts) -> Table:
