@@ -159,10 +159,11 @@ class Frame:
 
         size = label.get_window_extent()
         to_map = axes.transData.inverted()
+        others = np.array([other.extents for other in taken]).reshape(-1, 4)
         for place in places:
             x, y = axes.transData.transform(place)
             box = Bbox.from_bounds(x - size.width / 2, y - size.height / 2, size.width, size.height)
-            if not self.inside(axes, box) or any(box.overlaps(other) for other in taken):
+            if not self.inside(axes, box) or _meets(box, others):
                 continue
             if within:
                 west, south = to_map.transform((box.x0, box.y0))
@@ -236,6 +237,12 @@ def shorter(name: str) -> list[str]:
     first = name.split(",")[0].split(":")[0].split(" - ")[0]
     texts = [wrapped(name, 18), wrapped(name, 12, 4), wrapped(first, 14, 1)]
     return list(dict.fromkeys(texts))
+
+
+def _meets(box: Any, others: np.ndarray) -> bool:
+    """Whether a box overlaps any of others, (n, 4) as left, bottom, right, top."""
+    left, bottom, right, top = others.T
+    return bool(((left <= box.x1) & (box.x0 <= right) & (bottom <= box.y1) & (box.y0 <= top)).any())
 
 
 def places_in(shape: Any, along: int = 9) -> list[tuple[float, float]]:
