@@ -46,9 +46,7 @@ TEXTURES: dict[str, tuple[tuple[float, float], tuple[float, float], tuple[float,
 }
 
 
-def total_evaporable_mm(
-    field_capacity: float, wilting_point: float, depth_m: float = SURFACE_DEPTH_M
-) -> float:
+def total_evaporable_mm(field_capacity: float, wilting_point: float, depth_m: float = SURFACE_DEPTH_M) -> float:
     """Most water that the surface layer can lose by evaporation [mm]; [fao56] eq. 73.
 
     >>> round(total_evaporable_mm(0.25, 0.12), 6)
@@ -138,12 +136,21 @@ def days_to_dry(
     if soil is None:
         return water_mm / rate
     if turns_per_day > 0:
-        return water_mm / (turns_per_day * _lost_in(soil, rate, 1.0 / turns_per_day))
+        return water_mm / (turns_per_day * lost_from_wet(soil, rate, 1.0 / turns_per_day))
     return _unturned_days(water_mm, rate, soil)
 
 
-def _lost_in(soil: SurfaceSoil, rate: float, days: float) -> float:
-    """Depth lost by wet ground in a time [mm]: the continuous form of eq. 74 (its stage 2 is exponential)."""
+def lost_from_wet(soil: SurfaceSoil, rate: float, days: float) -> float:
+    """Depth that wet ground loses in a time [mm]: the continuous form of [fao56] eq. 74; stage 2 is exponential.
+
+    Args:
+        rate: of wet ground [mm/day], 0 or more.
+
+    >>> lost_from_wet(SurfaceSoil(9.0, 20.0), 6.0, 1.5)
+    9.0
+    """
+    if rate <= 0:
+        return 0.0
     first = soil.readily_mm / rate
     if days <= first:
         return rate * days
