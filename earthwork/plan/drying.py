@@ -63,26 +63,22 @@ def spreading(
     days = days_to_dry(water, reference_mm_day, surface, turns_per_day=turns_per_day)
     method = "turned lifts" if turns_per_day > 0 else "spread"
     if days is None:
-        why = "nothing evaporates" if reference_mm_day <= 0 else "its surface dries and seals before"
+        why = "nothing evaporates" if reference_mm_day <= 0 else "its surface dries and seals before all has left"
         return DryingOption(
             material=material, method=method, possible=False, water_mm=water,
-            note=f"a layer of {spread_m:g} m never loses {water:.1f} mm: {why}; spread it thinner or turn it",
+            note=f"{why}; spread it thinner, or turn it",
         )  # fmt: skip
-    need = placing_m3_day * days / compacted_m
     ready = None if area_m2 is None or days == 0 else area_m2 * compacted_m / days
-    short = ready is not None and ready < placing_m3_day
-    note = f"{water:.1f} mm leave in {days:.1f} days of drying weather"
-    if short:
-        note += f"; the ground kept for it dries {ready:.0f} m³ a day, less than is placed"
+    note = f"dry after {days:.1f} days of drying weather"
+    if ready is not None and ready < placing_m3_day:
+        note += "; the ground kept for it is too small for the placing rate"
     return DryingOption(
-        material=material, method=method, possible=not short, note=note, water_mm=water, days=days,
-        area_m2=need, volume_per_day_m3=ready,
+        material=material, method=method, possible=True, note=note, water_mm=water, days=days,
+        area_m2=placing_m3_day * days / compacted_m, volume_per_day_m3=ready,
     )  # fmt: skip
 
 
-def mixing(
-    *, material: str, arriving: float, target: float, other: str, other_arriving: float | None
-) -> DryingOption:
+def mixing(*, material: str, arriving: float, target: float, other: str, other_arriving: float | None) -> DryingOption:
     """Mix a wet material with a drier one; water contents in % of dry mass, masses dry."""
     if other_arriving is None:
         return DryingOption(

@@ -86,9 +86,7 @@ def truck_plan(
     )
 
 
-def _with_queue(
-    count: int, loads: int, cycle: float, fill: float, bays: int, minutes: float
-) -> tuple[int, int]:
+def _with_queue(count: int, loads: int, cycle: float, fill: float, bays: int, minutes: float) -> tuple[int, int]:
     """Trucks and trips of each from ``count`` on, when n trucks share the bays; see :func:`truck_plan`."""
     enough = max(count, _ceil(cycle * bays / fill))  # more than this only wait longer
     for n in range(count, enough + 1):

@@ -106,6 +106,11 @@ class LiftTally:
     depth_only = True  #: engine: without layers, depth and finished ground are all that is asked for
     wants_finished = True
 
+    @property
+    def key(self) -> tuple[str, float, bool]:
+        """Tallies that are alike in a shared pass are counted once."""
+        return ("lifts", self.lift_m, self.overview_wanted)
+
     def empty(self) -> LiftTally:
         return LiftTally(self.stack, self.lift_m, overview=self.overview_wanted)
 

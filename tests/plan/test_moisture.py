@@ -128,7 +128,8 @@ def test_spreading_by_hand():
     assert option.days == pytest.approx(2.125)
     assert option.area_m2 == pytest.approx(900 * 2.125 / 0.15)
     short = _spread(area_m2=6000.0)
-    assert not short.possible
+    assert short.possible
+    assert "too small for the placing rate" in short.note
     assert short.volume_per_day_m3 == pytest.approx(6000 * 0.15 / 2.125)
 
 

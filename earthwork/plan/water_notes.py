@@ -1,0 +1,238 @@
+"""What must be said of a site's water: what runs off, what is too wet and how it dries, what goes short and what mends it."""
+
+from __future__ import annotations
+
+import datetime
+from collections.abc import Sequence
+from typing import TYPE_CHECKING
+
+from earthwork.errors import Warning
+from earthwork.plan.drying import DryingOption, mixing, spreading
+from earthwork.plan.fill_mix import MixPart, arriving
+from earthwork.plan.lifts import LiftsResult
+from earthwork.plan.moisture import Wetting, water_need, wetting
+from earthwork.plan.remedies import Remedy
+from earthwork.plan.water_trucks import payload_notes
+from earthwork.site import Site
+from earthwork.units import UnitSystem
+
+if TYPE_CHECKING:
+    from earthwork.plan.water import WaterResult
+
+
+def wetting_of(site: Site, part: MixPart, lift_m: float) -> Wetting:
+    """Where a material's water is added."""
+    given = site.model.moisture
+    density = part.card.dry_density_kg_m3("compacted")
+    need = water_need(density, part.arriving_percent, part.card.target_water_content_percent)
+    return wetting(
+        need.to_add_l_per_m3,
+        fill_dry_density_kg_m3=density,
+        lift_thickness_m=lift_m,
+        limit_points=given.lift_limit_points,
+        limit_depth_mm=given.lift_limit_depth,
+        wet_in=given.wet_in,
+    )
+
+
+# --- soil that is too wet -------------------------------------------------------------------------------------------
+
+
+def drying_options(site: Site, placed: LiftsResult) -> tuple[DryingOption, ...]:
+    """For every material that arrives too wet: spread, turn, or mix with what is drier."""
+    water, given = site.model.water, site.model.moisture.drying
+    assert water is not None
+    options: list[DryingOption] = []
+    for part in _wet(placed):
+        card, density = part.card, part.card.dry_density_kg_m3("compacted")
+        need = water_need(density, part.arriving_percent, card.target_water_content_percent)
+        surface = placed.work.weather.surface if placed.work.weather else None
+        # how fast unturned soil seals is only known of a surface that the site file describes
+        for turns in dict.fromkeys((*((0.0,) if surface else ()), given.turns_per_day)):
+            options.append(
+                spreading(
+                    material=part.material,
+                    to_dry_l_per_m3=need.to_dry_l_per_m3,
+                    fill_dry_density_kg_m3=density,
+                    loose_dry_density_kg_m3=card.loose_dry_density_kg_m3,
+                    spread_m=given.spread or placed.loose_lift_m[part.material],
+                    reference_mm_day=placed.work.reference_mm_day,
+                    turns_per_day=turns,
+                    surface=surface,
+                    placing_m3_day=water.placing_rate * part.share,
+                    area_m2=given.area,
+                )
+            )
+        options += _mixes(site, placed, part)
+    return tuple(options)
+
+
+def _wet(placed: LiftsResult) -> list[MixPart]:
+    """Materials of the fill that arrive above their target."""
+    parts = {part.material: part for mix in placed.mixes.values() for part in mix}
+    return [
+        part
+        for part in parts.values()
+        if part.arriving_percent is not None
+        and part.card.target_water_content_percent is not None
+        and part.arriving_percent > part.card.target_water_content_percent
+    ]
+
+
+def _mixes(site: Site, placed: LiftsResult, part: MixPart) -> list[DryingOption]:
+    named = site.model.moisture.drying.mix_with
+    others = [c for c in placed.cards.values() if c.material != part.material]
+    others = [c for c in others if (c.material == named if named else c.use == "fill")]
+    assert part.arriving_percent is not None
+    assert part.card.target_water_content_percent is not None
+    options = [
+        mixing(
+            material=part.material,
+            arriving=part.arriving_percent,
+            target=part.card.target_water_content_percent,
+            other=card.material,
+            other_arriving=arriving(card, 0.0),
+        )
+        for card in others
+    ]
+    return options if named else [o for o in options if o.possible]
+
+
+def drying_m3_day(site: Site, options: Sequence[DryingOption]) -> float | None:
+    """Compacted volume of fill that the ground kept for drying allows in a day; None where it has no limit.
+
+    All wet materials share the ground, each by the fastest way that it has.
+    """
+    area, water = site.model.moisture.drying.area, site.model.water
+    assert water is not None
+    if area is None:
+        return None
+    needed = []
+    for name in dict.fromkeys(option.material for option in options):
+        ways = [o.area_m2 for o in options if o.material == name and o.area_m2 is not None]
+        if not ways:
+            return 0.0
+        needed.append(min(ways))
+    return water.placing_rate * area / sum(needed) if sum(needed) > 0 else None
+
+
+# --- warnings -------------------------------------------------------------------------------------------------------
+
+
+def water_warnings(site: Site, result: WaterResult) -> list[Warning]:
+    """The warnings of a site's water."""
+    found = [*_runs_off(site, result), *_too_wet(site, result), *_short(site, result), *_trucks(site, result)]
+    ends = result.lifts.work.ends_before(len(result.days))
+    return [*found, *([ends] if ends else [])]
+
+
+def _runs_off(site: Site, result: WaterResult) -> list[Warning]:
+    found = []
+    units, given = site.units, site.model.moisture
+    for material in result.materials:
+        split = material.wetting
+        if given.wet_in != "lift" or split.in_cut_l_per_m3 <= 0:
+            continue
+        points = 100.0 * (split.in_lift_l_per_m3 + split.in_cut_l_per_m3)
+        points /= material.part.card.dry_density_kg_m3("compacted")
+        found.append(
+            Warning(
+                "wetting-runs-off",
+                f"{material.part.material} wants {points:.1f} points of water, {_depth(split.lift_depth_mm, units)} on a "
+                f"lift: more than {_depth(split.lift_takes_l_per_m3 * result.lifts.lift_m, units)} in one pass runs off. "
+                f'Pre-wet the cut (moisture.wet_in = "cut"), or let {split.passes_in_lift} passes soak in, one after '
+                "the other",
+            )
+        )
+    return found
+
+
+def _too_wet(site: Site, result: WaterResult) -> list[Warning]:
+    found = []
+    for part in _wet(result.lifts):
+        ways = [o for o in result.drying if o.material == part.material]
+        best = min((o for o in ways if o.possible and o.days is not None), key=lambda o: o.days or 0.0, default=None)
+        how = f"; {best.method}: {best.note}" if best else "; spreading alone does not dry it"
+        found.append(
+            Warning(
+                "too-wet",
+                f"{part.material} arrives at {part.arriving_percent:.1f} % and is to be placed at "
+                f"{part.card.target_water_content_percent:.1f} %{how}. See the drying options",
+            )
+        )
+    return found
+
+
+def _short(site: Site, result: WaterResult) -> list[Warning]:
+    day, units = result.first_short, site.units
+    if day is None or day.first_short_hour is None:
+        return []
+    when = f"day {day.demand.day.day}"
+    clock = result.job.calendar.clock(day.demand.day, day.first_short_hour - 1)
+    if isinstance(clock, datetime.datetime):
+        when += f" ({clock:%a %d %b %Y}), from {clock:%H:%M} on"
+    else:
+        when += f", from its hour {day.first_short_hour} on ({clock:%H:%M})"
+    mends = "; or ".join(text for remedy in result.remedies if (text := _mend(remedy, units)))
+    allowed = units.from_si(day.achievable_m3, "soil_volume")
+    return [
+        Warning(
+            "water-short",
+            f"water runs short first on {when}: {litres(day.shortfall_l, units)} are missing that day, which has water "
+            f"for {allowed:,.0f} {units.label('soil_volume')} of {units.from_si(day.demand.compacted_m3, 'soil_volume'):,.0f}. "
+            f"It takes {mends or 'less open ground and dust control: no other remedy does'}",
+        )
+    ]
+
+
+def _mend(remedy: Remedy, units: UnitSystem) -> str | None:
+    """A remedy in words; None where it is impossible."""
+    if not remedy.possible:
+        return None
+    if remedy.standpipes is not None:
+        return f"{remedy.standpipes} standpipes"
+    if remedy.flow_l_s is not None:
+        return f"a flow of {units.from_si(remedy.flow_l_s, 'flow'):,.0f} {units.label('flow')}"
+    if remedy.tank_l is not None:
+        return f"a tank of {litres(remedy.tank_l, units)}, full at the start"
+    if remedy.supply_hours is not None:
+        return f"a fill window of {remedy.supply_hours:.1f} hours"
+    assert remedy.placing_rate_m3_day is not None
+    rate = units.from_si(remedy.placing_rate_m3_day, "soil_volume")
+    return f"placing {rate:,.0f} {units.label('soil_volume')} a day ({remedy.note})"
+
+
+def _trucks(site: Site, result: WaterResult) -> list[Warning]:
+    plan, truck = result.trucks, site.model.water.truck if site.model.water else None
+    if plan is None or truck is None:
+        return []
+    found = []
+    if plan.fill_point_is_short:
+        found.append(
+            Warning(
+                "fill-point-short",
+                f"the fill point fills {plan.fill_point_loads} trucks a day and the peak day needs {plan.loads}, however "
+                "many trucks there are: add a bay, or fill faster",
+            )
+        )
+    notes = payload_notes(
+        truck.capacity, payload_kg=truck.payload, empty_kg=truck.empty_mass, road_limit_kg=truck.road_limit
+    )
+    for broken, allowed in notes:
+        found.append(
+            Warning(
+                "truck-overweight",
+                f"a full water truck holds {litres(truck.capacity, site.units)} and breaks {broken}; it may carry "
+                f"{litres(max(allowed, 0.0), site.units)}. The truck count here takes full tanks",
+            )
+        )
+    return found
+
+
+def _depth(mm: float, units: UnitSystem) -> str:
+    return f"{mm / 25.4:.2f} in" if units.name == "us" else f"{mm:.0f} mm"
+
+
+def litres(volume_l: float, units: UnitSystem) -> str:
+    """A volume of water in the site's unit."""
+    return f"{units.from_si(volume_l, 'water_volume'):,.0f} {units.label('water_volume')}"
