@@ -21,13 +21,13 @@ class DryingOption:
     method: str
     possible: bool
     note: str
-    water_mm: float | None = None
+    water_l_m2: float | None = None
     days: float | None = None
     area_m2: float | None = None
     volume_per_day_m3: float | None = None
     mix_with: str | None = None
     mix_dry_share: float | None = None
-    mix_dry_t_per_wet_t: float | None = None
+    mix_dry_ratio: float | None = None
     result_water_content_percent: float | None = None
 
     def to_dict(self) -> dict[str, Any]:
@@ -65,7 +65,7 @@ def spreading(
     if days is None:
         why = "nothing evaporates" if reference_mm_day <= 0 else "its surface dries and seals before all has left"
         return DryingOption(
-            material=material, method=method, possible=False, water_mm=water,
+            material=material, method=method, possible=False, water_l_m2=water,
             note=f"{why}; spread it thinner, or turn it",
         )  # fmt: skip
     ready = None if area_m2 is None or days == 0 else area_m2 * compacted_m / days
@@ -73,7 +73,7 @@ def spreading(
     if ready is not None and ready < placing_m3_day:
         note += "; the ground kept for it is too small for the placing rate"
     return DryingOption(
-        material=material, method=method, possible=True, note=note, water_mm=water, days=days,
+        material=material, method=method, possible=True, note=note, water_l_m2=water, days=days,
         area_m2=placing_m3_day * days / compacted_m, volume_per_day_m3=ready,
     )  # fmt: skip
 
@@ -95,6 +95,6 @@ def mixing(*, material: str, arriving: float, target: float, other: str, other_a
     result = share * other_arriving + (1.0 - share) * arriving
     return DryingOption(
         material=material, method="mixing", possible=True, mix_with=other, mix_dry_share=share,
-        mix_dry_t_per_wet_t=ratio, result_water_content_percent=result,
+        mix_dry_ratio=ratio, result_water_content_percent=result,
         note=f"{ratio:.2f} t of {other} to each tonne of {material}, dry masses; test the mix as a soil",
     )  # fmt: skip

@@ -24,7 +24,7 @@ class Remedy:
     flow_l_s: float | None = None
     tank_l: float | None = None
     supply_hours: float | None = None
-    placing_rate_m3_day: float | None = None
+    placing_rate_per_day_m3: float | None = None
     working_days: int | None = None
 
     def to_dict(self) -> dict[str, Any]:
@@ -109,7 +109,7 @@ def _rate(job: WaterJob) -> Remedy:
     days = sum(1 for day in replace(job, placing_m3_day=low).placed if day.day.kind == "work")
     now = sum(1 for day in job.placed if day.day.kind == "work")
     return Remedy(
-        remedy=name, possible=True, placing_rate_m3_day=low, working_days=days,
+        remedy=name, possible=True, placing_rate_per_day_m3=low, working_days=days,
         note=f"{days} working days instead of {now}",
     )  # fmt: skip
 

@@ -49,8 +49,8 @@ class MaterialWater:
             ),
             "water_to_add_l_per_m3": need.to_add_l_per_m3,
             "water_to_dry_l_per_m3": need.to_dry_l_per_m3,
-            "water_to_add_l_per_bank_m3": bank.to_add_l_per_m3,
-            "water_to_dry_l_per_bank_m3": bank.to_dry_l_per_m3,
+            "water_to_add_bank_l_per_m3": bank.to_add_l_per_m3,
+            "water_to_dry_bank_l_per_m3": bank.to_dry_l_per_m3,
             "water_on_lift_mm": self.wetting.lift_depth_mm,
             "in_lift_l_per_m3": self.wetting.in_lift_l_per_m3,
             "in_cut_l_per_m3": self.wetting.in_cut_l_per_m3,
@@ -148,6 +148,8 @@ class WaterResult(Result):
             days.append(row)
         materials = [m.to_dict() for m in self.materials]
         for row in materials:
+            row["water_on_lift_l_m2"] = row.pop("water_on_lift_mm")
+        for row in materials:
             window = row.pop("window_water_content_percent") or (None, None)
             row["driest_water_content_percent"], row["wettest_water_content_percent"] = window
         tables = {
@@ -156,10 +158,17 @@ class WaterResult(Result):
             "water_materials": pd.DataFrame(materials),
         }
         if self.remedies:
-            tables["water_remedies"] = pd.DataFrame([r.to_dict() for r in self.remedies])
+            tables["water_remedies"] = pd.DataFrame([_remedy_row(r) for r in self.remedies])
         if self.drying:
             tables["drying"] = pd.DataFrame([o.to_dict() for o in self.drying])
         return tables
+
+
+def _remedy_row(remedy: Remedy) -> dict[str, Any]:
+    """A remedy with its flow in the unit that tables know."""
+    row = remedy.to_dict()
+    flow = row.pop("flow_l_s")
+    return {**row, "flow_l_min": None if flow is None else 60.0 * flow}
 
 
 _PARTS = ("compaction_l", "evaporation_l", "dust_l", "waste_l")

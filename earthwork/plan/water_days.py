@@ -76,7 +76,7 @@ class WaterDay:
             "held_back_at_m3": at,
             "limits": dict(self.limits),
             "truck_loads": self.truck_loads,
-            "evaporation_mm": demand.evaporation_mm,
+            "evaporation_mm_day": demand.evaporation_mm,
             "open_area_m2": demand.open_area_m2,
             "water_to_dry_l": self.water_to_dry_l,
         }

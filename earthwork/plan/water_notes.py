@@ -197,8 +197,8 @@ def _mend(remedy: Remedy, units: UnitSystem) -> str | None:
         return f"a tank of {litres(remedy.tank_l, units)}, full at the start"
     if remedy.supply_hours is not None:
         return f"a fill window of {remedy.supply_hours:.1f} hours"
-    assert remedy.placing_rate_m3_day is not None
-    rate = units.from_si(remedy.placing_rate_m3_day, "soil_volume")
+    assert remedy.placing_rate_per_day_m3 is not None
+    rate = units.from_si(remedy.placing_rate_per_day_m3, "soil_volume")
     return f"placing {rate:,.0f} {units.label('soil_volume')} a day ({remedy.note})"
 
 

@@ -124,7 +124,7 @@ def _spread(**changed):
 def test_spreading_by_hand():
     # 0.2 m × 1275 = 255 kg/m² of dry soil = 0.15 m compacted; 85 L/m³ × 0.15 = 12.75 mm; 5 × 1.2 = 6 mm/day
     option = _spread()
-    assert option.water_mm == pytest.approx(12.75)
+    assert option.water_l_m2 == pytest.approx(12.75)
     assert option.days == pytest.approx(2.125)
     assert option.area_m2 == pytest.approx(900 * 2.125 / 0.15)
     short = _spread(area_m2=6000.0)
