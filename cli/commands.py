@@ -139,6 +139,24 @@ def haul(site: SiteFile, how: Shared) -> None:
 
 @app.command()
 @with_shared
+def lifts(site: SiteFile, how: Shared) -> None:
+    """The lifts of each fill, bottom up in placing order: area, volume, mass, loads, rolling, water."""
+    from .flow import perform
+
+    perform("lifts", site, how)
+
+
+@app.command()
+@with_shared
+def water(site: SiteFile, how: Shared) -> None:
+    """Compaction water by day and hour: supply, tank, trucks, the first short hour and what mends it."""
+    from .flow import perform
+
+    perform("water", site, how)
+
+
+@app.command()
+@with_shared
 def pads(site: SiteFile, how: Shared) -> None:
     """What each building pad stands on.
 

@@ -20,6 +20,8 @@ _HOME = {
     "fit_proctor_file": "earthwork.soils.bench",
     "check": "earthwork.plan.check",
     "balance": "earthwork.plan.balance",
+    "lifts": "earthwork.plan.lifts",
+    "water": "earthwork.plan.water",
     "pads": "earthwork.plan.pads",
     "report": "earthwork.reporting.report.run",
     "haul": "earthwork.plan.haul",

@@ -118,7 +118,7 @@ class LiftsResult(Result):
             rows.append(row)
         tables = {"lifts": pd.DataFrame(rows)}
         if self.days:
-            tables["lift_days"] = pd.DataFrame(
+            tables["days"] = pd.DataFrame(
                 [
                     {"day": day.day.day, "date": day.day.date, "kind": day.day.kind, **_piece(self.lifts, piece)}
                     for day in self.days

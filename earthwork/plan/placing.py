@@ -17,7 +17,7 @@ def roller_output_m3_h(
         efficiency: share of the hour that it rolls, more than 0 and at most 1.
         passes: that the density takes, more than 0.
 
-    Source: [fm5-434] and any construction handbook; in m, km/h and mm the constant is 1.
+    Source: [FM-5-434] and any construction handbook; in m, km/h and mm the constant is 1.
 
     >>> round(roller_output_m3_h(2.1, 5 / 3.6, 0.2, 0.83, 6), 1)
     290.5

@@ -153,12 +153,12 @@ class WaterResult(Result):
             window = row.pop("window_water_content_percent") or (None, None)
             row["driest_water_content_percent"], row["wettest_water_content_percent"] = window
         tables = {
-            "water_days": pd.DataFrame(days),
-            "water_hours": pd.DataFrame(hour_rows(self.job)),
-            "water_materials": pd.DataFrame(materials),
+            "days": pd.DataFrame(days),
+            "hours": pd.DataFrame(hour_rows(self.job)),
+            "materials": pd.DataFrame(materials),
         }
         if self.remedies:
-            tables["water_remedies"] = pd.DataFrame([_remedy_row(r) for r in self.remedies])
+            tables["remedies"] = pd.DataFrame([_remedy_row(r) for r in self.remedies])
         if self.drying:
             tables["drying"] = pd.DataFrame([o.to_dict() for o in self.drying])
         return tables

@@ -28,6 +28,8 @@ _MODULES = {
     "soil": "earthwork.reporting.soil_page",
     "proctor": "earthwork.reporting.proctor_page",
     "balance": "earthwork.reporting.balance_page",
+    "lifts": "earthwork.reporting.lifts_page",
+    "water": "earthwork.reporting.water_page",
     "pads": "earthwork.reporting.pads_page",
     "haul": "earthwork.reporting.haul_page",
     "report": "earthwork.reporting.report.answers_page",
@@ -100,7 +102,7 @@ def run_command(
 
 def patterns(command: str) -> tuple[str, ...]:
     """Shell patterns of the names of the files that a command may write."""
-    endings = ("csv", "tif", "gpkg", "png", "dxf")
+    endings = ("csv", "tif", "gpkg", "png", "dxf", "html")
     return (f"{command}.json", f"{command}.csv", *(f"{command}_*.{ending}" for ending in endings))
 
 

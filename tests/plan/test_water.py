@@ -134,7 +134,7 @@ def test_every_litre_is_accounted_for(tmp_path, flow, tank):
 
 def test_hours_add_up_to_days(tmp_path):
     result = water(site(tmp_path, {"water.work_hours": 9.5}))
-    hours = result.tables()["water_hours"]
+    hours = result.tables()["hours"]
     for day in result.days:
         own = hours[hours.day == day.demand.day.day]
         assert len(own) == 24
@@ -241,7 +241,7 @@ def test_a_night_shift_over_a_change_of_clocks(tmp_path):
         "water.supply.flow": 1000,
     }  # fmt: skip
     result = water(site(tmp_path, changes))
-    hours = result.tables()["water_hours"]
+    hours = result.tables()["hours"]
     changed = hours[hours.day == 2]
     assert len(changed) == 23
     assert changed.clock.tolist()[5:7] == ["2027-03-14 01:00", "2027-03-14 03:00"]
