@@ -157,12 +157,12 @@ def _lift(parts: Parts) -> HandCheck | None:
     lines = [
         Line(
             "thickness",
-            f"{n.of(row['top_m'], 'length', 2)} − {n.of(row['bottom_m'], 'length', 2)}",
-            f"{n.of(row['top_m'] - row['bottom_m'], 'length', 2)} {unit}",
+            f"{n.of(row['top_m'], 'length', 3)} − {n.of(row['bottom_m'], 'length', 3)}",
+            f"{n.of(row['top_m'] - row['bottom_m'], 'length', 3)} {unit}",
         ),
         Line(
             "volume, at most area × thickness",
-            f"{n.of(row['area_m2'], 'area', 0)} × {n.of(row['top_m'] - row['bottom_m'], 'length', 2)}"
+            f"{n.of(row['area_m2'], 'area', 0)} × {n.of(row['top_m'] - row['bottom_m'], 'length', 3)}"
             + ("" if metric else " ÷ 27"),
             f"{n.of(row['area_m2'] * (row['top_m'] - row['bottom_m']), 'soil_volume', 1)} {volume}; "
             f"the lift holds {compacted}",
