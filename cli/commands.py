@@ -106,7 +106,8 @@ def soil(
 ) -> None:
     """The soil card of each material.
 
-    Densities in the bank, loose and compacted, shrink and swell, water contents, the target to place at. With --points it fits the compaction curve of a file, without a site file.
+    Densities in the bank, loose and compacted, shrink and swell, water contents, the target to place at. With --points it
+    fits the compaction curve of a file, without a site file.
     """
     from .flow import perform, site_of_bench
 
@@ -182,7 +183,8 @@ def report(
 ) -> None:
     """The whole job in one pass, as a folder of files.
 
-    A page with an interactive map, tables, maps, a workbook, GIS files and a 3D model. Goes into the folder "report" beside the site file, or into --out.
+    A page with an interactive map, tables, maps, a workbook, GIS files and a 3D model. Goes into the folder "report" beside
+    the site file, or into --out.
     """
     from .flow import perform_report
 

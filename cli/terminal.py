@@ -17,6 +17,8 @@ if TYPE_CHECKING:
 _PIPE_WIDTH = 110
 #: Longer values are sentences: they stand where notes do, and are wrapped.
 _LONGEST_VALUE = 24
+#: Names that are no longer than this stay on one line of a table [characters].
+_SHORT_NAME = 14
 _PLAIN = {
     "²": "2", "³": "3", "−": "-", "–": "-", "—": "-", "×": "x", "·": "*", "±": "+/-", "≥": ">=", "≤": "<=",
     "→": "->", "…": "...", "°": " deg", "½": "1/2", "“": '"', "”": '"', "‘": "'", "’": "'", "─": "-",
@@ -160,7 +162,7 @@ def _table(block: Table) -> Any:
         grid.add_column(
             Text(printable(column)),
             justify="left" if name else "right",
-            no_wrap=not name,
+            no_wrap=not name or max((len(row[i]) for row in block.rows), default=0) <= _SHORT_NAME,
             overflow="fold",
             vertical="bottom",
         )

@@ -121,7 +121,7 @@ def _day_row(row: dict[str, Any], day: WaterDay) -> dict[str, Any]:
     date = day.demand.day.date
     return {
         **row,
-        "day": str(row["day"]) + (f"{_NBSP}·{_NBSP}{date:%d}{_NBSP}{date:%b}" if date else ""),
+        "day": str(row["day"]) + (f"{_NBSP}{_NBSP}{date:%d}{_NBSP}{date:%b}" if date else ""),
         "other_l": row["dust_l"] + row["waste_l"],
         "shortfall_l": row["shortfall_l"] or None,
     }
