@@ -148,7 +148,7 @@ def _water(parts: Parts) -> Answer:
     if day is None:
         return Answer("Water on the peak day", peak, "the supply keeps up on every day", "good")
     hour = water.get("first_short_hour")
-    note = f"first short on day {day}" + (f", hour {plain(hour, 0)}" if hour is not None else "")
+    note = f"first short on day {day}" + (f", in hour {plain(hour, 0)} of the work" if hour is not None else "")
     return Answer("Water on the peak day", peak, note, "look")
 
 

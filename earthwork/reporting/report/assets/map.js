@@ -191,12 +191,13 @@
   // --- the view ---------------------------------------------------------------------------------------------------
 
   let width = 0, height = 0, ratio = 1, scale = 1, left = 0, top = 0;
-  let layer = "depth", cross = null, section = null, drawing = false, asked = false;
+  let layer = "depth", cross = null, section = null, drawing = false, asked = false, fitted = true;
   const shown = new Set();
   const toX = (c) => (c - left) * scale, toY = (r) => (r - top) * scale * aspect;
   const toColumn = (x) => x / scale + left, toRow = (y) => y / (scale * aspect) + top;
 
   function fit() {
+    fitted = true;
     scale = Math.min(width / columns, height / (rows * aspect)) * 0.98;
     left = (columns - width / scale) / 2; top = (rows - height / (scale * aspect)) / 2;
   }
@@ -204,17 +205,19 @@
     const c = toColumn(x), r = toRow(y);
     const least = Math.min(width / columns, height / (rows * aspect)) * 0.5;
     scale = Math.min(Math.max(scale * by, least), 80);
+    fitted = false;
     left = c - x / scale; top = r - y / (scale * aspect);
     draw();
   }
-  function pan(dx, dy) { left -= dx / scale; top -= dy / (scale * aspect); draw(); }
+  function pan(dx, dy) { fitted = false; left -= dx / scale; top -= dy / (scale * aspect); draw(); }
   function resize() {
-    const box = canvas.getBoundingClientRect(), whole = width === 0;
+    const box = canvas.getBoundingClientRect(), middle = [toColumn(width / 2), toRow(height / 2)];
     ratio = Math.min(window.devicePixelRatio || 1, 2);
     width = box.width; height = box.height;
     canvas.width = Math.round(width * ratio); canvas.height = Math.round(height * ratio);
     chart.width = Math.round(chart.clientWidth * ratio); chart.height = Math.round(chart.clientHeight * ratio);
-    if (whole) fit();
+    if (fitted) fit();
+    else { left = middle[0] - width / 2 / scale; top = middle[1] - height / 2 / (scale * aspect); }
     draw();
   }
   function draw() {
@@ -614,7 +617,7 @@
     if (!isFinite(c) || !isFinite(r)) return;
     read(c, r);
     if (toX(c) < 0 || toX(c) > width || toY(r) < 0 || toY(r) > height) {
-      left = c - width / 2 / scale; top = r - height / 2 / (scale * aspect);
+      left = c - width / 2 / scale; top = r - height / 2 / (scale * aspect); fitted = false;
     }
     message.textContent = `${out.place.textContent}: ${out.depth.textContent}`;
     draw();
