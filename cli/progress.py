@@ -86,7 +86,7 @@ class ProgressBar:
 def _span(seconds: float) -> str:
     """A duration as people say it.
 
-    >>> _span(8.2), _span(150), _span(7300)
+    >>> _span(8.2), _span(160), _span(7300)
     ('8 s', '3 min', '2.0 h')
     """
     if seconds < 99.5:
