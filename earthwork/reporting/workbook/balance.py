@@ -19,7 +19,7 @@ _HEADS = (
 )  # fmt: skip
 _GATE = (
     Head("material"), Head("way"), Head("reason"), Head("dry mass", "mass"), Head("bank", "soil_volume"),
-    Head("loose", "soil_volume"), Head("compacted", "soil_volume"), Head("truck loads", "count"), Head("price"),
+    Head("loose", "soil_volume"), Head("compacted", "soil_volume"), Head("truck loads", "count"), Head("price", "price"),
     Head("price is per"), Head("cost", "money"),
 )  # fmt: skip
 

@@ -155,6 +155,8 @@ class Sheet:
             side = "" if column.kind is None else " right"
             self.text(self.row, i, column.title, "head" + side)
             self.text(self.row + 1, i, unit, "unit" + side)
+        # long titles take two lines
+        self._sheet.set_row(self.row, 30)
         self.row += 2
         if freeze is not None:
             for i, column in enumerate(columns):
