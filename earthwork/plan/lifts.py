@@ -19,11 +19,12 @@ from earthwork.plan.schedule import DayPieces, placing_order, schedule
 from earthwork.plan.work_days import WorkDays, work_days
 from earthwork.quantities.engine import Progress, Tally, walk
 from earthwork.quantities.lift_tally import LiftTally
+from earthwork.quantities.placed_tests import site_cards
 from earthwork.quantities.site_ground import SiteGround, open_site
 from earthwork.quantities.volumes import VolumesResult, VolumesTally, volumes_result
 from earthwork.results import Result
 from earthwork.site import Site, load_site
-from earthwork.soils.card import SoilCard, soil_cards, soil_warnings
+from earthwork.soils.card import SoilCard, soil_warnings
 from earthwork.units import FOOT_M
 
 if TYPE_CHECKING:
@@ -160,7 +161,7 @@ def lifts(
             f"{site.path or site.name}: lifts needs at least one [[stratum]] (what the cut is made of), "
             "or a [[borrow]] with its material"
         )
-    cards = soil_cards(site)
+    cards = site_cards(site)
     thickness = lift_thickness_m(site, cards)
     ground = open_site(site)
     main, tally = VolumesTally(ground), LiftTally(ground.stack, thickness)

@@ -276,14 +276,16 @@ def _trucks(given: Water, peak_l: float) -> TruckPlan | None:
     if truck is None:
         return None
     supply = given.supply.flow * given.supply.count
-    flow = truck.fill_flow or given.supply.flow
+    flow, bays = truck.fill_flow or given.supply.flow, truck.bays
     if given.tank is None:
         flow = min(flow, supply)
+        # without a tank the bays share the supply: no more fill at one time than it feeds at that flow
+        bays = min(bays, math.floor(supply / flow * (1 + 1e-12))) if flow > 0 else bays
     return truck_plan(
         peak_l,
         capacity_l=truck.capacity,
         fill_flow_l_s=flow,
-        bays=truck.bays,
+        bays=bays,
         travel_min=truck.travel_time,
         spread_min=truck.spread_time,
         work_min=60.0 * given.work_hours,

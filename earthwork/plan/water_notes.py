@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Sequence
+import math
+from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING
 
 from earthwork.errors import Warning
@@ -174,12 +175,15 @@ def _short(site: Site, result: WaterResult) -> list[Warning]:
     else:
         when += f", from its hour {day.first_short_hour} on ({clock:%H:%M})"
     mends = "; or ".join(text for remedy in result.remedies if (text := _mend(remedy, units)))
-    allowed = units.from_si(day.achievable_m3, "soil_volume")
+    allows = day.limits["water"]
+    volume = "" if allows is None else (
+        f", which has water for {units.from_si(allows, 'soil_volume'):,.0f} {units.label('soil_volume')} of "
+        f"{units.from_si(day.demand.compacted_m3, 'soil_volume'):,.0f}"
+    )  # fmt: skip
     return [
         Warning(
             "water-short",
-            f"water runs short first on {when}: {litres(day.shortfall_l, units)} are missing that day, which has water "
-            f"for {allowed:,.0f} {units.label('soil_volume')} of {units.from_si(day.demand.compacted_m3, 'soil_volume'):,.0f}. "
+            f"water runs short first on {when}: {litres(day.shortfall_l, units)} are missing that day{volume}. "
             f"It takes {mends or 'less open ground and dust control: no other remedy does'}",
         )
     ]
@@ -187,19 +191,55 @@ def _short(site: Site, result: WaterResult) -> list[Warning]:
 
 def _mend(remedy: Remedy, units: UnitSystem) -> str | None:
     """A remedy in words; None where it is impossible."""
+    figure = remedy_figure(remedy, units)
+    if figure is None:
+        return None
+    if remedy.standpipes is not None:
+        return f"{figure} standpipes"
+    if remedy.flow_l_s is not None:
+        return f"a flow of {figure}"
+    if remedy.tank_l is not None:
+        return f"a tank of {figure}, full at the start"
+    if remedy.supply_hours is not None:
+        return f"a fill window of {figure} hours"
+    return f"placing {figure} a day ({remedy.note})"
+
+
+def remedy_figure(remedy: Remedy, units: UnitSystem) -> str | None:
+    """The figure of a remedy with its unit, rounded to the side that still mends; None where it is impossible.
+
+    >>> from earthwork.units import METRIC
+    >>> tank = Remedy(remedy="a larger tank", possible=True, note="", tank_l=401761.3)
+    >>> remedy_figure(tank, METRIC)
+    '401,762 L'
+    """
     if not remedy.possible:
         return None
     if remedy.standpipes is not None:
-        return f"{remedy.standpipes} standpipes"
-    if remedy.flow_l_s is not None:
-        return f"a flow of {units.from_si(remedy.flow_l_s, 'flow'):,.0f} {units.label('flow')}"
-    if remedy.tank_l is not None:
-        return f"a tank of {litres(remedy.tank_l, units)}, full at the start"
+        return f"{remedy.standpipes}"
     if remedy.supply_hours is not None:
-        return f"a fill window of {remedy.supply_hours:.1f} hours"
+        return _rounded(remedy.supply_hours, math.ceil, 1)
+    if remedy.flow_l_s is not None:
+        flow = units.from_si(remedy.flow_l_s, "flow")
+        return f"{_rounded(flow, math.ceil, 0 if flow >= 10 else 2)} {units.label('flow')}"
+    if remedy.tank_l is not None:
+        return tank_figure(remedy.tank_l, units)
     assert remedy.placing_rate_per_day_m3 is not None
     rate = units.from_si(remedy.placing_rate_per_day_m3, "soil_volume")
-    return f"placing {rate:,.0f} {units.label('soil_volume')} a day ({remedy.note})"
+    return f"{_rounded(rate, math.floor, 0 if rate >= 10 else 2)} {units.label('soil_volume')}"
+
+
+def tank_figure(volume_l: float, units: UnitSystem) -> str:
+    """The size of a tank that is enough, rounded up."""
+    return f"{_rounded(units.from_si(volume_l, 'water_volume'), math.ceil)} {units.label('water_volume')}"
+
+
+def _rounded(value: float, way: Callable[[float], int], places: int = 0) -> str:
+    """Rounded up or down, but not over a last digit that is itself rounding."""
+    scaled = value * 10**places
+    near = round(scaled)
+    whole = near if math.isclose(scaled, near, rel_tol=1e-9) else way(scaled)
+    return f"{whole / 10**places:,.{places}f}"
 
 
 def _trucks(site: Site, result: WaterResult) -> list[Warning]:

@@ -14,6 +14,9 @@ from earthwork.plan.calendar import CalendarDay, WorkCalendar, slot_hours
 from earthwork.plan.weather import DailyWeather, OpenGround, Place
 from earthwork.site import Site
 
+#: Evaporation below this is taken for a figure in another unit [mm/day].
+_LEAST_MM_DAY = 0.5
+
 
 @dataclass(frozen=True)
 class WorkDays:
@@ -87,6 +90,15 @@ def work_days(site: Site, grid: Grid, elevation_m: float) -> WorkDays:
     if weather is None and given is None and model.water is not None:
         warnings.append(
             Warning("no-evaporation", "neither water.evaporation nor [weather] is given: no water is made up for it")
+        )
+    if given is not None and 0 < given < _LEAST_MM_DAY:
+        show = site.units.from_si(given, "evaporation")
+        warnings.append(
+            Warning(
+                "evaporation-low",
+                f"water.evaporation is {show:g} {site.units.label('evaporation')}; wet open ground loses 1 to 12 mm "
+                "(0.04 to 0.5 in) on a day of work. Check its unit",
+            )
         )
     calendar = _calendar(site, start, weather)
     return WorkDays(calendar, weather, given or 0.0, tuple(warnings))

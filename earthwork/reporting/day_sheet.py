@@ -74,9 +74,9 @@ def _look(site: Site, day: WaterDay) -> str:
     lines = []
     if day.first_short_hour is not None:
         missing = show(day.shortfall_l, "water_volume", site.units)
-        allowed = show(day.limits["water"], "soil_volume", site.units)
-        lines.append(f"<b>Water runs short</b> from hour {day.first_short_hour} on: {missing} are missing; "
-                     f"there is water for {allowed}.")  # fmt: skip
+        allows = day.limits["water"]
+        enough = "" if allows is None else f"; there is water for {show(allows, 'soil_volume', site.units)}"
+        lines.append(f"<b>Water runs short</b> from hour {day.first_short_hour} on: {missing} are missing{enough}.")
     elif day.limited_by not in ("placing rate", "pre-wetting"):
         lines.append(f"<b>{escape(day.limited_by.capitalize())}</b> holds the day to "
                      f"{show(day.achievable_m3, 'soil_volume', site.units)}.")  # fmt: skip

@@ -9,9 +9,11 @@ from earthwork.plan.drying import DryingOption
 from earthwork.plan.remedies import Remedy
 from earthwork.plan.water import WaterResult
 from earthwork.plan.water_days import WaterDay
+from earthwork.plan.water_notes import remedy_figure, tank_figure
 from earthwork.reporting.display import plain, show
 from earthwork.reporting.page import Block, Column, Facts, Notes, Page, table_of
 from earthwork.site import Site
+from earthwork.units import UnitSystem
 
 _DAY_COLUMNS = (
     Column("day", "day"),
@@ -47,7 +49,7 @@ def page(site: Site, result: WaterResult) -> Page:
     total = {**document["totals"], "day": "all", "total_l": document["total_l"]}
     total["compacted_m3"] = sum(day["compacted_m3"] for day in document["days"])
     total["other_l"] = total["dust_l"] + total["waste_l"]
-    rows = [_day_row(day, shown) for day, shown in zip(document["days"], result.days, strict=True)]
+    rows = [_day_row(day, shown, site.units) for day, shown in zip(document["days"], result.days, strict=True)]
     blocks += [
         table_of(rows, _DAY_COLUMNS, site.units, heading="Day by day", totals=[total], longest=_LONGEST),
         table_of(
@@ -79,7 +81,7 @@ def _answer(site: Site, result: WaterResult) -> tuple[tuple[str, str, str], ...]
     if needed is None:
         rows.append(("tank that bridges it", "none", result.tank_note or ""))
     else:
-        rows.append(("tank that bridges it", show(needed, "water_volume", units), "full at the start"))
+        rows.append(("tank that bridges it", tank_figure(needed, units), "full at the start"))
     if result.trucks is not None:
         cycle, trips = result.trucks.cycle_min, result.trucks.trips_per_truck
         note = f"{plain(cycle, 1)} min a trip, {trips} trips a day; fill point used "
@@ -96,35 +98,40 @@ def _short_row(site: Site, result: WaterResult) -> tuple[str, str, str]:
     clock = result.job.calendar.clock(day.demand.day, day.first_short_hour - 1)
     when = f"day {day.demand.day.day}, {clock:%H:%M}"
     missing = show(day.shortfall_l, "water_volume", site.units)
-    allowed = show(day.achievable_m3, "soil_volume", site.units)
-    return ("goes short", when, f"by {missing} that day; its water is enough for {allowed}")
+    allows = day.limits["water"]
+    enough = "" if allows is None else f"; its water is enough for {show(allows, 'soil_volume', site.units)}"
+    return ("goes short", when, f"by {missing} that day{enough}")
 
 
 def _remedies(site: Site, result: WaterResult) -> tuple[tuple[str, str, str], ...]:
-    return tuple((r.remedy, _figure(r, site) if r.possible else "no", r.note) for r in result.remedies)
+    return tuple((r.remedy, _figure(r, site), r.note) for r in result.remedies)
 
 
 def _figure(remedy: Remedy, site: Site) -> str:
-    units = site.units
+    figure = remedy_figure(remedy, site.units) or "no"
     if remedy.standpipes is not None:
-        return f"{remedy.standpipes} in all"
-    if remedy.flow_l_s is not None:
-        return f"{units.from_si(remedy.flow_l_s, 'flow'):,.0f} {units.label('flow')}"
-    if remedy.tank_l is not None:
-        return show(remedy.tank_l, "water_volume", units)
+        return f"{figure} in all"
     if remedy.supply_hours is not None:
-        return f"{remedy.supply_hours:.1f} h a day"
-    return f"{show(remedy.placing_rate_per_day_m3, 'soil_volume', units)} a day"
+        return f"{figure} h a day"
+    return f"{figure} a day" if remedy.placing_rate_per_day_m3 is not None else figure
 
 
-def _day_row(row: dict[str, Any], day: WaterDay) -> dict[str, Any]:
+def _day_row(row: dict[str, Any], day: WaterDay, units: UnitSystem) -> dict[str, Any]:
     date = day.demand.day.date
     return {
         **row,
         "day": str(row["day"]) + (f"{_NBSP}{_NBSP}{date:%d}{_NBSP}{date:%b}" if date else ""),
         "other_l": row["dust_l"] + row["waste_l"],
         "shortfall_l": row["shortfall_l"] or None,
+        "limited_by": row["limited_by"] + _held_at(day, units),
     }
+
+
+def _held_at(day: WaterDay, units: UnitSystem) -> str:
+    """The volume that a day is held to, where it is less than what is to be placed."""
+    if day.achievable_m3 >= day.demand.compacted_m3 * (1 - 1e-9):
+        return ""
+    return f"{_NBSP}{show(day.achievable_m3, 'soil_volume', units, unit=False)}"
 
 
 def _material_row(row: dict[str, Any], site: Site) -> dict[str, Any]:
@@ -156,7 +163,7 @@ def _basis(site: Site, result: WaterResult) -> tuple[str, ...]:
         "Water goes with dry mass: target less arriving water content, whatever state the volume is in. What is to wet "
         "and what is to dry never offset each other.",
         f"Evaporation {source}, times the open ground of the day. Days run at the placing rate; 'held by' names what "
-        "would hold a day under it.",
+        "would hold a day under it, and the volume that it allows.",
     ]
     if moisture.wet_in == "cut" and moisture.pre_wet_days:
         lines.append(f"Water goes onto the cut {moisture.pre_wet_days} working days before the soil is placed.")

@@ -149,3 +149,13 @@ def test_a_calendar_that_never_works_and_a_rate_that_never_ends_are_refused():
         schedule([(0, 10.0)], 5.0, calendar)
     with pytest.raises(PlanError, match=r"takes more than 5000 days; check the rate"):
         schedule([(0, 1e6)], 1.0, WorkCalendar())
+
+
+def test_bank_tests_without_a_material_are_taken_by_their_place(tmp_path):
+    # one stratum of silt below level 50; its mean of 1480 and 1520 is the bank density of the hand site
+    (tmp_path / "bank.csv").write_text(
+        "test,easting,northing,elevation,water_content_percent,dry_density_kg_m3\n"
+        "a,500040,4399960,49.0,8,1480\nb,500060,4399950,48.5,8,1520\n"
+    )
+    changes = {"material.silt.bank": {"tests": "bank.csv"}}
+    assert lifts(site(tmp_path, changes)).to_dict()["total"]["bank_m3"] == pytest.approx(6840.0)

@@ -7,6 +7,8 @@ import pytest
 
 from earthwork.errors import SiteFileError
 from earthwork.plan.water import water
+from earthwork.plan.water_notes import remedy_figure
+from earthwork.units import METRIC
 from tests.plan.watered import site
 
 # 1000 m³ × 119.7 L + 5 mm × 8000 m² + 4 × 5000 L, and 5 % of it: 119,700 + 40,000 + 20,000 + 8,985 = 188,685 L a day
@@ -216,6 +218,52 @@ def test_heavy_trucks_and_a_busy_fill_point_are_said(tmp_path):
     assert "it may carry 10,000 L" in messages[0]
     assert "it may carry 11,000 L" in messages[1]
     assert "fill-point-short" in {w.code for w in result.warnings}  # 34 min a truck: 14 of 16 loads
+
+
+@pytest.mark.parametrize("bays", [2, 3])
+def test_without_a_tank_the_bays_share_the_supply(tmp_path, bays):
+    # 1000 L/min feed two trucks at 500 L/min: 24 min each; 16 loads of 480 min
+    truck = {"water.supply.flow": 1000, "water.truck.fill_flow": 500, "water.truck.bays": bays}
+    result = water(site(tmp_path, truck, without=("water.tank",))).to_dict()
+    assert result["fill_point_use_percent"] == pytest.approx(100 * 16 * 24 / (2 * 480))
+    assert result["truck_cycle_min"] == pytest.approx(24 + 14 + 6)
+    alone = water(site(tmp_path, {**truck, "water.truck.fill_flow": 3000}, without=("water.tank",))).to_dict()
+    assert alone["fill_point_use_percent"] == pytest.approx(100 * 16 * 12 / 480)  # all of the supply, one at a time
+
+
+def test_a_short_day_that_places_nothing_tells_no_volume(tmp_path):
+    changes = {"moisture": {"wet_in": "cut", "pre_wet_days": 2}, "water.supply.flow": 20}
+    result = water(site(tmp_path, changes))
+    (message,) = [w.message for w in result.warnings if w.code == "water-short"]
+    assert result.first_short.demand.compacted_m3 == 0
+    assert "are missing that day. It takes" in message
+
+
+def test_what_the_water_is_enough_for_is_not_what_the_rollers_do(tmp_path):
+    # rollers: 2 m × 3 km/h × 0.2 m × 0.5 / 20 = 30 m³/h, 300 m³ a day; the water: 932 m³ (the hand check above)
+    roller = {"width": 2.0, "speed": 3.0, "passes": 20, "efficiency": 0.5}
+    result = water(site(tmp_path, {"roller": [roller]}, without=("water.tank", "water.truck")))
+    assert result.days[0].achievable_m3 == pytest.approx(300)
+    (message,) = [w.message for w in result.warnings if w.code == "water-short"]
+    assert "water for 931 m³ of 1,000" in message
+
+
+def test_the_printed_figures_of_remedies_still_mend(tmp_path):
+    given = {"water.supply.flow": 250, "water.supply.hours": 10}
+    result = water(site(tmp_path, given))
+    figures = {r.remedy: remedy_figure(r, METRIC) for r in result.remedies}
+    flow = float(figures["a greater flow"].removesuffix(" L/min"))
+    hours = float(figures["a longer fill window"])
+    rate = float(figures["a slower placing rate"].removesuffix(" m³"))
+    assert figures["a larger tank"] is None
+    for change in ({"supply_l_s": flow / 60}, {"supply_hours": hours}, {"placing_m3_day": rate}):
+        assert not replace(result.job, **change).is_short
+
+
+@pytest.mark.parametrize(("evaporation", "said"), [(0.25, True), (0.5, False), (0.0, False)])
+def test_evaporation_in_inches_of_a_metric_site_is_said(tmp_path, evaporation, said):
+    result = water(site(tmp_path, {"water.evaporation": evaporation}))
+    assert ("evaporation-low" in {w.code for w in result.warnings}) == said
 
 
 def test_weather_takes_the_place_of_a_figure(tmp_path):
