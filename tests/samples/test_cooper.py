@@ -116,3 +116,23 @@ def test_soil_card_is_that_of_the_laboratory(site):
     assert card["optimum_water_content_percent"] == pytest.approx(-b / (2 * a), abs=0.3)
     bank = np.mean([float(r["dry_density_lb_ft3"]) for r in rows_of("bank.csv")])
     assert card["bank_dry_density_kg_m3"] / pound == pytest.approx(bank, rel=1e-9)
+
+
+def test_the_clay_is_dried_and_the_dust_wetted(site):
+    """By hand in pounds: clay to dry from 22.97 to 18.22 % at 0.97 × 107.8 lb/ft³; two passes of 0.2 gal/yd²."""
+    result = earthwork.water(site).to_dict()
+    clay, river = (next(m for m in result["materials"] if m["material"] == n) for n in ("lean clay", "river clay"))
+    pound_per_ft3 = 0.45359237 / 0.3048**3
+    assert clay["water_to_dry_l_per_m3"] == pytest.approx(0.97 * 107.8 * pound_per_ft3 * (22.97 - 18.22) / 100, rel=0.01)
+    assert river["water_to_dry_l_per_m3"] == pytest.approx(0.97 * 106 * pound_per_ft3 * (27 - 19.5) / 100, rel=1e-9)
+    assert clay["water_to_add_l_per_m3"] == river["water_to_add_l_per_m3"] == 0
+    placed = [day for day in result["days"] if day["compacted_m3"] > 0]
+    for day in placed:
+        assert day["compaction_l"] == 0
+        assert day["water_to_dry_l"] > 0
+        assert day["dust_l"] == pytest.approx(40_000 / 9 * 0.2 * 2 * 3.785411784)
+    full = placed[0]
+    assert full["limited_by"] == "drying"
+    assert full["achievable_m3"] / full["compacted_m3"] == pytest.approx(0.47, abs=0.05)  # "half" in the README
+    assert {option["method"] for option in result["drying"]} == {"turned lifts"}
+    assert all(2 < option["days"] < 3.2 for option in result["drying"])

@@ -151,6 +151,27 @@ def test_soil_card_is_that_of_the_laboratory(site):
     assert reached == pytest.approx(site.model.fill.expected_compaction, abs=0.4)
 
 
+def test_water_runs_short_in_the_driest_week_and_what_mends_it(site):
+    """One well gives 280 × 1440 L a day; what the soil wants by its laboratory figures, July by the weather file."""
+    result = earthwork.water(site).to_dict()
+    soil = next(row for row in result["materials"] if row["material"] == "loess")
+    assert soil["arriving_water_content_percent"] == pytest.approx(7.43 - 0.3, abs=0.01)  # mean of 15, less on the way
+    assert soil["target_water_content_percent"] == pytest.approx(16.7, abs=0.05)  # as the README tells
+    days = result["days"]
+    short = [day["date"] for day in days if day["shortfall_l"] > 0]
+    temperature = {row[0]: float(row[1]) for row in rows_of("weather.csv")}
+    weeks = {first: np.mean(list(temperature.values())[i : i + 7]) for i, first in enumerate(temperature)}
+    hottest = max(list(weeks)[:-6], key=weeks.get)
+    assert short
+    assert all(hottest <= date <= "2026-07-19" for date in short)
+    assert all(day["supply_l"] == pytest.approx(280 * 1440) for day in days)
+    ways = {row["remedy"]: row for row in result["remedies"]}
+    assert ways["more standpipes"]["standpipes"] == 2
+    missing = sum(day["shortfall_l"] for day in days)
+    assert ways["a larger tank"]["tank_l"] == pytest.approx(300_000 + missing)  # it never fills in between
+    assert 1600 < ways["a slower placing rate"]["placing_rate_per_day_m3"] < 1800
+
+
 def rows_of(name):
     with (FOLDER / "lab" / name).open(encoding="utf-8", newline="") as source:
         return list(csv.reader(source))[1:]
