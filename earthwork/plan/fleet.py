@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from earthwork.errors import Warning
 from earthwork.plan.haul_moves import Move
 from earthwork.plan.haul_ways import HaulWays
 from earthwork.plan.trucks import loads_per_hour, match_factor, trucks_to_match
@@ -163,6 +164,34 @@ def _road_use(moves: Sequence[Move], ways: HaulWays) -> list[RoadUse]:
                 loads=math.fsum(move.loads or 0.0 for move, _ in users),
                 t_km=math.fsum(move.dry_mass_t * length / 1000 for move, length in users),
                 use_percent=use,
+            )
+        )
+    return found
+
+
+def road_warnings(fleet: Fleet | None, moves: Sequence[Move], ways: HaulWays) -> list[Warning]:
+    """Haul roads that would carry more loads an hour than they take, and those whose use cannot be told."""
+    if ways.roads is None:
+        return []
+    limited = [(k, road) for k, road in enumerate(ways.roads.roads) if road.capacity_per_hour is not None]
+    driven = [(k, road) for k, road in limited if any((move.roads == k).any() for move in moves)]
+    use = {k: fleet.roads[k].use_percent if fleet else None for k, _ in driven}
+    found = [
+        Warning(
+            "road-over-capacity",
+            f'haul road "{road.name}": {percent / 100 * road.capacity_per_hour:.3g} loads an hour where it takes '
+            f"{road.capacity_per_hour:.3g}; the plan does not mind. Take fewer trucks (haul.truck.count), or widen it",
+        )
+        for k, road in driven
+        if road.capacity_per_hour is not None and (percent := use[k]) is not None and percent > 100 * (1 + 1e-9)
+    ]
+    blind = dict.fromkeys(f'"{road.name}"' for k, road in driven if use[k] is None)
+    if blind:
+        found.append(
+            Warning(
+                "road-capacity-unchecked",
+                f"haul road {', '.join(blind)}: loads an hour are not known, so its capacity is not checked. "
+                "Give haul.truck its speed_loaded and load_time or count",
             )
         )
     return found

@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from earthwork.errors import PlanError, SiteFileError, Warning
-from earthwork.plan.fleet import Fleet, fleet_of
+from earthwork.plan.fleet import Fleet, fleet_of, road_warnings
 from earthwork.plan.haul_costs import HaulCosts
 from earthwork.plan.haul_moves import Move, moves_of
 from earthwork.plan.haul_places import Places, Sink, Source, middle_of, places_of
@@ -233,7 +233,8 @@ def haul_result(
     moves = moves_of(costs, plan)
     _check_closure(places, plan, moves)
     warnings = [*volumes.warnings, *areas.warnings, *soil_warnings(cards), *places.warnings, *ways.warnings]
-    warnings += _warnings(site, places, moves, areas)
+    fleet = fleet_of(model, moves, ways) if model.haul.truck else None
+    warnings += [*_warnings(site, places, moves, areas), *road_warnings(fleet, moves, ways)]
     return HaulResult(
         units=site.units,
         warnings=tuple(dict.fromkeys(warnings)),
@@ -244,7 +245,7 @@ def haul_result(
         ties=tuple((places.sources[i].name, places.sinks[j].name) for i, j in plan.transport.ties.tolist()),
         certificate=plan.transport.certificate,
         loads_by_destination=_whole_loads(moves) if model.haul.truck else None,
-        fleet=fleet_of(model, moves, ways) if model.haul.truck else None,
+        fleet=fleet,
         line=line_haul(site, cards, counted.line) if counted.line else None,
         volumes=volumes,
         areas=areas,
@@ -386,7 +387,8 @@ def _warnings(site: Site, places: Places, moves: Sequence[Move], areas: HaulArea
         found.append(
             Warning(
                 "grade-unknown",
-                f"{share:.2g} % of the haul runs over ground that the surfaces do not cover; it counts as level there",
+                f"{share:.{1 if share < 1 else 0}f} % of the haul runs over ground that the surfaces do not cover; "
+                "it counts as level there",
             )
         )
     haul = site.model.haul

@@ -30,10 +30,23 @@ def no_way_error(names: Sequence[str], *, out: bool) -> PlanError:
 
 
 def shortage_error(
-    sinks: Sequence[Sink], sources: Sequence[Source], lack_m3: float, cards: dict[str, SoilCard], units: UnitSystem
+    sinks: Sequence[Sink],
+    sources: Sequence[Source],
+    lack_m3: float,
+    cards: dict[str, SoilCard],
+    units: UnitSystem,
+    *,
+    closed_off: Sequence[str] = (),
 ) -> PlanError:
-    """Fills that nothing, or too little, may serve."""
+    """Fills that nothing, or too little, may serve; ``closed_off``: pits that could, were it not for barriers."""
     unit, label = units.factor("soil_volume"), units.label("soil_volume")
+    for material in _alone(sources, sinks):
+        mine = [s for s in sinks if material in s.m3_per_kg]
+        giving = [s for s in sources if s.material == material]
+        lack = sum(s.volume_m3 for s in mine) - sum(s.mass_kg for s in giving) * mine[0].m3_per_kg[material]
+        if lack > 0:
+            sinks, sources, lack_m3 = mine, giving, lack
+            break
     materials = list(dict.fromkeys(m for sink in sinks for m in sink.m3_per_kg))
     need = sum(sink.volume_m3 for sink in sinks)
     names = listed([sink.name for sink in sinks])
@@ -48,26 +61,38 @@ def shortage_error(
     )
     if sources:
         text += f"; what may go there, from {listed([s.name for s in sources])}, is used up"
-    card = next((cards[m] for m in materials if cards[m].use in ("fill", "rock", "topsoil")), cards[materials[0]])
-    dug = (
-        lack_m3 / sinks[0].m3_per_kg[card.material] / (1 - card.loss_fraction)
-        if card.material in sinks[0].m3_per_kg
-        else lack_m3
-    )
-    bank = dug / card.bank_dry_density_kg_m3
-    pits = [s.name for s in sources if s.kind == "borrow"]
-    mend = f"raise the capacity of {listed(pits)}" if pits else f"add a [[borrow]] of {what}"
-    return PlanError(
-        f"{text}. Too small by {bank / unit:,.0f} {label} (bank) of {card.material}: {mend} by that, "
-        "or change what may go there"
-    )
+    pits = [s for s in sources if s.kind == "borrow"]
+    # What would do is said of what the pits give, each by its own density.
+    given = list(dict.fromkeys(s.material for s in pits)) or materials[:1]
+    weights = {m: w for sink in reversed(sinks) for m, w in sink.m3_per_kg.items()}
+    lacks = " or ".join(f"{_bank_m3(lack_m3 / weights[m], cards[m]) / unit:,.0f} {label} (bank) of {m}" for m in given)
+    if closed_off:
+        mend = f"barriers close off {listed(closed_off)}; leave a gap in haul.barriers, or lead a road through them"
+    elif pits:
+        mend = f"raise the capacity of {listed([s.name for s in pits])} by that"
+    else:
+        mend = "add a [[borrow]] that gives that"
+    return PlanError(f"{text}. Too small by {lacks}: {mend}, or change what may go there")
 
 
 def surplus_error(
-    sources: Sequence[Source], sinks: Sequence[Sink], left_kg: float, cards: dict[str, SoilCard], units: UnitSystem
+    sources: Sequence[Source],
+    sinks: Sequence[Sink],
+    left_kg: float,
+    cards: dict[str, SoilCard],
+    units: UnitSystem,
+    *,
+    closed_off: Sequence[str] = (),
 ) -> PlanError:
-    """Earth that no place, or too little room, is left for."""
+    """Earth that no place, or too little room, is left for; ``closed_off``: tips behind barriers."""
     unit, label = units.factor("soil_volume"), units.label("soil_volume")
+    for material in _alone(sources, sinks):
+        mine = [s for s in sources if s.material == material]
+        taking = [s for s in sinks if material in s.m3_per_kg]
+        left = sum(s.mass_kg for s in mine) - sum(s.volume_m3 / s.m3_per_kg[material] for s in taking)
+        if left > 0:
+            sources, sinks, left_kg = mine, taking, left
+            break
     materials = list(dict.fromkeys(s.material for s in sources))
     loose = left_kg / cards[materials[0]].loose_dry_density_kg_m3
     names = listed([s.name for s in sources])
@@ -79,4 +104,26 @@ def surplus_error(
         return PlanError(
             f"{text}: the capacity of {listed(tips)} is too small by that. Raise it, or add a [[disposal]]"
         )
+    if closed_off:
+        return PlanError(
+            f"{text}: barriers close off {listed(closed_off)}. "
+            "Leave a gap in haul.barriers, or lead a road of haul.roads through them"
+        )
     return PlanError(f"{text}: no [[disposal]] takes it. Add one, or widen accepts of one that is there")
+
+
+def _bank_m3(dry_kg: float, card: SoilCard) -> float:
+    """Bank volume to dig for a dry mass that arrives."""
+    return dry_kg / (1 - card.loss_fraction) / card.bank_dry_density_kg_m3
+
+
+def _alone(sources: Sequence[Source], sinks: Sequence[Sink]) -> list[str]:
+    """Materials whose places take no other, where there are places of others as well: each is a lack of its own."""
+    given = list(dict.fromkeys(s.material for s in sources))
+    materials = list(dict.fromkeys([*given, *(m for sink in sinks for m in sink.m3_per_kg)]))
+    alone = []
+    for material in materials:
+        joined = {material}.union(*(sink.m3_per_kg for sink in sinks if material in sink.m3_per_kg))
+        if not joined & set(given) - {material} and set(materials) - joined:
+            alone.append(material)
+    return alone

@@ -82,7 +82,7 @@ class _Describer:
     def __init__(self, costs: HaulCosts) -> None:
         self.costs = costs
         self.truck = costs.haul.truck
-        self.factor = costs.haul.straight_factor if costs.haul.distance == "straight" else 1.0
+        self.factor = costs.ways.factor
 
     def move(self, leg: Leg, way: Way, back: Way | None) -> Move:
         source, sink = self.costs.places.sources[leg.source], self.costs.places.sinks[leg.sink]

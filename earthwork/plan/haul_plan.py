@@ -124,9 +124,9 @@ class _Planner:
         """Cost of a kilogram from each source to each sink."""
         costs = self.costs
         n, m = len(row_class), len(column_class)
-        areas, haul = costs.ways.areas, costs.haul
+        areas = costs.ways.areas
         open_ground = not areas.barriers and not areas.roads and not areas.built
-        straight = (haul.distance == "straight" or open_ground) and not costs.by_time and not areas.phases
+        straight = (costs.ways.straight or open_ground) and not costs.by_time and not areas.phases
         most = _MOST_STRAIGHT if straight else _MOST_PAIRS
         if n * m > most:
             raise PlanError(
@@ -135,9 +135,8 @@ class _Planner:
                 + ("" if straight else ', or take distance = "straight"')
             )
         if straight and n * m > _MANY_PAIRS:
-            factor = haul.straight_factor if haul.distance == "straight" else 1.0
             return Costs(
-                rate=np.full(n, costs.price("") * factor), way=np.ones(m), table=table, row_class=row_class,
+                rate=np.full(n, costs.price("") * costs.ways.factor), way=np.ones(m), table=table, row_class=row_class,
                 column_class=column_class, row_place=costs.from_place, column_place=costs.to_place,
             )  # fmt: skip
         return Costs(
@@ -221,15 +220,31 @@ class _Planner:
         sinks = [self.places.sinks[j] for j in error.columns]
         cards, units = self.costs.cards, self.costs.ways.units
         if error.shortage:
-            return shortage_error(sinks, sources, error.amount * float(self.scale[error.columns[0]]), cards, units)
-        return surplus_error(sources, sinks, error.amount, cards, units)
+            lack = error.amount * float(self.scale[error.columns[0]])
+            behind = self._closed_off(self.places.sources, error.columns, axis=1)
+            return shortage_error(sinks, sources, lack, cards, units, closed_off=behind)
+        behind = self._closed_off(self.places.sinks, error.rows, axis=0)
+        return surplus_error(sources, sinks, error.amount, cards, units, closed_off=behind)
+
+    def _closed_off(self, places: Sequence[Source | Sink], to: Array, *, axis: int) -> list[str]:
+        """Pits or tips that may serve some sinks (axis 1) or sources (axis 0), and have a way to none of them."""
+        distance = self.moves.distance
+        if distance is None:
+            return []
+        may = self._allowed().take(to, axis=axis)
+        shut = may.any(axis=axis) & ~(may & np.isfinite(distance.take(to, axis=axis))).any(axis=axis)
+        return [place.name for place, s in zip(places, shut, strict=True) if s and place.spare]
+
+    def _allowed(self) -> Array:
+        """Which source may serve which sink, ways or not, (n, m)."""
+        return np.isfinite(self.moves.table)[self.moves.row_class][:, self.moves.column_class]
 
     def _shut_in(self) -> PlanError | None:
         """Blocks that barriers close in on all sides."""
         moves = self.moves
         if moves.distance is None:
             return None
-        allowed = np.isfinite(moves.table)[moves.row_class][:, moves.column_class]
+        allowed = self._allowed()
         open_ = allowed & np.isfinite(moves.distance)
         pairs: list[tuple[Sequence[Source | Sink], int]] = [(self.places.sources, 1), (self.places.sinks, 0)]
         for places, axis in pairs:

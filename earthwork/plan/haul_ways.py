@@ -38,13 +38,23 @@ class HaulWays:
     @cached_property
     def roads(self) -> RoadNet | None:
         """The haul roads."""
-        if not self.areas.roads:
+        if self.straight or not self.areas.roads:
             return None
         return RoadNet.of(roads_of(self.haul, self.units, self.areas), elevations=self.relief.at)
 
     @property
     def warnings(self) -> tuple[Warning, ...]:
         return self.roads.warnings if self.roads is not None else ()
+
+    @property
+    def straight(self) -> bool:
+        """Whether distances run through everything, times a factor."""
+        return self.haul.distance == "straight"
+
+    @property
+    def factor(self) -> float:
+        """What lengths and times of the ways are multiplied by."""
+        return self.haul.straight_factor if self.straight else 1.0
 
     @property
     def by_time(self) -> bool:
@@ -56,6 +66,7 @@ class HaulWays:
         known = phase if any(built < phase for _, built in self.areas.built) else 0
         if known not in self._made:
             shapes = [*self.areas.barriers, *(shape for shape, built in self.areas.built if built < known)]
+            shapes = [] if self.straight else shapes
             speed = self.haul.ground_speed or np.inf
             effort: Any = metres
             if self.by_time:
@@ -80,10 +91,6 @@ class HaulWays:
 
     def tables(self, sources: Array, sinks: Array, phase: Array) -> tuple[Array, Array | None]:
         """Lengths [m] (n, m) in the phase (n, m) of each haul, and where time counts minutes out and back."""
-        if self.haul.distance == "straight":
-            east = sources[:, 0][:, None] - sinks[:, 0][None, :]
-            north = sources[:, 1][:, None] - sinks[:, 1][None, :]
-            return self.haul.straight_factor * np.hypot(east, north), None
         length = np.full(phase.shape, np.inf)
         minutes = np.full(phase.shape, np.inf) if self.by_time else None
         for ways, back, rows, columns, where in self._by_ground(phase):
@@ -93,11 +100,11 @@ class HaulWays:
             if minutes is not None:
                 home = back.table(sinks[columns], sources[rows]).effort.T
                 minutes[here] = np.where(where[here], out.effort + home, minutes[here])
-        return length, minutes
+        return self.factor * length, None if minutes is None else self.factor * minutes
 
     def _by_ground(self, phase: Array):
         """Ways with the rows and columns that use them: one set where no ground is closed."""
-        if not self.areas.built:
+        if self.straight or not self.areas.built:
             phase = np.zeros_like(phase)
         for number in np.unique(phase):
             where = phase == number
@@ -107,7 +114,7 @@ class HaulWays:
 
     def ways(self, sources: Array, sinks: Array, phase: Array, *, empty: bool = False) -> list[Way]:
         """The way of each haul that a table says is possible, phase (k,)."""
-        if self.haul.distance == "straight":
+        if self.straight:
             return [Way(np.vstack([a, b]), np.array([-1])) for a, b in zip(sources, sinks, strict=True)]
         found: list[Way | None] = [None] * len(sources)
         for number in np.unique(phase):
@@ -190,7 +197,7 @@ def _number(line: Any, attribute: str | None, key: str, *, above: float) -> floa
         number = np.nan
     if not number > above:
         raise FileError(
-            f"{line.where}: {attribute} is {value!r}; haul.roads.{key} must be a number over {above:g}. "
+            f"{line.where}: {attribute} is {_shown(value)}; haul.roads.{key} must be a number over {above:g}. "
             "Leave it empty where it does not apply"
         )
     return number
@@ -204,5 +211,10 @@ def _flag(line: Any, attribute: str | None) -> bool:
     if text.removesuffix(".0") in _NO:
         return False
     raise FileError(
-        f"{line.where}: {attribute} is {value!r}; haul.roads.one_way must be true or false, 1 or 0, yes or no"
+        f"{line.where}: {attribute} is {_shown(value)}; haul.roads.one_way must be true or false, 1 or 0, yes or no"
     )
+
+
+def _shown(value: Any) -> str:
+    """A value as its file has it: 0.0, 'maybe'."""
+    return repr(value.item() if isinstance(value, np.generic) else value)

@@ -25,6 +25,8 @@ from earthwork.site.model import AreaSpec
 
 #: Squares that a site may be divided into.
 _MOST_SQUARES = 250_000
+#: Stations that a baseline may have: its chart and its table are read by people.
+_MOST_STATIONS = 20_000
 
 
 @dataclass(frozen=True)
@@ -268,7 +270,20 @@ class _Opener:
                 f"baseline: {spec.line.file}: the line crosses itself at ({at[0]:.10g}, {at[1]:.10g}); stations would "
                 "not be clear there. Take a line that does not, or two with a site file each"
             )
-        return self.frame.local(shapely.get_coordinates(shape))
+        points = self.frame.local(shapely.get_coordinates(shape))
+        self._check_stations(float(np.hypot(*np.diff(points, axis=0).T).sum()), spec.interval)
+        return points
+
+    def _check_stations(self, length_m: float, interval_m: float) -> None:
+        """Refuse more stations than a mass curve can hold."""
+        if length_m > _MOST_STATIONS * interval_m:
+            units = self.site.units
+            raise SiteFileError(
+                f"{self.site.path or self.site.name}: baseline.interval = {units.from_si(interval_m, 'length'):g} "
+                f"{units.label('length')}: it makes {length_m / interval_m:,.0f} stations; the most is "
+                f"{_MOST_STATIONS:,}. Take {units.from_si(length_m / _MOST_STATIONS, 'length'):.2g} "
+                f"{units.label('length')} or more"
+            )
 
     # --- files -------------------------------------------------------------------------------------------------------
 

@@ -170,7 +170,9 @@ class Disposal(Section):
 
     name: Text = Field(description="name of the place")
     at: Point = Field(description="easting and northing, in CRS units")
-    accepts: tuple[Text, ...] | None = Field(default=None, description="materials that it takes; default: any")
+    accepts: tuple[Text, ...] | None = Field(
+        default=None, min_length=1, description="materials that it takes; default: any"
+    )
     capacity: PositiveSoilVolume | None = Field(
         default=None, description="most that it takes, loose; default: no limit"
     )

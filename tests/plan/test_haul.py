@@ -353,6 +353,35 @@ def test_straight_distances_take_a_factor_when_asked(make_haul, tmp_path):
     assert "barriers-ignored" in {w.code for w in result.warnings}
 
 
+def test_straight_distances_by_time_take_the_factor_too(make_haul, tmp_path):
+    # 30 m × 1.2 out and back at 18 km/h are 0.24 min, with 3 to load: 3.24 min at 60 an hour for each load of 12.8 t.
+    write_shapes(tmp_path / "plan.gpkg", "wall", [shapely.box(19, -100, 21, 100)])
+    straight = {"distance": "straight", "straight_factor": 1.2, "cost_by": "time",
+                "barriers": {"file": "plan.gpkg", "layer": "wall"},
+                "truck": {"heaped_volume": 10, "payload": 30, "hour_cost": 60, "speed_loaded": 18, "load_time": 3}}  # fmt: skip
+    result = haul(make_haul(*cut_and_fill(), haul=straight))
+    fill = moved(result)["A1 loess", "B1 fill"]
+    assert (fill.distance_m, fill.cycle.total) == (pytest.approx(36), pytest.approx(3.24))
+    assert result.cost == pytest.approx((180 * 3.24 + 140 * 3) / 12.8)
+
+
+@pytest.mark.parametrize(("count", "code"), [(1, None), (4, "road-over-capacity")])
+def test_more_loads_than_a_road_takes_are_told(make_haul, tmp_path, count, code):
+    # A bridge of 6 m in a way of 30 m: 0.1 min each way at 18 km/h and 0.8 to dump make a cycle of 1 min, so 60 loads
+    # an hour and truck, where the bridge takes 100.
+    write_shapes(tmp_path / "plan.gpkg", "wall", [shapely.box(19, -100, 21, 100)])
+    write_shapes(tmp_path / "plan.gpkg", "roads", [shapely.LineString([(17, 10), (23, 10)])], road=["bridge"], cap=[100.0])
+    ways = {"barriers": {"file": "plan.gpkg", "layer": "wall"}, "ground_speed": 18,
+            "roads": {"file": "plan.gpkg", "layer": "roads", "name": "road", "capacity": "cap"}}  # fmt: skip
+    truck = {"heaped_volume": 10, "payload": 30, "speed_loaded": 18, "dump_time": 0.8, "count": count}
+    result = haul(make_haul(*cut_and_fill(), haul={**ways, "truck": truck}))
+    assert result.fleet.roads[0].use_percent == pytest.approx(60 * count)
+    told = [w for w in result.warnings if w.code.startswith("road-")]
+    assert [w.code for w in told] == ([code] if code else [])
+    blind = haul(make_haul(*cut_and_fill(), haul=ways))
+    assert 'haul road "bridge": loads an hour are not known' in " ".join(w.message for w in blind.warnings)
+
+
 def test_rise_and_fall_along_the_way(make_haul):
     existing = 100 + np.tile(0.05 * (np.arange(400) + 0.5), (200, 1))
     finished = existing.copy()
@@ -652,6 +681,47 @@ def test_a_pit_too_small_is_named_with_what_it_lacks(make_haul):
         haul(make_haul(*cut_and_fill(fill=1.5), borrow=[pit]))
 
 
+def test_what_pits_lack_is_told_in_the_soil_that_they_give(make_haul):
+    # The fill of 540 t of loess or 600 t of shale has 320 t of loess: 122.2 m³ are left, 244.4 t or 108.6 bank m³ of
+    # shale, of which the pit gives 10.
+    pit = {"name": "rock pit", "at": at(35.0, 60.0), "material": "shale", "capacity": 10.0}
+    site = make_haul(*cut_and_fill(fill=1.5), borrow=[pit], material={"loess": LOESS, "shale": SHALE})
+    with pytest.raises(PlanError, match=r'Too small by 99 m³ \(bank\) of shale: raise the capacity of "rock pit" by that'):
+        haul(site)
+
+
+def test_without_a_pit_one_is_asked_for(make_haul):
+    # 100 m³ are 180 t or 112.5 bank m³.
+    with pytest.raises(PlanError, match=r"by 112 m³ \(bank\) of loess: add a \[\[borrow\]\] that gives that"):
+        haul(make_haul(*cut_and_fill(cut=0.0)))
+
+
+def test_two_lacks_are_not_mixed(make_haul):
+    # The tip is too small for the topsoil and takes no loess: 0.8 m of loess are 256 t, 76 t over the 180 of the fill.
+    tip = {"name": "tip", "at": at(5.0, 60.0), "accepts": ["topsoil"], "capacity": 5.0}
+    strip = {"material": "topsoil", "depth": 0.2}
+    existing, finished = cut_and_fill()
+    site = make_haul(existing, finished, disposal=[tip], strip=[strip], haul={"block": 40.0},
+                     material={"loess": LOESS, "topsoil": TOPSOIL}, fill=FILL)  # fmt: skip
+    with pytest.raises(PlanError, match=r"of loess from \"A1 loess\" have no place to go: no \[\[disposal\]\] takes it"):
+        haul(site)
+
+
+@pytest.mark.parametrize(
+    ("tables", "message"),
+    [
+        ({"borrow": [{"name": "pit", "at": at(35.0, 300.0), "material": "loess"}]}, r'barriers close off "pit"'),
+        ({"disposal": [{"name": "tip", "at": at(35.0, 300.0)}]}, r'no place to go: barriers close off "tip"'),
+    ],
+)
+def test_a_pit_or_tip_behind_a_barrier_is_named(make_haul, tmp_path, tables, message):
+    ring = shapely.box(-50, -50, 100, 100) - shapely.box(-1, -1, 41, 21)
+    write_shapes(tmp_path / "plan.gpkg", "wall", [ring])
+    barriers = {"barriers": {"file": "plan.gpkg", "layer": "wall"}}
+    with pytest.raises(PlanError, match=message):
+        haul(make_haul(*cut_and_fill(fill=1.5 if "borrow" in tables else 0.5), haul=barriers, **tables))
+
+
 def test_a_tip_too_small_is_named_with_what_it_lacks(make_haul):
     tip = {"name": "tip", "at": at(5.0, 60.0), "capacity": 100.0}
     # 140 t are 109.4 loose m³.
@@ -691,6 +761,18 @@ def test_a_baseline_that_crosses_itself(make_haul, tmp_path):
     line = {"line": {"file": "plan.gpkg", "layer": "line"}}
     with pytest.raises(GroundError, match=r"the line crosses itself at \(500010, 3999990\)"):
         haul(make_haul(*cut_and_fill(), baseline=line))
+
+
+def test_too_many_stations(make_haul, tmp_path):
+    write_shapes(tmp_path / "plan.gpkg", "line", [shapely.LineString([(0, 10), (40, 10)])])
+    line = {"line": {"file": "plan.gpkg", "layer": "line"}, "interval": 1e-6}
+    with pytest.raises(SiteFileError, match=r"baseline.interval = 1e-06 m: it makes 40,000,000 stations; the most is 20,000"):
+        haul(make_haul(*cut_and_fill(), baseline=line))
+
+
+def test_a_tip_that_accepts_nothing(make_haul):
+    with pytest.raises(SiteFileError, match=r"disposal\[1\].accepts"):
+        make_haul(*cut_and_fill(), disposal=[{"name": "tip", "at": at(5.0, 60.0), "accepts": []}])
 
 
 def test_a_road_attribute_that_is_not_there(make_haul, tmp_path):
