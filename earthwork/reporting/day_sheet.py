@@ -20,29 +20,33 @@ _CAUTIONS = (
     "Keep people out of the swing and the path of plant; water trucks need firm ground and room to turn.",
     "Check water content and density of the lift before the next goes on. Local code and the engineer of record govern.",
 )
-#: Lifts that have a row of their own; a page has no room for more.
-_ROWS = 12
+#: Lines of a page that lifts and soils share, and the fewest lifts that have a row of their own.
+_LINES, _LEAST_ROWS = 13, 4
 _STYLE = """
-@page { size: A4; margin: 14mm 15mm; }
-body { font: 9.5pt/1.3 "DejaVu Sans", Arial, sans-serif; color: #1F1F1F; margin: 0; }
+@page { size: PAPER; margin: 11mm 15mm; }
+body { font: 9pt/1.25 "DejaVu Sans", Arial, sans-serif; color: #1F1F1F; margin: 0; }
 section { page-break-after: always; break-after: page; max-width: 180mm; margin: 0 auto 12mm; }
 section:last-child { page-break-after: auto; break-after: auto; }
-h1 { font-size: 15pt; margin: 0; } h2 { font-size: 10.5pt; margin: 4mm 0 1mm; border-bottom: 1.2pt solid #237872; }
+h1 { font-size: 15pt; margin: 0; } h2 { font-size: 10pt; margin: 3mm 0 1mm; border-bottom: 1.2pt solid #237872; }
 p.what { margin: 0.5mm 0 3mm; color: #55554F; }
 table { border-collapse: collapse; width: 100%; } th, td { padding: 0.6mm 1.6mm; text-align: right; vertical-align:
 top; } th { border-bottom: 0.6pt solid #1F1F1F; font-weight: 600; } td { border-bottom: 0.3pt solid #D5D5D0; }
 th:first-child, td:first-child { text-align: left; } tr.total td { border-top: 0.6pt solid #1F1F1F; font-weight: 600;
 } .look { border: 1.4pt solid #B5501A; padding: 2mm 3mm; margin: 3mm 0; } .look b { color: #B5501A; } ul { margin: 1mm
-0; padding-left: 5mm; } .sign { display: flex; gap: 12mm; margin-top: 7mm; color: #55554F; } .sign span { flex: 1;
+0; padding-left: 5mm; } .sign { display: flex; gap: 12mm; margin-top: 8mm; color: #55554F; } .sign span { flex: 1;
 border-top: 0.6pt solid #1F1F1F; padding-top: 1mm; font-size: 9pt; }
 """
 
 
 def write_day_sheets(site: Site, result: WaterResult, path: Path) -> None:
-    """Write the sheets of all days that place fill or wet the cut: an HTML file that prints one A4 page a day."""
+    """Write the sheets of all days that place fill or wet the cut: an HTML file that prints one page a day.
+
+    A4, and letter where the site is in US units.
+    """
     pages = [_sheet(site, result, index) for index, day in enumerate(result.days) if day.demand.day.kind == "work"]
     title = escape(f"{site.name}: day sheets")
-    head = f'<meta charset="utf-8"><title>{title}</title><style>{_STYLE}</style>'
+    style = _STYLE.replace("PAPER", "letter" if site.units.name == "us" else "A4")
+    head = f'<meta charset="utf-8"><title>{title}</title><style>{style}</style>'
     path.write_text(
         f'<!doctype html><html lang="en"><head>{head}</head><body>{"".join(pages)}</body></html>\n', "utf-8"
     )
@@ -54,11 +58,14 @@ def _sheet(site: Site, result: WaterResult, index: int) -> str:
     date = day.demand.day.date
     when = f"Day {day.demand.day.day}" + (f", {date:%A %d %B %Y}" if date else "")
     volume = show(placed.compacted_m3, "soil_volume", site.units)
+    look = _look(site, day)
+    soils = {name for lift, _ in pieces for name in lift.dry_mass_by_material_t}
+    rows = _LINES - len(soils) - (2 if look else 0)
     what = f"{len(pieces)} lifts, {volume} compacted" if pieces else "no fill: the cut is wetted ahead of the work"
     return (
         f"<section><h1>{escape(when)}</h1><p class='what'>{escape(site.name)} · {escape(what)}</p>"
-        + _look(site, day)
-        + (_lift_table(site, pieces) if pieces else "")
+        + look
+        + (_lift_table(site, pieces, max(rows, _LEAST_ROWS)) if pieces else "")
         + _water_table(site, result, day)
         + (_material_table(site, result, pieces) if pieces else "")
         + _plant(site, result, day, pieces)
@@ -83,14 +90,15 @@ def _look(site: Site, day: WaterDay) -> str:
     return f"<div class='look'>{' '.join(lines)}</div>" if lines else ""
 
 
-def _lift_table(site: Site, pieces: Sequence[tuple[Lift, float]]) -> str:
+def _lift_table(site: Site, pieces: Sequence[tuple[Lift, float]], most: int) -> str:
     units = site.units
     head = [
         "lift", f"from, {units.label('length')}", f"to, {units.label('length')}", f"area, {units.label('area')}",
         f"compacted, {units.label('soil_volume')}", f"loose, {units.label('soil_volume')}", "loads", "passes",
+        "required, %",
     ]  # fmt: skip
     plain_lifts = [piece for piece in pieces if not piece[0].flags]
-    shown, more = plain_lifts[:_ROWS], plain_lifts[_ROWS:]
+    shown, more = plain_lifts[:most], plain_lifts[most:]
     rows = [_lift_row(site, f"{lift.fill}, lift {lift.lift}", [(lift, volume)]) for lift, volume in shown]
     if more:
         rows.append(_lift_row(site, f"{len(more)} more lifts", more))
@@ -116,7 +124,21 @@ def _lift_row(site: Site, name: str, pieces: Sequence[tuple[Lift, float]], *, al
         show(loose, "soil_volume", units, unit=False),
         plain(math.fsum(loads), 1) if loads else "–",
         f"{pieces[0][0].passes:g}" if alone and pieces[0][0].passes is not None else "",
+        _required(site, [lift for lift, _ in pieces]) if alone else "",
     ]
+
+
+def _required(site: Site, lifts: Sequence[Lift]) -> str:
+    """Relative compaction that lifts have to reach, % of the maximum; several where depth rows part them."""
+    fill = site.model.fill
+    assert fill is not None
+    wanted = set()
+    for lift in lifts:
+        least = 1e-6 * lift.compacted_m3
+        bands = lift.bench.bands_m3
+        wanted |= {row.relative_compaction for row, v in zip(fill.by_depth, bands, strict=True) if v > least}
+        wanted |= {fill.relative_compaction} if lift.compacted_m3 - math.fsum(bands) > least else set()
+    return ", ".join(f"{percent:g}" for percent in sorted(wanted))
 
 
 def _water_table(site: Site, result: WaterResult, day: WaterDay) -> str:

@@ -21,7 +21,7 @@ from earthwork.quantities.volumes import count_volumes
 from earthwork.site import check_site
 
 _LIFTS = 500
-_RELIEF_M = 36.0  #: of the benchmark's ground and grade together
+_RELIEF_M = 21.0  #: of the thickest fill, from its lowest bottom to its highest top
 
 
 def main() -> None:

@@ -1,6 +1,7 @@
 """What ``lifts`` and ``water`` show and write."""
 
 import json
+import re
 
 import geopandas
 import pandas
@@ -78,6 +79,7 @@ def test_tables_are_in_the_units_of_the_site(folder, tmp_path):
     text = " ".join(str(block) for block in page.blocks)
     assert "gal" in text
     assert " L" not in text
+    assert "size: letter" in (tmp_path / "out" / "water_day_sheets.html").read_text(encoding="utf-8")
 
 
 def test_day_sheets_have_one_section_a_day_and_no_markup_of_names(water_run):
@@ -89,6 +91,20 @@ def test_day_sheets_have_one_section_a_day_and_no_markup_of_names(water_run):
     assert "Day 1, Monday 03 May 2027" in text
     assert "Water runs short" in text
     assert "size: A4" in text
+
+
+def test_day_sheets_tell_the_compaction_that_each_lift_has_to_reach(tmp_path):
+    # five lifts of 0.2 m under 1 m of fill: the lower two lie more than 0.6 m deep and want 98 %
+    deep = [{"below": 0.6, "measured_from": "finished", "relative_compaction": 98, "expected_compaction": 98}]
+    run_command("water", site(tmp_path, {"fill.by_depth": deep}), out=tmp_path / "out")
+    text = (tmp_path / "out" / "water_day_sheets.html").read_text(encoding="utf-8")
+    required = {
+        name: cells[-1]
+        for row in re.findall(r"<tr>(.*?)</tr>", text)
+        for name, *cells in [re.findall(r"<td>(.*?)</td>", row) or [""]]
+        if name.startswith("fill 1, lift")
+    }
+    assert required == {f"fill 1, lift {n}": "98" if n < 3 else "95" for n in range(1, 6)}
 
 
 def test_pages_say_what_matters(lifts_run, water_run):
