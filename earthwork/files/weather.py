@@ -243,8 +243,23 @@ def _consecutive_hours(path: Path, clock: list, zone: str | None, offset_hours: 
             faults.append(f"{before:%Y-%m-%d %H:%M} to {after:%H:%M} is not one hour")
         else:
             faults.append(f"{hours - 1:g} h between {before:%Y-%m-%d %H:%M} and {after:%Y-%m-%d %H:%M} are missing")
+        if after.tzinfo is None and len({m.replace(tzinfo=local).utcoffset() for m in (before, after)}) == 2:
+            standard = max(_offsets(before, local))  # the later instant has the smaller offset
+            faults[-1] += (
+                " (the clock changes there; where the file keeps standard time all year, write times with their offset, "
+                f"such as {standard:%Y-%m-%dT%H:%M}{standard.isoformat()[-6:]})"
+            )
     _refuse(path, faults, "hour")
     return tuple(times)
+
+
+def _offsets(moment: datetime.datetime, local: datetime.tzinfo) -> list[datetime.datetime]:
+    """A time of the clock with the offsets that hold a day before and a day after it."""
+    days = (datetime.timedelta(days=-1), datetime.timedelta(days=1))
+    return [
+        moment.replace(tzinfo=datetime.timezone((moment + day).replace(tzinfo=local).utcoffset() or datetime.timedelta()))
+        for day in days
+    ]
 
 
 def _in_utc(moment: datetime.datetime, local: datetime.tzinfo) -> datetime.datetime:

@@ -65,6 +65,25 @@ def test_clocks_that_change_leave_no_gap_and_no_repeat(tmp_path):
 
 
 @pytest.mark.parametrize(
+    ("zone", "start", "message"),
+    [
+        ("America/Denver", "2027-11-07T00:00", r"2027-11-07 02:00 are missing \(the clock changes.*T01:00-07:00"),
+        ("America/Denver", "2027-03-14T00:00", r"2027-03-14 03:00 comes twice \(the clock changes.*T02:00-07:00"),
+        ("Australia/Sydney", "2027-04-04T00:00", r"are missing \(the clock changes.*T02:00\+10:00"),
+    ],
+)
+def test_standard_time_all_year_is_recognised(tmp_path, zone, start, message):
+    with pytest.raises(FileError, match=message):
+        read_weather(write(tmp_path, HOUR_HEAD, hour_rows(start, 8)), zone=zone)
+
+
+def test_a_gap_elsewhere_says_nothing_of_clocks(tmp_path):
+    rows = [r for r in hour_rows("2027-06-01T00:00", 8) if "T03" not in r]
+    with pytest.raises(FileError, match=r"2027-06-01 04:00 are missing$"):
+        read_weather(write(tmp_path, HOUR_HEAD, rows), zone="America/Denver")
+
+
+@pytest.mark.parametrize(
     ("head", "rows", "message"),
     [
         (DAY_HEAD, DAYS[:2] + DAYS[3:], r"2027-06-03 is missing"),
