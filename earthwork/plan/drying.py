@@ -96,5 +96,5 @@ def mixing(*, material: str, arriving: float, target: float, other: str, other_a
     return DryingOption(
         material=material, method="mixing", possible=True, mix_with=other, mix_dry_share=share,
         mix_dry_ratio=ratio, result_water_content_percent=result,
-        note=f"{ratio:.2f} t of {other} to each tonne of {material}, dry masses; test the mix as a soil",
+        note=f"{ratio:.2f} of {other} to 1 of {material} by dry mass make a mix at {result:.1f} %; test it as a soil",
     )  # fmt: skip

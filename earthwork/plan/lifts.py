@@ -230,9 +230,10 @@ def lift_thickness_m(site: Site, cards: Mapping[str, SoilCard]) -> float:
         if roller.lift_limit is not None and thickness > roller.lift_limit * (1 + 1e-9):
             length = site.units.label("length")
             show = [site.units.from_si(v, "length") for v in (thickness, roller.lift_limit)]
+            key = "loose_lift_thickness" if fill.lift_thickness is None and fill.loose_lift_thickness else "lift_thickness"
             raise PlanError(
                 f"lifts: a lift is {show[0]:.3g} {length} compacted; the {roller.name} works at most {show[1]:.3g} "
-                f"{length}. Give a thinner fill.lift_thickness, or another roller"
+                f"{length}. Give a thinner fill.{key}, or another roller"
             )
     return thickness
 

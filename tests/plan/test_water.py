@@ -200,6 +200,7 @@ def test_wet_soil_gets_its_options_and_its_limit(tmp_path):
     assert turned.days == pytest.approx(12 / 5)
     assert turned.area_m2 == pytest.approx(1000 * 2.4 / (240 / 1710))
     assert mixed.mix_dry_share == pytest.approx(5 / 16)
+    assert mixed.note.startswith("0.45 of sand to 1 of silt by dry mass make a mix at 15.0 %")
     day = result.to_dict()["days"][0]
     assert day["compaction_l"] == 0
     assert day["water_to_dry_l"] == pytest.approx(1000 * 1710 * 0.05)
