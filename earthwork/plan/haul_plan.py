@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Sequence, Set
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -90,13 +90,16 @@ class _Planner:
         volume: so bands of compaction stay a pure network where all soils change alike.
         """
         sources, sinks = self.places.sources, self.places.sinks
-        row_keys = [(s.material, s.kind, s.cost_per_kg, s.phase) for s in sources]
+        row_keys = [(s.material, s.kind, s.cost_per_kg, s.phase, s.name if s.opening else "") for s in sources]
         rows = list(dict.fromkeys(row_keys))
         kinds: list[Sink] = []
         column_class, scale = np.zeros(len(sinks), np.int64), np.ones(len(sinks))
         lookup: dict[tuple, list[int]] = {}
         for j, sink in enumerate(sinks):
-            like = (sink.kind == "fill", tuple(sink.m3_per_kg), sink.phase, tuple(sink.cost_per_kg.items()))
+            like = (
+                sink.kind == "fill", tuple(sink.m3_per_kg), sink.phase, tuple(sink.cost_per_kg.items()),
+                sink.name if sink.opening else "",
+            )  # fmt: skip
             for k in lookup.setdefault(like, []):
                 ratio = _ratio(sink, kinds[k])
                 if ratio is not None:
@@ -108,7 +111,7 @@ class _Planner:
                 kinds.append(sink)
         table = np.full((len(rows), len(kinds)), np.inf)
         for c, sink in enumerate(kinds):
-            for r, (material, kind, price, phase) in enumerate(rows):
+            for r, (material, kind, price, phase, _) in enumerate(rows):
                 late = phase is not None and sink.phase is not None and phase > sink.phase
                 if material in sink.m3_per_kg and not late and (kind == "cut" or sink.kind == "fill"):
                     table[r, c] = price + sink.cost_per_kg.get(material, 0.0)
@@ -149,38 +152,57 @@ class _Planner:
     def _with_openings(self) -> tuple[TransportPlan, Array, tuple[str, ...]]:
         """The cheapest plan with what places cost to be used at all: branch and bound over those places.
 
-        A plan in which undecided places are free to open bounds what any choice of them costs.
+        Where it is undecided whether a place opens, its cost is spread over all that it could give or take: no choice
+        is cheaper than such a plan.
         """
         fee = {place.name: place.opening for place in self.every if place.opening > 0}
-        best: tuple[float, TransportPlan, Array, tuple[str, ...]] | None = None
+        best, chosen = np.inf, frozenset(fee)
         failure: PlanError | None = None
-        waiting: list[tuple[frozenset[str], frozenset[str]]] = [(frozenset(), frozenset())]
+        waiting: list[tuple[frozenset[str], frozenset[str]]] = [(frozenset(), frozenset())] if fee else []
         while waiting:
             opened, closed = waiting.pop()
+            spread = self._spread(fee.keys() - opened - closed)
             try:
-                plan, pile = self._solve(closed)
+                plan, _ = self._solve(closed, replace(self.moves, table=self.moves.table + spread))
             except PlanError as error:
                 failure = failure or error
                 continue
-            if best is not None and plan.cost + sum(fee[name] for name in opened) >= best[0]:
-                continue
+            bound = plan.cost + sum(fee[name] for name in opened)
             used = self._used(plan) & fee.keys()
-            total = plan.cost + sum(fee[name] for name in used)
-            if best is None or total < best[0]:
-                best = total, plan, pile, tuple(name for name in fee if name in used)
+            paid = float(plan.amounts @ spread[self.moves.row_class[plan.rows], self.moves.column_class[plan.columns]])
+            total = plan.cost - paid + sum(fee[name] for name in used)
+            if total < best:
+                best, chosen = total, frozenset(used)
             undecided = used - opened
-            if undecided:
+            if undecided and bound < best - 1e-12 * abs(best):
                 name = max(undecided, key=lambda n: (fee[n], n))
                 waiting += [(opened | {name}, closed), (opened, closed | {name})]
-        if best is None:
+        if fee and not np.isfinite(best):
             assert failure is not None
             raise failure
-        return best[1:]
+        plan, pile = self._solve(frozenset(fee) - chosen, self.moves)
+        used = self._used(plan)
+        return plan, pile, tuple(name for name in fee if name in used)
+
+    def _spread(self, undecided: Set[str]) -> Array:
+        """Opening costs by class of source and of sink, for each kilogram of the most that a place could move [1/kg]."""
+        sources, sinks = self.places.sources, self.places.sinks
+        cut = sum(s.mass_kg for s in sources if s.kind == "cut")
+        most_fill = sum(max((s.volume_m3 / w for w in s.m3_per_kg.values()), default=0) for s in sinks if not s.spare)
+        table = np.zeros(self.moves.table.shape)
+        for i, source in enumerate(sources):
+            if source.name in undecided:
+                table[self.moves.row_class[i]] += source.opening / min(source.mass_kg, most_fill or np.inf)
+        for j, sink in enumerate(sinks):
+            if sink.name in undecided:
+                c = self.moves.column_class[j]
+                table[:, c] += sink.opening * np.maximum(self.weight[:, c] / sink.volume_m3, 1 / cut if cut else 0.0)
+        return table
 
     def _used(self, plan: TransportPlan) -> set[str]:
         return {self.places.sources[i].name for i in plan.rows} | {self.places.sinks[j].name for j in plan.columns}
 
-    def _solve(self, closed: frozenset[str]) -> tuple[TransportPlan, Array]:
+    def _solve(self, closed: frozenset[str], moves: Costs) -> tuple[TransportPlan, Array]:
         """The cheapest plan without some places, and the stockpile of each of its moves that waits."""
         sources, sinks = self.places.sources, self.places.sinks
         supply = np.array([0.0 if s.name in closed else s.mass_kg for s in sources])
@@ -189,14 +211,14 @@ class _Planner:
         spare_columns = np.array([s.spare for s in sinks], bool)
         try:
             plan = solve_transport(
-                supply, need, self.moves, weight=self.weight, spare_rows=spare_rows, spare_columns=spare_columns
+                supply, need, moves, weight=self.weight, spare_rows=spare_rows, spare_columns=spare_columns
             )
         except TransportInfeasible as error:
             raise self._explained(error) from None
         pile = self._pile_of(plan)
         overfull = self._overfull(plan, pile)
         if overfull is not None:
-            problem = PileProblem(self.costs, self.moves, self.weight, supply, need, spare_rows, spare_columns)
+            problem = PileProblem(self.costs, moves, self.weight, supply, need, spare_rows, spare_columns)
             solved = solve_with_piles(problem)
             if solved is None:
                 raise overfull
