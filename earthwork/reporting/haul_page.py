@@ -81,7 +81,8 @@ def _whole(row: dict[str, Any], site: Site) -> dict[str, Any]:
 def _answer(site: Site, result: HaulResult) -> tuple[tuple[str, str, str], ...]:
     units, haul = site.units, site.model.haul
     assert haul is not None
-    t_km = plain(result.total_t_km * 1e6 / units.factor("mass") / units.factor("road"), 0)
+    hauled = result.total_t_km * 1e6 / units.factor("mass") / units.factor("road")
+    t_km = plain(hauled, _places(hauled))
     far = result.mean_distance_m
     rows = [
         ("earth moved", show(result.dry_mass_t, "mass", units, si=1000.0), "dry mass, each move counted"),
@@ -124,12 +125,21 @@ def _marginals(site: Site, result: HaulResult) -> tuple[tuple[str, str, str], ..
     return tuple(rows)
 
 
+def _places(value: float | None) -> int:
+    """Decimals of a total: a small job is told in tenths.
+
+    >>> _places(3.25), _places(1234.5)
+    (1, 0)
+    """
+    return 1 if value is not None and abs(value) < 10 else 0
+
+
 def _trucks(site: Site, result: HaulResult) -> list[Block]:
     fleet = result.fleet
     assert fleet is not None
     rows = [
-        ("hours of the loader", plain(fleet.hours, 0), "one loader serves the moves one after the other"),
-        ("truck hours", plain(fleet.truck_hours, 0), f"at most {fleet.most_trucks} trucks at a time"),
+        ("hours of the loader", plain(fleet.hours, _places(fleet.hours)), "one loader serves the moves one after the other"),
+        ("truck hours", plain(fleet.truck_hours, _places(fleet.truck_hours)), f"at most {fleet.most_trucks} trucks at a time"),
     ]
     if fleet.cost is not None:
         rows.append(("trucks and loader", plain(fleet.cost, 0), "money, by their hours"))

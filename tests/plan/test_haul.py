@@ -5,6 +5,7 @@ from itertools import pairwise
 import geopandas
 import numpy as np
 import pytest
+import scipy.optimize
 import shapely
 
 from earthwork.errors import FileError, GroundError, PlanError, SiteFileError
@@ -585,6 +586,30 @@ def test_opening_a_pit_is_paid_once_and_only_when_worth_it(make_haul):
     near["opening"] = 30.0
     result = haul(make_haul(flat(), cut_and_fill(cut=0.0)[1], borrow=[near, far]))
     assert (result.cost, result.opened) == (pytest.approx(180 * 0.1 + 30), ("near",))
+
+
+def test_the_choice_among_many_pits_agrees_with_a_mixed_integer_program(make_haul):
+    # 600 m³ of fill need 1080 t, the cut gives 320 t: 760 t come from pits, each with its fee, capacity and price.
+    pits = [
+        {"name": f"pit {k}", "at": at(35.0 + k, 30.0 + 7 * k % 11), "material": "loess", "capacity": 60.0 + k,
+         "price": 1.0 + 0.01 * k, "opening": 50.0 + k % 3}
+        for k in range(16)
+    ]  # fmt: skip
+    away = np.array([np.hypot(k, 20.0 + 7 * k % 11) for k in range(16)])
+    price = away / 1000 + np.array([p["price"] for p in pits]) / 1.6
+    capacity, fee = np.array([p["capacity"] for p in pits]) * 1.6, np.array([p["opening"] for p in pits])
+    one = np.eye(16)
+    expected = scipy.optimize.milp(
+        np.concatenate([price, fee]),
+        constraints=[
+            scipy.optimize.LinearConstraint(np.concatenate([np.ones(16), np.zeros(16)]), 760, 760),
+            scipy.optimize.LinearConstraint(np.hstack([one, -np.diag(capacity)]), -np.inf, 0),
+        ],
+        integrality=np.repeat([0, 1], 16), bounds=scipy.optimize.Bounds(0, np.repeat([np.inf, 1.0], 16)),
+        options={"mip_rel_gap": 0.0},
+    )  # fmt: skip
+    result = haul(make_haul(*cut_and_fill(fill=3.0), borrow=pits))
+    assert result.cost == pytest.approx(expected.fun + 320 * 0.030, rel=1e-7)
 
 
 def test_a_second_identical_pit_never_costs_more(make_haul):

@@ -123,3 +123,19 @@ def test_a_plan_of_hundreds_of_moves_and_one_without_any(tmp_path):
     assert none.result.moves == ()
     assert none.result.to_dict()["mean_distance_m"] is None
     assert {p.name for p in none.written} >= {"haul_map.png", "haul_mass_curve.png"}
+
+
+def test_a_long_name_is_cut_at_the_edge_of_the_chart(tmp_path, monkeypatch):
+    from earthwork.plan.haul import haul
+    from earthwork.reporting import mass_curve_chart
+    from earthwork.units import METRIC
+
+    existing = np.full((20, 40), 100.0)
+    finished = existing.copy()
+    finished[:, :10] -= 1.0
+    drawn = []
+    monkeypatch.setattr(mass_curve_chart, "save_figure", lambda figure, path: drawn.append(figure))
+    line = haul(make_site(tmp_path, existing, finished)).line
+    mass_curve_chart.draw_mass_curve(line, tmp_path / "curve.png", units=METRIC, title="Willow Creek " * 20)
+    heading = drawn[0].texts[0]
+    assert heading.get_window_extent().x1 <= drawn[0].bbox.width
