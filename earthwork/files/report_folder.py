@@ -134,6 +134,7 @@ class ReportFolder(OutputFolder):
         self._inputs = inputs
         self._facts = facts
         self._lock: IO[str] | None = None
+        self.of_other_inputs: tuple[str, ...] = ()  #: once published: files beside the new ones, made from other inputs
 
     def __enter__(self) -> ReportFolder:
         if not self.overwrite:
@@ -183,6 +184,7 @@ class ReportFolder(OutputFolder):
         (self.directory / JOURNAL).unlink()
         self.written = tuple(self.directory / name for name in [*(p.name for p in new), MANIFEST])
         self._made = []
+        self.of_other_inputs = tuple(n for n in sorted(rows) if rows[n].get("inputs_sha256") != self._inputs)
 
     def _write(self, name: str, content: Any) -> Path:
         assert self._aside is not None

@@ -70,7 +70,20 @@ def report(
     result = replace(result, written=folder.written)
     if mixed is not None:
         result = replace(result, warnings=(Warning("report-mended", mixed.message), *result.warnings))
+    if folder.of_other_inputs:
+        result = replace(result, warnings=(_outdated(folder), *result.warnings))
     return result
+
+
+def _outdated(folder: ReportFolder) -> Warning:
+    """What a run of some groups has left beside its files, when the inputs have changed since."""
+    names = folder.of_other_inputs
+    named = ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
+    return Warning(
+        "report-of-other-inputs",
+        f"{folder.directory}: made from other inputs, or by another version, than this run: {named}. "
+        "Run report with --overwrite and without --only to renew them all",
+    )
 
 
 def _mending(groups: tuple[str, ...], mixed: Mixed) -> tuple[str, ...]:

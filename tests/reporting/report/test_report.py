@@ -220,6 +220,22 @@ def test_pictures_have_words_and_tables_have_heads(page):
     assert all(a.get("scope") in ("row", "col") for a in heads)
 
 
+def test_a_heading_on_two_lines_keeps_its_unit_and_long_lists_are_folded():
+    import jinja2
+
+    from earthwork.reporting.page import Notes, Table
+
+    environment = jinja2.Environment(loader=jinja2.PackageLoader("earthwork.reporting.report"), autoescape=True)
+    blocks = environment.get_template("blocks.html.j2").module
+    text = "".join(str(blocks.block(Table(columns=("zone", "cut,\nbank\nm³", "area\nm²"), rows=()))).split("\n"))
+    assert 'cut,<br>bank<span class="unit">m³</span>' in text
+    assert 'area<span class="unit">m²</span>' in text
+    lines = Page(str(blocks.block(Notes(lines=tuple(f"pad {i}" for i in range(300))))))
+    assert "276 more" in lines.text
+    assert "pad 299" in lines.text
+    assert "more" not in Page(str(blocks.block(Notes(lines=("one", "two"))))).text
+
+
 def test_the_hand_check_can_be_followed(sample, hostile):
     """Every sum, as written, gives what stands beside it, to the digits that are printed."""
     for result in (sample, hostile):
@@ -319,6 +335,20 @@ def test_a_mixed_report_is_named_and_mended_whole(tmp_path):
     assert "workbook.xlsx" in result.warnings[0].message
     assert result.groups == ("workbook", "json")
     assert find_mixed(out) is None
+
+
+def test_a_run_of_some_groups_names_what_it_leaves_of_other_inputs(tmp_path):
+    site = make_site(tmp_path / "site")
+    out = tmp_path / "report"
+    earthwork.report(site, out=out, only=["tables", "json", "workbook"])
+    same = earthwork.report(site, out=out, only=["tables"], overwrite=True)
+    assert "report-of-other-inputs" not in {w.code for w in same.warnings}
+    site.write_text(site.read_text() + "\n# changed\n")
+    result = earthwork.report(site, out=out, only=["tables"], overwrite=True)
+    assert result.warnings[0].code == "report-of-other-inputs"
+    assert "than this run: report.json, workbook.xlsx." in result.warnings[0].message
+    whole = earthwork.report(site, out=out, only=["json", "workbook"], overwrite=True)
+    assert "report-of-other-inputs" not in {w.code for w in whole.warnings}
 
 
 @pytest.mark.parametrize("limit", [3000, 200_000])
