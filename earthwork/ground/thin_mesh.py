@@ -46,8 +46,8 @@ def thin_mesh(heights: np.ndarray, tolerance_m: float, most_triangles: int | Non
 
     Args:
         heights: (rows, columns) [m]; NaN = no data, where there are no triangles.
-        tolerance_m: no point is farther from its triangle; raised until there are no more triangles than
-            ``most_triangles``.
+        tolerance_m: no point is farther from its triangle; raised where there would be more triangles than
+            ``most_triangles``. The edge of the data is followed to the cell all the same.
 
     >>> mesh = thin_mesh(np.zeros((5, 5)), 0.01)
     >>> len(mesh.triangles), len(mesh.heights)
@@ -71,21 +71,28 @@ def _covered(errors: np.ndarray, padded: np.ndarray, side: int, tolerance_m: flo
 
 
 def _few_enough(errors: np.ndarray, padded: np.ndarray, side: int, low: float, most: int) -> tuple[float, np.ndarray]:
-    """The least tolerance found, to about a tenth, that leaves no more triangles than asked for."""
-    low, high = max(low, 1e-6), max(low, 1e-6)
-    corners = _covered(errors, padded, side, high)
-    # beyond this all relief is swallowed, and more tolerance would change nothing
-    while len(corners) > most and high < 1e4:
-        low, high = high, 2.0 * high
-        corners = _covered(errors, padded, side, high)
-    for _ in range(3):
-        middle = (low * high) ** 0.5
-        finer = _covered(errors, padded, side, middle)
-        if len(finer) <= most:
-            high, corners = middle, finer
+    """A tolerance that leaves about as many triangles as asked for, and no more.
+
+    Every middle whose sum is over the tolerance is halved at, which makes two triangles more; so the sums, in order,
+    tell the tolerance of any number. Triangles without data, which are dropped, make room for a second try.
+    """
+    whole = (errors.shape[0] - 1) // side * ((errors.shape[1] - 1) // side) * 2
+    finite = np.sort(errors[np.isfinite(errors) & (errors > low)])[::-1]
+    halvings = (most - whole) // 2 - int(np.isinf(errors).sum())
+    best: tuple[float, np.ndarray] | None = None
+    for _ in range(4):
+        tolerance = float(finite[max(halvings, 0)]) if 0 <= halvings < len(finite) else float(finite[0])
+        corners = _covered(errors, padded, side, tolerance)
+        if len(corners) <= most and (best is None or tolerance < best[0]):
+            best = tolerance, corners
+        if len(corners) > most:
+            halvings -= max((len(corners) - most) // 2, 1)
+        elif most - len(corners) > most // 50:
+            halvings = max(halvings, 0) + (most - len(corners)) // 2
         else:
-            low = middle
-    return high, corners
+            break
+    # so little is asked for that the edges of the data alone take more: nothing is left to give
+    return best or (float(finite[0]), _covered(errors, padded, side, float(finite[0])))
 
 
 def _padded(heights: np.ndarray) -> tuple[np.ndarray, int]:
