@@ -145,6 +145,8 @@ def _fault(error: ErrorDetails, document: dict[str, Any]) -> str:
     rule = error["msg"].removeprefix("Value error, ")
     if kind in ("literal_error", "enum"):
         rule = "it must be " + error.get("ctx", {}).get("expected", rule)
+    elif kind in ("string_pattern_mismatch", "string_too_short"):
+        rule = "it must not be blank"
     elif rule.startswith("Input should be"):
         rule = "it must be" + rule.removeprefix("Input should be")
     elif not rule.startswith(("it must", "give ")):

@@ -152,7 +152,7 @@ class InputFile:
     """Marks a value as the name of a file that the site reads (:func:`earthwork.site.inputs.named_files`)."""
 
 
-Text = Annotated[str, Field(strict=True, min_length=1)]
+Text = Annotated[str, Field(strict=True, min_length=1, pattern=r"\S")]
 FileName = Annotated[str, Field(strict=True, min_length=1), InputFile()]
 Whole = Annotated[int, Field(strict=True, ge=1)]
 Coordinate = Annotated[float, Field(strict=True, allow_inf_nan=False)]
