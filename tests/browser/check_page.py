@@ -346,6 +346,16 @@ def test_nothing_sticks_out_at_any_width(browser, name, width, request):
     assert browser.run("return document.documentElement.scrollWidth") <= width
 
 
+def test_names_in_tables_keep_their_words_on_a_phone(browser, larkspur):
+    browser.open(page_of(larkspur), width=390, height=800)
+    narrow = browser.run(
+        "return [...document.querySelectorAll('main .scroll td.name, main .scroll th.name')]"
+        ".filter(c => c.textContent.trim().length > 3 && c.getBoundingClientRect().width < 80).map(c => c.textContent)"
+    )
+    assert narrow == []
+
+
+
 def test_it_can_be_used_without_seeing_it(browser, larkspur):
     browser.open(page_of(larkspur))
     assert browser.run("return document.documentElement.lang") == "en"

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import cached_property
@@ -24,6 +25,7 @@ from earthwork.reporting.report.map_content import depth_scale, outlines_of
 from earthwork.reporting.report.map_data import Outline
 from earthwork.reporting.report.parts import Parts
 from earthwork.reporting.report.provenance import inputs_date
+from earthwork.units import UnitSystem
 
 #: Where thinning starts [m], and the triangles that a surface takes at most in a file and in the model.
 TOLERANCE_M = 0.01
@@ -32,6 +34,17 @@ MODEL_TRIANGLES = 60_000
 #: Worked ground is written with a margin of so many cells of the overview.
 _MARGIN_CELLS = 3
 _STAKES_ALONG = 40  #: stakes of the grid along the longer side of the worked ground, about
+
+
+def _bound_text(bound_m: float, units: UnitSystem) -> str:
+    """A bound in the site's units, rounded up to a thousandth.
+
+    >>> from earthwork.units import METRIC, US
+    >>> _bound_text(0.134543, METRIC), _bound_text(0.03048, US)
+    ('0.135 m', '0.1 ft')
+    """
+    value = units.from_si(bound_m, "length")
+    return f"{math.ceil(round(value * 1000, 6)) / 1000:g} {units.label('length')}"
 
 
 @dataclass(frozen=True)
@@ -76,7 +89,7 @@ class Exchange:
         for name, mesh in self.meshes.items():
             east, north = mesh.places(self.surfaces.grid)
             vertices = np.column_stack([east, north, mesh.heights / self.unit_m])
-            note = f"thinned: no cell is farther than {mesh.tolerance_m:g} m from it"
+            note = f"thinned: no cell is farther than {_bound_text(mesh.tolerance_m, self.parts.site.units)} from it"
             found.append(Triangles(name, vertices, mesh.triangles, note))
         return found
 
