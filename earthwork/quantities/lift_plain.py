@@ -8,7 +8,7 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGH, HIGHEST, LOW, LOWEST, VOLUME, _end, _flush
+from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGH, HIGHEST, LOW, LOWEST, VOLUME, _flush
 from earthwork.quantities.split import _half_slope, _plane_above_zero
 
 # -----------------------------------------------------------------
@@ -17,7 +17,6 @@ _FAST = {"reassoc", "nsz", "contract", "arcp"}
 _FINITE = {*_FAST, "nnan", "ninf"}
 _PAD = 4  #: numbers kept for a bin, a power of two
 _FAR = 1e300
-_GROUP = 64  #: cells that are looked through for crossings at one time
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
@@ -127,22 +126,40 @@ def _any(marks, start, stop):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _crossing(depth, top, i, j, scratch, first, lift, reach, place):
-    """Count a cell that the zero line crosses: the part with fill, as thick as its fill is on the mean."""
-    x = np.float64(depth[i + 1, j + 1])
-    a = _half_slope(np.float64(depth[i + 1, j]), x, np.float64(depth[i + 1, j + 2]))
-    b = _half_slope(np.float64(depth[i, j + 1]), x, np.float64(depth[i + 2, j + 1]))
-    fill, part = _plane_above_zero(x, a, b)
-    if not fill > 0.0:
-        return
-    z = np.float64(top[i, j])
-    base = min(z - x, z)
-    _end(scratch, 0, LOW, base if part == 1.0 else z - fill / part, part, first, lift, reach)
-    _end(scratch, 0, HIGH, z, part, first, lift, reach)
-    place[VOLUME] += fill
-    place[FOOTPRINT] += part
-    place[LOWEST] = min(place[LOWEST], base)
-    place[HIGHEST] = max(place[HIGHEST], z)
+def _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, places):
+    """Count the cells of a row that the zero line crosses: the part with fill, as thick as its fill is on the mean."""
+    bins = crossings.shape[3]
+    inverse = 1.0 / lift
+    for b in range(edges.size - 1):
+        if not _any(mixed, edges[b], edges[b + 1]):
+            continue
+        for j in range(edges[b], edges[b + 1]):
+            if mixed[j] == 0:
+                continue
+            column = j0 + j
+            x = np.float64(depth[i + 1, column + 1])
+            a = _half_slope(np.float64(depth[i + 1, column]), x, np.float64(depth[i + 1, column + 2]))
+            c = _half_slope(np.float64(depth[i, column + 1]), x, np.float64(depth[i + 2, column + 1]))
+            fill, part = _plane_above_zero(x, a, c)
+            if not fill > 0.0:
+                continue
+            z = np.float64(top[i, column])
+            base = min(z - x, z)
+            for end in range(2):
+                level = (z if end == HIGH or part < 1.0 else base) * inverse - first
+                if end == LOW and part < 1.0:
+                    level -= fill / part * inverse
+                k = min(max(int(level), 0), bins - 1)
+                place = level - k
+                crossings[b, 0, end, k, 0] += part
+                crossings[b, 0, end, k, 1] += part * place
+                crossings[b, 0, end, k, 2] += part * place * place
+                reach[b, 0] = min(reach[b, 0], k)
+                reach[b, 1] = max(reach[b, 1], k)
+            places[b, VOLUME] += fill
+            places[b, FOOTPRINT] += part
+            places[b, LOWEST] = min(places[b, LOWEST], base)
+            places[b, HIGHEST] = max(places[b, HIGHEST], z)
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -218,14 +235,7 @@ def count_plain(
                         return -1
                     _scatter(tables, f, lows, tops, edges, ranges)
                 if crossed > 0:
-                    for start in range(0, n, _GROUP):
-                        stop = min(start + _GROUP, n)
-                        if not _any(mixed, start, stop):
-                            continue
-                        for j in range(start, stop):
-                            if mixed[j] != 0:
-                                b = (column0 + j0 + j) // side - chunk
-                                _crossing(depth, top, i, j0 + j, crossings[b], first, lift, reach[b], places[b])
+                    _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, places)
             for b in range(edges.size - 1):
                 place = places[b]
                 if ranges[b, 0] < _FAR:

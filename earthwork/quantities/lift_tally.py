@@ -72,7 +72,7 @@ class Records:
 
     def compacted(self) -> Records:
         """The same with one row a key, in the order of the keys."""
-        order = np.argsort(self.keys, kind="stable")
+        order = np.argsort(self.keys)
         keys = self.keys[order]
         starts = np.flatnonzero(np.concatenate([[True], keys[1:] != keys[:-1]])) if len(keys) else np.empty(0, int)
         return Records(keys[starts], np.add.reduceat(self.moments[order], starts) if len(keys) else self.moments)
