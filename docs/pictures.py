@@ -15,7 +15,7 @@ from earthwork.site import load_site
 
 ROOT = Path(__file__).parents[1]
 PICTURES = {
-    "larkspur-campus": ("balance_map.png", "balance_curve.png"),
+    "larkspur-campus": ("balance_map.png", "balance_curve.png", "water_days.png"),
     "cooper-ridge": ("balance_map.png",),
 }
 _WIDTH = 1200
@@ -25,7 +25,8 @@ def main() -> None:
     """Draw all pictures into docs/pictures."""
     for sample, names in PICTURES.items():
         with tempfile.TemporaryDirectory() as folder:
-            run_command("balance", load_site(ROOT / "samples" / sample / "site.toml"), out=folder)
+            for command in dict.fromkeys(name.split("_")[0] for name in names):
+                run_command(command, load_site(ROOT / "samples" / sample / "site.toml"), out=folder)
             for name in names:
                 target = ROOT / "docs" / "pictures" / f"{sample}-{name.replace('_', '-')}"
                 small(Path(folder) / name, target)

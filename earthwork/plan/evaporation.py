@@ -113,9 +113,7 @@ def solar_hour_angle(day_of_year: Floats, utc_hour: Floats, longitude_deg: Float
     return (angle + np.pi) % (2.0 * np.pi) - np.pi
 
 
-def extraterrestrial_hour(
-    latitude: Floats, day_of_year: Floats, middle_angle: Floats, hours: float = 1.0
-) -> Floats:
+def extraterrestrial_hour(latitude: Floats, day_of_year: Floats, middle_angle: Floats, hours: float = 1.0) -> Floats:
     """Radiation above the atmosphere [MJ/m²] in a period of ``hours``; [fao56] eqs 28 to 30.
 
     The period is cut at sunrise and sunset, so that the hours of a day add up to its total.

@@ -5,14 +5,16 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from earthwork.errors import PlanError, SiteFileError, Warning
 from earthwork.plan.account import account
 from earthwork.plan.fill_areas import FillArea, fill_areas
 from earthwork.plan.fill_mix import MixPart, placed_kg, pro_rata
-from earthwork.plan.lift_rows import Lift, LiftMaker, totals
+from earthwork.plan.lift_materials import planned_mixes
+from earthwork.plan.lift_rows import Lift, LiftMaker
 from earthwork.plan.lift_shapes import LiftShapes
+from earthwork.plan.lifts_result import LiftsResult
 from earthwork.plan.moisture import drying_on_the_way_points
 from earthwork.plan.movements import settle
 from earthwork.plan.schedule import DayPieces, placing_order, schedule
@@ -22,121 +24,16 @@ from earthwork.quantities.lift_tally import LiftTally
 from earthwork.quantities.placed_tests import site_cards
 from earthwork.quantities.site_ground import SiteGround, open_site
 from earthwork.quantities.volumes import VolumesResult, VolumesTally, volumes_result
-from earthwork.results import Result
 from earthwork.site import Site, load_site
 from earthwork.soils.card import SoilCard, soil_warnings
 from earthwork.units import FOOT_M
 
 if TYPE_CHECKING:
-    import pandas
+    from earthwork.plan.haul import HaulTallies
 
 _DEFAULT_LIFT_M = {"metric": 0.20, "us": 8 * FOOT_M / 12}
 #: Lifts named in a warning; the rest is counted.
 _NAMED = 6
-
-
-@dataclass(frozen=True, kw_only=True)
-class LiftsResult(Result):
-    """Lifts in placing order, with the days that place them where a placing rate is given; see the JSON of ``lifts``."""
-
-    lifts: tuple[Lift, ...]
-    days: tuple[DayPieces, ...]
-    areas: tuple[FillArea, ...]
-    coarse_side: int  #: grid cells along a cell on which fill areas are told apart
-    coarse_side_m: float
-    lift_m: float
-    loose_lift_m: dict[str, float]  #: by material: thickness as spread
-    material_rule: str
-    mixes: Mapping[str, tuple[MixPart, ...]]  #: by fill area
-    rolled_m3_h: float | None
-    work: WorkDays
-    ledger_t: dict[str, float]  #: dry mass that the ledger puts into fill and refill, by material
-    scarify_m3: float  #: compacted volume that scarifying takes: part of the ledger's fill, but of no lift
-    volumes: VolumesResult
-    cards: dict[str, SoilCard]
-    shapes: LiftShapes
-
-    @property
-    def total(self) -> dict[str, Any]:
-        return totals(self.lifts)
-
-    @property
-    def scarify_t(self) -> dict[str, float]:
-        """Dry mass that makes up for what scarifying takes, by material: with the lifts it is the ledger's."""
-        placed = sum(area.compacted_m3 for area in self.areas)
-        share = self.scarify_m3 / (placed + self.scarify_m3) if placed > 0 else 0.0
-        return {name: mass * share for name, mass in self.ledger_t.items()}
-
-    def to_dict(self) -> dict[str, Any]:
-        return {
-            "lifts": [lift.to_dict() for lift in self.lifts],
-            "total": self.total,
-            "material_rule": self.material_rule,
-            "lift_thickness_m": self.lift_m,
-            "loose_lift_thickness": [{"material": name, "loose_m": loose} for name, loose in self.loose_lift_m.items()],
-            "fills": [
-                {
-                    "fill": area.name,
-                    "lifts": len(area.benches),
-                    "bottom_m": area.bottom_m,
-                    "top_m": area.benches[-1].top_m,
-                    "compacted_m3": area.compacted_m3,
-                }
-                for area in self.areas
-            ],
-            "told_apart_on_m": self.coarse_side_m,
-            "rolled_m3_per_hour": self.rolled_m3_h,
-            "ledger": [{"material": name, "dry_mass_t": mass} for name, mass in self.ledger_t.items()],
-            "scarify_m3": self.scarify_m3,
-            "scarify": [{"material": name, "dry_mass_t": mass} for name, mass in self.scarify_t.items()],
-            "days": [self._day(day) for day in self.days],
-        }
-
-    def _day(self, pieces: DayPieces) -> dict[str, Any]:
-        day = pieces.day
-        return {
-            "day": day.day,
-            "date": None if day.date is None else day.date.isoformat(),
-            "kind": day.kind,
-            "compacted_m3": pieces.compacted_m3,
-            "lifts": [
-                {"fill": self.lifts[i].fill, "lift": self.lifts[i].lift, "compacted_m3": volume}
-                for i, volume in pieces.pieces
-            ],
-        }
-
-    def tables(self) -> dict[str, pandas.DataFrame]:
-        import pandas as pd
-
-        rows = []
-        for lift in self.lifts:
-            row = lift.to_dict()
-            row["flags"] = ", ".join(row["flags"])
-            for part in row.pop("materials"):
-                row[f"dry_mass_{part['material']}_t"] = part["dry_mass_t"]
-            for i, band in enumerate(row.pop("bands_m3"), start=1):
-                row[f"depth_row_{i}_m3"] = band
-            rows.append(row)
-        tables = {"lifts": pd.DataFrame(rows)}
-        if self.days:
-            tables["days"] = pd.DataFrame(
-                [
-                    {"day": day.day.day, "date": day.day.date, "kind": day.day.kind, **_piece(self.lifts, piece)}
-                    for day in self.days
-                    for piece in (day.pieces or ((None, 0.0),))
-                ]
-            )
-        return tables
-
-
-def _piece(lifts: Sequence[Lift], piece: tuple[int | None, float]) -> dict[str, Any]:
-    index, volume = piece
-    lift = None if index is None else lifts[index]
-    return {
-        "fill": lift.fill if lift else None,
-        "lift": lift.lift if lift else None,
-        "compacted_m3": volume,
-    }
 
 
 def lifts(
@@ -165,14 +62,36 @@ def lifts(
     thickness = lift_thickness_m(site, cards)
     ground = open_site(site)
     main, tally = VolumesTally(ground), LiftTally(ground.stack, thickness)
-    walk(ground.stack, [main, tally, *tallies], threads=threads, progress=progress)
-    return lifts_result(site, cards, ground, volumes_result(site, ground, main), tally)
+    hauled = _haul_tallies(site, cards, ground)
+    asked: list[Tally] = [main, tally, *(hauled.all if hauled else []), *tallies]
+    walk(ground.stack, asked, threads=threads, progress=progress)
+    return lifts_result(site, cards, ground, volumes_result(site, ground, main), tally, hauled, threads=threads)
+
+
+def _haul_tallies(site: Site, cards: Mapping[str, SoilCard], ground: SiteGround) -> HaulTallies | None:
+    """What the haul plan asks of the ground; None where there is no plan, or it makes no difference to the lifts."""
+    if site.model.haul is None or sum(card.use in ("fill", "rock") for card in cards.values()) < 2:
+        return None
+    from earthwork.plan.haul import HaulTallies
+
+    return HaulTallies(site, ground)
 
 
 def lifts_result(
-    site: Site, cards: dict[str, SoilCard], ground: SiteGround, volumes: VolumesResult, tally: LiftTally
+    site: Site,
+    cards: dict[str, SoilCard],
+    ground: SiteGround,
+    volumes: VolumesResult,
+    tally: LiftTally,
+    hauled: HaulTallies | None = None,
+    *,
+    threads: int | None = None,
 ) -> LiftsResult:
-    """The lifts from tallies that have seen all of the ground; see :func:`lifts`."""
+    """The lifts from tallies that have seen all of the ground; see :func:`lifts`.
+
+    Args:
+        hauled: what a haul plan needs; None mixes all materials pro rata.
+    """
     model = site.model
     areas = fill_areas(tally)
     here = account(model, cards, volumes.total)
@@ -180,16 +99,19 @@ def lifts_result(
     middle = sum(a.bottom_m + a.benches[-1].top_m for a in areas) / (2 * len(areas)) if areas else 0.0
     work = work_days(site, ground.stack.grid, middle)
     drying = _drying_points(site, cards, work, tally.lift_m)
-    mix = pro_rata(ledger, cards, volumes.total, drying)
+    even = pro_rata(ledger, cards, volumes.total, drying)
+    rated = _Mixed({area.name: even for area in areas}, "pro rata", placed_kg(ledger))
+    mixed = _mixed(site, cards, volumes, tally, areas, rated, drying, hauled, threads)
+    parts = {part.material: part for mix in mixed.mixes.values() for part in mix}
     shapes = LiftShapes(tally)
     maker = _maker(site, tally.lift_m, areas, shapes)
-    made = [lift for area in areas for lift in maker.lifts(area, mix)]
+    made = [lift for area in areas for lift in maker.lifts(area, mixed.mixes[area.name])]
     ordered, days = _in_order(site, areas, made, work)
     return LiftsResult(
         units=site.units,
         warnings=tuple(
             dict.fromkeys(
-                [*volumes.warnings, *soil_warnings(cards), *work.warnings, *_warnings(site, ordered, areas, cards)]
+                [*volumes.warnings, *soil_warnings(cards), *work.warnings, *mixed.notes, *_warnings(site, ordered)]
             )
         ),
         lifts=tuple(ordered),
@@ -198,17 +120,52 @@ def lifts_result(
         coarse_side=tally.coarse.side,
         coarse_side_m=tally.coarse.side_m,
         lift_m=tally.lift_m,
-        loose_lift_m={p.material: tally.lift_m * _loose_ratio(p.card) for p in mix},
-        material_rule="pro rata",
-        mixes={area.name: mix for area in areas},
+        loose_lift_m={name: tally.lift_m * _loose_ratio(part.card) for name, part in parts.items()},
+        material_rule=mixed.rule,
+        mixes=mixed.mixes,
         rolled_m3_h=maker.rolled_m3_h,
         work=work,
         scarify_m3=here.scarify_m3,
-        ledger_t={name: mass / 1000.0 for name, mass in placed_kg(ledger).items()},
+        ledger_t={name: mass / 1000.0 for name, mass in mixed.placed_kg.items()},
         volumes=volumes,
         cards=cards,
         shapes=shapes,
     )
+
+
+@dataclass(frozen=True)
+class _Mixed:
+    """The mix of each fill area, the rule that it follows, and the dry mass by material that it answers to."""
+
+    mixes: dict[str, tuple[MixPart, ...]]
+    rule: str
+    placed_kg: dict[str, float]
+    notes: tuple[Warning, ...] = ()
+
+
+def _mixed(
+    site: Site,
+    cards: dict[str, SoilCard],
+    volumes: VolumesResult,
+    tally: LiftTally,
+    areas: Sequence[FillArea],
+    even: _Mixed,
+    drying: float,
+    hauled: HaulTallies | None,
+    threads: int | None,
+) -> _Mixed:
+    """The mixes by the haul plan where there is one, else ``even``."""
+    if hauled is None or len(even.placed_kg) < 2 or not areas:
+        return even
+    from earthwork.plan.haul import haul_result
+
+    try:
+        plan = haul_result(site, cards, volumes, hauled, threads=threads)
+    except PlanError as error:
+        note = Warning("no-haul-plan", f"materials go into lifts pro rata: {error}")
+        return replace(even, notes=(note,))
+    planned = planned_mixes(plan, areas, tally.coarse, cards, drying)
+    return even if planned is None else _Mixed(planned.mixes, "haul plan", planned.placed_kg)
 
 
 def lift_thickness_m(site: Site, cards: Mapping[str, SoilCard]) -> float:
@@ -308,9 +265,7 @@ def lead_days(site: Site, lifts: Sequence[Lift]) -> int:
     return site.model.moisture.pre_wet_days if any(lift.water_to_add_l > 0 for lift in lifts) else 0
 
 
-def _warnings(
-    site: Site, lifts: Sequence[Lift], areas: Sequence[FillArea], cards: Mapping[str, SoilCard]
-) -> list[Warning]:
+def _warnings(site: Site, lifts: Sequence[Lift]) -> list[Warning]:
     found = []
     fill = site.model.fill
     assert fill is not None

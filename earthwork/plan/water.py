@@ -200,7 +200,7 @@ def water_result(site: Site, placed: LiftsResult) -> WaterResult:
     """The water of lifts that are known; see :func:`water`."""
     given = site.model.water
     assert given is not None
-    wettings = {part.material: wetting_of(site, part, placed.lift_m) for mix in placed.mixes.values() for part in mix}
+    wettings = {part.material: wetting_of(site, part, placed.lift_m) for part in placed.mix}
     job = water_job(site, given, placed, wettings)
     peak = max((day.total_l for day in job.demands), default=0.0)
     trucks = _trucks(given, peak)
@@ -214,10 +214,9 @@ def water_result(site: Site, placed: LiftsResult) -> WaterResult:
         fill_point_l=trucks.fill_point_loads * given.truck.capacity if trucks and given.truck else None,
     )
     days = water_days(job, limits, given.truck.capacity if given.truck else None)
-    parts = {part.material: part for mix in placed.mixes.values() for part in mix}
     result = WaterResult(
         units=site.units,
-        materials=tuple(MaterialWater(part, wettings[name]) for name, part in parts.items()),
+        materials=tuple(MaterialWater(part, wettings[part.material]) for part in placed.mix),
         days=days,
         job=job,
         trucks=trucks,

@@ -70,10 +70,9 @@ def drying_options(site: Site, placed: LiftsResult) -> tuple[DryingOption, ...]:
 
 def _wet(placed: LiftsResult) -> list[MixPart]:
     """Materials of the fill that arrive above their target."""
-    parts = {part.material: part for mix in placed.mixes.values() for part in mix}
     return [
         part
-        for part in parts.values()
+        for part in placed.mix
         if part.arriving_percent is not None
         and part.card.target_water_content_percent is not None
         and part.arriving_percent > part.card.target_water_content_percent

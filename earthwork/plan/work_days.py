@@ -9,7 +9,7 @@ from dataclasses import dataclass
 from earthwork.errors import PlanError, Warning
 from earthwork.files.weather import read_weather
 from earthwork.ground.grid import Grid
-from earthwork.plan.bare_soil import SurfaceSoil, surface_of_texture
+from earthwork.plan.bare_soil import BARE_SOIL_MAXIMUM, SurfaceSoil, surface_of_texture
 from earthwork.plan.calendar import CalendarDay, WorkCalendar, slot_hours
 from earthwork.plan.weather import DailyWeather, OpenGround, Place
 from earthwork.site import Site
@@ -43,8 +43,6 @@ class WorkDays:
     @property
     def reference_mm_day(self) -> float:
         """Evaporation that dries spread soil [mm/day], as a reference evaporation: the mean of the weather, or as given."""
-        from earthwork.plan.bare_soil import BARE_SOIL_MAXIMUM
-
         if self.weather is None:
             return self.given_mm_day / BARE_SOIL_MAXIMUM
         return float(self.weather.daily_reference_mm().mean())

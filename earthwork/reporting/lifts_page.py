@@ -117,7 +117,9 @@ def _basis(site: Site, result: LiftsResult) -> tuple[str, ...]:
         "Lifts are level benches; those of a fill start at its lowest removal bottom, and together they are the fill "
         "and the refill exactly. The area of a lift is the ground on which it has any thickness.",
         f"Fills are told apart on a grid of {apart}: what touches there is one fill. Slivers are summed as small fills.",
-        f"Which material goes into which lift: {result.material_rule}.",
+        "Which material goes into which lift follows the haul plan."
+        if result.material_rule == "haul plan"
+        else "Each lift takes each material in the share that it has of all fill (pro rata).",
     ]
     if result.scarify_m3:
         taken = show(result.scarify_m3, "soil_volume", site.units)

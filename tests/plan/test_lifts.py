@@ -3,14 +3,18 @@
 import datetime
 import math
 
+import numpy as np
 import pytest
+import rasterio
 from hypothesis import given
 from hypothesis import strategies as st
 
 from earthwork.errors import PlanError, SiteFileError
 from earthwork.plan.calendar import WorkCalendar
+from earthwork.plan.lift_materials import fitted_shares
 from earthwork.plan.lifts import lifts
 from earthwork.plan.schedule import placing_order, schedule
+from earthwork.site import Site
 from tests.plan.watered import site
 
 
@@ -43,12 +47,86 @@ def test_masses_of_the_lifts_are_those_of_the_ledger(tmp_path):
                            "fill": {"dry_density": 2000}},
         "over_excavation": [{"name": "pad", "depth": 0.5}],
         "fill.by_depth": [{"below": 0.6, "measured_from": "subgrade", "relative_compaction": 98,
-                           "expected_compaction": 98}]}))  # fmt: skip
+                           "expected_compaction": 98}]}, without=("haul",)))  # fmt: skip
+    assert result.material_rule == "pro rata"
     lifted = {part["material"]: part["dry_mass_t"] for part in result.total["materials"]}
     assert set(lifted) == {"silt", "shale"}
     for name, mass in result.ledger_t.items():
         assert lifted[name] == pytest.approx(mass, rel=1e-9)
     assert result.total["compacted_m3"] == pytest.approx(result.volumes.total.refill_and_fill_m3, rel=1e-9)
+
+
+def two_fills(tmp_path, **more):
+    """Two pads of fill, each beside a cut of its own material: the haul plan never mixes them."""
+    given = site(tmp_path, {
+        "stratum": [{"material": "silt", "bottom": "bottom.tif"}, {"material": "shale"}],
+        "material.shale": {"use": "rock", "bank": {"dry_density": 2200, "water_content": 3},
+                           "loose": {"swell_percent": 40}, "fill": {"dry_density": 2000}},
+        "haul": {"block": 20, "truck": {"heaped_volume": 12, "payload": 15}}, **more})  # fmt: skip
+    x = np.arange(200)[None, :] + 0.5
+    y = np.arange(80)[:, None] + 0.5
+    level = np.full((80, 200), 50.0)
+    inside = (y > 10) & (y < 70)
+    finished = level + 1.0 * (inside & (((x > 10) & (x < 50)) | ((x > 150) & (x < 190))))
+    finished -= 2.0 * (inside & (((x > 60) & (x < 85)) | ((x > 115) & (x < 140))))
+    bottom = np.where(x < 100, 40.0, 50.0) + 0 * y  # silt in the west, shale at the surface in the east
+    with rasterio.open(tmp_path / "existing.tif") as file:
+        profile = file.profile
+    for name, array in (("finished", finished), ("bottom", bottom)):
+        with rasterio.open(tmp_path / f"{name}.tif", "w", **profile) as file:
+            file.write(array, 1)
+    return given
+
+
+def test_materials_follow_the_haul_plan(tmp_path):
+    result = lifts(two_fills(tmp_path))
+    assert result.material_rule == "haul plan"
+    mixes = [{part.material: round(part.share, 9) for part in result.mixes[area.name]} for area in result.areas]
+    assert sorted(list(mix) for mix in mixes) == [["shale"], ["silt"]]
+    lifted = {part["material"]: part["dry_mass_t"] for part in result.total["materials"]}
+    assert lifted["silt"] == pytest.approx(2400 * 1.71)
+    assert lifted["shale"] == pytest.approx(2400 * 2.0)
+    for name, mass in result.ledger_t.items():
+        assert lifted[name] == pytest.approx(mass, rel=1e-9)
+
+
+def test_without_a_haul_plan_every_lift_takes_both(tmp_path):
+    given = two_fills(tmp_path)
+    even = lifts(Site(given.model.model_copy(update={"haul": None}), given.units, given.directory))
+    assert even.material_rule == "pro rata"
+    shares = {tuple((p.material, round(p.share, 9)) for p in mix) for mix in even.mixes.values()}
+    assert len(shares) == 1
+    # cut of 3000 m³ each: 3000 × 1500 / 1710 of silt, 3000 × 2200 / 2000 of shale
+    silt, shale = 3000 * 1500 / 1710, 3000 * 1.1
+    assert {p.material: p.share for p in even.mix}["silt"] == pytest.approx(silt / (silt + shale))
+
+
+def test_a_plan_that_cannot_be_made_leaves_the_even_mix(tmp_path):
+    given = two_fills(tmp_path, **{"disposal": [{"name": "tip", "at": [0.0, 0.0], "accepts": ["silt"], "capacity": 1}]})
+    result = lifts(given)
+    if result.material_rule == "pro rata":
+        assert "no-haul-plan" in {w.code for w in result.warnings}
+    assert result.total["compacted_m3"] == pytest.approx(4800)
+
+
+@given(
+    st.lists(st.tuples(st.floats(1, 100), st.floats(1, 100), st.floats(1, 100)), min_size=1, max_size=8),
+    st.lists(st.floats(1, 200), min_size=8, max_size=8),
+)
+def test_fitted_shares_fill_every_area_and_place_every_material(rows, volumes):
+    brought = np.array(rows)
+    volumes = np.array(volumes[: len(rows)])
+    shares = fitted_shares(brought, volumes)
+    assert shares.sum(axis=1) == pytest.approx(1.0)
+    assert (shares >= 0).all()
+    wanted = brought.sum(axis=0) / brought.sum()
+    assert (shares * volumes[:, None]).sum(axis=0) / volumes.sum() == pytest.approx(wanted, rel=1e-9)
+
+
+def test_what_only_one_block_gets_stays_with_its_fill():
+    shares = fitted_shares(np.array([[10.0, 0.0], [0.0, 5.0], [3.0, 2.0]]), np.array([10.5, 4.8, 4.7]))
+    assert shares[0].tolist() == pytest.approx([1.0, 0.0], abs=1e-6)
+    assert shares[1].tolist() == pytest.approx([0.0, 1.0], abs=1e-6)
 
 
 def test_scarifying_is_the_rest_of_the_ledger(tmp_path):
