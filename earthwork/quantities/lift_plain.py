@@ -17,6 +17,9 @@ _FAST = {"reassoc", "nsz", "contract", "arcp"}
 _FINITE = {*_FAST, "nnan", "ninf"}
 _PAD = 4  #: numbers kept for a bin, a power of two
 _FAR = 1e300
+PLACE_BITS = 22  #: resolution of the place of a packed end: 2⁻²² of a lift; what it rounds off cancels in a column
+COUNT_SHIFT = 42  #: above it a packed bin holds the number of its ends, under it the sum of their places
+SAMPLED_ROWS = 4  #: of so many rows one is counted with second moments where the others are packed
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
@@ -116,6 +119,31 @@ def _scatter(tables, fills, lows, tops, edges, ranges):
         ranges[b, 1] = most
 
 
+@njit(cache=True, nogil=True, error_model="numpy")
+def _scatter_packed(packed, fills, lows, tops, edges, ranges):
+    """As :func:`_scatter`, without the second moment: number and places of the ends of a bin add up in one integer."""
+    scale = np.float64(1 << PLACE_BITS)
+    mask = np.int64((1 << PLACE_BITS) - 1)
+    one = np.int64(1 << COUNT_SHIFT)
+    for b in range(edges.size - 1):
+        low_bins = packed[b, LOW]
+        top_bins = packed[b, HIGH]
+        least = ranges[b, 0]
+        most = ranges[b, 1]
+        for j in range(edges[b], edges[b + 1]):
+            if fills[j] != 0:
+                u = lows[j]
+                least = min(least, u)
+                v = np.int64(u * scale)
+                low_bins[np.uint64(v >> PLACE_BITS)] += (v & mask) | one
+                u = tops[j]
+                most = max(most, u)
+                v = np.int64(u * scale)
+                top_bins[np.uint64(v >> PLACE_BITS)] += (v & mask) | one
+        ranges[b, 0] = least
+        ranges[b, 1] = most
+
+
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
 def _any(marks, start, stop):
     """Whether any of a stretch of marks is set."""
@@ -163,22 +191,35 @@ def _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, p
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _collect(tables, scratch, kmin, kmax, lift, place):
+def _collect(tables, packed, scratch, kmin, kmax, lift, place):
     """Move the tables of a coarse cell into the scratch and clear them; adds volume and footprint to its place."""
     for end in range(2):
         sign = 1.0 if end == HIGH else -1.0
         for k in range(kmin, kmax + 1):
             at = k * _PAD
             area = tables[end, at]
+            first_moment = tables[end, at + 1]
+            second_moment = tables[end, at + 2]
+            if packed.size > 0 and packed[end, k] != 0:
+                more = np.float64(packed[end, k] >> COUNT_SHIFT)
+                places = np.float64(packed[end, k] & ((1 << COUNT_SHIFT) - 1)) / (1 << PLACE_BITS)
+                packed[end, k] = 0
+                mean = (first_moment + places) / (area + more)
+                half = max(min(mean, 1.0 - mean), 0.0)
+                variance = half * half / 3.0  # as spread as can be, where no row of the sample has an end in the bin
+                if area > 0.0:
+                    variance = max(second_moment / area - (first_moment / area) ** 2, 0.0)
+                area += more
+                first_moment += places
+                second_moment = area * (variance + mean * mean)
             if area == 0.0:
                 continue
-            first_moment = tables[end, at + 1]
-            scratch[0, end, k, 0] += area
-            scratch[0, end, k, 1] += first_moment
-            scratch[0, end, k, 2] += tables[end, at + 2]
             tables[end, at] = 0.0
             tables[end, at + 1] = 0.0
             tables[end, at + 2] = 0.0
+            scratch[0, end, k, 0] += area
+            scratch[0, end, k, 1] += first_moment
+            scratch[0, end, k, 2] += second_moment
             place[VOLUME] += sign * lift * (k * area + first_moment)
             if end == LOW:
                 place[FOOTPRINT] += area
@@ -186,12 +227,14 @@ def _collect(tables, scratch, kmin, kmax, lift, place):
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def count_plain(
-    depth, top, row0, column0, side, coarse_columns, lift, first, tables, crossings, cells, keys, moments
+    depth, top, row0, column0, side, coarse_columns, lift, first, tables, packed, crossings, cells, keys, moments
 ):  # fmt: skip
     """:func:`count_columns` of a tile where nothing is over-excavated, banded or weighted.
 
     Args:
         tables, crossings: of zeros, (coarse cells counted at a time, 2, bins · 4) and (…, 1, 2, bins, 3).
+        packed: of zeros, (…, 2, bins), where coarse cells are large enough that the second moment of every fourth row
+            will do; else (…, 0, 0).
 
     Returns:
         Number of records, or −1 where an elevation lies outside the bins; what is in ``cells`` is then of no use.
@@ -233,7 +276,10 @@ def count_plain(
                     least, most = _levels(top, depth, i, j0, 1.0 / lift, first, f, lows, tops)
                     if least < 0.0 or most >= bins:
                         return -1
-                    _scatter(tables, f, lows, tops, edges, ranges)
+                    if packed.shape[1] == 0 or (row0 + i) % SAMPLED_ROWS == 0:
+                        _scatter(tables, f, lows, tops, edges, ranges)
+                    else:
+                        _scatter_packed(packed, f, lows, tops, edges, ranges)
                 if crossed > 0:
                     _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, places)
             for b in range(edges.size - 1):
@@ -243,7 +289,7 @@ def count_plain(
                     place[HIGHEST] = max(place[HIGHEST], (ranges[b, 1] + first) * lift)
                     least = np.int64(ranges[b, 0])
                     most = np.int64(ranges[b, 1])
-                    _collect(tables[b], crossings[b], least, most, lift, place)
+                    _collect(tables[b], packed[b], crossings[b], least, most, lift, place)
                     reach[b, 0] = min(reach[b, 0], least)
                     reach[b, 1] = max(reach[b, 1], most)
                 if reach[b, 1] >= reach[b, 0]:

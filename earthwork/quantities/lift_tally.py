@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import threading
 from dataclasses import dataclass
 
 import numpy as np
@@ -25,6 +26,8 @@ from earthwork.quantities.tile import Tile
 
 _COARSE_M = 5.0  #: side of the cells on which fill areas are told apart, where the site is small enough
 _COARSE_CELLS = 128  #: at most along a side
+_LARGE_SIDE = 32  #: coarse cells of so many cells along are counted with the second moments of a sample
+_LOOSE = 3_000_000  #: records that are kept before those of one key are added up
 _CHUNK = 2048  #: cells across that are counted at one time
 _OVERVIEW_CELLS = 1024  #: of the map that lift outlines are drawn on, at most along a side
 
@@ -142,12 +145,13 @@ class LiftTally:
             cells = self._room(tile)
             keys, moments = self._record_room(tile, cells, bins)
             blocks = min(max(_CHUNK // self.coarse.side, 1), cells.shape[1])
-            # numpy's zeros cost nothing until they are touched, those made in a kernel do
-            tables, crossings = np.zeros((blocks, 2, 4 * bins)), np.zeros((blocks, 1, 2, bins, 3))
+            tables, packed, crossings = _TABLES.zeros(blocks, bins, packed=self.coarse.side >= _LARGE_SIDE)
             count = count_plain(
                 tile.depth, top, window.row, window.column, self.coarse.side, self.coarse.columns, self.lift_m, first,
-                tables, crossings, cells, keys, moments,
+                tables[:blocks], packed[:blocks], crossings[:blocks], cells, keys, moments,
             )  # fmt: skip
+            if count < 0:
+                _TABLES.clear()
             if count >= 0:
                 return Records(keys[:count].copy(), moments[:count].copy()), cells
         return None
@@ -179,7 +183,7 @@ class LiftTally:
         """Room for as many records as a tile can make."""
         kinds = 2 * kinds_of(len(self.below))
         most = min(cells.shape[0] * cells.shape[1] * kinds * bins, tile.window.height * tile.window.width * (2 + kinds))
-        return np.empty(most, np.int64), np.empty((most, 3))
+        return _TABLES.records(most)
 
     def _sample(self, tile: Tile, weight: np.ndarray | None) -> None:
         """Keep bottom and top of the fill at the middle of each overview cell."""
@@ -203,7 +207,7 @@ class LiftTally:
         self._overview += other._overview
         self._parts += other._parts
         self._loose += other._loose
-        if self._loose > 1_000_000:
+        if self._loose > _LOOSE:
             self._compact()
 
     def _compact(self) -> None:
@@ -230,8 +234,8 @@ class LiftTally:
 
     @property
     def records(self) -> Records:
-        """All column ends, one row a key."""
-        return _joined(self._parts).compacted()
+        """All column ends; a key comes once for each tile that has ends in its bin."""
+        return _joined(self._parts)
 
     @property
     def cells(self) -> np.ndarray:
@@ -254,6 +258,41 @@ class LiftTally:
             here = whole[row : row + len(top), column : column + top.shape[1]]
             here[..., 0], here[..., 1] = bottom, top
         return whole
+
+
+class _Tables(threading.local):
+    """Room that each thread counts in: tables that every count leaves as zeros, and records before they are kept."""
+
+    def __init__(self) -> None:
+        self.keys = np.empty(0, np.int64)
+        self.moments = np.empty((0, 3))
+        self.clear()
+
+    def clear(self) -> None:
+        """Forget tables that a count has not left as zeros."""
+        self.tables = np.zeros((0, 2, 0))
+        self.packed = np.zeros((0, 0, 0), np.int64)
+        self.crossings = np.zeros((0, 1, 2, 0, 3))
+
+    def zeros(self, blocks: int, bins: int, *, packed: bool) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        """Tables for :func:`count_plain` of at least so many bins, the same ones for as long as they are enough."""
+        held = self.crossings.shape
+        if held[0] < blocks or held[3] < bins or (self.packed.shape[1] > 0) != packed:
+            blocks, bins = max(blocks, held[0]), max(bins, held[3])
+            # numpy's zeros cost nothing until they are touched, those made in a kernel do
+            self.tables = np.zeros((blocks, 2, 4 * bins))
+            self.packed = np.zeros((blocks, 2, bins) if packed else (blocks, 0, 0), np.int64)
+            self.crossings = np.zeros((blocks, 1, 2, bins, 3))
+        return self.tables, self.packed, self.crossings
+
+    def records(self, most: int) -> tuple[np.ndarray, np.ndarray]:
+        """Keys and moments for so many records."""
+        if len(self.keys) < most:
+            self.keys, self.moments = np.empty(most, np.int64), np.empty((most, 3))
+        return self.keys, self.moments
+
+
+_TABLES = _Tables()
 
 
 def _touched(start: int, length: int, side: int) -> int:
