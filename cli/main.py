@@ -40,6 +40,8 @@ def run(arguments: Sequence[str] | None = None) -> None:
     code = main(arguments)
     with contextlib.suppress(OSError, ValueError):
         sys.stderr.flush()
+    # Nothing of what stands in memory needs to be taken apart: looking through it costs 0.2 s of every end.
+    gc.freeze()
     sys.exit(code)
 
 
