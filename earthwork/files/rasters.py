@@ -245,8 +245,8 @@ class RasterReader:
             mask = self._dataset.read_masks(info.band, window=window) == 0 if info.masked else None
         except RasterioError as error:
             raise FileError(self._damage(window, error)) from None
-        _blank(values, self._missing, mask)
-        self._refuse_markers(values, window)
+        if self._blank(values, mask):
+            self._refuse_markers(values, window)
         if self.source.converted:
             values *= info.scale
             values += info.offset
@@ -255,12 +255,23 @@ class RasterReader:
             values = np.ascontiguousarray(values[:: -1 if info.south_up else 1, :: -1 if info.east_first else 1])
         return values
 
+    def _blank(self, values: np.ndarray, mask: np.ndarray | None) -> bool:
+        """Set missing and infinite values to NaN, in place; whether one that stays is hardly an elevation."""
+        from earthwork.files.kernels import blank
+
+        typed = values.dtype.type
+        low, high = (typed(end) for end in self._likely)
+        odd = False
+        for value in self._missing or [typed(np.nan)]:
+            odd = blank(values, value, low, high)
+        if mask is not None and mask.any():
+            np.putmask(values, mask, np.nan)
+        return odd
+
     def _refuse_markers(self, values: np.ndarray, window: FileWindow) -> None:
         """Raise a FileError for a value that marks missing data, where nothing declares it and no ground can lie."""
         low, high = self._likely
         odd = (values < low) | (values > high)
-        if not odd.any():
-            return
         info = self.source.info
         absurd_low, absurd_high = _stored(self.source, -_ABSURD_M, _ABSURD_M)
         odd &= np.isin(values, np.array(_MARKERS, values.dtype)) | (values < absurd_low) | (values > absurd_high)
@@ -321,16 +332,6 @@ def _missing_values(source: RasterSource) -> list[Any]:
         if typed not in found:
             found.append(typed)
     return found
-
-
-def _blank(values: np.ndarray, missing: list[Any], mask: np.ndarray | None) -> None:
-    """Set missing and infinite values to NaN, in place."""
-    from earthwork.files.kernels import blank
-
-    for value in missing or [values.dtype.type(np.nan)]:
-        blank(values, value)
-    if mask is not None and mask.any():
-        np.putmask(values, mask, np.nan)
 
 
 def foot_of_site(document: dict[str, Any], directory: Path) -> float:

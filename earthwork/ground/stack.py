@@ -184,13 +184,21 @@ class StackReader:
         for reader in (self.existing, self.finished, *self.bottoms.values()):
             reader.close()
 
-    def read_depth(self, window: Window, with_finished: bool = False) -> Arrays:
-        """The depth alone, of a site without layers; and the finished ground where it is wanted."""
+    def read_depth(
+        self, window: Window, room: Callable[[str, np.dtype], np.ndarray], with_finished: bool = False
+    ) -> Arrays:
+        """The depth alone, of a site without layers; and the finished ground where it is wanted.
+
+        ``room`` gives the array that a field of a name and type is written into, (height, width).
+        """
         existing, finished = self.existing.read(window), self.finished.read(window)
-        if with_finished:
-            into = existing if existing.dtype >= finished.dtype else None
-            return {"depth": np.subtract(finished, existing, out=into), "finished": finished}
-        return {"depth": np.subtract(finished, existing, out=finished if finished.dtype >= existing.dtype else None)}
+        depth = room("depth", np.result_type(finished, existing))
+        np.subtract(finished, existing, out=depth)
+        if not with_finished:
+            return {"depth": depth}
+        kept = room("finished", finished.dtype)
+        kept[...] = finished
+        return {"depth": depth, "finished": kept}
 
     def read(self, window: Window) -> Arrays:
         """All fields of a window, see :data:`Arrays`; the base surfaces alone when the site has no layers."""

@@ -200,20 +200,24 @@ class Walk:
             if self.stop.is_set():
                 return
             window = Window(row, left, stop - row, right - left)
-            arrays = reader.read_depth(window, self.wants_finished) if self.depth_only else reader.read(window)
+            east_end = right == self.grid.columns
+            rim = _Rim(window, carried, north=first, south=last, east=east_end)
+            if self.depth_only:
+                arrays = reader.read_depth(window, rim.room, self.wants_finished)
+            else:
+                arrays = rim.around(reader.read(window))
             if not first:
                 edges_north.append({name: a[:2].copy() for name, a in arrays.items()})
             if not last:
                 edges_south.append({name: a[-2:].copy() for name, a in arrays.items()})
             west = left if carried is None else left - 1
-            east = right if right == self.grid.columns else right - 1
-            rimmed = _rim(carried, arrays, north=first, south=last, east=right == self.grid.columns)
-            if right < self.grid.columns:
+            east = right if east_end else right - 1
+            if not east_end:
                 carried = {name: a[:, -2:].copy() for name, a in arrays.items()}
             inner = row if first else row + 1
             height = (stop if last else stop - 1) - inner
             if height > 0 and east > west:
-                self._count(counts, rimmed, Window(inner, west, height, east - west))
+                self._count(counts, rim.arrays, Window(inner, west, height, east - west))
         self.finish(2 * band, counts)
         if not first:
             self.seam(band - 1, "south", _side_by_side(edges_north))
@@ -281,24 +285,38 @@ def _padded(array: np.ndarray, *, north=False, south=False, west=False, east=Fal
     return padded
 
 
-def _rim(carried: Arrays | None, arrays: Arrays, *, north: bool, south: bool, east: bool) -> Arrays:
+class _Rim:
     """Arrays of a tile with its rim: carried columns or the edge in the west, the edge elsewhere where asked."""
-    rimmed: Arrays = {}
-    for name, array in arrays.items():
-        rows, columns = array.shape
-        before = 1 if carried is None else 2
-        whole = np.empty((rows + north + south, before + columns + east), array.dtype)
-        if north:
+
+    def __init__(self, window: Window, carried: Arrays | None, *, north: bool, south: bool, east: bool) -> None:
+        self.arrays: Arrays = {}
+        self._window = window
+        self._carried = carried
+        self._north, self._south, self._east = north, south, east
+
+    def room(self, name: str, dtype: np.dtype) -> np.ndarray:
+        """A new field with its rim in place; the part of it that the window fills, (height, width), not yet set."""
+        rows, columns = self._window.height, self._window.width
+        before = 1 if self._carried is None else 2
+        whole = np.empty((rows + self._north + self._south, before + columns + self._east), dtype)
+        if self._north:
             whole[0] = np.nan
-        if south:
+        if self._south:
             whole[-1] = np.nan
-        if east:
+        if self._east:
             whole[:, -1] = np.nan
-        inner = whole[int(north) : int(north) + rows]
-        inner[:, :before] = np.nan if carried is None else carried[name]
-        inner[:, before : before + columns] = array
-        rimmed[name] = whole
-    return rimmed
+        inner = whole[int(self._north) : int(self._north) + rows]
+        inner[:, :before] = np.nan if self._carried is None else self._carried[name]
+        self.arrays[name] = whole
+        return inner[:, before : before + columns]
+
+    def around(self, arrays: Arrays) -> Arrays:
+        """The same fields, moved into their rims."""
+        moved: Arrays = {}
+        for name, array in arrays.items():
+            moved[name] = self.room(name, array.dtype)
+            moved[name][...] = array
+        return moved
 
 
 def _side_by_side(pieces: list[Arrays]) -> Arrays:
