@@ -228,8 +228,14 @@ class RasterReader:
     def close(self) -> None:
         self._dataset.close()
 
-    def read(self, row: int, column: int, height: int, width: int) -> np.ndarray:
+    def read(
+        self, row: int, column: int, height: int, width: int, *, out: np.ndarray | None = None
+    ) -> np.ndarray:
         """Elevations [m] of a window that lies inside the file, row 0 north; NaN where there is no data.
+
+        Args:
+            out: to be filled and returned, (height, width), of the source's type, its cells side by side in
+                memory; default a new array.
 
         Raises:
             FileError: the data of the file are damaged; the message names the block and its place.
@@ -241,7 +247,9 @@ class RasterReader:
             column = info.columns - column - width
         window = FileWindow(column, row, width, height)
         try:
-            values = self._dataset.read(info.band, window=window, out_dtype=dtype)
+            turned = info.south_up or info.east_first
+            values = np.empty((height, width), dtype) if out is None or turned else out
+            self._dataset.read(info.band, window=window, out=values)
             mask = self._dataset.read_masks(info.band, window=window) == 0 if info.masked else None
         except RasterioError as error:
             raise FileError(self._damage(window, error)) from None
@@ -251,8 +259,10 @@ class RasterReader:
             values *= info.scale
             values += info.offset
             values *= self.source.unit_m
-        if info.south_up or info.east_first:
-            values = np.ascontiguousarray(values[:: -1 if info.south_up else 1, :: -1 if info.east_first else 1])
+        if turned:
+            right = np.empty_like(values) if out is None else out
+            right[...] = values[:: -1 if info.south_up else 1, :: -1 if info.east_first else 1]
+            return right
         return values
 
     def _blank(self, values: np.ndarray, mask: np.ndarray | None) -> bool:

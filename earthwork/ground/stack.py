@@ -13,7 +13,7 @@ import numpy as np
 
 from earthwork.ground.areas import Rings
 from earthwork.ground.grid import Grid, Window
-from earthwork.ground.surfaces import Surface, SurfaceReader
+from earthwork.ground.surfaces import AlignedReader, Surface, SurfaceReader
 
 #: Fields of a window by name, each (height, width); elevations and depths in m, shares in [0, 1], NaN = no data.
 #: ``depth`` (subgrade − stripped), ``existing``, ``finished``; with layers also ``stripped``, ``subgrade``,
@@ -173,6 +173,7 @@ class StackReader:
         self.existing = stack.existing.reader()
         self.finished = stack.finished.reader()
         self.bottoms: dict[str, SurfaceReader] = {}
+        self._held = [np.empty(0), np.empty(0)]
         for i, stratum in enumerate(stack.strata):
             if stratum.bottom is not None:
                 self.bottoms[f"stratum{i}"] = stratum.bottom.reader()
@@ -191,7 +192,8 @@ class StackReader:
 
         ``room`` gives the array that a field of a name and type is written into, (height, width).
         """
-        existing, finished = self.existing.read(window), self.finished.read(window)
+        existing = self._read_held(self.existing, 0, window)
+        finished = self._read_held(self.finished, 1, window)
         depth = room("depth", np.result_type(finished, existing))
         np.subtract(finished, existing, out=depth)
         if not with_finished:
@@ -199,6 +201,15 @@ class StackReader:
         kept = room("finished", finished.dtype)
         kept[...] = finished
         return {"depth": depth, "finished": kept}
+
+    def _read_held(self, reader: SurfaceReader, which: int, window: Window) -> np.ndarray:
+        """Read a surface to where the last tile was: coming by new memory costs as much as looking through it."""
+        if not isinstance(reader, AlignedReader):
+            return reader.read(window)
+        cells = window.height * window.width
+        if self._held[which].size < cells:
+            self._held[which] = np.empty(cells, reader.dtype)
+        return reader.read(window, self._held[which][:cells].reshape(window.height, window.width))
 
     def read(self, window: Window) -> Arrays:
         """All fields of a window, see :data:`Arrays`; the base surfaces alone when the site has no layers."""

@@ -167,26 +167,31 @@ class AlignedRaster:
     def block_start(self) -> tuple[int, int]:
         return _block_start(self.source.info, self.row, self.column)
 
-    def reader(self) -> _AlignedReader:
-        return _AlignedReader(self)
+    def reader(self) -> AlignedReader:
+        return AlignedReader(self)
 
 
-class _AlignedReader:
+class AlignedReader:
+    """One thread's way to an aligned raster."""
+
     def __init__(self, surface: AlignedRaster) -> None:
+        self.dtype = surface.dtype
         self._surface = surface
         self._file = surface.source.reader()
 
-    def read(self, window: Window) -> np.ndarray:
+    def read(self, window: Window, out: np.ndarray | None = None) -> np.ndarray:
+        """Elevations of a window, into ``out`` where that is given."""
         info = self._surface.source.info
         row, column = window.row + self._surface.row, window.column + self._surface.column
+        values = np.empty((window.height, window.width), self._surface.dtype) if out is None else out
         if row >= 0 and column >= 0 and row + window.height <= info.rows and column + window.width <= info.columns:
-            return self._file.read(row, column, window.height, window.width)
-        values = np.full((window.height, window.width), np.nan, self._surface.dtype)
+            return self._file.read(row, column, window.height, window.width, out=values)
+        values[...] = np.nan
         top, left = max(row, 0), max(column, 0)
         bottom, right = min(row + window.height, info.rows), min(column + window.width, info.columns)
         if bottom > top and right > left:
             inside = np.s_[top - row : bottom - row, left - column : right - column]
-            values[inside] = self._file.read(top, left, bottom - top, right - left)
+            self._file.read(top, left, bottom - top, right - left, out=values[inside])
         return values
 
     def close(self) -> None:

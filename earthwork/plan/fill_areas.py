@@ -115,7 +115,7 @@ def _benches(
     volumes, standing = np.zeros((1 + bands, starts[-1] + 1)), np.zeros((1 + bands, starts[-1] + 2))
     ends = np.zeros((3, starts[-1] + 1))
     bench_sums(
-        records.keys, records.moments, bands, area_of_cell.ravel().astype(np.int64),
+        *records.sorted(), bands, area_of_cell.ravel().astype(np.int64),
         np.array(origins, np.int64), np.array(offsets), starts, volumes, standing, ends,
     )  # fmt: skip
     cell_m2 = tally.stack.grid.cell_area_m2
@@ -147,7 +147,7 @@ def _whole(tally: LiftTally, records: Records, cells: np.ndarray, span: tuple[fl
     volumes, standing, ends = np.zeros((1 + bands, 1)), np.zeros((1 + bands, 2)), np.zeros((3, 1))
     origin = math.floor(span[1] / tally.lift_m) + 2  # above everything, so that all of it falls into one lift
     bench_sums(
-        records.keys, records.moments, bands, inside, np.array([origin]), np.array([0.0]), np.array([0]),
+        *records.sorted(), bands, inside, np.array([origin]), np.array([0.0]), np.array([0]),
         volumes, standing, ends,
     )  # fmt: skip
     cubic = volumes[:, 0] * tally.lift_m * tally.stack.grid.cell_area_m2

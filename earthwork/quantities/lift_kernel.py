@@ -14,8 +14,7 @@ from numba import njit
 from earthwork.quantities.split import _half_slope, _plane_above_zero
 
 LOW, HIGH = 0, 1  #: ends of a column
-BIN_BITS = 22  #: of a record's key
-BIN_ZERO = 1 << 21  #: what the bin from elevation 0 on has in a key
+CODE, BIN, LENGTH = range(3)  #: of a run: coarse cell, kind and end in one number; its lowest bin; its bins
 VOLUME, FOOTPRINT, GROUND, LOWEST, HIGHEST = range(5)  #: what is kept of each coarse cell
 
 
@@ -65,31 +64,54 @@ def _bands(scratch, low, top, density, weight, finished, below, from_finished, o
     return reached
 
 
+@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+def code_of(coarse, kinds, kind, end):
+    """What a run is of: a coarse cell, a kind of column, and its lower or upper ends."""
+    return (coarse * kinds + kind) * 2 + end
+
+
+@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+def record(runs, moments, counts, code, k, area, first_moment, second_moment):
+    """Append the ends in bin ``k``: to the last run where that goes on there, else to a new one.
+
+    Args:
+        counts: (2,) number of runs and of moments so far; both go up.
+    """
+    n = counts[0]
+    if n == 0 or runs[n - 1, CODE] != code or runs[n - 1, BIN] + runs[n - 1, LENGTH] != k:
+        runs[n, CODE] = code
+        runs[n, BIN] = k
+        runs[n, LENGTH] = 0
+        n += 1
+        counts[0] = n
+    runs[n - 1, LENGTH] += 1
+    row = counts[1]
+    moments[row, 0] = area
+    moments[row, 1] = first_moment
+    moments[row, 2] = second_moment
+    counts[1] = row + 1
+
+
 @njit(cache=True, nogil=True, error_model="numpy")
-def _flush(scratch, reach, coarse, first, keys, moments, count):
+def _flush(scratch, reach, coarse, first, runs, moments, counts):
     """Move what the scratch holds of one coarse cell into the records, and clear it."""
     kinds = scratch.shape[0]
     for kind in range(kinds):
         for end in range(2):
+            code = code_of(coarse, kinds, kind, end)
             for k in range(reach[0], reach[1] + 1):
-                if scratch[kind, end, k, 0] != 0.0:
-                    keys[count] = (((coarse * kinds + kind) * 2 + end) << BIN_BITS) + (k + first + BIN_ZERO)
-                    moments[count, 0] = scratch[kind, end, k, 0]
-                    moments[count, 1] = scratch[kind, end, k, 1]
-                    moments[count, 2] = scratch[kind, end, k, 2]
-                    count += 1
-                    scratch[kind, end, k, 0] = 0.0
-                    scratch[kind, end, k, 1] = 0.0
-                    scratch[kind, end, k, 2] = 0.0
+                here = scratch[kind, end, k]
+                if here[0] != 0.0:
+                    record(runs, moments, counts, code, k + first, here[0], here[1], here[2])
+                    here[:] = 0.0
     reach[0] = scratch.shape[2]
     reach[1] = -1
-    return count
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def count_columns(
     depth, top, bottom, weight, finished, below, from_finished, order,
-    row0, column0, side, coarse_columns, lift, first, bins, cells, keys, moments,
+    row0, column0, side, coarse_columns, lift, first, bins, cells, runs, moments, counts,
 ):  # fmt: skip
     """Count the fill columns of a tile.
 
@@ -105,10 +127,8 @@ def count_columns(
         lift, first, bins: thickness of a bin [m]; index of the lowest one that is held, and how many.
         cells: (coarse rows, coarse columns, 5) to which VOLUME [cell·m], FOOTPRINT and GROUND [cells] are added, and
             LOWEST (removal bottom) and HIGHEST (subgrade) widened [m]; from the coarse cell of the tile's first cell.
-        keys, moments: records to fill: coarse cell, kind, end and bin in one number; area and moments, (n, 3).
-
-    Returns:
-        Number of records.
+        runs, moments, counts: records to fill, see :func:`record`: neighbouring bins with ends of one code make a run,
+            each with its area [cells] and moments, one run after another.
     """
     h, w = top.shape
     scratch = np.zeros((kinds_of(below.size), 2, bins, 3))
@@ -117,7 +137,6 @@ def count_columns(
     weighted = weight.size > 0
     banded = below.size > 0
     needs_finished = finished.size > 0
-    count = 0
     big_row0 = row0 // side
     big_column0 = column0 // side
     for big_row in range(big_row0, (row0 + h - 1) // side + 1):
@@ -188,5 +207,4 @@ def count_columns(
             place[HIGHEST] = max(place[HIGHEST], highest)
             if reach[1] >= reach[0]:
                 coarse = big_row * coarse_columns + big_column
-                count = _flush(scratch, reach, coarse, first, keys, moments, count)
-    return count
+                _flush(scratch, reach, coarse, first, runs, moments, counts)

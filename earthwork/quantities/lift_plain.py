@@ -8,10 +8,8 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGH, HIGHEST, LOW, LOWEST, VOLUME, _flush
+from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGH, HIGHEST, LOW, LOWEST, VOLUME, code_of, record
 from earthwork.quantities.split import _half_slope, _plane_above_zero
-
-# -----------------------------------------------------------------
 
 _FAST = {"reassoc", "nsz", "contract", "arcp"}
 _FINITE = {*_FAST, "nnan", "ninf"}
@@ -62,86 +60,28 @@ def _states(depth, i, j0, fills, mixed):
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FINITE)
-def _levels(top, depth, i, j0, inverse, first, fills, lows, tops):
-    """Ends of the columns of a row in bins above the first; far away for cells that are not all fill.
+def _levels(top, depth, i, j0, scale, origin, height, fills, lows, tops):
+    """Ends of the columns of a row above the lowest bin; of no meaning for cells that are not all fill.
+
+    Args:
+        scale, origin: level = elevation · scale − origin.
+        height: level of the upper edge of the highest bin.
+        lows, tops: (n,) to receive the levels; where they are integers, cut off to such.
 
     Returns:
-        Least and greatest of them.
+        Whether an end lies outside the bins.
     """
-    high = top[i][j0:]
+    high = top[i + 1][j0 + 1 :]
     thick = depth[i + 1][j0 + 1 :]
-    least = _FAR
-    most = -_FAR
+    outside = 0.0
     for j in range(fills.size):
-        fill = fills[j] != 0
         z = np.float64(high[j])
-        low = (z - np.float64(thick[j])) * inverse - first
-        up = z * inverse - first
-        low = low if fill else _FAR
-        up = up if fill else -_FAR
-        lows[j] = low
-        tops[j] = up
-        least = min(least, low)
-        most = max(most, up)
-    return least, most
-
-
-@njit(cache=True, nogil=True, error_model="numpy")
-def _scatter(tables, fills, lows, tops, edges, ranges):
-    """Count the ends of the columns of a row into the tables of their coarse cells, and widen their ranges."""
-    one = np.uint64(1)
-    two = np.uint64(2)
-    pad = np.uint64(_PAD)
-    for b in range(edges.size - 1):
-        low_table = tables[b, LOW]
-        top_table = tables[b, HIGH]
-        least = ranges[b, 0]
-        most = ranges[b, 1]
-        for j in range(edges[b], edges[b + 1]):
-            if fills[j] != 0:
-                u = lows[j]
-                k = np.int32(u)
-                x = u - k
-                at = np.uint64(k) * pad
-                least = min(least, u)
-                low_table[at] += 1.0
-                low_table[at + one] += x
-                low_table[at + two] += x * x
-                u = tops[j]
-                k = np.int32(u)
-                x = u - k
-                at = np.uint64(k) * pad
-                most = max(most, u)
-                top_table[at] += 1.0
-                top_table[at + one] += x
-                top_table[at + two] += x * x
-        ranges[b, 0] = least
-        ranges[b, 1] = most
-
-
-@njit(cache=True, nogil=True, error_model="numpy")
-def _scatter_packed(packed, fills, lows, tops, edges, ranges):
-    """As :func:`_scatter`, without the second moment: number and places of the ends of a bin add up in one integer."""
-    scale = np.float64(1 << PLACE_BITS)
-    mask = np.int64((1 << PLACE_BITS) - 1)
-    one = np.int64(1 << COUNT_SHIFT)
-    for b in range(edges.size - 1):
-        low_bins = packed[b, LOW]
-        top_bins = packed[b, HIGH]
-        least = ranges[b, 0]
-        most = ranges[b, 1]
-        for j in range(edges[b], edges[b + 1]):
-            if fills[j] != 0:
-                u = lows[j]
-                least = min(least, u)
-                v = np.int64(u * scale)
-                low_bins[np.uint64(v >> PLACE_BITS)] += (v & mask) | one
-                u = tops[j]
-                most = max(most, u)
-                v = np.int64(u * scale)
-                top_bins[np.uint64(v >> PLACE_BITS)] += (v & mask) | one
-        ranges[b, 0] = least
-        ranges[b, 1] = most
+        low = (z - np.float64(thick[j])) * scale - origin
+        up = z * scale - origin
+        lows[j] = lows.dtype.type(low)
+        tops[j] = tops.dtype.type(up)
+        outside += 1.0 if (fills[j] != 0) & ((low < 0.0) | (up >= height)) else 0.0
+    return outside > 0.0
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
@@ -154,9 +94,83 @@ def _any(marks, start, stop):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
+def _scatter(tables, fills, lows, tops, edges, ranges):
+    """Count the ends of the columns of a row into the tables of their coarse cells, and widen their ranges."""
+    one = np.uint64(1)
+    two = np.uint64(2)
+    pad = np.uint64(_PAD)
+    for b in range(edges.size - 1):
+        if not _any(fills, edges[b], edges[b + 1]):
+            continue
+        low_table = tables[b, LOW]
+        top_table = tables[b, HIGH]
+        lowest, low_most = ranges[b, LOW]
+        top_least, highest = ranges[b, HIGH]
+        for j in range(edges[b], edges[b + 1]):
+            if fills[j] != 0:
+                u = lows[j]
+                k = np.int32(u)
+                x = u - k
+                at = np.uint64(k) * pad
+                lowest = min(lowest, u)
+                low_most = max(low_most, u)
+                low_table[at] += 1.0
+                low_table[at + one] += x
+                low_table[at + two] += x * x
+                u = tops[j]
+                k = np.int32(u)
+                x = u - k
+                at = np.uint64(k) * pad
+                top_least = min(top_least, u)
+                highest = max(highest, u)
+                top_table[at] += 1.0
+                top_table[at + one] += x
+                top_table[at + two] += x * x
+        ranges[b, LOW, 0] = lowest
+        ranges[b, LOW, 1] = low_most
+        ranges[b, HIGH, 0] = top_least
+        ranges[b, HIGH, 1] = highest
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _scatter_packed(packed, fills, lows, tops, edges, ranges):
+    """As :func:`_scatter` of levels in 2⁻²² of a lift, without the second moment.
+
+    Number and places of the ends of a bin add up in one integer.
+    """
+    unit = 1.0 / (1 << PLACE_BITS)
+    mask = np.int64((1 << PLACE_BITS) - 1)
+    one = np.int64(1 << COUNT_SHIFT)
+    far = np.int64(1 << 62)
+    for b in range(edges.size - 1):
+        if not _any(fills, edges[b], edges[b + 1]):
+            continue
+        low_bins = packed[b, LOW]
+        top_bins = packed[b, HIGH]
+        lowest = far
+        low_most = -far
+        top_least = far
+        highest = -far
+        for j in range(edges[b], edges[b + 1]):
+            if fills[j] != 0:
+                level = lows[j]
+                lowest = min(lowest, level)
+                low_most = max(low_most, level)
+                low_bins[np.uint64(level >> PLACE_BITS)] += (level & mask) | one
+                level = tops[j]
+                top_least = min(top_least, level)
+                highest = max(highest, level)
+                top_bins[np.uint64(level >> PLACE_BITS)] += (level & mask) | one
+        ranges[b, LOW, 0] = min(ranges[b, LOW, 0], lowest * unit)
+        ranges[b, LOW, 1] = max(ranges[b, LOW, 1], low_most * unit)
+        ranges[b, HIGH, 0] = min(ranges[b, HIGH, 0], top_least * unit)
+        ranges[b, HIGH, 1] = max(ranges[b, HIGH, 1], highest * unit)
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
 def _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, places):
     """Count the cells of a row that the zero line crosses: the part with fill, as thick as its fill is on the mean."""
-    bins = crossings.shape[3]
+    bins = crossings.shape[2]
     inverse = 1.0 / lift
     for b in range(edges.size - 1):
         if not _any(mixed, edges[b], edges[b + 1]):
@@ -171,7 +185,7 @@ def _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, p
             fill, part = _plane_above_zero(x, a, c)
             if not fill > 0.0:
                 continue
-            z = np.float64(top[i, column])
+            z = np.float64(top[i + 1, column + 1])
             base = min(z - x, z)
             for end in range(2):
                 level = (z if end == HIGH or part < 1.0 else base) * inverse - first
@@ -179,11 +193,11 @@ def _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, p
                     level -= fill / part * inverse
                 k = min(max(int(level), 0), bins - 1)
                 place = level - k
-                crossings[b, 0, end, k, 0] += part
-                crossings[b, 0, end, k, 1] += part * place
-                crossings[b, 0, end, k, 2] += part * place * place
-                reach[b, 0] = min(reach[b, 0], k)
-                reach[b, 1] = max(reach[b, 1], k)
+                crossings[b, end, k, 0] += part
+                crossings[b, end, k, 1] += part * place
+                crossings[b, end, k, 2] += part * place * place
+                reach[b, end, 0] = min(reach[b, end, 0], k)
+                reach[b, end, 1] = max(reach[b, end, 1], k)
             places[b, VOLUME] += fill
             places[b, FOOTPRINT] += part
             places[b, LOWEST] = min(places[b, LOWEST], base)
@@ -191,19 +205,25 @@ def _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, p
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _collect(tables, packed, scratch, kmin, kmax, lift, place):
-    """Move the tables of a coarse cell into the scratch and clear them; adds volume and footprint to its place."""
+def _collect(tables, packed, crossings, reach, coarse, first, lift, place, runs, moments, counts):
+    """Move what was counted of a coarse cell into the records, and clear it; adds volume and footprint to its place."""
+    has_packed = packed.shape[0] > 0
     for end in range(2):
-        sign = 1.0 if end == HIGH else -1.0
-        for k in range(kmin, kmax + 1):
+        code = code_of(coarse, 1, 0, end)
+        total = 0.0
+        level = 0.0
+        for k in range(reach[end, 0], reach[end, 1] + 1):
             at = k * _PAD
             area = tables[end, at]
+            part = crossings[end, k, 0]
+            bits = packed[end, k] if has_packed else 0
+            if area == 0.0 and part == 0.0 and bits == 0:
+                continue
             first_moment = tables[end, at + 1]
             second_moment = tables[end, at + 2]
-            if packed.size > 0 and packed[end, k] != 0:
-                more = np.float64(packed[end, k] >> COUNT_SHIFT)
-                places = np.float64(packed[end, k] & ((1 << COUNT_SHIFT) - 1)) / (1 << PLACE_BITS)
-                packed[end, k] = 0
+            if bits != 0:
+                more = np.float64(bits >> COUNT_SHIFT)
+                places = np.float64(bits & ((1 << COUNT_SHIFT) - 1)) / (1 << PLACE_BITS)
                 mean = (first_moment + places) / (area + more)
                 half = max(min(mean, 1.0 - mean), 0.0)
                 variance = half * half / 3.0  # as spread as can be, where no row of the sample has an end in the bin
@@ -212,48 +232,54 @@ def _collect(tables, packed, scratch, kmin, kmax, lift, place):
                 area += more
                 first_moment += places
                 second_moment = area * (variance + mean * mean)
-            if area == 0.0:
-                continue
-            tables[end, at] = 0.0
-            tables[end, at + 1] = 0.0
-            tables[end, at + 2] = 0.0
-            scratch[0, end, k, 0] += area
-            scratch[0, end, k, 1] += first_moment
-            scratch[0, end, k, 2] += second_moment
-            place[VOLUME] += sign * lift * (k * area + first_moment)
-            if end == LOW:
-                place[FOOTPRINT] += area
+                packed[end, k] = 0
+            total += area
+            level += k * area + first_moment
+            record(
+                runs, moments, counts, code, k + first, area + part,
+                first_moment + crossings[end, k, 1], second_moment + crossings[end, k, 2],
+            )  # fmt: skip
+            for m in range(3):
+                tables[end, at + m] = 0.0
+                crossings[end, k, m] = 0.0
+        place[VOLUME] += lift * level if end == HIGH else -lift * level
+        if end == LOW:
+            place[FOOTPRINT] += total
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def count_plain(
-    depth, top, row0, column0, side, coarse_columns, lift, first, tables, packed, crossings, cells, keys, moments
+    depth, top, row0, column0, side, coarse_columns, lift, first, tables, packed, crossings, cells, runs, moments, counts
 ):  # fmt: skip
     """:func:`count_columns` of a tile where nothing is over-excavated, banded or weighted.
 
     Args:
-        tables, crossings: of zeros, (coarse cells counted at a time, 2, bins · 4) and (…, 1, 2, bins, 3).
+        top: (h + 2, w + 2) subgrade with a rim [m]: rows that are not cut off can be read in vectors.
+        tables, crossings: of zeros, (coarse cells counted at a time, 2, bins · 4) and (…, 2, bins, 3).
         packed: of zeros, (…, 2, bins), where coarse cells are large enough that the second moment of every fourth row
             will do; else (…, 0, 0).
 
     Returns:
-        Number of records, or −1 where an elevation lies outside the bins; what is in ``cells`` is then of no use.
+        False where an elevation lies outside the bins; what is in ``cells`` and the records is then of no use.
     """
-    h, w = top.shape
+    h = top.shape[0] - 2
+    w = top.shape[1] - 2
     big_row0 = row0 // side
     big_column0 = column0 // side
     last_row = (row0 + h - 1) // side
     last_column = (column0 + w - 1) // side
     blocks = tables.shape[0]
-    bins = crossings.shape[3]
-    reach = np.empty((blocks, 2), np.int64)
-    ranges = np.empty((blocks, 2))
+    bins = crossings.shape[2]
+    reach = np.empty((blocks, 2, 2), np.int64)
+    ranges = np.empty((blocks, 2, 2))
     width = blocks * side
     fills = np.empty(width, depth.dtype)
     mixed = np.empty(width, depth.dtype)
     lows = np.empty(width)
     tops = np.empty(width)
-    count = 0
+    fine = float(1 << PLACE_BITS)
+    fine_lows = np.empty(width, np.int64)
+    fine_tops = np.empty(width, np.int64)
     for big_row in range(big_row0, last_row + 1):
         i0 = max(big_row * side - row0, 0)
         i1 = min((big_row + 1) * side - row0, h)
@@ -264,38 +290,38 @@ def count_plain(
             n = edges[-1]
             f = fills[:n]
             places = cells[big_row - big_row0, chunk - big_column0 :]
-            reach[:, 0] = bins
-            reach[:, 1] = -1
-            ranges[:, 0] = _FAR
-            ranges[:, 1] = -_FAR
+            reach[:, :, 0] = bins
+            reach[:, :, 1] = -1
+            ranges[:, :, 0] = _FAR
+            ranges[:, :, 1] = -_FAR
             for i in range(i0, i1):
                 filled, crossed, valid = _states(depth, i, j0, f, mixed)
                 if valid > 0:
                     _ground(depth[i + 1], j0, valid == n, edges, places)
                 if filled > 0:
-                    least, most = _levels(top, depth, i, j0, 1.0 / lift, first, f, lows, tops)
-                    if least < 0.0 or most >= bins:
-                        return -1
                     if packed.shape[1] == 0 or (row0 + i) % SAMPLED_ROWS == 0:
+                        if _levels(top, depth, i, j0, 1.0 / lift, float(first), float(bins), f, lows, tops):
+                            return False
                         _scatter(tables, f, lows, tops, edges, ranges)
                     else:
-                        _scatter_packed(packed, f, lows, tops, edges, ranges)
+                        if _levels(top, depth, i, j0, fine / lift, fine * first, fine * bins, f, fine_lows, fine_tops):
+                            return False
+                        _scatter_packed(packed, f, fine_lows, fine_tops, edges, ranges)
                 if crossed > 0:
                     _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, places)
             for b in range(edges.size - 1):
                 place = places[b]
-                if ranges[b, 0] < _FAR:
-                    place[LOWEST] = min(place[LOWEST], (ranges[b, 0] + first) * lift)
-                    place[HIGHEST] = max(place[HIGHEST], (ranges[b, 1] + first) * lift)
-                    least = np.int64(ranges[b, 0])
-                    most = np.int64(ranges[b, 1])
-                    _collect(tables[b], packed[b], crossings[b], least, most, lift, place)
-                    reach[b, 0] = min(reach[b, 0], least)
-                    reach[b, 1] = max(reach[b, 1], most)
-                if reach[b, 1] >= reach[b, 0]:
-                    coarse = big_row * coarse_columns + chunk + b
-                    count = _flush(crossings[b], reach[b], coarse, first, keys, moments, count)
-    return count
+                if ranges[b, LOW, 0] < _FAR:
+                    place[LOWEST] = min(place[LOWEST], (ranges[b, LOW, 0] + first) * lift)
+                    place[HIGHEST] = max(place[HIGHEST], (ranges[b, HIGH, 1] + first) * lift)
+                    for end in range(2):
+                        reach[b, end, 0] = min(reach[b, end, 0], np.int64(ranges[b, end, 0]))
+                        reach[b, end, 1] = max(reach[b, end, 1], np.int64(ranges[b, end, 1]))
+                coarse = big_row * coarse_columns + chunk + b
+                _collect(
+                    tables[b], packed[b], crossings[b], reach[b], coarse, first, lift, place, runs, moments, counts
+                )  # fmt: skip
+    return True
 
 
 @njit(cache=True, nogil=True, error_model="numpy")

@@ -5,111 +5,113 @@ from __future__ import annotations
 import numpy as np
 from numba import njit
 
-from earthwork.quantities.lift_kernel import BIN_BITS, BIN_ZERO, LOW, kinds_of
+from earthwork.quantities.lift_kernel import BIN, CODE, LENGTH, LOW, kinds_of, record
 
 #: Ends within this share of a lift of each other, or of a lift's edge, are taken to be at one height.
 _LEVEL = 2e-3
 
 
-#: Numbers held at one time while the records of one key are added up: what the cache holds.
-_HELD = 1 << 22
+@njit(cache=True, nogil=True, error_model="numpy")
+def _reach(runs, order, n):
+    """Of the runs of one code, the first of which is the n-th: where they end, lowest bin, and the one over the highest."""
+    code = runs[order[n], CODE]
+    low = runs[order[n], BIN]
+    high = low
+    while n < order.size and runs[order[n], CODE] == code:
+        low = min(low, runs[order[n], BIN])
+        high = max(high, runs[order[n], BIN] + runs[order[n], LENGTH])
+        n += 1
+    return n, low, high
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def bench_sums(keys, moments, bands, area_of_cell, origins, offsets, starts, volumes, standing, ends):
+def _add_runs(runs, moments, order, starts, n, stop, low, sums):
+    """Add up the moments of some runs by bin, in ``sums`` (bins from the lowest one, 3), which holds zeros."""
+    for i in range(n, stop):
+        start = starts[order[i]]
+        at = runs[order[i], BIN] - low
+        for k in range(runs[order[i], LENGTH]):
+            sums[at + k, 0] += moments[start + k, 0]
+            sums[at + k, 1] += moments[start + k, 1]
+            sums[at + k, 2] += moments[start + k, 2]
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def merge_runs(runs, moments, order, starts, merged_runs, merged, counts):
+    """Add up the records of one code and bin, which the tiles of a coarse cell have made.
+
+    Args:
+        runs, moments: the records.
+        order: of the runs, by code.
+        starts: (runs,) where the moments of each run begin.
+        merged_runs, merged, counts: records to fill, with room for as many as there are; see
+            :func:`earthwork.quantities.lift_kernel.record`.
+    """
+    sums = np.zeros((64, 3))
+    n = 0
+    while n < order.size:
+        stop, low, high = _reach(runs, order, n)
+        if high - low > sums.shape[0]:
+            sums = np.zeros((2 * (high - low), 3))
+        _add_runs(runs, moments, order, starts, n, stop, low, sums)
+        code = runs[order[n], CODE]
+        for k in range(high - low):
+            if sums[k, 0] != 0.0:
+                record(merged_runs, merged, counts, code, low + k, sums[k, 0], sums[k, 1], sums[k, 2])
+                sums[k, :] = 0.0
+        n = stop
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def bench_sums(
+    runs, moments, order, starts, bands, area_of_cell, origins, offsets, first_lift, volumes, standing, ends
+):  # fmt: skip
     """Add the column ends of all fill areas up, lift by lift.
 
     The ends in a bin are taken as spread evenly about their mean with the variance that they have: exact for level
     and for evenly sloping ground, and whatever they are, no volume is lost. The lift edge in the bin parts them.
-    Records of one key, which the tiles of a coarse cell have made, are added up first.
+    Records of one code and bin are added up first.
 
     Args:
-        keys, moments: records in any order; a key may come again.
+        runs, moments, order, starts: as in :func:`merge_runs`.
         bands: number of ``by_depth`` rows.
         area_of_cell: (coarse cells,) number of the fill area, or −1.
         origins, offsets: of each area: bin that holds its lowest removal bottom, and the place of that in the bin.
-        starts: of each area: where its lifts start in the sums.
+        first_lift: of each area: where its lifts start in the sums.
         volumes: (1 + bands, lifts) to receive what the columns that end in a lift add to it [cell · lift].
         standing: (1 + bands, lifts + 1) to receive the area that fills all lifts from an index on [cells].
         ends: (3, lifts) to receive the area of bottoms, of tops and of inner edges in a lift [cells].
     """
     kinds = kinds_of(bands)
-    cells, low, count = _ranges(keys, kinds, area_of_cell)
-    first = 0
-    while first < area_of_cell.size:
-        last = first
-        held = 0
-        while last < area_of_cell.size and (last == first or held + 6 * kinds * count[last] <= _HELD):
-            held += 6 * kinds * count[last]
-            last += 1
-        if held > 0:
-            at = _places(count[first:last])
-            sums = _added(keys, moments, cells, kinds, first, last, low, count, at)
-            for cell in range(first, last):
-                area = area_of_cell[cell]
-                for row in range(at[cell - first], at[cell - first] + count[cell]):
-                    # place of the bin's lower edge, in lifts above the lowest removal bottom
-                    bin_at = low[cell] + (row - at[cell - first]) - origins[area] - offsets[area]
-                    for kind in range(kinds):
-                        for end in range(2):
-                            if sums[row, kind, end, 0] != 0.0:
-                                _add_bin(
-                                    sums[row, kind, end], kind, end, bands, bin_at, offsets[area], starts[area],
-                                    volumes, standing, ends,
-                                )  # fmt: skip
-        first = last
+    sums = np.zeros((64, 3))
+    n = 0
+    while n < order.size:
+        stop, low, high = _reach(runs, order, n)
+        code = runs[order[n], CODE]
+        area = area_of_cell[code // (2 * kinds)]
+        if area >= 0:
+            if high - low > sums.shape[0]:
+                sums = np.zeros((2 * (high - low), 3))
+            _add_runs(runs, moments, order, starts, n, stop, low, sums)
+            # place of the lowest bin's lower edge, in lifts above the lowest removal bottom
+            place = low - origins[area] - offsets[area]
+            for k in range(high - low):
+                if sums[k, 0] != 0.0:
+                    _add_bin(
+                        sums[k, 0], sums[k, 1], sums[k, 2], code // 2 % kinds, code % 2, bands, place + k,
+                        offsets[area], first_lift[area], volumes, standing, ends,
+                    )  # fmt: skip
+                    sums[k, :] = 0.0
+        n = stop
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _ranges(keys, kinds, area_of_cell):
-    """Coarse cell of each record; lowest bin and number of bins that each cell has records in, 0 for cells of no area."""
-    cells = np.empty(keys.size, np.int32)
-    low = np.full(area_of_cell.size, np.int64(2 * BIN_ZERO))
-    high = np.full(area_of_cell.size, np.int64(-2 * BIN_ZERO))
-    for n in range(keys.size):
-        cell = (keys[n] >> BIN_BITS) // (2 * kinds)
-        cells[n] = cell
-        k = (keys[n] & ((1 << BIN_BITS) - 1)) - BIN_ZERO
-        low[cell] = min(low[cell], k)
-        high[cell] = max(high[cell], k)
-    count = np.zeros(area_of_cell.size, np.int64)
-    for cell in range(count.size):
-        if area_of_cell[cell] >= 0 and high[cell] >= low[cell]:
-            count[cell] = high[cell] - low[cell] + 1
-    return cells, low, count
-
-
-@njit(cache=True, nogil=True, error_model="numpy")
-def _places(count):
-    """Where the bins of each coarse cell begin, one cell after another."""
-    at = np.zeros(count.size, np.int64)
-    for i in range(1, count.size):
-        at[i] = at[i - 1] + count[i - 1]
-    return at
-
-
-@njit(cache=True, nogil=True, error_model="numpy")
-def _added(keys, moments, cells, kinds, first, last, low, count, at):
-    """Moments of coarse cells ``first … last``, added up by bin, kind and end: (bins, kinds, 2, 3)."""
-    sums = np.zeros((at[-1] + count[last - 1], kinds, 2, 3))
-    for n in range(keys.size):
-        cell = cells[n]
-        if first <= cell < last and count[cell] > 0:
-            packed = (keys[n] >> BIN_BITS) - 2 * kinds * cell
-            row = at[cell - first] + (keys[n] & ((1 << BIN_BITS) - 1)) - BIN_ZERO - low[cell]
-            into = sums[row, packed // 2, packed % 2]
-            into[0] += moments[n, 0]
-            into[1] += moments[n, 1]
-            into[2] += moments[n, 2]
-    return sums
-
-
-@njit(cache=True, nogil=True, error_model="numpy")
-def _add_bin(moments, kind, end, bands, bin_at, offset, start, volumes, standing, ends):
+def _add_bin(
+    whole, first_moment, second_moment, kind, end, bands, bin_at, offset, start, volumes, standing, ends
+):  # fmt: skip
     """Add the column ends of one bin to the lift that ends in it, and to the one that begins there."""
-    whole = moments[0]
-    mean = moments[1] / whole
-    half = np.sqrt(3.0 * max(moments[2] / whole - mean * mean, 0.0))
+    mean = first_moment / whole
+    half = np.sqrt(3.0 * max(second_moment / whole - mean * mean, 0.0))
     half = min(half, max(min(mean, 1.0 - mean), 0.0))
     if half <= _LEVEL:
         rises = np.int64(np.floor(bin_at + mean + _LEVEL))
@@ -127,7 +129,7 @@ def _add_bin(moments, kind, end, bands, bin_at, offset, start, volumes, standing
         a = whole * (1.0 - share) if upper else whole * share
         if a <= 0.0:
             continue
-        place = (moments[1] - whole * share * centre) / a if upper else centre
+        place = (first_moment - whole * share * centre) / a if upper else centre
         at = max(under + upper, 0)
         if kind <= bands:
             _add_end(volumes, standing, ends, kind, end, start, at, a, place, bin_at)

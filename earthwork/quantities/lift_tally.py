@@ -12,22 +12,26 @@ from earthwork.errors import GroundError
 from earthwork.ground.grid import Grid
 from earthwork.ground.stack import Stack
 from earthwork.quantities.lift_kernel import (
-    BIN_ZERO,
+    CODE,
     FOOTPRINT,
     GROUND,
     HIGHEST,
+    LENGTH,
     LOWEST,
     VOLUME,
     count_columns,
     kinds_of,
 )
 from earthwork.quantities.lift_plain import count_plain
+from earthwork.quantities.lift_sums import merge_runs
 from earthwork.quantities.tile import Tile
 
 _COARSE_M = 5.0  #: side of the cells on which fill areas are told apart, where the site is small enough
 _COARSE_CELLS = 128  #: at most along a side
 _LARGE_SIDE = 32  #: coarse cells of so many cells along are counted with the second moments of a sample
-_LOOSE = 3_000_000  #: records that are kept before those of one key are added up
+_LOOSE = 3_000_000  #: records that are kept before those of one code and bin are added up
+_MOST_BINS = 1 << 21  #: above or below elevation 0: what lies further is no ground
+_STRETCH = 1 << 20  #: records that room is made for at one time
 _CHUNK = 2048  #: cells across that are counted at one time
 _OVERVIEW_CELLS = 1024  #: of the map that lift outlines are drawn on, at most along a side
 
@@ -68,17 +72,36 @@ class CoarseGrid:
 
 @dataclass(frozen=True)
 class Records:
-    """Column ends by coarse cell, kind, end and bin: the area [cells] and the first two moments of their place."""
+    """Column ends by coarse cell, kind, end and bin: the area [cells] and the first two moments of their place.
 
-    keys: np.ndarray
+    ``runs`` (n, 3) of CODE, BIN and LENGTH; ``moments`` (bins of all runs, 3), one run after another.
+    """
+
+    runs: np.ndarray
     moments: np.ndarray
 
-    def compacted(self) -> Records:
-        """The same with one row a key, in the order of the keys."""
-        order = np.argsort(self.keys)
-        keys = self.keys[order]
-        starts = np.flatnonzero(np.concatenate([[True], keys[1:] != keys[:-1]])) if len(keys) else np.empty(0, int)
-        return Records(keys[starts], np.add.reduceat(self.moments[order], starts) if len(keys) else self.moments)
+    @classmethod
+    def room(cls, most: int) -> Records:
+        """Room for so many, not set."""
+        return cls(np.empty((most, 3), np.int64), np.empty((most, 3)))
+
+    @classmethod
+    def joined(cls, parts: list[Records]) -> Records:
+        """All records of all parts; a code and bin may come again."""
+        if not parts:
+            return cls.room(0)
+        return cls(np.concatenate([part.runs for part in parts]), np.concatenate([part.moments for part in parts]))
+
+    def sorted(self) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
+        """Runs, moments, the order of the runs by code, and where the moments of each run start."""
+        order = np.argsort(self.runs[:, CODE], kind="stable")
+        return self.runs, self.moments, order, np.cumsum(self.runs[:, LENGTH]) - self.runs[:, LENGTH]
+
+    def merged(self) -> Records:
+        """The same with each code and bin once, in their order."""
+        room, counts = Records.room(len(self.moments)), np.zeros(2, np.int64)
+        merge_runs(*self.sorted(), room.runs, room.moments, counts)
+        return Records(room.runs[: counts[0]].copy(), room.moments[: counts[1]].copy())
 
 
 class LiftTally:
@@ -128,32 +151,30 @@ class LiftTally:
             return
         records, cells = counted
         self._parts.append(records)
-        self._loose += len(records.keys)
+        self._loose += len(records.moments)
         self._cells.append((window.row // coarse.side, window.column // coarse.side, cells))
         if self.overview_wanted:
             self._sample(tile, weight)
 
     def _count_plain(self, tile: Tile) -> tuple[Records, np.ndarray] | None:
         """Count with the bins of a sample of the tile, and again with all that it needs should they not do."""
-        top, window = tile.subgrade, tile.window
+        top, window = self.stack.subgrade(tile.arrays), tile.window
         for step in (16, 1):
-            high = top[::step, ::step]
+            high = top[1:-1:step, 1:-1:step]
             low = np.minimum(high, high - tile.depth[1:-1:step, 1:-1:step])
-            first, bins = self._bins(low, high, spare=0 if step == 1 else 8)
+            first, bins = self._bins(low, high, sampled=step > 1)
             if bins == 0:
                 continue
             cells = self._room(tile)
-            keys, moments = self._record_room(tile, cells, bins)
+            room, counts = self._record_room(tile, cells, bins)
             blocks = min(max(_CHUNK // self.coarse.side, 1), cells.shape[1])
             tables, packed, crossings = _TABLES.zeros(blocks, bins, packed=self.coarse.side >= _LARGE_SIDE)
-            count = count_plain(
+            if count_plain(
                 tile.depth, top, window.row, window.column, self.coarse.side, self.coarse.columns, self.lift_m, first,
-                tables[:blocks], packed[:blocks], crossings[:blocks], cells, keys, moments,
-            )  # fmt: skip
-            if count < 0:
-                _TABLES.clear()
-            if count >= 0:
-                return Records(keys[:count].copy(), moments[:count].copy()), cells
+                tables[:blocks], packed[:blocks], crossings[:blocks], cells, room.runs, room.moments, counts,
+            ):  # fmt: skip
+                return _TABLES.keep(counts), cells
+            _TABLES.clear()
         return None
 
     def _count(self, tile: Tile, weight: np.ndarray | None) -> tuple[Records, np.ndarray] | None:
@@ -165,25 +186,25 @@ class LiftTally:
         if bins == 0:
             return None
         cells = self._room(tile)
-        keys, moments = self._record_room(tile, cells, bins)
-        count = count_columns(
+        room, counts = self._record_room(tile, cells, bins)
+        count_columns(
             tile.depth, top, bottom, np.empty((0, 0)) if weight is None else weight,
             tile.finished if self.from_finished.any() else nothing,
             self.below, self.from_finished, self.order, window.row, window.column, self.coarse.side,
-            self.coarse.columns, self.lift_m, first, bins, cells, keys, moments,
+            self.coarse.columns, self.lift_m, first, bins, cells, room.runs, room.moments, counts,
         )  # fmt: skip
-        return Records(keys[:count].copy(), moments[:count].copy()), cells
+        return _TABLES.keep(counts), cells
 
     def _room(self, tile: Tile) -> np.ndarray:
         """Coarse cells that a tile touches, with nothing counted."""
         window, side = tile.window, self.coarse.side
         return _no_cells(_touched(window.row, window.height, side), _touched(window.column, window.width, side))
 
-    def _record_room(self, tile: Tile, cells: np.ndarray, bins: int) -> tuple[np.ndarray, np.ndarray]:
-        """Room for as many records as a tile can make."""
+    def _record_room(self, tile: Tile, cells: np.ndarray, bins: int) -> tuple[Records, np.ndarray]:
+        """Room for as many records as a tile can make, and how many there are of runs and of moments: none."""
         kinds = 2 * kinds_of(len(self.below))
         most = min(cells.shape[0] * cells.shape[1] * kinds * bins, tile.window.height * tile.window.width * (2 + kinds))
-        return _TABLES.records(most)
+        return _TABLES.records(most), np.zeros(2, np.int64)
 
     def _sample(self, tile: Tile, weight: np.ndarray | None) -> None:
         """Keep bottom and top of the fill at the middle of each overview cell."""
@@ -211,31 +232,35 @@ class LiftTally:
             self._compact()
 
     def _compact(self) -> None:
-        whole = _joined(self._parts).compacted()
+        whole = self.records.merged()
         self._parts = [whole]
         # further parts may add half as much again before the next time
-        self._loose = -len(whole.keys) // 2
+        self._loose = -len(whole.moments) // 2
 
-    def _bins(self, low: np.ndarray, top: np.ndarray, spare: int = 0) -> tuple[int, int]:
-        """Lowest bin and number of bins between two surfaces; (0, 0) where there is no data."""
+    def _bins(self, low: np.ndarray, top: np.ndarray, *, sampled: bool = False) -> tuple[int, int]:
+        """Lowest bin and number of bins between two surfaces; (0, 0) where there is no data.
+
+        Of a sample, with bins to spare for what lies between its cells.
+        """
         least = float(np.fmin.reduce(low, axis=None, initial=np.inf))
         most = float(np.fmax.reduce(top, axis=None, initial=-np.inf))
         if not least <= most:
             return 0, 0
         first, last = math.floor(least / self.lift_m), math.floor(most / self.lift_m)
-        if max(abs(first), abs(last)) >= BIN_ZERO or last - first > 1_000_000:
+        if max(abs(first), abs(last)) >= _MOST_BINS or last - first > 1_000_000:
             raise GroundError(
                 f"elevations from {least:g} to {most:g} m make {last - first:,} lifts of {self.lift_m:g} m; "
                 "check the nodata values, or give a thicker lift"
             )
+        spare = 8 + (last - first) // 4 if sampled else 0
         return first - spare, last - first + 2 + 2 * spare
 
     # --- what was counted -------------------------------------------------------------------------------------------
 
     @property
     def records(self) -> Records:
-        """All column ends; a key comes once for each tile that has ends in its bin."""
-        return _joined(self._parts)
+        """All column ends; a code and bin comes once for each tile that has ends there."""
+        return Records.joined(self._parts)
 
     @property
     def cells(self) -> np.ndarray:
@@ -264,32 +289,39 @@ class _Tables(threading.local):
     """Room that each thread counts in: tables that every count leaves as zeros, and records before they are kept."""
 
     def __init__(self) -> None:
-        self.keys = np.empty(0, np.int64)
-        self.moments = np.empty((0, 3))
+        self.room = Records.room(0)
         self.clear()
 
     def clear(self) -> None:
         """Forget tables that a count has not left as zeros."""
         self.tables = np.zeros((0, 2, 0))
         self.packed = np.zeros((0, 0, 0), np.int64)
-        self.crossings = np.zeros((0, 1, 2, 0, 3))
+        self.crossings = np.zeros((0, 2, 0, 3))
 
     def zeros(self, blocks: int, bins: int, *, packed: bool) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         """Tables for :func:`count_plain` of at least so many bins, the same ones for as long as they are enough."""
         held = self.crossings.shape
-        if held[0] < blocks or held[3] < bins or (self.packed.shape[1] > 0) != packed:
-            blocks, bins = max(blocks, held[0]), max(bins, held[3])
+        if held[0] < blocks or held[2] < bins or (self.packed.shape[1] > 0) != packed:
+            blocks, bins = max(blocks, held[0]), max(bins, held[2])
             # numpy's zeros cost nothing until they are touched, those made in a kernel do
             self.tables = np.zeros((blocks, 2, 4 * bins))
             self.packed = np.zeros((blocks, 2, bins) if packed else (blocks, 0, 0), np.int64)
-            self.crossings = np.zeros((blocks, 1, 2, bins, 3))
+            self.crossings = np.zeros((blocks, 2, bins, 3))
         return self.tables, self.packed, self.crossings
 
-    def records(self, most: int) -> tuple[np.ndarray, np.ndarray]:
-        """Keys and moments for so many records."""
-        if len(self.keys) < most:
-            self.keys, self.moments = np.empty(most, np.int64), np.empty((most, 3))
-        return self.keys, self.moments
+    def records(self, most: int) -> Records:
+        """Room for so many records, until they are kept."""
+        if min(len(self.room.moments), len(self.room.runs)) < most:
+            # a large stretch, whose pages come into being as they are used, so that nothing need be copied
+            self.room = Records.room(max(most, _STRETCH))
+        return self.room
+
+    def keep(self, counts: np.ndarray) -> Records:
+        """The first so many runs and moments of the room, which is the smaller for it."""
+        runs, moments = counts.tolist()
+        kept = Records(self.room.runs[:runs], self.room.moments[:moments])
+        self.room = Records(self.room.runs[runs:], self.room.moments[moments:])
+        return kept
 
 
 _TABLES = _Tables()
@@ -305,9 +337,3 @@ def _no_cells(rows: int, columns: int) -> np.ndarray:
     cells[..., LOWEST] = np.inf
     cells[..., HIGHEST] = -np.inf
     return cells
-
-
-def _joined(parts: list[Records]) -> Records:
-    if not parts:
-        return Records(np.empty(0, np.int64), np.empty((0, 3)))
-    return Records(np.concatenate([p.keys for p in parts]), np.concatenate([p.moments for p in parts]))
