@@ -3,11 +3,14 @@
 from __future__ import annotations
 
 import math
+from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
-from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGHEST, LOWEST, VOLUME
+from earthwork.quantities.engine import thread_count
+from earthwork.quantities.lift_kernel import CODE, FOOTPRINT, GROUND, HIGHEST, LOWEST, VOLUME
 from earthwork.quantities.lift_sums import bench_sums
 from earthwork.quantities.lift_tally import LiftTally, Records
 
@@ -20,6 +23,9 @@ _COVERED = 0.9
 #: Areas of less volume than this, and than this share of all fill, are summed as small fills [m³].
 _SMALL_M3 = 50.0
 _SMALL_SHARE = 0.005
+#: Records of fewer bins than this are added up by one processor; more in so many parts.
+_WORTH_SHARING = 100_000
+_PARTS = 8
 
 
 @dataclass(frozen=True)
@@ -107,16 +113,14 @@ def _benches(
     """Benches of each area, of one lift each, from its lowest removal bottom to its last fill."""
     if not bases:
         return []
-    t, bands = tally.lift_m, len(tally.below)
+    t = tally.lift_m
     origins = [math.floor(base / t) for base in bases]
     offsets = [min(base / t - origin, 1.0 - 1e-15) for base, origin in zip(bases, origins, strict=True)]
     counts = [math.floor(top / t) - origin + 2 for top, origin in zip(highest, origins, strict=True)]
     starts = np.concatenate([[0], np.cumsum([count + 1 for count in counts])])
-    volumes, standing = np.zeros((1 + bands, starts[-1] + 1)), np.zeros((1 + bands, starts[-1] + 2))
-    ends = np.zeros((3, starts[-1] + 1))
-    bench_sums(
-        *records.sorted(), bands, area_of_cell.ravel().astype(np.int64),
-        np.array(origins, np.int64), np.array(offsets), starts, volumes, standing, ends,
+    volumes, standing, ends = _lift_sums(
+        tally, records, area_of_cell.ravel().astype(np.int64),
+        np.array(origins, np.int64), np.array(offsets), starts, int(starts[-1]) + 1,
     )  # fmt: skip
     cell_m2 = tally.stack.grid.cell_area_m2
     areas = []
@@ -140,16 +144,38 @@ def _benches(
     return areas
 
 
+def _lift_sums(
+    tally: LiftTally, records: Records, area_of_cell: np.ndarray, origins: np.ndarray, offsets: np.ndarray,
+    first_lift: np.ndarray, lifts: int,
+) -> tuple[np.ndarray, np.ndarray, np.ndarray]:  # fmt: skip
+    """Volumes, standing areas and ends by lift, see :func:`bench_sums`; the processors share the coarse cells.
+
+    They are shared out in as many parts on any machine, and added up in their order, so that the digits are the same.
+    """
+    runs, moments, order, starts = records.sorted()
+    codes = runs[order, CODE]
+    cuts = [0, *(int(np.searchsorted(codes, codes[len(codes) * k // _PARTS])) for k in range(1, _PARTS)), len(codes)]
+    bands = len(tally.below)
+
+    def count(part: tuple[int, int]) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        sums = np.zeros((1 + bands, lifts)), np.zeros((1 + bands, lifts + 1)), np.zeros((3, lifts))
+        bench_sums(
+            runs, moments, order[slice(*part)], starts, bands, area_of_cell, origins, offsets, first_lift, *sums
+        )  # fmt: skip
+        return sums
+
+    if len(moments) < _WORTH_SHARING:
+        return count((0, len(codes)))
+    with ThreadPoolExecutor(thread_count(None)) as pool:
+        parts = list(pool.map(count, pairwise(cuts)))
+    return tuple(sum(which[1:], which[0]) for which in zip(*parts, strict=True))  # type: ignore[return-value]
+
+
 def _whole(tally: LiftTally, records: Records, cells: np.ndarray, span: tuple[float, float]) -> Bench:
     """All fill of some coarse cells as one bench."""
-    bands = len(tally.below)
     inside = np.where(cells.ravel(), 0, -1).astype(np.int64)
-    volumes, standing, ends = np.zeros((1 + bands, 1)), np.zeros((1 + bands, 2)), np.zeros((3, 1))
     origin = math.floor(span[1] / tally.lift_m) + 2  # above everything, so that all of it falls into one lift
-    bench_sums(
-        *records.sorted(), bands, inside, np.array([origin]), np.array([0.0]), np.array([0]),
-        volumes, standing, ends,
-    )  # fmt: skip
+    volumes, _, ends = _lift_sums(tally, records, inside, np.array([origin]), np.array([0.0]), np.array([0]), 1)
     cubic = volumes[:, 0] * tally.lift_m * tally.stack.grid.cell_area_m2
     area = float((ends[0, 0] - ends[2, 0]) * tally.stack.grid.cell_area_m2)
     return Bench(*span, area, float(cubic.sum()), tuple(cubic[1:].tolist()))

@@ -63,7 +63,8 @@ def lifts(
     ground = open_site(site)
     main, tally = VolumesTally(ground), LiftTally(ground.stack, thickness)
     hauled = _haul_tallies(site, cards, ground)
-    asked: list[Tally] = [main, tally, *(hauled.all if hauled else []), *tallies]
+    # lifts first: on plain ground the volumes come of the same rows
+    asked: list[Tally] = [tally, main, *(hauled.all if hauled else []), *tallies]
     walk(ground.stack, asked, threads=threads, progress=progress)
     return lifts_result(site, cards, ground, volumes_result(site, ground, main), tally, hauled, threads=threads)
 

@@ -11,7 +11,6 @@ import numpy as np
 from numba import njit
 
 from earthwork.ground.stack import Stack
-from earthwork.quantities.split import split
 from earthwork.quantities.tile import Tile
 
 _FAST = {"reassoc", "nsz", "contract", "arcp"}
@@ -157,8 +156,8 @@ class Sums:
 
     def add_plain(self, tile: Tile) -> None:
         """Count a whole tile without layers, without holding its fields."""
-        sums = np.zeros(8)
-        self._widen(*split(tile.depth, np.empty((4, 0, 0)), sums))
+        sums, high, low = tile.depth_sums
+        self._widen(high, low)
         # The kernel's order is that of the base fields.
         self.values += sums
 

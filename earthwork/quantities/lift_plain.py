@@ -1,6 +1,7 @@
 """Columns of fill as in :mod:`earthwork.quantities.lift_kernel`, for plain ground, several times as fast.
 
 Plain is a tile where nothing is over-excavated, banded or weighted: its columns run from existing to finished ground.
+Cut and fill of the tile come of the same rows, so they are counted as well: nothing is read twice.
 """
 
 from __future__ import annotations
@@ -9,64 +10,27 @@ import numpy as np
 from numba import njit
 
 from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGH, HIGHEST, LOW, LOWEST, VOLUME, code_of, record
-from earthwork.quantities.split import _half_slope, _plane_above_zero
+from earthwork.quantities.split import FILL_AREA, VALID, add_crossed, flat_row, widen
 
 _FAST = {"reassoc", "nsz", "contract", "arcp"}
 _FINITE = {*_FAST, "nnan", "ninf"}
 _PAD = 4  #: numbers kept for a bin, a power of two
 _FAR = 1e300
-PLACE_BITS = 22  #: resolution of the place of a packed end: 2⁻²² of a lift; what it rounds off cancels in a column
-COUNT_SHIFT = 42  #: above it a packed bin holds the number of its ends, under it the sum of their places
+PLACE_BITS = 26  #: a packed end has its place to the nearest 2⁻²⁶ of a lift: a fill of one lift to 10⁻⁸ of it
+COUNT_SHIFT = 44  #: above it a packed bin holds the number of its ends, under it the sum of their places
+MOST_PACKED = 1 << (COUNT_SHIFT - PLACE_BITS)  #: ends that a packed bin can hold
 SAMPLED_ROWS = 4  #: of so many rows one is counted with second moments where the others are packed
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
-def _states(depth, i, j0, fills, mixed):
-    """Mark the cells of a row that are all fill, and those that the zero line may cross.
-
-    Args:
-        depth: (h + 2, w + 2) with a rim; i, j0: the row, and the first column, of the cells without the rim.
-        fills, mixed: (n,) to receive 1 or 0, in the type of the depths.
-
-    Returns:
-        Number of cells that are all fill, that may be crossed, and that have data.
-    """
-    zero = fills.dtype.type(0)
-    one = fills.dtype.type(1)
-    half = fills.dtype.type(0.5)
-    filled = zero
-    crossed = zero
-    valid = zero
-    up = depth[i][j0:]
-    row = depth[i + 1][j0:]
-    down = depth[i + 2][j0:]
-    for j in range(fills.size):
-        x = row[j + 1]
-        a = x - row[j]
-        b = row[j + 2] - x
-        c = x - up[j + 1]
-        d = down[j + 1] - x
-        near = (min(abs(a), abs(b)) if a * b > zero else zero) + (min(abs(c), abs(d)) if c * d > zero else zero)
-        holes = (a + b) + (c + d)
-        ok = x == x
-        mix = ok & ((holes != holes) | (abs(x) < half * near))
-        fill = (x > zero) & ~mix
-        fills[j] = one if fill else zero
-        mixed[j] = one if mix else zero
-        filled += one if fill else zero
-        crossed += one if mix else zero
-        valid += one if ok else zero
-    return filled, crossed, valid
-
-
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FINITE)
-def _levels(top, depth, i, j0, scale, origin, height, fills, lows, tops):
+def _levels(top, depth, i, j0, scale, origin, height, flat, lows, tops):
     """Ends of the columns of a row above the lowest bin; of no meaning for cells that are not all fill.
 
     Args:
         scale, origin: level = elevation · scale − origin.
         height: level of the upper edge of the highest bin.
-        lows, tops: (n,) to receive the levels; where they are integers, cut off to such.
+        flat: (n,) depths of cells that the zero line does not cross, + fill; else 0.
+        lows, tops: (n,) to receive the levels, cut off where these are integers: add ½ through the origin.
 
     Returns:
         Whether an end lies outside the bins.
@@ -74,40 +38,42 @@ def _levels(top, depth, i, j0, scale, origin, height, fills, lows, tops):
     high = top[i + 1][j0 + 1 :]
     thick = depth[i + 1][j0 + 1 :]
     outside = 0.0
-    for j in range(fills.size):
+    for j in range(flat.size):
         z = np.float64(high[j])
         low = (z - np.float64(thick[j])) * scale - origin
         up = z * scale - origin
         lows[j] = lows.dtype.type(low)
         tops[j] = tops.dtype.type(up)
-        outside += 1.0 if (fills[j] != 0) & ((low < 0.0) | (up >= height)) else 0.0
+        outside += 1.0 if (flat[j] > 0) & ((low < 0.0) | (up >= height)) else 0.0
     return outside > 0.0
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
-def _any(marks, start, stop):
-    """Whether any of a stretch of marks is set."""
-    total = marks.dtype.type(0)
-    for mark in marks[start:stop]:
-        total += mark
-    return total > 0
+def _any(values, start, stop):
+    """Whether any of a stretch of values is over 0."""
+    count = values.dtype.type(0)
+    one = values.dtype.type(1)
+    zero = values.dtype.type(0)
+    for value in values[start:stop]:
+        count += one if value > zero else zero
+    return count > zero
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _scatter(tables, fills, lows, tops, edges, ranges):
+def _scatter(tables, flat, lows, tops, edges, ranges):
     """Count the ends of the columns of a row into the tables of their coarse cells, and widen their ranges."""
     one = np.uint64(1)
     two = np.uint64(2)
     pad = np.uint64(_PAD)
     for b in range(edges.size - 1):
-        if not _any(fills, edges[b], edges[b + 1]):
+        if not _any(flat, edges[b], edges[b + 1]):
             continue
         low_table = tables[b, LOW]
         top_table = tables[b, HIGH]
         lowest, low_most = ranges[b, LOW]
         top_least, highest = ranges[b, HIGH]
         for j in range(edges[b], edges[b + 1]):
-            if fills[j] != 0:
+            if flat[j] > 0:
                 u = lows[j]
                 k = np.int32(u)
                 x = u - k
@@ -133,8 +99,8 @@ def _scatter(tables, fills, lows, tops, edges, ranges):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _scatter_packed(packed, fills, lows, tops, edges, ranges):
-    """As :func:`_scatter` of levels in 2⁻²² of a lift, without the second moment.
+def _scatter_packed(packed, flat, lows, tops, edges, ranges):
+    """As :func:`_scatter` of levels in 2⁻²⁶ of a lift, without the second moment.
 
     Number and places of the ends of a bin add up in one integer.
     """
@@ -143,7 +109,7 @@ def _scatter_packed(packed, fills, lows, tops, edges, ranges):
     one = np.int64(1 << COUNT_SHIFT)
     far = np.int64(1 << 62)
     for b in range(edges.size - 1):
-        if not _any(fills, edges[b], edges[b + 1]):
+        if not _any(flat, edges[b], edges[b + 1]):
             continue
         low_bins = packed[b, LOW]
         top_bins = packed[b, HIGH]
@@ -152,7 +118,7 @@ def _scatter_packed(packed, fills, lows, tops, edges, ranges):
         top_least = far
         highest = -far
         for j in range(edges[b], edges[b + 1]):
-            if fills[j] != 0:
+            if flat[j] > 0:
                 level = lows[j]
                 lowest = min(lowest, level)
                 low_most = max(low_most, level)
@@ -168,8 +134,15 @@ def _scatter_packed(packed, fills, lows, tops, edges, ranges):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, places):
-    """Count the cells of a row that the zero line crosses: the part with fill, as thick as its fill is on the mean."""
+def _crossings(up, row, down, top, mixed, edges, crossings, first, lift, reach, places, sums, spread):
+    """Count the cells of a row that the zero line crosses: the part with fill, as thick as its fill is on the mean.
+
+    Args:
+        up, row, down: depths of three rows, with the column before the first cell and the one after the last.
+        top: subgrade of the row, likewise.
+        sums: of cut and fill, see :func:`earthwork.quantities.split.split`.
+        spread: (2,) greatest and least depth, to be widened.
+    """
     bins = crossings.shape[2]
     inverse = 1.0 / lift
     for b in range(edges.size - 1):
@@ -178,14 +151,12 @@ def _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, p
         for j in range(edges[b], edges[b + 1]):
             if mixed[j] == 0:
                 continue
-            column = j0 + j
-            x = np.float64(depth[i + 1, column + 1])
-            a = _half_slope(np.float64(depth[i + 1, column]), x, np.float64(depth[i + 1, column + 2]))
-            c = _half_slope(np.float64(depth[i, column + 1]), x, np.float64(depth[i + 2, column + 1]))
-            fill, part = _plane_above_zero(x, a, c)
+            x, fill, _, part = add_crossed(up, row, down, j, sums)
+            spread[0] = max(spread[0], x)
+            spread[1] = min(spread[1], x)
             if not fill > 0.0:
                 continue
-            z = np.float64(top[i + 1, column + 1])
+            z = np.float64(top[j + 1])
             base = min(z - x, z)
             for end in range(2):
                 level = (z if end == HIGH or part < 1.0 else base) * inverse - first
@@ -249,18 +220,23 @@ def _collect(tables, packed, crossings, reach, coarse, first, lift, place, runs,
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def count_plain(
-    depth, top, row0, column0, side, coarse_columns, lift, first, tables, packed, crossings, cells, runs, moments, counts
+    depth, top, row0, column0, side, coarse_columns, lift, first, tables, packed, crossings, cells,
+    runs, moments, counts, sums, flat, bits, mixed, extreme_bits, spread,
 ):  # fmt: skip
-    """:func:`count_columns` of a tile where nothing is over-excavated, banded or weighted.
+    """:func:`count_columns` of a tile where nothing is over-excavated, banded or weighted, and its cut and fill.
 
     Args:
         top: (h + 2, w + 2) subgrade with a rim [m]: rows that are not cut off can be read in vectors.
         tables, crossings: of zeros, (coarse cells counted at a time, 2, bins · 4) and (…, 2, bins, 3).
         packed: of zeros, (…, 2, bins), where coarse cells are large enough that the second moment of every fourth row
             will do; else (…, 0, 0).
+        sums: (8,) to which cut and fill are added, see :func:`earthwork.quantities.split.split`.
+        flat, bits, mixed, extreme_bits: of a :class:`earthwork.quantities.split.SplitRoom` as wide as the coarse cells
+            that are counted at a time.
+        spread: (2,) greatest and least depth of cells that the zero line crosses, to be widened [m].
 
     Returns:
-        False where an elevation lies outside the bins; what is in ``cells`` and the records is then of no use.
+        False where an elevation lies outside the bins; nothing that was counted is then of use.
     """
     h = top.shape[0] - 2
     w = top.shape[1] - 2
@@ -273,8 +249,6 @@ def count_plain(
     reach = np.empty((blocks, 2, 2), np.int64)
     ranges = np.empty((blocks, 2, 2))
     width = blocks * side
-    fills = np.empty(width, depth.dtype)
-    mixed = np.empty(width, depth.dtype)
     lows = np.empty(width)
     tops = np.empty(width)
     fine = float(1 << PLACE_BITS)
@@ -288,27 +262,38 @@ def count_plain(
             j0 = edges[0]
             edges -= j0
             n = edges[-1]
-            f = fills[:n]
+            f = flat[:n]
+            m = mixed[:n]
             places = cells[big_row - big_row0, chunk - big_column0 :]
             reach[:, :, 0] = bins
             reach[:, :, 1] = -1
             ranges[:, :, 0] = _FAR
             ranges[:, :, 1] = -_FAR
             for i in range(i0, i1):
-                filled, crossed, valid = _states(depth, i, j0, f, mixed)
-                if valid > 0:
-                    _ground(depth[i + 1], j0, valid == n, edges, places)
-                if filled > 0:
+                valid = sums[VALID]
+                filled = sums[FILL_AREA]
+                up = depth[i][j0:]
+                row = depth[i + 1][j0:]
+                down = depth[i + 2][j0:]
+                crossed = flat_row(up, row, down, f, m, sums)
+                widen(bits[:n], extreme_bits)
+                if sums[VALID] > valid:
+                    _ground(row, sums[VALID] - valid == n, edges, places)
+                if sums[FILL_AREA] > filled:
                     if packed.shape[1] == 0 or (row0 + i) % SAMPLED_ROWS == 0:
                         if _levels(top, depth, i, j0, 1.0 / lift, float(first), float(bins), f, lows, tops):
                             return False
                         _scatter(tables, f, lows, tops, edges, ranges)
                     else:
-                        if _levels(top, depth, i, j0, fine / lift, fine * first, fine * bins, f, fine_lows, fine_tops):
+                        if _levels(
+                            top, depth, i, j0, fine / lift, fine * first - 0.5, fine * bins, f, fine_lows, fine_tops
+                        ):
                             return False
                         _scatter_packed(packed, f, fine_lows, fine_tops, edges, ranges)
-                if crossed > 0:
-                    _crossings(depth, top, i, j0, mixed, edges, crossings, first, lift, reach, places)
+                if crossed:
+                    _crossings(
+                        up, row, down, top[i + 1][j0:], m, edges, crossings, first, lift, reach, places, sums, spread
+                    )  # fmt: skip
             for b in range(edges.size - 1):
                 place = places[b]
                 if ranges[b, LOW, 0] < _FAR:
@@ -334,12 +319,12 @@ def _edges(chunk, blocks, side, column0, width):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _ground(row, j0, whole, edges, places):
+def _ground(row, whole, edges, places):
     """Count the cells with data of a row."""
     for b in range(edges.size - 1):
         if whole:
             places[b, GROUND] += edges[b + 1] - edges[b]
         else:
             for j in range(edges[b], edges[b + 1]):
-                x = row[j0 + j + 1]
+                x = row[j + 1]
                 places[b, GROUND] += 1.0 if x == x else 0.0

@@ -22,8 +22,9 @@ from earthwork.quantities.lift_kernel import (
     count_columns,
     kinds_of,
 )
-from earthwork.quantities.lift_plain import count_plain
+from earthwork.quantities.lift_plain import MOST_PACKED, count_plain
 from earthwork.quantities.lift_sums import merge_runs
+from earthwork.quantities.split import SplitRoom
 from earthwork.quantities.tile import Tile
 
 _COARSE_M = 5.0  #: side of the cells on which fill areas are told apart, where the site is small enough
@@ -167,12 +168,17 @@ class LiftTally:
                 continue
             cells = self._room(tile)
             room, counts = self._record_room(tile, cells, bins)
+            packs = _LARGE_SIDE <= self.coarse.side and self.coarse.side**2 <= MOST_PACKED
             blocks = min(max(_CHUNK // self.coarse.side, 1), cells.shape[1])
-            tables, packed, crossings = _TABLES.zeros(blocks, bins, packed=self.coarse.side >= _LARGE_SIDE)
+            tables, packed, crossings = _TABLES.zeros(blocks, bins, packed=packs)
+            split = SplitRoom(blocks * self.coarse.side, tile.depth.dtype)
+            sums, spread = np.zeros(8), np.zeros(2)
             if count_plain(
                 tile.depth, top, window.row, window.column, self.coarse.side, self.coarse.columns, self.lift_m, first,
                 tables[:blocks], packed[:blocks], crossings[:blocks], cells, room.runs, room.moments, counts,
+                sums, split.flat, split.bits, split.mixed, split.extreme_bits, spread,
             ):  # fmt: skip
+                tile.depth_sums = (sums, *split.extremes(*spread.tolist()))
                 return _TABLES.keep(counts), cells
             _TABLES.clear()
         return None
@@ -212,9 +218,9 @@ class LiftTally:
         row = -(window.row - fine // 2) % fine
         column = -(window.column - fine // 2) % fine
         here = (slice(row, None, fine), slice(column, None, fine))
-        top = tile.subgrade[here]
-        low = top - tile.depth[1:-1, 1:-1][here]
-        bottom = tile.removal_bottom[here] if self.stack.excavations else np.minimum(top, low)
+        # copied first: what lies apart in memory is slow to come by
+        top, depth = tile.subgrade[here].copy(), tile.depth[1:-1, 1:-1][here].copy()
+        bottom = tile.removal_bottom[here] if self.stack.excavations else np.minimum(top, top - depth)
         filled = top > bottom
         if weight is not None:
             filled &= weight[here] > 0.5

@@ -59,7 +59,7 @@ def _plane_above_zero(h, a, b):
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
-def _flat_row(up, row, down, flat, mixed, sums):
+def flat_row(up, row, down, flat, mixed, sums):
     """One row of cells: depths of those that the zero line does not cross, and marks of those that it may.
 
     Kept in the type of the depths, so that it runs in vectors: counts of a row are exact in float32 too.
@@ -138,6 +138,27 @@ def _keep_row(flat, cells, i):
         cells[3, i, j] = 1.0 if x > 0.0 else 0.0
 
 
+@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+def add_crossed(up, row, down, j, sums):
+    """Count a cell that the zero line may cross, the j-th of a row.
+
+    Returns:
+        Its depth, fill [mean m over the cell], cut share and fill share.
+    """
+    x = np.float64(row[j + 1])
+    a = _half_slope(np.float64(row[j]), x, np.float64(row[j + 2]))
+    b = _half_slope(np.float64(up[j + 1]), x, np.float64(down[j + 1]))
+    fill, fill_share = _plane_above_zero(x, a, b)
+    cut_share = 1.0 - fill_share if a + b > abs(x) else (1.0 if x < 0.0 else 0.0)
+    sums[CUT] += fill - x
+    sums[FILL] += fill
+    sums[CUT_AREA] += cut_share
+    sums[FILL_AREA] += fill_share
+    sums[PLAIN_CUT] -= min(x, 0.0)
+    sums[PLAIN_FILL] += max(x, 0.0)
+    return x, fill, cut_share, fill_share
+
+
 def split(depth: np.ndarray, cells: np.ndarray, sums: np.ndarray) -> tuple[float, float]:
     """Split every cell of a tile at the zero line.
 
@@ -150,31 +171,55 @@ def split(depth: np.ndarray, cells: np.ndarray, sums: np.ndarray) -> tuple[float
     Returns:
         (greatest fill, least depth) [m]: (0, 0) where there is neither fill nor cut.
     """
-    width = depth.shape[1] - 2
-    flat, mixed = np.empty(width, depth.dtype), np.empty(width, depth.dtype)
-    extreme = np.zeros(2, depth.dtype)
-    integer = np.int32 if depth.dtype == np.float32 else np.int64
-    high, low = _split(depth, cells, sums, flat, flat.view(integer), mixed, extreme, extreme.view(integer))
-    return max(high, float(extreme[0])), min(low, float(extreme[1]))
+    room = SplitRoom(depth.shape[1] - 2, depth.dtype)
+    high, low = _split(depth, cells, sums, room.flat, room.bits, room.mixed, room.extreme_bits)
+    return room.extremes(high, low)
+
+
+class SplitRoom:
+    """Room for a row of cells while it is split, and for the greatest and least depth of those that are not crossed.
+
+    Args:
+        width: cells of a row, at most.
+        dtype: of the depths, float32 or float64.
+    """
+
+    def __init__(self, width: int, dtype: np.dtype) -> None:
+        integer = np.int32 if dtype == np.float32 else np.int64
+        self.flat, self.mixed = np.empty(width, dtype), np.empty(width, dtype)
+        self.bits = self.flat.view(integer)
+        self.extreme = np.zeros(2, dtype)
+        self.extreme_bits = self.extreme.view(integer)
+
+    def extremes(self, high: float, low: float) -> tuple[float, float]:
+        """Greatest and least depth of all cells, from those of the crossed ones [m]."""
+        return max(high, float(self.extreme[0])), min(low, float(self.extreme[1]))
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _split(depth, cells, sums, flat, bits, mixed, extreme, extreme_bits):
+def widen(bits, extreme_bits):
+    """Widen the greatest and least depth, kept as the integers of their bits, by a row; (0, 0) before the first."""
+    lowest = np.iinfo(bits.dtype).min
+    high, low = _extremes(bits)
+    extreme_bits[0] = max(extreme_bits[0], high)
+    if low != lowest:
+        # a negative float has a negative integer that is the greater the lower it is; 0 stands for none yet
+        extreme_bits[1] = low if extreme_bits[1] == 0 else max(extreme_bits[1], low)
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _split(depth, cells, sums, flat, bits, mixed, extreme_bits):
     h = depth.shape[0] - 2
     w = depth.shape[1] - 2
     keep = cells.shape[1] > 0
     high = 0.0
     low = 0.0
-    highest = extreme_bits[0]
-    lowest = np.iinfo(bits.dtype).min
     for i in range(h):
         up = depth[i]
         row = depth[i + 1]
         down = depth[i + 2]
-        any_mixed = _flat_row(up, row, down, flat, mixed, sums)
-        row_high, row_low = _extremes(bits)
-        highest = max(highest, row_high)
-        lowest = max(lowest, row_low)
+        any_mixed = flat_row(up, row, down, flat, mixed, sums)
+        widen(bits, extreme_bits)
         if keep:
             _keep_row(flat, cells, i)
         if not any_mixed:
@@ -182,27 +227,14 @@ def _split(depth, cells, sums, flat, bits, mixed, extreme, extreme_bits):
         for j in range(w):
             if mixed[j] == 0:
                 continue
-            x = np.float64(row[j + 1])
-            a = _half_slope(np.float64(row[j]), x, np.float64(row[j + 2]))
-            b = _half_slope(np.float64(up[j + 1]), x, np.float64(down[j + 1]))
-            fill, fill_share = _plane_above_zero(x, a, b)
-            cut_share = 1.0 - fill_share if a + b > abs(x) else (1.0 if x < 0.0 else 0.0)
+            x, fill, cut_share, fill_share = add_crossed(up, row, down, j, sums)
             high = max(high, x)
             low = min(low, x)
-            sums[CUT] += fill - x
-            sums[FILL] += fill
-            sums[CUT_AREA] += cut_share
-            sums[FILL_AREA] += fill_share
-            sums[PLAIN_CUT] -= min(x, 0.0)
-            sums[PLAIN_FILL] += max(x, 0.0)
             if keep:
                 cells[0, i, j] = fill - x
                 cells[1, i, j] = fill
                 cells[2, i, j] = cut_share
                 cells[3, i, j] = fill_share
-    extreme_bits[0] = highest
-    if lowest != np.iinfo(bits.dtype).min:
-        extreme_bits[1] = lowest
     return high, low
 
 

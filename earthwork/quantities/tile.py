@@ -70,6 +70,12 @@ class Tile:
         return self.stack.coverage(self.stack.limits, self.window)
 
     @cached_property
+    def depth_sums(self) -> tuple[np.ndarray, float, float]:
+        """Sums of the split cells, (8,) as of :func:`earthwork.quantities.split.split`, greatest and least depth [m]."""
+        sums = np.zeros(8)
+        return (sums, *split(self.depth, np.empty((4, 0, 0)), sums))
+
+    @cached_property
     def cells(self) -> np.ndarray:
         """Cut, fill [mean m over the cell], cut share, fill share: (4, height, width), 0 where no data."""
         cells = np.empty((4, self.window.height, self.window.width))

@@ -356,7 +356,7 @@ def count_volumes(
     tally = VolumesTally(ground)
     walk(
         ground.stack,
-        [tally, *tallies],
+        [*tallies, tally],
         threads=threads,
         progress=progress,
         client=client,

@@ -153,6 +153,42 @@ def test_threads_change_no_digit_and_tiles_nothing_that_counts(tmp_path, walk, l
             assert ours == pytest.approx(theirs, rel=1e-11, abs=1e-9)
 
 
+@pytest.mark.parametrize("dtype", ["float32", "float64"])
+def test_lifts_of_large_coarse_cells_are_what_clipping_gives(tmp_path, dtype):
+    ground, grade = rolling(400)
+    ground, grade = ground.astype(dtype), grade.astype(dtype)
+    areas, volumes, tally = counted(tmp_path, ground, grade, cell=0.1, lift=0.15, dtype=dtype)
+    assert tally.coarse.side >= 32
+    bottoms = {bench.bottom_m: bench for area in areas for bench in area.benches}
+    assert len(areas) == 1
+    for bottom, bench in bottoms.items():
+        low = -np.inf if bench is areas[0].benches[0] else bottom
+        exact = clipped(ground.astype(float), grade.astype(float), low, bench.top_m, True) * 0.01
+        assert bench.compacted_m3 == pytest.approx(exact, abs=0.003 * volumes.fill_m3 / 10)
+    assert total(areas) == pytest.approx(volumes.fill_m3, rel=1e-9)
+
+
+@pytest.mark.parametrize(("cell", "dtype"), [(1.0, "float64"), (0.1, "float32")])
+def test_volumes_counted_with_the_lifts_are_those_counted_alone(tmp_path, cell, dtype):
+    ground, grade = rolling(300)
+    ground = ground.copy()
+    ground[40:50, 30:45] = np.nan
+    _, together, _ = counted(tmp_path, ground, grade, cell=cell, dtype=dtype)
+    document = {
+        "site": {"name": "test", "units": "metric"},
+        "ground": {"existing": "existing.tif", "finished": "finished.tif", "ground_scale": 1.0},
+    }
+    site = check_site(document, tmp_path)
+    alone = count_volumes(site, open_site(site)).total
+    assert together.fill_m3 > 0
+    assert together.cut_m3 > 0
+    for name, value in alone.to_dict().items():
+        if isinstance(value, float):
+            assert getattr(together, name) == pytest.approx(value, rel=1e-12), name
+    assert together.max_fill_m == alone.max_fill_m
+    assert together.max_cut_m == alone.max_cut_m
+
+
 @pytest.mark.parametrize("measured_from", ["finished", "subgrade"])
 def test_refill_and_depth_bands_add_up_to_the_volumes(tmp_path, measured_from):
     ground, grade = rolling()
