@@ -168,7 +168,7 @@ class LiftTally:
                 continue
             cells = self._room(tile)
             room, counts = self._record_room(tile, cells, bins)
-            packs = _LARGE_SIDE <= self.coarse.side and self.coarse.side**2 <= MOST_PACKED
+            packs = self.coarse.side >= _LARGE_SIDE and self.coarse.side**2 <= MOST_PACKED
             blocks = min(max(_CHUNK // self.coarse.side, 1), cells.shape[1])
             tables, packed, crossings = _TABLES.zeros(blocks, bins, packed=packs)
             split = SplitRoom(blocks * self.coarse.side, tile.depth.dtype)
