@@ -108,6 +108,8 @@ class Records:
 class LiftTally:
     """Fill and over-excavation refill by elevation, for lifts of one thickness.
 
+    On plain ground it counts cut and fill of the same rows: hand it to the walk before the tally of the volumes.
+
     Args:
         stack: the site's surfaces and layers.
         lift_m: compacted thickness of a lift [m].
