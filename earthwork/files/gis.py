@@ -24,7 +24,7 @@ _NODATA = -9999.0
 #: With less room than this on the disk, a file that is cut off was cut off by it.
 _FULL_BYTES = 200_000
 #: Unfinished blocks kept in memory; beyond it the fullest go to the file and are completed there.
-_PENDING_BYTES = 48_000_000
+_PENDING_BYTES = 32_000_000
 
 
 class DepthRasterWriter:
@@ -137,7 +137,7 @@ class DepthRasterWriter:
         with (
             _write_errors(self._path),
             rasterio.Env(
-                GDAL_CACHEMAX=32_000_000,
+                GDAL_CACHEMAX=16_000_000,
                 COMPRESS_OVERVIEW="DEFLATE",
                 PREDICTOR_OVERVIEW="3",
                 GDAL_TIFF_OVR_BLOCKSIZE=str(_BLOCK),

@@ -9,8 +9,8 @@ import numpy as np
 from earthwork.ground.grid import Grid, Window
 from earthwork.quantities.tile import Tile
 
-#: Longest side of a picture [cells].
-LONGEST_SIDE = 1500
+#: Longest side of a picture [cells]: about as many as it has dots.
+LONGEST_SIDE = 1100
 
 
 @dataclass(frozen=True)
@@ -41,10 +41,12 @@ def coarse_grid(grid: Grid, longest_side: int = LONGEST_SIDE) -> tuple[Grid, int
 class DepthMapTally:
     """Gathers a :class:`DepthMap`. It learns its grid from the first tile; :attr:`map` is ready after the walk."""
 
+    depth_only = True  #: engine: the surfaces themselves are not asked for
+
     def __init__(self, longest_side: int = LONGEST_SIDE) -> None:
         self.longest_side = longest_side
         self.grid: Grid | None = None
-        self._parts: list[tuple[int, int, np.ndarray]] = []
+        self._bands: list[tuple[int, np.ndarray]] = []  #: first coarse row; sums of depth and weight, (2, rows, columns)
 
     def empty(self) -> DepthMapTally:
         return DepthMapTally(self.longest_side)
@@ -52,16 +54,22 @@ class DepthMapTally:
     def add(self, tile: Tile) -> None:
         self.grid = tile.grid
         depth = tile.depth[1:-1, 1:-1]
-        weight = np.isfinite(depth).astype(np.float64)
+        # single precision is more than a picture shows
+        weight = np.isfinite(depth).astype(np.float32)
         if tile.weight is not None:
-            weight *= tile.weight
-        _, joined = coarse_grid(tile.grid, self.longest_side)
-        sums = np.stack([np.where(weight > 0, depth, 0.0) * weight, weight])
-        self._parts.append(_joined(sums, tile.window, joined))
+            weight *= tile.weight.astype(np.float32)
+        sums = np.zeros((2, *depth.shape), np.float32)
+        np.multiply(depth, weight, out=sums[0], where=weight > 0, casting="same_kind")
+        sums[1] = weight
+        coarse, joined = coarse_grid(tile.grid, self.longest_side)
+        row, column, part = _joined(sums, tile.window, joined)
+        if not self._bands or self._bands[-1][0] != row or self._bands[-1][1].shape[1] != part.shape[1]:
+            self._bands.append((row, np.zeros((2, part.shape[1], coarse.columns), np.float32)))
+        self._bands[-1][1][:, :, column : column + part.shape[2]] += part
 
     def merge(self, other: DepthMapTally) -> None:
         self.grid = self.grid or other.grid
-        self._parts += other._parts
+        self._bands += other._bands
 
     @property
     def map(self) -> DepthMap | None:
@@ -69,9 +77,9 @@ class DepthMapTally:
         if self.grid is None:
             return None
         coarse, _ = coarse_grid(self.grid, self.longest_side)
-        sums = np.zeros((2, coarse.rows, coarse.columns))
-        for row, column, part in self._parts:
-            sums[:, row : row + part.shape[1], column : column + part.shape[2]] += part
+        sums = np.zeros((2, coarse.rows, coarse.columns), np.float32)
+        for row, band in self._bands:
+            sums[:, row : row + band.shape[1]] += band
         with np.errstate(invalid="ignore"):
             return DepthMap(np.where(sums[1] > 0, sums[0] / sums[1], np.nan), coarse)
 

@@ -257,11 +257,11 @@ class Walk:
         north, south = (waiting, rows) if side == "south" else (rows, waiting)
         arrays = {name: _padded(np.concatenate([north[name], south[name]]), west=True, east=True) for name in north}
         counts = [tally.empty() for tally in self.tallies]
-        self._count(counts, arrays, Window(self.edges[above + 1] - 1, 0, 2, self.grid.columns))
+        self._count(counts, arrays, Window(self.edges[above + 1] - 1, 0, 2, self.grid.columns), seam=True)
         self.finish(2 * above + 1, counts)
 
-    def _count(self, counts: list[Tally], arrays: Arrays, window: Window) -> None:
-        tile = Tile(self.stack, window, arrays)
+    def _count(self, counts: list[Tally], arrays: Arrays, window: Window, *, seam: bool = False) -> None:
+        tile = Tile(self.stack, window, arrays, seam=seam)
         for tally in counts:
             tally.add(tile)
 

@@ -18,8 +18,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from earthwork.errors import EarthworkError
-from earthwork.ground.grid import Window
-from earthwork.ground.stack import Arrays, Stack
+from earthwork.ground.stack import Stack
 from earthwork.quantities.engine import Progress, Tally, thread_count, walk
 from earthwork.quantities.sharing import SHARED
 from earthwork.quantities.site_ground import SiteGround
@@ -148,14 +147,14 @@ class _Kept:
     """A tally that keeps the tiles of a walk, by the bands and seams that they were counted in."""
 
     def __init__(self) -> None:
-        self._units: list[list[tuple[Window, Arrays]]] = []
-        self._tiles: list[tuple[Window, Arrays]] = []
+        self._units: list[list[Tile]] = []
+        self._tiles: list[Tile] = []
 
     def empty(self) -> _Kept:
         return _Kept()
 
     def add(self, tile: Tile) -> None:
-        self._tiles.append((tile.window, tile.arrays))
+        self._tiles.append(Tile(tile.stack, tile.window, tile.arrays, seam=tile.seam))
 
     def merge(self, other: _Kept) -> None:
         self._units.append(other._tiles)
@@ -163,10 +162,10 @@ class _Kept:
     def replay(self, stack: Stack, tallies: Sequence[Tally], threads: int) -> None:
         """Count tallies as a walk over the ground would, band by band, with the same grouping of sums."""
 
-        def count(unit: list[tuple[Window, Arrays]]) -> list[Tally]:
+        def count(unit: list[Tile]) -> list[Tally]:
             counts = [tally.empty() for tally in tallies]
-            for window, arrays in unit:
-                tile = Tile(stack, window, dict(arrays))
+            for kept in unit:
+                tile = Tile(stack, kept.window, dict(kept.arrays), seam=kept.seam)
                 for part in counts:
                     part.add(tile)
             return counts

@@ -19,18 +19,28 @@ class Tile:
         stack: the site's surfaces and layers.
         window: the cells of the tile.
         arrays: fields with a one-cell rim, each (height + 2, width + 2); NaN outside the grid.
+        seam: it lies on the edge of two bands, whose tiles have its rows in their rims.
     """
 
-    def __init__(self, stack: Stack, window: Window, arrays: Arrays) -> None:
+    def __init__(self, stack: Stack, window: Window, arrays: Arrays, *, seam: bool = False) -> None:
         self.stack = stack
         self.grid = stack.grid
         self.window = window
         self.arrays = arrays
+        self.seam = seam
         self.fields: np.ndarray | None = None  #: set by :func:`earthwork.quantities.fields.fields_of`
 
     def core(self, name: str) -> np.ndarray:
         """A field without its rim, shape (height, width)."""
         return self.arrays[name][1:-1, 1:-1]
+
+    def rows_read(self) -> tuple[Window, Arrays]:
+        """The window with the rows of the seams beside it, and its fields without a rim: a band has all its rows so."""
+        window = self.window
+        top, bottom = max(window.row - 1, 0), min(window.row + window.height + 1, self.grid.rows)
+        rows = slice(top - window.row + 1, bottom - window.row + 1)
+        whole = Window(top, window.column, bottom - top, window.width)
+        return whole, {name: a[rows, 1:-1] for name, a in self.arrays.items()}
 
     @property
     def existing(self) -> np.ndarray:

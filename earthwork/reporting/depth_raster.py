@@ -12,6 +12,7 @@ from earthwork.files.gis import DepthRasterWriter
 from earthwork.units import UnitSystem
 
 if TYPE_CHECKING:
+    from earthwork.ground.stack import Arrays, Stack
     from earthwork.quantities.tile import Tile
 
 DESCRIPTION = "depth: subgrade - stripped ground; + fill, - cut"
@@ -25,6 +26,7 @@ class DepthRasterTally:
 
     description = DESCRIPTION
 
+    depth_only = True  #: engine: the surfaces themselves are not asked for
     portable = False  #: all instances write into one file, so they stay on one machine
 
     def __init__(self, path: Path, units: UnitSystem) -> None:
@@ -38,9 +40,12 @@ class DepthRasterTally:
         return other
 
     def add(self, tile: Tile) -> None:
-        depth = self.values(tile)
-        if tile.weight is not None:
-            depth = np.where(tile.weight > 0, depth, np.nan)
+        if tile.seam:
+            return  # the bands on both sides have its rows, and write theirs whole: blocks of the file come together early
+        window, arrays = tile.rows_read()
+        depth = self.values(tile.stack, arrays)
+        if tile.stack.limits is not None:
+            depth = np.where(tile.stack.coverage(tile.stack.limits, window) > 0, depth, np.nan)
         with self._shared.lock:
             if self._shared.writer is None:
                 self._shared.writer = DepthRasterWriter(
@@ -50,11 +55,11 @@ class DepthRasterTally:
                     unit=self.units.unit("length"),
                     factor=1 / self.units.factor("length"),
                 )
-        self._shared.writer.write(tile.window, depth)
+        self._shared.writer.write(window, depth)
 
-    def values(self, tile: Tile) -> np.ndarray:
-        """What is written of a tile [m], (height, width)."""
-        return tile.depth[1:-1, 1:-1]
+    def values(self, stack: Stack, arrays: Arrays) -> np.ndarray:
+        """What is written of a window [m], (height, width)."""
+        return arrays["depth"]
 
     def merge(self, other: DepthRasterTally) -> None:
         """Nothing: all instances write into the same file."""
@@ -69,9 +74,10 @@ class ThicknessRasterTally(DepthRasterTally):
     """The same for the thickness of fill, the refill of over-excavation under it included."""
 
     description = "fill thickness: subgrade - removal bottom, with the refill of over-excavation"
+    depth_only = False
 
-    def values(self, tile: Tile) -> np.ndarray:
-        return tile.subgrade - tile.removal_bottom
+    def values(self, stack: Stack, arrays: Arrays) -> np.ndarray:
+        return stack.subgrade(arrays) - stack.removal_bottom(arrays)
 
 
 class _Shared:

@@ -43,10 +43,11 @@ def write_maps(
         from earthwork.reporting.design_shapes import write_design
 
         write_design(ground.design, folder, command, site.units)
-    if depths.map is None:
+    picture = depths.map
+    if picture is None:
         return
     draw_cut_fill_map(
-        depths.map,
+        picture,
         folder.path(f"{command}_map.png"),
         units=site.units,
         title=f"{site.name}: cut and fill",
