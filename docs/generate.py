@@ -279,9 +279,13 @@ def typical_soils() -> str:
         "dry densities and specific",
         "gravities are after [DAS](sources.md), compaction figures (standard effort) after "
         "[NAVFAC-DM7](sources.md), swell and the",
-        "shrink of rock after [FM-5-434](sources.md) with the range of other handbooks; all from memory. "
-        "Densities in kg/m³, the rest",
-        "in percent; shrink is of bank volume, negative for bulking.",
+        "shrink of weathered rock after [FM-5-434](sources.md) with the range of other handbooks; all from "
+        "memory. The shrink of blasted",
+        "rock was read in [UFC-3-220-20](sources.md); the compaction figures agree with those that were read in "
+        "[FHWA-NHI-05-037](sources.md),",
+        "table 5-18, but for the optimum of sand, whose range holds both. Densities in kg/m³, the rest in percent; shrink "
+        "is of bank volume, negative for",
+        "bulking.",
         "",
         "| soil | groups | grains | bank dry density | swell | maximum | optimum | shrink |",
         "| --- | --- | --- | --- | --- | --- | --- | --- |",

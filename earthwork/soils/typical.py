@@ -85,8 +85,11 @@ def _swell(low: float, high: float) -> Range:
     return Range(low, high, "FM-5-434")
 
 
-#: All from memory: [DAS] natural states and specific gravities, [NAVFAC-DM7] table of compacted soils,
-#: [FM-5-434] soil conversion factors with the range that other handbooks give.
+#: From memory: [DAS] natural states and specific gravities, [NAVFAC-DM7] table of compacted soils (checked
+#: against [FHWA-NHI-05-037], table 5-18), [FM-5-434] soil conversion factors with the range that other
+#: handbooks give. Read: how far blasted rock bulks in the fill, [UFC-3-220-20], section 3-4.3.2; its middle
+#: is the 1.30 of [FM-5-434]. Sources disagree on the optimum of sand, 5 to 12 (A-3) and 9 to 21 (SW and SP):
+#: the range holds both.
 TYPICAL: dict[str, TypicalSoil] = {
     soil.name: soil
     for soil in (
@@ -98,7 +101,8 @@ TYPICAL: dict[str, TypicalSoil] = {
                     max_dry_density_kg_m3=_maximum(115, 135), optimum_water_content_percent=_optimum(8, 14)),
         TypicalSoil(name="sand", symbols=("SW", "SP"), specific_gravity=_gravity(2.63, 2.67),
                     bank_dry_density_kg_m3=_bank(14.5, 18.0), swell_percent=_swell(10, 15),
-                    max_dry_density_kg_m3=_maximum(100, 130), optimum_water_content_percent=_optimum(9, 21)),
+                    max_dry_density_kg_m3=_maximum(100, 130),
+                    optimum_water_content_percent=Range(5, 21, "FHWA-NHI-05-037, NAVFAC-DM7")),
         TypicalSoil(name="silty sand", symbols=("SM", "SC-SM"), specific_gravity=_gravity(2.63, 2.70),
                     bank_dry_density_kg_m3=_bank(15.0, 19.0), swell_percent=_swell(11, 25),
                     max_dry_density_kg_m3=_maximum(110, 130), optimum_water_content_percent=_optimum(11, 16)),
@@ -127,7 +131,7 @@ TYPICAL: dict[str, TypicalSoil] = {
                     shrink_percent_of_bank=Range(-15, 5, "FM-5-434")),
         TypicalSoil(name="blasted rock", symbols=(), specific_gravity=_gravity(2.60, 2.80),
                     bank_dry_density_kg_m3=_bank(22.5, 26.0), swell_percent=_swell(50, 75),
-                    shrink_percent_of_bank=Range(-30, -10, "FM-5-434")),
+                    shrink_percent_of_bank=Range(-50, -10, "UFC-3-220-20")),
     )
 }  # fmt: skip
 

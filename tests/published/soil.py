@@ -121,6 +121,39 @@ CONVERSION_TABLES = {
     "blasted rock": ((1.50, 1.30), (1.50, 1.30)),
 }
 
+#: Loose volume over bank volume less 1 [%], of what is dug: coarse soils about 10, fine soils 30 to 40 (UFC 3-220-20, section
+#: 3-4.3.2). Read.
+BULKING = {"coarse": (10.0, 10.0), "fine": (30.0, 40.0)}
+
+#: Fill volume of one bank volume of rock: least (porous, friable rock) and greatest (hard rock in even pieces). UFC 3-220-20,
+#: section 3-4.3.2. Read.
+ROCK_FILL = (1.10, 1.50)
+
+#: Compacted dry unit weight [lb/ft3] and optimum [%] by AASHTO class, and the type of ours that is nearest. FHWA
+#: NHI-05-037, table 5-18. Read.
+COMPACTED = [
+    ("A-1", "gravel", (115, 134), (5, 15)),
+    ("A-2", "silty gravel", (109, 134), (9, 18)),
+    ("A-2", "silty sand", (109, 134), (9, 18)),
+    ("A-2", "clayey sand", (109, 134), (9, 18)),
+    ("A-3", "sand", (100, 119), (5, 12)),
+    ("A-4", "silt", (94, 125), (10, 20)),
+    ("A-6", "lean clay", (94, 119), (10, 30)),
+    ("A-7", "fat clay", (81, 115), (15, 35)),
+]
+
+#: Plasticity index of high expansion, low and high end (FHWA NHI-05-037, table 5-24, after Holtz and Gibbs). Read.
+EXPANSIVE = (25.0, 41.0)
+
+#: Oversize: finer fraction [lb/ft3], share, gravity of the coarse part, water 62.4 → whole by G γF γw / (G γw PF + γF PC);
+#: water contents of both parts [%] → of the whole. UFC 3-220-20, eqs 3-6 and 3-7 (read); answers computed.
+OVERSIZE = {"fine": 118.0, "percent": 22.0, "gravity": 2.65, "whole": 125.9351, "fine_water": 13.0, "coarse_water": 1.5,
+            "whole_water": 10.47}  # fmt: skip
+
+#: Retention curve of Fredlund and Xing: a, n, m, residual suction, suction [kPa] → water content over its saturated value,
+#: cut to the digits shown. Tests of the library geotecha. Read.
+RETENTION = {"curve": (427.0, 0.794, 0.613, 3000.0), "suction": 10_000.0, "at_least": 0.40, "below": 0.41}
+
 
 class Effort(NamedTuple):
     """Compaction effort: rammer [lbf], drop [ft], blows, layers, mould [ft3] → energy [ft·lbf/ft3]."""
@@ -137,9 +170,9 @@ class Effort(NamedTuple):
 
 EFFORTS = [
     Effort(5.5, 1.0, 25, 3, 1 / 30, 12375, 600, "ASTM D698, 4 in mould; nominal 12,400 (600 kN·m/m3) read"),
-    Effort(5.5, 1.0, 56, 3, 0.075, 12320, 600, "ASTM D698, 6 in mould; memory"),
+    Effort(5.5, 1.0, 56, 3, 0.075, 12320, 600, "ASTM D698, 6 in mould; blows, layers, rammer read, volume memory"),
     Effort(10.0, 1.5, 25, 5, 1 / 30, 56250, 2700, "ASTM D1557, 4 in mould; nominal 56,000 (2,700) read"),
-    Effort(10.0, 1.5, 56, 5, 0.075, 56000, 2700, "ASTM D1557, 6 in mould; memory"),
+    Effort(10.0, 1.5, 56, 5, 0.075, 56000, 2700, "ASTM D1557, 6 in mould; blows, layers, rammer read, volume memory"),
 ]
 
 #: A laboratory sheet of a public record (City of Santa Ana, December 2018, ASTM D1557, silty sand with
@@ -160,7 +193,7 @@ MOIST_TRAP = {"moist": 2280.0, "water": 8.5, "maximum": 2150.0, "dry": 2101.38, 
 #: computed.
 RELATIVE_DENSITY = {"percent": 82.0, "low": 14.2, "high": 16.9, "dry": 16.341, "relative_compaction": 96.69}
 
-#: Lee and Singh 1971, as quoted in Das: Rc = 80 + 0.2 Dr. Memory.
+#: Lee and Singh 1971, as quoted in Das: Rc = 80 + 0.2 Dr. Memory; both ends read in UFC 3-220-20, section 3-5.1.
 LEE_SINGH = {0.0: 80.0, 50.0: 90.0, 82.0: 96.4, 100.0: 100.0}
 
 #: Scopes of the standards [%]: ASTM D698 oversize over 19 mm, D4253 and D4254 fines, D4718 least oversize

@@ -145,6 +145,64 @@ def test_typical_swells_hold_both_handbooks() -> None:
             assert low - 1e-9 <= 100 * (loose - 1) <= high + 1e-9
 
 
+def test_typical_swells_hold_what_a_manual_says_of_digging() -> None:
+    from earthwork.soils.typical import typical_soil
+
+    for name, kind in (("gravel", "coarse"), ("sand", "coarse"), ("lean clay", "fine"), ("fat clay", "fine")):
+        swell = typical_soil(name).swell_percent
+        low, high = table.BULKING[kind]
+        assert swell.low <= low
+        assert high <= swell.high
+
+
+def test_blasted_rock_bulks_as_far_as_a_manual_says() -> None:
+    from earthwork.soils.typical import typical_soil
+
+    shrink = typical_soil("blasted rock").shrink_percent_of_bank
+    assert shrink is not None
+    assert (1 - shrink.high / 100, 1 - shrink.low / 100) == pytest.approx(table.ROCK_FILL)
+    assert 1 - shrink.middle / 100 == pytest.approx(table.CONVERSION_TABLES["blasted rock"][1][1])
+
+
+@pytest.mark.parametrize(("group", "name", "weights", "optimum"), table.COMPACTED, ids=str)
+def test_typical_compaction_agrees_with_a_second_table(
+    group: str, name: str, weights: tuple[float, float], optimum: tuple[float, float]
+) -> None:
+    from earthwork.soils.typical import typical_soil
+
+    soil = typical_soil(name)
+    ours, water = soil.max_dry_density_kg_m3, soil.optimum_water_content_percent
+    assert ours is not None
+    assert water is not None
+    assert weights[0] <= ours.middle / UNITS["density"]["lb/ft3"] <= weights[1]
+    assert water.low <= optimum[1]
+    assert optimum[0] <= water.high
+    if group != "A-3":  # The optimum of sand is the one that the two tables do not agree on.
+        assert optimum[0] <= water.middle <= optimum[1]
+
+
+def test_expansive_from_where_high_starts() -> None:
+    from earthwork.soils.consequences import EXPANSIVE_PLASTICITY
+
+    assert table.EXPANSIVE[0] == EXPANSIVE_PLASTICITY
+
+
+def test_oversize_by_the_equations_of_a_manual() -> None:
+    row = table.OVERSIZE
+    whole = oversize.whole_dry_density(row["fine"], row["percent"], row["gravity"], water_density=table.LB_FT3_WATER)
+    assert whole == pytest.approx(row["whole"], abs=5e-5)
+    water = oversize.whole_water_content_percent(row["fine_water"], row["percent"], row["coarse_water"])
+    assert water == pytest.approx(row["whole_water"])
+
+
+def test_retention_as_another_library_has_it() -> None:
+    from earthwork.soils.suction import RetentionCurve
+
+    row = table.RETENTION
+    share = RetentionCurve(*row["curve"]).saturation_percent(row["suction"]) / 100
+    assert row["at_least"] <= share < row["below"]
+
+
 @pytest.mark.parametrize("row", table.EFFORTS, ids=lambda row: row.source[:20])
 def test_compaction_energy(row: table.Effort) -> None:
     rammer = effort.Rammer(row.rammer * POUND_KG, row.drop * FOOT_M, row.blows, row.layers, row.mould * FOOT_M**3)
