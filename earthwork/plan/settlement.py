@@ -166,7 +166,7 @@ class DistortionLimit:
 
 
 #: Limits of angular distortion (relative rotation), the sharpest first. [bjerrum-1963] and [skempton-macdonald-1956],
-#: both from memory.
+#: as taken up in [rne-e.050]; 1/600 as quoted.
 DISTORTION_LIMITS = (
     DistortionLimit(750, "trouble with machinery that is sensitive to settlement", "bjerrum-1963"),
     DistortionLimit(600, "danger for frames with diagonals", "bjerrum-1963"),

@@ -13,8 +13,8 @@ from typing import Any
 from earthwork.soils import phase
 from earthwork.soils.classify import Classification
 
-#: Shrink–swell by plasticity index: below 15 low, 15 to 28 medium, 25 to 41 high, over 35 very high
-#: ([USBR-EARTH], from memory; the classes overlap in the source). A warning starts where "high" does.
+#: Shrink–swell by plasticity index: below 18 low, 15 to 28 medium, 25 to 41 high, over 35 very high
+#: ([USBR-EARTH], read in [FHWA-NHI-05-037], table 5-24; the classes overlap in the source). A warning starts where "high" does.
 EXPANSIVE_PLASTICITY = 25.0
 
 

@@ -1,4 +1,5 @@
-"""Oversize particles: from the fraction that fits the mould to the whole soil, and back ([ASTM-D4718]).
+"""Oversize particles: from the fraction that fits the mould to the whole soil, and back ([ASTM-D4718]; equations
+as in [UFC-3-220-20], 3-6 and 3-7).
 
 The laboratory takes out what is larger than the sieve of its method and reports on the finer fraction; the
 field test measures the whole. The two are comparable only after this correction.

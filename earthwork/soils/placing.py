@@ -19,8 +19,8 @@ from earthwork.soils.relative_density import dry_density_of_relative
 from earthwork.soils.uncertainty import Part
 from earthwork.soils.window import PlacingWindow
 
-#: Crews overshoot the required compaction by this many points when the site says nothing (common practice,
-#: no single source); the overshoot may be anything from none to twice that.
+#: Crews overshoot the required compaction by this many points when the site says nothing
+#: ([UFC-3-220-20], section 3-4.3.2); the overshoot may be anything from none to twice that.
 OVERSHOOT_POINTS = 2.0
 #: The same for relative density, whose points are smaller: 5 of them are about one of relative compaction.
 OVERSHOOT_DENSITY_POINTS = 5.0

@@ -15,7 +15,7 @@ FINES_LIMIT_PERCENT = 15.0
 def relative_density_percent(dry_density: float, min_dry_density: float, max_dry_density: float) -> float:
     """Relative density [%]: Dr = ρmax (ρd − ρmin) / (ρd (ρmax − ρmin)), 0 at the minimum, 100 at the maximum.
 
-    Below 0 or over 100 is possible in the field, and is given as it is. Source: [DAS], relative density.
+    Below 0 or over 100 is possible in the field, and is given as it is. Source: [UFC-3-220-20], eq. 3-5; [DAS].
 
     >>> relative_density_percent(1600.0, 1500.0, 1800.0)
     37.5
@@ -56,8 +56,8 @@ def relative_compaction_of_relative_density(
 def lee_singh_relative_compaction(relative_density_percent: float) -> float:
     """Relative compaction [%] by correlation, when no minimum density was tested: Rc = 80 + 0.2 Dr.
 
-    A fit to 47 granular soils ([LEE-SINGH], from memory); the exact relation needs the two densities. Holds
-    for Dr of 0 to 100 %.
+    A fit to 47 granular soils ([LEE-SINGH], from memory; its two ends also in [UFC-3-220-20], section 3-5.1); the
+    exact relation needs the two densities. Holds for Dr of 0 to 100 %.
 
     >>> lee_singh_relative_compaction(50.0)
     90.0

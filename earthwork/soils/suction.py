@@ -25,7 +25,7 @@ GRANULAR_RANGE_MM = (0.1, 1.0)
 class RetentionCurve:
     """Water retention S(ψ) = C(ψ) / ln(e + (ψ/a)^b)^c, C(ψ) = 1 − ln(1 + ψ/hr) / ln(1 + 10⁶/hr), ψ in kPa.
 
-    Source: [FREDLUND-XING], equations with the correction factor C (from memory).
+    Source: [FREDLUND-XING], equations with the correction factor C.
     """
 
     a_kpa: float

@@ -20,8 +20,8 @@ FAO56_VALUES = [
     ("declination", (246,), 0.120, 0.0005, "example 8"),
     ("sunset_angle", (-0.35, 246), 1.527, 0.0006, "example 8"),
     ("extraterrestrial_day", (-0.35, 246), 32.2, 0.06, "example 8; the print rounds the latitude to -0.35"),
-    ("net_longwave_day", (25.1, 19.1, 2.1, 14.5 / 18.8), 3.5, 0.05, "example 10; inputs from memory"),
-    ("wind_at_2m", (3.2, 10.0), 2.4, 0.05, "example 14; from memory"),
+    ("net_longwave_day", (25.1, 19.1, 2.1, 14.5 / 18.8), 3.5, 0.05, "example 11, p. 87"),
+    ("wind_at_2m", (3.2, 10.0), 2.4, 0.05, "example 14, p. 92"),
 ]
 
 #: example 18: Uccle, 6 July

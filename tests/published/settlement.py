@@ -20,8 +20,9 @@ CREEP = ((15.0, 0.3, 1.0, 100.0, 0.09), (10.0, 1.0, 1.0, 10.0, 0.1), (10.0, 0.2,
 #: A wedge fill of 0 to 20 ft over 100 ft at 1 % strain: 0.2 ft in 100 ft is 1 in 500; by hand.
 WEDGE = (20 * FEET, 100 * FEET, 1.0, 0.2 * FEET, 0.002)
 
-#: Limits of angular distortion: 1 in x, source. From memory of Skempton and MacDonald 1956 (1/500 for design, 1/300
-#: cracking of panels, 1/150 structural damage) and Bjerrum 1963 (the ladder).
+#: Limits of angular distortion: 1 in x, source. Read as taken up in Peru's building code E.050, table 8 (1/150 structural
+#: damage, 1/250 tall rigid buildings lean, 1/300 first cracks of walls, 1/500 safe where cracks are not allowed, 1/750
+#: sensitive machinery); 1/600 (frames with diagonals) read as quoted from Bjerrum.
 LIMITS = {
     750: "bjerrum-1963",
     600: "bjerrum-1963",
