@@ -27,6 +27,13 @@ def test_creep(thickness, percent, start, end, expected):
     assert s.creep_settlement(thickness, percent, start, end) == pytest.approx(expected)
 
 
+def test_creep_of_the_stated_range_holds_what_was_observed():
+    (early, before), (late, after) = published.CREEP_OBSERVED.items()
+    careful, careless = (s.creep_settlement(100.0, percent, early, late) for percent in (0.2, 1.0))
+    for first, second in zip(before, after, strict=True):
+        assert careful < second - first < careless
+
+
 def test_creep_rate_is_the_slope_of_creep():
     rate = s.creep_rate_m_per_year(12.0, 0.4, 200.0)
     step = s.creep_settlement(12.0, 0.4, 200.0, 200.01)

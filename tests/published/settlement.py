@@ -17,6 +17,10 @@ COMPRESSION_AT_ONCE = (20.0, 20.0, 20_000.0, 0.2)  # H, γ, M, γ H²/2M: comput
 #: Creep: H [m], α [%], t1, t2, settlement [m]: s = α H log10(t2/t1), log-time creep of fills (Charles and Watts); by hand.
 CREEP = ((15.0, 0.3, 1.0, 100.0, 0.09), (10.0, 1.0, 1.0, 10.0, 0.1), (10.0, 0.2, 5.0, 5.0, 0.0))
 
+#: Settlement after completion of well compacted fills [% of height]: low and high after 3 to 4 years and after 15 to 20
+#: years (the middles are taken); US Department of Defense, UFC 3-220-20, section 3-6.1.2, read.
+CREEP_OBSERVED = {3.5: (0.1, 0.2), 17.5: (0.3, 0.6)}
+
 #: A wedge fill of 0 to 20 ft over 100 ft at 1 % strain: 0.2 ft in 100 ft is 1 in 500; by hand.
 WEDGE = (20 * FEET, 100 * FEET, 1.0, 0.2 * FEET, 0.002)
 
