@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 from earthwork.plan.bare_soil import SurfaceSoil, days_to_dry
+from earthwork.plan.mix_supply import MixSupply
 from earthwork.plan.moisture import dry_share_of_mix
 
 
@@ -14,7 +15,9 @@ class DryingOption:
     """One way to bring a wet material to its target; figures that do not belong to it are None.
 
     ``days`` is drying weather, the time that a spread layer lies; ``area_m2`` the ground under soil that
-    dries at one time so that a day's volume becomes ready each day.
+    dries at one time so that a day's volume becomes ready each day. ``mix_needed_t`` is the dry mass of the drier
+    material that all of the wet one takes, ``mix_available_t`` what there is of it (None for no limit, too), and
+    ``mix_displaced_t`` what of the wet one is left over, since the mix takes its place in the fill.
     """
 
     material: str
@@ -28,6 +31,10 @@ class DryingOption:
     mix_with: str | None = None
     mix_dry_share: float | None = None
     mix_dry_ratio: float | None = None
+    mix_needed_t: float | None = None
+    mix_available_t: float | None = None
+    mix_missing_t: float | None = None
+    mix_displaced_t: float | None = None
     result_water_content_percent: float | None = None
 
     def to_dict(self) -> dict[str, Any]:
@@ -76,6 +83,22 @@ def spreading(
         material=material, method=method, possible=True, note=note, water_l_m2=water, days=days,
         area_m2=placing_m3_day * days / compacted_m, volume_per_day_m3=ready,
     )  # fmt: skip
+
+
+def supplied(option: DryingOption, supply: MixSupply) -> DryingOption:
+    """A mixing option with what it takes of the drier material, and whether that is there."""
+    available = supply.available_kg
+    note = option.note
+    if supply.missing_kg > 0:
+        note += f"; there is enough of {option.mix_with} for {100.0 * (available or 0.0) / supply.needed_kg:.0f} % of it"
+    return replace(
+        option,
+        note=note,
+        mix_needed_t=supply.needed_kg / 1000.0,
+        mix_available_t=None if available is None else available / 1000.0,
+        mix_missing_t=supply.missing_kg / 1000.0,
+        mix_displaced_t=supply.displaced_kg / 1000.0,
+    )
 
 
 def mixing(*, material: str, arriving: float, target: float, other: str, other_arriving: float | None) -> DryingOption:

@@ -15,6 +15,7 @@ from earthwork.plan.lift_materials import planned_mixes
 from earthwork.plan.lift_rows import Lift, LiftMaker
 from earthwork.plan.lift_shapes import LiftShapes
 from earthwork.plan.lifts_result import LiftsResult
+from earthwork.plan.mix_supply import free_kg
 from earthwork.plan.moisture import drying_on_the_way_points
 from earthwork.plan.movements import settle
 from earthwork.plan.schedule import DayPieces, placing_order, schedule
@@ -131,6 +132,8 @@ def lifts_result(
         volumes=volumes,
         cards=cards,
         shapes=shapes,
+        own_kg=free_kg(ledger, here, imported=False),
+        imported_kg=free_kg(ledger, here, imported=True),
     )
 
 

@@ -40,6 +40,8 @@ class LiftsResult(Result):
     volumes: VolumesResult
     cards: dict[str, SoilCard]
     shapes: LiftShapes
+    own_kg: dict[str, float]  #: by material: dry mass of the site's own ground that fill can take, after loss
+    imported_kg: dict[str, float]  #: likewise of what the ledger imports
 
     @property
     def total(self) -> dict[str, Any]:

@@ -8,9 +8,10 @@ from collections.abc import Callable, Sequence
 from typing import TYPE_CHECKING
 
 from earthwork.errors import Warning
-from earthwork.plan.drying import DryingOption, mixing, spreading
-from earthwork.plan.fill_mix import MixPart, arriving
+from earthwork.plan.drying import DryingOption, spreading
+from earthwork.plan.fill_mix import MixPart
 from earthwork.plan.lifts import LiftsResult
+from earthwork.plan.mixes import mix_warnings, mixing_options
 from earthwork.plan.moisture import Wetting, water_need, wetting
 from earthwork.plan.remedies import Remedy
 from earthwork.plan.water_trucks import payload_notes
@@ -64,7 +65,7 @@ def drying_options(site: Site, placed: LiftsResult) -> tuple[DryingOption, ...]:
                     area_m2=given.area,
                 )
             )
-        options += _mixes(site, placed, part)
+        options += mixing_options(site, placed, part)
     return tuple(options)
 
 
@@ -77,25 +78,6 @@ def _wet(placed: LiftsResult) -> list[MixPart]:
         and part.card.target_water_content_percent is not None
         and part.arriving_percent > part.card.target_water_content_percent
     ]
-
-
-def _mixes(site: Site, placed: LiftsResult, part: MixPart) -> list[DryingOption]:
-    named = site.model.moisture.drying.mix_with
-    others = [c for c in placed.cards.values() if c.material != part.material]
-    others = [c for c in others if (c.material == named if named else c.use == "fill")]
-    assert part.arriving_percent is not None
-    assert part.card.target_water_content_percent is not None
-    options = [
-        mixing(
-            material=part.material,
-            arriving=part.arriving_percent,
-            target=part.card.target_water_content_percent,
-            other=card.material,
-            other_arriving=arriving(card, 0.0),
-        )
-        for card in others
-    ]
-    return options if named else [o for o in options if o.possible]
 
 
 def drying_m3_day(site: Site, options: Sequence[DryingOption]) -> float | None:
@@ -121,7 +103,8 @@ def drying_m3_day(site: Site, options: Sequence[DryingOption]) -> float | None:
 
 def water_warnings(site: Site, result: WaterResult) -> list[Warning]:
     """The warnings of a site's water."""
-    found = [*_runs_off(site, result), *_too_wet(site, result), *_short(site, result), *_trucks(site, result)]
+    mixes = mix_warnings(site, result.lifts, result.drying)
+    found = [*_runs_off(site, result), *_too_wet(site, result), *mixes, *_short(site, result), *_trucks(site, result)]
     ends = result.lifts.work.ends_before(len(result.days))
     return [*found, *([ends] if ends else [])]
 

@@ -145,12 +145,28 @@ def _drying_row(option: DryingOption, site: Site) -> tuple[str, str, str]:
     if not option.possible:
         return label, "no", option.note
     if option.mix_dry_ratio is not None:
-        return label, f"{option.mix_dry_ratio:.2f} to 1", option.note
+        return label, f"{option.mix_dry_ratio:.2f} to 1", f"{option.note}. {_taken(option, site)}"
     ground = show(option.area_m2, "area", site.units)
     ready = option.volume_per_day_m3
     kept = "" if ready is None else f", the ground kept for it does {show(ready, 'soil_volume', site.units)} a day"
     note = f"of drying weather; {ground} of ground to keep up with the placing rate{kept}"
     return label, f"{plain(option.days, 1)} days", note
+
+
+def _taken(option: DryingOption, site: Site) -> str:
+    """What a mix takes of the drier material, what there is, and what of the wet one is left over."""
+
+    def mass(tonnes: float | None) -> str:
+        return show(tonnes, "mass", site.units, si=1000.0)
+
+    text = f"Takes {mass(option.mix_needed_t)} of {option.mix_with}"
+    if option.mix_missing_t:
+        text += f", {mass(option.mix_available_t)} are there: {mass(option.mix_missing_t)} are missing"
+    elif option.mix_available_t is not None:
+        text += f", {mass(option.mix_available_t)} are there"
+    if option.mix_displaced_t:
+        text += f"; {mass(option.mix_displaced_t)} of {option.material} are left over"
+    return f"{text} (dry mass)"
 
 
 def _basis(site: Site, result: WaterResult) -> tuple[str, ...]:
