@@ -89,8 +89,9 @@ class Stack:
 
     @property
     def layered(self) -> bool:
-        """Whether anything lies between existing and finished ground."""
-        return bool(self.strips or self.sections or self.excavations or self.scarifies or self.strata or self.moving)
+        """Whether anything lies between existing and finished ground, or fill is told apart by depth."""
+        between = self.strips or self.sections or self.excavations or self.scarifies or self.strata or self.moving
+        return bool(between or self.bands_below_m)
 
     @property
     def block(self) -> tuple[int, int] | None:

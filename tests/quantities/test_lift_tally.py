@@ -323,3 +323,55 @@ def test_labels_join_by_corners():
     labels = label_fills(cells, 0.2)
     assert labels[0, 0] == labels[1, 1] != 0
     assert labels[3, 3] not in (0, labels[0, 0])
+
+
+def test_level_fill_on_small_cells_adds_up_to_the_last_digits(tmp_path):
+    # coarse cells of 50 cells along, where ends are packed: all at one place, so that a rounding does not average out
+    (area,), volumes, tally = counted(
+        tmp_path, np.full((60, 70), 100.123456), np.full((60, 70), 100.183456), cell=0.1, lift=1.0
+    )
+    assert tally.coarse.side == 50
+    assert total([area]) == pytest.approx(42 * 0.06, rel=1e-9)
+    assert total([area]) == pytest.approx(volumes.fill_m3, rel=1e-10)
+
+
+def cliffs_with_holes(cell):
+    """Steps against a cliff, with holes beside it: fill that hangs far below the ground of its cell's middle."""
+    rng = np.random.default_rng(7)
+    y, x = np.mgrid[0:60, 0:70]
+    existing = 0.7 * np.floor(x / 7) + 1.3 * np.floor(y / 11)
+    finished = np.where(x > 35, 60.0, 0.0) + 0.01 * x
+    return existing, np.where(rng.random(x.shape) < 0.03, np.nan, finished)
+
+
+@pytest.mark.parametrize(("cell", "lift"), [(0.1, 0.05), (1.0, 0.2), (5.0, 0.003)])
+def test_digits_are_those_of_one_thread_where_ends_lie_outside_the_bins(tmp_path, cell, lift):
+    existing, finished = cliffs_with_holes(cell)
+    walk = {"tile_cells": 97, "band_rows": 16}
+    counts = [
+        [a.benches for a in counted(tmp_path, existing, finished, cell=cell, lift=lift, walk={**walk, "threads": n})[0]]
+        for n in (1, 2, 5)
+    ]
+    assert counts[0] == counts[1] == counts[2]
+
+
+@pytest.mark.parametrize("layered", [False, True])
+def test_no_lift_holds_more_than_its_area_and_thickness(tmp_path, layered):
+    existing, finished = cliffs_with_holes(1.0)
+    bands = {"fill": {"relative_compaction": 95, "by_depth": [{"below": 5.0, "relative_compaction": 98}]}}
+    areas, volumes, _ = counted(tmp_path, existing, finished, lift=0.2, **(bands if layered else {}))
+    assert total(areas) == pytest.approx(volumes.fill_m3, rel=1e-9)
+    for area in areas:
+        for bench in () if area.is_small else area.benches:
+            assert 0 < bench.compacted_m3 <= bench.area_m2 * 0.2 * (1 + 1e-6)
+
+
+def test_depth_rows_on_a_site_that_has_nothing_else(tmp_path):
+    # 30 × 20 m of fill, 8 m high: 3 m of it deeper than 5 m
+    x, y = centres(60)
+    pad = 8.0 * ((abs(x - 30) < 15) & (abs(y - 30) < 10))
+    rows = {"relative_compaction": 95, "by_depth": [{"below": 5.0, "relative_compaction": 98}]}
+    (area,), volumes, _ = counted(tmp_path, np.full((60, 60), 100.0), 100.0 + pad, lift=0.5, fill=rows)
+    assert volumes.bands_m3 == pytest.approx((30 * 20 * 3.0,))
+    assert volumes.fill_m3 == pytest.approx(30 * 20 * 8.0)
+    assert [b.bands_m3[0] for b in area.benches] == pytest.approx([300.0] * 6 + [0.0] * 10)
