@@ -174,9 +174,9 @@ def count_columns(
                     if not amount > 0.0:
                         continue
                     volume += amount * share
-                    lowest = min(lowest, low)
-                    highest = max(highest, z)
                     whole = part == 1.0 or part == 0.0
+                    lowest = min(lowest, low if whole or refill > 0.0 else z - fill / part)
+                    highest = max(highest, z)
                     start = low
                     density = 1.0
                     if banded and z > low:

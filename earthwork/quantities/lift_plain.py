@@ -16,10 +16,23 @@ _FAST = {"reassoc", "nsz", "contract", "arcp"}
 _FINITE = {*_FAST, "nnan", "ninf"}
 _PAD = 4  #: numbers kept for a bin, a power of two
 _FAR = 1e300
-PLACE_BITS = 26  #: a packed end has its place to the nearest 2⁻²⁶ of a lift: a fill of one lift to 10⁻⁸ of it
-COUNT_SHIFT = 44  #: above it a packed bin holds the number of its ends, under it the sum of their places
-MOST_PACKED = 1 << (COUNT_SHIFT - PLACE_BITS)  #: ends that a packed bin can hold
+LARGE_SIDE = 32  #: coarse cells of so many cells along are counted with the second moments of a sample
 SAMPLED_ROWS = 4  #: of so many rows one is counted with second moments where the others are packed
+LEAST_PLACE_BITS = 32  #: a level fill of one lift then adds up to 2⁻³² of it, 2.3·10⁻¹⁰, at the worst
+
+
+def packing(side: int) -> tuple[int, int] | None:
+    """Bits of the places and of the number of ends that a packed bin of a coarse cell holds; None where none is packed.
+
+    A bin holds the number of its ends above the sum of their places, each in units of 2 to the power of minus the
+    first bits of a lift: the fewer the cells, the finer.
+
+    >>> packing(32), packing(80), packing(31), packing(512)
+    ((43, 10), (37, 13), None, None)
+    """
+    most = side * side - side * (side // SAMPLED_ROWS)
+    places = 63 - 2 * most.bit_length()
+    return (places, most.bit_length()) if side >= LARGE_SIDE and places >= LEAST_PLACE_BITS else None
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FINITE)
@@ -99,14 +112,14 @@ def _scatter(tables, flat, lows, tops, edges, ranges):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _scatter_packed(packed, flat, lows, tops, edges, ranges):
-    """As :func:`_scatter` of levels in 2⁻²⁶ of a lift, without the second moment.
+def _scatter_packed(packed, flat, lows, tops, edges, ranges, place_bits, count_bits):
+    """As :func:`_scatter` of levels in units of a lift's 2 to the power of ``place_bits``, without the second moment.
 
-    Number and places of the ends of a bin add up in one integer.
+    Number and places of the ends of a bin add up in one integer, see :func:`packing`.
     """
-    unit = 1.0 / (1 << PLACE_BITS)
-    mask = np.int64((1 << PLACE_BITS) - 1)
-    one = np.int64(1 << COUNT_SHIFT)
+    unit = 1.0 / (np.int64(1) << place_bits)
+    mask = (np.int64(1) << place_bits) - np.int64(1)
+    one = np.int64(1) << (place_bits + count_bits)
     far = np.int64(1 << 62)
     for b in range(edges.size - 1):
         if not _any(flat, edges[b], edges[b + 1]):
@@ -122,11 +135,11 @@ def _scatter_packed(packed, flat, lows, tops, edges, ranges):
                 level = lows[j]
                 lowest = min(lowest, level)
                 low_most = max(low_most, level)
-                low_bins[np.uint64(level >> PLACE_BITS)] += (level & mask) | one
+                low_bins[np.uint64(level >> place_bits)] += (level & mask) | one
                 level = tops[j]
                 top_least = min(top_least, level)
                 highest = max(highest, level)
-                top_bins[np.uint64(level >> PLACE_BITS)] += (level & mask) | one
+                top_bins[np.uint64(level >> place_bits)] += (level & mask) | one
         ranges[b, LOW, 0] = min(ranges[b, LOW, 0], lowest * unit)
         ranges[b, LOW, 1] = max(ranges[b, LOW, 1], low_most * unit)
         ranges[b, HIGH, 0] = min(ranges[b, HIGH, 0], top_least * unit)
@@ -134,8 +147,11 @@ def _scatter_packed(packed, flat, lows, tops, edges, ranges):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _crossings(up, row, down, top, mixed, edges, crossings, first, lift, reach, places, sums, spread):
+def _crossings(up, row, down, top, mixed, edges, crossings, first, bins, lift, reach, places, sums, spread):
     """Count the cells of a row that the zero line crosses: the part with fill, as thick as its fill is on the mean.
+
+    Returns:
+        Whether an end lies outside the bins.
 
     Args:
         up, row, down: depths of three rows, with the column before the first cell and the one after the last.
@@ -143,7 +159,7 @@ def _crossings(up, row, down, top, mixed, edges, crossings, first, lift, reach, 
         sums: of cut and fill, see :func:`earthwork.quantities.split.split`.
         spread: (2,) greatest and least depth, to be widened.
     """
-    bins = crossings.shape[2]
+    outside = False
     inverse = 1.0 / lift
     for b in range(edges.size - 1):
         if not _any(mixed, edges[b], edges[b + 1]):
@@ -157,11 +173,10 @@ def _crossings(up, row, down, top, mixed, edges, crossings, first, lift, reach, 
             if not fill > 0.0:
                 continue
             z = np.float64(top[j + 1])
-            base = min(z - x, z)
+            base = z - fill / part if part < 1.0 else min(z - x, z)
             for end in range(2):
-                level = (z if end == HIGH or part < 1.0 else base) * inverse - first
-                if end == LOW and part < 1.0:
-                    level -= fill / part * inverse
+                level = (z if end == HIGH else base) * inverse - first
+                outside |= level < 0.0 or level >= bins
                 k = min(max(int(level), 0), bins - 1)
                 place = level - k
                 crossings[b, end, k, 0] += part
@@ -173,10 +188,13 @@ def _crossings(up, row, down, top, mixed, edges, crossings, first, lift, reach, 
             places[b, FOOTPRINT] += part
             places[b, LOWEST] = min(places[b, LOWEST], base)
             places[b, HIGHEST] = max(places[b, HIGHEST], z)
+    return outside
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _collect(tables, packed, crossings, reach, coarse, first, lift, place, runs, moments, counts):
+def _collect(
+    tables, packed, crossings, reach, coarse, first, lift, place, runs, moments, counts, place_bits, count_bits
+):  # fmt: skip
     """Move what was counted of a coarse cell into the records, and clear it; adds volume and footprint to its place."""
     has_packed = packed.shape[0] > 0
     for end in range(2):
@@ -193,8 +211,9 @@ def _collect(tables, packed, crossings, reach, coarse, first, lift, place, runs,
             first_moment = tables[end, at + 1]
             second_moment = tables[end, at + 2]
             if bits != 0:
-                more = np.float64(bits >> COUNT_SHIFT)
-                places = np.float64(bits & ((1 << COUNT_SHIFT) - 1)) / (1 << PLACE_BITS)
+                shift = place_bits + count_bits
+                more = np.float64(bits >> shift)
+                places = np.float64(bits & ((np.int64(1) << shift) - np.int64(1))) / (np.int64(1) << place_bits)
                 mean = (first_moment + places) / (area + more)
                 half = max(min(mean, 1.0 - mean), 0.0)
                 variance = half * half / 3.0  # as spread as can be, where no row of the sample has an end in the bin
@@ -220,16 +239,18 @@ def _collect(tables, packed, crossings, reach, coarse, first, lift, place, runs,
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def count_plain(
-    depth, top, row0, column0, side, coarse_columns, lift, first, tables, packed, crossings, cells,
-    runs, moments, counts, sums, flat, bits, mixed, extreme_bits, spread,
+    depth, top, row0, column0, side, coarse_columns, lift, first, bins, tables, packed, place_bits, count_bits,
+    crossings, cells, runs, moments, counts, sums, flat, bits, mixed, extreme_bits, spread,
 ):  # fmt: skip
     """:func:`count_columns` of a tile where nothing is over-excavated, banded or weighted, and its cut and fill.
 
     Args:
         top: (h + 2, w + 2) subgrade with a rim [m]: rows that are not cut off can be read in vectors.
+        first, bins: index of the lowest bin, and how many; the tables may hold more of them.
         tables, crossings: of zeros, (coarse cells counted at a time, 2, bins · 4) and (…, 2, bins, 3).
         packed: of zeros, (…, 2, bins), where coarse cells are large enough that the second moment of every fourth row
             will do; else (…, 0, 0).
+        place_bits, count_bits: see :func:`packing`.
         sums: (8,) to which cut and fill are added, see :func:`earthwork.quantities.split.split`.
         flat, bits, mixed, extreme_bits: of a :class:`earthwork.quantities.split.SplitRoom` as wide as the coarse cells
             that are counted at a time.
@@ -245,13 +266,12 @@ def count_plain(
     last_row = (row0 + h - 1) // side
     last_column = (column0 + w - 1) // side
     blocks = tables.shape[0]
-    bins = crossings.shape[2]
     reach = np.empty((blocks, 2, 2), np.int64)
     ranges = np.empty((blocks, 2, 2))
     width = blocks * side
     lows = np.empty(width)
     tops = np.empty(width)
-    fine = float(1 << PLACE_BITS)
+    fine = float(np.int64(1) << place_bits)
     fine_lows = np.empty(width, np.int64)
     fine_tops = np.empty(width, np.int64)
     for big_row in range(big_row0, last_row + 1):
@@ -289,11 +309,11 @@ def count_plain(
                             top, depth, i, j0, fine / lift, fine * first - 0.5, fine * bins, f, fine_lows, fine_tops
                         ):
                             return False
-                        _scatter_packed(packed, f, fine_lows, fine_tops, edges, ranges)
-                if crossed:
-                    _crossings(
-                        up, row, down, top[i + 1][j0:], m, edges, crossings, first, lift, reach, places, sums, spread
-                    )  # fmt: skip
+                        _scatter_packed(packed, f, fine_lows, fine_tops, edges, ranges, place_bits, count_bits)
+                if crossed and _crossings(
+                    up, row, down, top[i + 1][j0:], m, edges, crossings, first, bins, lift, reach, places, sums, spread
+                ):  # fmt: skip
+                    return False
             for b in range(edges.size - 1):
                 place = places[b]
                 if ranges[b, LOW, 0] < _FAR:
@@ -304,7 +324,8 @@ def count_plain(
                         reach[b, end, 1] = max(reach[b, end, 1], np.int64(ranges[b, end, 1]))
                 coarse = big_row * coarse_columns + chunk + b
                 _collect(
-                    tables[b], packed[b], crossings[b], reach[b], coarse, first, lift, place, runs, moments, counts
+                    tables[b], packed[b], crossings[b], reach[b], coarse, first, lift, place, runs, moments, counts,
+                    place_bits, count_bits,
                 )  # fmt: skip
     return True
 

@@ -22,14 +22,13 @@ from earthwork.quantities.lift_kernel import (
     count_columns,
     kinds_of,
 )
-from earthwork.quantities.lift_plain import MOST_PACKED, count_plain
+from earthwork.quantities.lift_plain import count_plain, packing
 from earthwork.quantities.lift_sums import merge_runs
 from earthwork.quantities.split import SplitRoom
 from earthwork.quantities.tile import Tile
 
 _COARSE_M = 5.0  #: side of the cells on which fill areas are told apart, where the site is small enough
 _COARSE_CELLS = 128  #: at most along a side
-_LARGE_SIDE = 32  #: coarse cells of so many cells along are counted with the second moments of a sample
 _LOOSE = 3_000_000  #: records that are kept before those of one code and bin are added up
 _MOST_BINS = 1 << 21  #: above or below elevation 0: what lies further is no ground
 _STRETCH = 1 << 20  #: records that room is made for at one time
@@ -165,20 +164,20 @@ class LiftTally:
         for step in (16, 1):
             high = top[1:-1:step, 1:-1:step]
             low = np.minimum(high, high - tile.depth[1:-1:step, 1:-1:step])
-            first, bins = self._bins(low, high, sampled=step > 1)
+            first, bins = self._bins(low, high, tile.depth, sampled=step > 1)
             if bins == 0:
                 continue
             cells = self._room(tile)
             room, counts = self._record_room(tile, cells, bins)
-            packs = self.coarse.side >= _LARGE_SIDE and self.coarse.side**2 <= MOST_PACKED
+            packs = packing(self.coarse.side)
             blocks = min(max(_CHUNK // self.coarse.side, 1), cells.shape[1])
-            tables, packed, crossings = _TABLES.zeros(blocks, bins, packed=packs)
+            tables, packed, crossings = _TABLES.zeros(blocks, bins, packed=packs is not None)
             split = SplitRoom(blocks * self.coarse.side, tile.depth.dtype)
             sums, spread = np.zeros(8), np.zeros(2)
             if count_plain(
                 tile.depth, top, window.row, window.column, self.coarse.side, self.coarse.columns, self.lift_m, first,
-                tables[:blocks], packed[:blocks], crossings[:blocks], cells, room.runs, room.moments, counts,
-                sums, split.flat, split.bits, split.mixed, split.extreme_bits, spread,
+                bins, tables[:blocks], packed[:blocks], *(packs or (0, 0)), crossings[:blocks], cells,
+                room.runs, room.moments, counts, sums, split.flat, split.bits, split.mixed, split.extreme_bits, spread,
             ):  # fmt: skip
                 tile.depth_sums = (sums, *split.extremes(*spread.tolist()))
                 return _TABLES.keep(counts), cells
@@ -190,7 +189,8 @@ class LiftTally:
         dug = bool(self.stack.excavations)
         nothing = np.empty((0, 0), top.dtype)
         bottom = tile.removal_bottom if dug else nothing
-        first, bins = self._bins(bottom if dug else np.minimum(top, top - tile.depth[1:-1, 1:-1]), top)
+        low = bottom if dug else np.minimum(top, top - tile.depth[1:-1, 1:-1])
+        first, bins = self._bins(low, top, tile.depth)
         if bins == 0:
             return None
         cells = self._room(tile)
@@ -245,10 +245,13 @@ class LiftTally:
         # further parts may add half as much again before the next time
         self._loose = -len(whole.moments) // 2
 
-    def _bins(self, low: np.ndarray, top: np.ndarray, *, sampled: bool = False) -> tuple[int, int]:
+    def _bins(
+        self, low: np.ndarray, top: np.ndarray, depth: np.ndarray, *, sampled: bool = False
+    ) -> tuple[int, int]:
         """Lowest bin and number of bins between two surfaces; (0, 0) where there is no data.
 
-        Of a sample, with bins to spare for what lies between its cells.
+        Of a sample, with bins to spare for what lies between its cells; else, for the fill of cells that the zero line
+        crosses, which hangs from their subgrade by no more than three times the greatest depth.
         """
         least = float(np.fmin.reduce(low, axis=None, initial=np.inf))
         most = float(np.fmax.reduce(top, axis=None, initial=-np.inf))
@@ -260,8 +263,12 @@ class LiftTally:
                 f"elevations from {least:g} to {most:g} m make {last - first:,} lifts of {self.lift_m:g} m; "
                 "check the nodata values, or give a thicker lift"
             )
-        spare = 8 + (last - first) // 4 if sampled else 0
-        return first - spare, last - first + 2 + 2 * spare
+        if sampled:
+            spare = 8 + (last - first) // 4
+            return first - spare, last - first + 2 + 2 * spare
+        deepest = float(np.fmax.reduce(np.abs(depth), axis=None, initial=0.0))
+        spare = math.ceil(3 * deepest / self.lift_m) + 1
+        return first - spare, last - first + 2 + spare
 
     # --- what was counted -------------------------------------------------------------------------------------------
 
