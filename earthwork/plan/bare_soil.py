@@ -105,7 +105,7 @@ def evaporation_series(
     for reference, wetting in zip(reference_mm, wetting_mm, strict=True):
         depletion = max(depletion - wetting, 0.0)
         step = min(reduction(depletion, soil) * maximum * reference, soil.total_mm - depletion)
-        depletion += step
+        depletion = min(depletion + step, soil.total_mm)  # rounding must not leave less than nothing for the next
         lost.append(step)
     return lost
 

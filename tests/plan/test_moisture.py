@@ -1,7 +1,7 @@
 """Moisture arithmetic, drying options and roller output."""
 
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 
 from earthwork.plan import bare_soil, drying, moisture, placing
@@ -148,6 +148,7 @@ def test_drying_of_loam_by_hand():
 
 
 @given(st.lists(st.floats(0, 12), min_size=1, max_size=30), st.floats(1, 12), st.floats(0, 20))
+@example([0.75, 4.0, 0.0], 2.103398918200582, 3.103398918200582)
 def test_bare_soil_never_loses_more_than_it_can(reference, readily, more):
     soil = bare_soil.SurfaceSoil(readily, readily + more)
     lost = bare_soil.evaporation_series(reference, [0] * len(reference), soil)
