@@ -89,8 +89,11 @@ class Stack:
 
     @property
     def layered(self) -> bool:
-        """Whether anything lies between existing and finished ground, or fill is told apart by depth."""
-        between = self.strips or self.sections or self.excavations or self.scarifies or self.strata or self.moving
+        """Whether anything lies between existing and finished ground, or fill is told apart by depth.
+
+        A single stratum is all of the ground.
+        """
+        between = self.strips or self.sections or self.excavations or self.scarifies or self.strata[1:] or self.moving
         return bool(between or self.bands_below_m)
 
     @property
@@ -115,7 +118,13 @@ class Stack:
         return StackReader(self)
 
     def derive(self, arrays: Arrays) -> None:
-        """Add ``stripped`` and ``subgrade`` to arrays that hold the surfaces and the shares of the layers."""
+        """Add ``stripped``, ``subgrade`` and ``depth`` to arrays that hold the surfaces and the shares of the layers.
+
+        Without layers ``depth`` alone, for ``stripped`` is existing ground and ``subgrade`` finished ground.
+        """
+        if not self.layered:
+            arrays["depth"] = arrays["finished"] - arrays["existing"]
+            return
         existing = arrays["existing"].astype(np.float64)
         finished = arrays["finished"].astype(np.float64)
         for i in range(len(self.strata) - 1):
@@ -213,11 +222,16 @@ class StackReader:
         return reader.read(window, self._held[which][:cells].reshape(window.height, window.width))
 
     def read(self, window: Window) -> Arrays:
-        """All fields of a window, see :data:`Arrays`; the base surfaces alone when the site has no layers."""
+        """All fields of a window, see :data:`Arrays`."""
+        arrays = self.read_base(window)
+        self.stack.derive(arrays)
+        return arrays
+
+    def read_base(self, window: Window) -> Arrays:
+        """The fields that :meth:`Stack.derive` gets the others from; the base surfaces alone without layers."""
         stack = self.stack
         arrays: Arrays = {"existing": self.existing.read(window), "finished": self.finished.read(window)}
         if not stack.layered:
-            arrays["depth"] = arrays["finished"] - arrays["existing"]
             return arrays
         disturbed = self._disturbed(arrays, window)
         arrays["disturbed"] = disturbed
@@ -239,7 +253,6 @@ class StackReader:
         for name, reader in self.bottoms.items():
             arrays[name] = reader.read(window).astype(np.float64)
         self._strata(arrays)
-        stack.derive(arrays)
         return arrays
 
     def _disturbed(self, arrays: Arrays, window: Window) -> np.ndarray:

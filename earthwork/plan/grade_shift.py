@@ -12,7 +12,7 @@ from itertools import pairwise
 
 import numpy as np
 
-from earthwork.quantities.fields import Sums, fields_of
+from earthwork.quantities.fields import Sums
 from earthwork.quantities.tile import Tile
 
 #: Trial shifts of the main pass, ends of the range included; zero is tallied besides.
@@ -41,19 +41,19 @@ class ShiftTally:
         moving = tile.arrays["move"] > 0
         if not moving.any():
             for sums in self.sums.values():
-                sums.add(tile, fields_of(tile), weight)
+                sums.add(tile, weight)
             return
         # Only cells that move, and their neighbours, change with the shift.
         part, share = _part(tile, moving)
         still = Sums.none(self.stack)
-        still.add(tile, fields_of(tile), weight)
+        still.add(tile, weight)
         before = Sums.none(self.stack)
-        before.add(part, fields_of(part), share)
+        before.add(part, share)
         rest = still.values - before.values
         for shift, sums in self.sums.items():
             moved = part.shifted(shift)
             sums.values += rest
-            sums.add(moved, fields_of(moved), share)
+            sums.add(moved, share)
 
     def merge(self, other: ShiftTally) -> None:
         for shift, sums in other.sums.items():

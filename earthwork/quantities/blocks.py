@@ -16,7 +16,7 @@ from numba import njit
 from earthwork.ground.areas import Rings
 from earthwork.ground.stack import Stack
 from earthwork.quantities.coverage import polygon_share, touching
-from earthwork.quantities.fields import field_names, fields_of
+from earthwork.quantities.fields import named_fields
 from earthwork.quantities.tile import Tile
 
 #: (what, index, band): what is "cut", "over_excavation", "scarify" by stratum (−1: all), "strip", "section" by layer,
@@ -126,7 +126,7 @@ class BlockTally:
 
     def _values(self, tile: Tile) -> np.ndarray:
         """Amounts of each channel, mean over each cell [m], (channels, height, width)."""
-        fields = dict(zip(field_names(self.stack), fields_of(tile), strict=True))
+        fields = named_fields(tile)
         values = np.empty((len(self.channels), tile.window.height, tile.window.width))
         parts = _fill_parts(tile, fields, self.layout.rules) if self._divides_fill else None
         for i, (what, index, band) in enumerate(self.channels):

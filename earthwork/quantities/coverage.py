@@ -72,18 +72,21 @@ def _add_in_row(row, x, x_next, height, columns):
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def _polygon_shares(xs, ys, ring_offsets, first, last, row, column, acc):
-    """Coverage of the rings first..last in ``acc`` (rows, columns + 2), whose first cell is (row, column)."""
+def _polygon_shares(xs, ys, ring_offsets, first, last, row, column, acc, out):
+    """Coverage of the rings first..last in ``out`` (rows, columns), whose first cell is (row, column).
+
+    ``acc`` (rows, columns + 2) holds zeros.
+    """
     for ring in range(first, last):
         for k in range(ring_offsets[ring], ring_offsets[ring + 1] - 1):
             _add_edge(acc, xs[k] - column, ys[k] - row, xs[k + 1] - column, ys[k + 1] - row)
     for i in range(acc.shape[0]):
         total = 0.0
-        for j in range(acc.shape[1] - 2):
+        for j in range(out.shape[1]):
             total += acc[i, j]
             # The running sum carries rounding of 1e-16 per edge; a share below 1e-12 is nothing.
             share = min(abs(total), 1.0)
-            acc[i, j] = share if share > 1e-12 else 0.0
+            out[i, j] = share if share > 1e-12 else 0.0
 
 
 def polygon_share(rings: Rings, polygon: int, window: Window) -> tuple[Window, np.ndarray] | None:
@@ -102,8 +105,32 @@ def polygon_share(rings: Rings, polygon: int, window: Window) -> tuple[Window, n
         return None
     acc = np.zeros((stop_row - row, stop_column - column + 2))
     first, last = rings.polygon_offsets[polygon], rings.polygon_offsets[polygon + 1]
-    _polygon_shares(rings.xs, rings.ys, rings.ring_offsets, first, last, row, column, acc)
-    return Window(row, column, stop_row - row, stop_column - column), acc[:, :-2]
+    share = np.empty((stop_row - row, stop_column - column))
+    _polygon_shares(rings.xs, rings.ys, rings.ring_offsets, first, last, row, column, acc, share)
+    return Window(row, column, stop_row - row, stop_column - column), share
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def take_out(rest, share, row, column):
+    """Take the shares of an area, which start at (row, column), off what is left of the cells."""
+    for i in range(share.shape[0]):
+        line = rest[row + i]
+        for j in range(share.shape[1]):
+            line[column + j] -= share[i, j]
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def clear_rounding(rest):
+    """Set what subtraction leaves of a cell that areas cover whole to 0; whether anything is left."""
+    left = False
+    for i in range(rest.shape[0]):
+        line = rest[i]
+        for j in range(line.size):
+            value = line[j]
+            kept = value if value >= 1e-9 else 0.0
+            line[j] = kept
+            left |= kept > 0.0
+    return left
 
 
 def touching(rings: Rings, window: Window) -> np.ndarray:

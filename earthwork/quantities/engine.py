@@ -205,7 +205,7 @@ class Walk:
             if self.depth_only:
                 arrays = reader.read_depth(window, rim.room, self.wants_finished)
             else:
-                arrays = rim.around(reader.read(window))
+                arrays = rim.around(reader.read_base(window))
             if not first:
                 edges_north.append({name: a[:2].copy() for name, a in arrays.items()})
             if not last:
@@ -261,6 +261,8 @@ class Walk:
         self.finish(2 * above + 1, counts)
 
     def _count(self, counts: list[Tally], arrays: Arrays, window: Window, *, seam: bool = False) -> None:
+        if not self.depth_only:
+            self.stack.derive(arrays)
         tile = Tile(self.stack, window, arrays, seam=seam)
         for tally in counts:
             tally.add(tile)

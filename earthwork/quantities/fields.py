@@ -11,6 +11,7 @@ import numpy as np
 from numba import njit
 
 from earthwork.ground.stack import Stack
+from earthwork.quantities.split import CUT, DISTURBED, split_part
 from earthwork.quantities.tile import Tile
 
 _FAST = {"reassoc", "nsz", "contract", "arcp"}
@@ -34,45 +35,45 @@ def field_names(stack: Stack) -> list[str]:
     return names + ["move"] if stack.moving else names
 
 
-def fields_of(tile: Tile) -> np.ndarray:
-    """The fields of a tile, worked out once however many tallies ask; see :func:`field_values`."""
-    if tile.fields is None:
-        tile.fields = field_values(tile)
-    return tile.fields
+def extra_fields(tile: Tile) -> dict[str, np.ndarray]:
+    """Fields beside those of cut and fill by name, each (height, width); worked out once however many tallies ask.
+
+    All of :func:`field_names` but the first eight; and but ``cut:0`` of a single stratum, which is the cut.
+    """
+    if tile.extras is None:
+        tile.extras = _extra_fields(tile)
+    return tile.extras
 
 
-def field_values(tile: Tile) -> np.ndarray:
-    """The fields of a tile, shape (fields, height, width), in the order of :func:`field_names`."""
+def _extra_fields(tile: Tile) -> dict[str, np.ndarray]:
     stack = tile.stack
-    names = field_names(stack)
-    values = np.empty((len(names), tile.window.height, tile.window.width))
-    at = {name: values[i] for i, name in enumerate(names)}
-    depth = tile.depth[1:-1, 1:-1]
-    valid = np.isfinite(depth)
-    at["area"][...] = valid
-    at["cut"][...], at["fill"][...], at["cut_area"][...], at["fill_area"][...] = tile.cells
-    np.maximum(0.0, np.where(valid, -depth, 0.0), out=at["plain_cut"])
-    np.maximum(0.0, np.where(valid, depth, 0.0), out=at["plain_fill"])
-    np.multiply(valid, tile.disturbed, out=at["disturbed"])
+    at: dict[str, np.ndarray] = {}
+    valid = np.isfinite(tile.depth[1:-1, 1:-1])
     for kind, layers in (("strip", stack.strips), ("section", stack.sections)):
         for i in range(len(layers)):
-            np.multiply(valid, tile.core(f"{kind}{i}"), out=at[f"{kind}{i}"])
+            at[f"{kind}{i}"] = valid * tile.core(f"{kind}{i}")
     if stack.excavations:
-        at["over_excavation"][...] = np.where(valid, tile.refill, 0.0)
-        for k, part in enumerate(tile.excavated_by_stratum):
-            if stack.strata:
-                at[f"over_excavation:{k}"][...] = part
+        at["over_excavation"] = np.where(valid, tile.refill, 0.0)
+        if stack.strata:
+            at.update({f"over_excavation:{k}": part for k, part in enumerate(tile.excavated_by_stratum)})
     if stack.scarifies:
-        at["scarify"][...] = np.where(valid, _scarified(tile), 0.0)
+        at["scarify"] = np.where(valid, _scarified(tile), 0.0)
         for k in range(len(stack.strata)):
-            np.multiply(at["scarify"], tile.stratum_at_bottom == k, out=at[f"scarify:{k}"])
-    if stack.strata:
-        for k, part in enumerate(tile.cut_by_stratum):
-            at[f"cut:{k}"][...] = part
+            at[f"scarify:{k}"] = at["scarify"] * (tile.stratum_at_bottom == k)
+    if len(stack.strata) > 1:
+        at.update({f"cut:{k}": part for k, part in enumerate(tile.cut_by_stratum)})
     _bands(tile, at, valid)
     if stack.moving:
-        np.multiply(valid, tile.core("move"), out=at["move"])
-    return values
+        at["move"] = valid * tile.core("move")
+    return at
+
+
+def named_fields(tile: Tile) -> dict[str, np.ndarray]:
+    """The fields that are placed, by name, each (height, width): cut, fill, and those of the layers."""
+    fields = {"cut": tile.cut, "fill": tile.fill, **extra_fields(tile)}
+    if len(tile.stack.strata) == 1:
+        fields["cut:0"] = tile.cut
+    return fields
 
 
 def _scarified(tile: Tile) -> np.ndarray:
@@ -88,7 +89,7 @@ def _bands(tile: Tile, at: dict[str, np.ndarray], valid: np.ndarray) -> None:
     bands = tile.stack.bands_below_m
     if not bands:
         return
-    amount = at["fill"] + at.get("over_excavation", 0.0)
+    amount = tile.fill + at.get("over_excavation", 0.0)
     bottom, top = tile.removal_bottom, tile.subgrade
     height = np.where(valid & (top > bottom), top - bottom, 1.0)
     deeper = np.zeros_like(amount)
@@ -97,31 +98,21 @@ def _bands(tile: Tile, at: dict[str, np.ndarray], valid: np.ndarray) -> None:
         from_m = (tile.finished if start == "finished" else top) - below
         share = np.clip((np.minimum(from_m, top) - bottom) / height, 0.0, 1.0)
         under = np.where(valid, amount * share, 0.0)
-        at[f"band{i}"][...] = np.maximum(under - deeper, 0.0)
+        at[f"band{i}"] = np.maximum(under - deeper, 0.0)
         deeper = np.maximum(deeper, under)
 
 
 @njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
-def _add_weighted(fields, depth, share, row, column, sums):
-    """Add the fields × share of one area to ``sums``; returns the greatest and the least depth inside it."""
+def _add_weighted(field, share, row, column):
+    """Sum of a field × share of one area, (height, width), which starts at (row, column) of the field."""
     height, width = share.shape
-    for f in range(fields.shape[0]):
-        total = 0.0
-        for i in range(height):
-            part = 0.0
-            for j in range(width):
-                part += fields[f, row + i, column + j] * share[i, j]
-            total += part
-        sums[f] += total
-    high = 0.0
-    low = 0.0
+    total = 0.0
     for i in range(height):
+        part = 0.0
         for j in range(width):
-            x = np.float64(depth[row + i + 1, column + j + 1])
-            if share[i, j] > 0.0 and x == x:
-                high = max(high, x)
-                low = min(low, x)
-    return high, low
+            part += field[row + i, column + j] * share[i, j]
+        total += part
+    return total
 
 
 @dataclass
@@ -137,29 +128,34 @@ class Sums:
         """Nothing counted."""
         return cls(np.zeros(len(field_names(stack))))
 
-    def add(self, tile: Tile, fields: np.ndarray, share: np.ndarray | None, row: int = 0, column: int = 0) -> None:
+    def add(self, tile: Tile, share: np.ndarray | None = None, row: int = 0, column: int = 0) -> None:
         """Count the part of a tile that lies inside an area.
 
         Args:
-            fields: of :func:`field_values`.
             share: of each cell inside the area, starting at (row, column) of the tile; None: all of the tile.
         """
+        # The kernels' order is that of the base fields.
+        base = np.zeros(len(_BASE))
+        names = field_names(tile.stack)[len(_BASE) :]
+        # first, for some need the cells one by one, and sums come with these
+        extras = extra_fields(tile) if names else {}
         if share is None:
-            self.values += fields.sum(axis=(1, 2))
-            depth = tile.depth[1:-1, 1:-1]
-            self._widen(
-                float(np.fmax.reduce(depth, axis=None, initial=0.0)),
-                float(np.fmin.reduce(depth, axis=None, initial=0.0)),
-            )
+            sums, high, low = tile.depth_sums
+            base += sums
+            if not tile.plainly_disturbed:
+                base[DISTURBED] = float(np.where(np.isnan(tile.depth[1:-1, 1:-1]), 0.0, tile.disturbed).sum())
         else:
-            self._widen(*_add_weighted(fields, tile.depth, share, row, column, self.values))
-
-    def add_plain(self, tile: Tile) -> None:
-        """Count a whole tile without layers, without holding its fields."""
-        sums, high, low = tile.depth_sums
+            disturbed = None if tile.plainly_disturbed else tile.disturbed
+            high, low = split_part(tile.depth, share, row, column, disturbed, base)
         self._widen(high, low)
-        # The kernel's order is that of the base fields.
-        self.values += sums
+        self.values[: len(_BASE)] += base
+        for i, name in enumerate(names, len(_BASE)):
+            if name not in extras:
+                self.values[i] += base[CUT]  # all cut is of the single stratum
+            elif share is None:
+                self.values[i] += extras[name].sum()
+            else:
+                self.values[i] += _add_weighted(extras[name], share, row, column)
 
     def merge(self, other: Sums) -> None:
         self.values += other.values

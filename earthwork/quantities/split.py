@@ -238,6 +238,113 @@ def _split(depth, cells, sums, flat, bits, mixed, extreme_bits):
     return high, low
 
 
+def split_part(
+    depth: np.ndarray, share: np.ndarray, row: int, column: int, disturbed: np.ndarray | None, sums: np.ndarray
+) -> tuple[float, float]:
+    """Split the cells of one area at the zero line, each by its share inside it.
+
+    Args:
+        depth: (h + 2, w + 2) depths of a tile with a one-cell rim [m], + fill; NaN = no data.
+        share: of each cell inside the area, (height, width), starting at (row, column) of the tile without its rim.
+        disturbed: (h, w) share of each cell that is disturbed; None: all of those that differ.
+        sums: as for :func:`split`.
+
+    Returns:
+        (greatest fill, least depth) [m] of cells with any share: (0, 0) where there is neither fill nor cut.
+    """
+    room = SplitRoom(share.shape[1], depth.dtype)
+    given = np.empty((0, 0)) if disturbed is None else disturbed
+    high, low = _split_part(
+        depth, share, row, column, given, sums, np.zeros(8), room.flat, room.bits, room.mixed, room.extreme_bits
+    )  # fmt: skip
+    return room.extremes(high, low)
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _split_part(depth, share, row0, column0, disturbed, sums, whole, flat, bits, mixed, extreme_bits):
+    high = 0.0
+    low = 0.0
+    width = share.shape[1]
+    for i in range(share.shape[0]):
+        up = depth[row0 + i][column0 : column0 + width + 2]
+        row = depth[row0 + i + 1][column0 : column0 + width + 2]
+        down = depth[row0 + i + 2][column0 : column0 + width + 2]
+        parts = share[i]
+        any_mixed = flat_row(up, row, down, flat, mixed, whole)
+        _add_row(row, flat, parts, sums)
+        if disturbed.size > 0:
+            sums[DISTURBED] += _disturbed_row(row, disturbed[row0 + i][column0 : column0 + width], parts)
+        else:
+            sums[DISTURBED] += _differing_row(row, parts)
+        if any_mixed:
+            for j in range(width):
+                part = parts[j]
+                if mixed[j] == 0 or part == 0.0:
+                    continue
+                x, fill, cut_share, fill_share = add_crossed(up, row, down, j, whole)
+                high = max(high, x)
+                low = min(low, x)
+                sums[CUT] += (fill - x) * part
+                sums[FILL] += fill * part
+                sums[CUT_AREA] += cut_share * part
+                sums[FILL_AREA] += fill_share * part
+                sums[PLAIN_CUT] -= min(x, 0.0) * part
+                sums[PLAIN_FILL] += max(x, 0.0) * part
+        _blank_outside(flat, parts)
+        widen(bits, extreme_bits)
+    return high, low
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+def _add_row(row, flat, parts, sums):
+    """Add the cells of a row that the zero line does not cross, each by its part."""
+    area = 0.0
+    cut = 0.0
+    fill = 0.0
+    cut_area = 0.0
+    fill_area = 0.0
+    for j in range(flat.size):
+        part = parts[j]
+        x = np.float64(flat[j])
+        area += part if row[j + 1] == row[j + 1] else 0.0
+        cut -= min(x, 0.0) * part
+        fill += max(x, 0.0) * part
+        cut_area += part if x < 0.0 else 0.0
+        fill_area += part if x > 0.0 else 0.0
+    sums[VALID] += area
+    sums[CUT] += cut
+    sums[FILL] += fill
+    sums[CUT_AREA] += cut_area
+    sums[FILL_AREA] += fill_area
+    sums[PLAIN_CUT] += cut
+    sums[PLAIN_FILL] += fill
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+def _differing_row(row, parts):
+    """Area of a row whose finished and existing ground differ [cells]."""
+    area = 0.0
+    for j in range(parts.size):
+        area += parts[j] if abs(row[j + 1]) > DISTURBED_OVER_M else 0.0
+    return area
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+def _disturbed_row(row, disturbed, parts):
+    """Area of a row that is disturbed and has data [cells]."""
+    area = 0.0
+    for j in range(parts.size):
+        area += disturbed[j] * parts[j] if row[j + 1] == row[j + 1] else 0.0
+    return area
+
+
+@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+def _blank_outside(flat, parts):
+    """Set the depths of cells that have no part to 0."""
+    for j in range(flat.size):
+        flat[j] = flat[j] if parts[j] > 0.0 else flat.dtype.type(0)
+
+
 @dataclass(frozen=True)
 class SplitCells:
     """Cells of a tile after the split: mean depth over each cell [m] and share of its area; 0 where no data."""

@@ -10,7 +10,7 @@ from numba import njit
 
 from earthwork.ground.stack import Stack
 from earthwork.quantities.blocks import Channel, channels_of
-from earthwork.quantities.fields import field_names, fields_of
+from earthwork.quantities.fields import named_fields
 from earthwork.quantities.tile import Tile
 
 
@@ -82,7 +82,7 @@ class StationTally:
         self.outside += other.outside
 
     def _values(self, tile: Tile) -> np.ndarray:
-        fields = dict(zip(field_names(self.stack), fields_of(tile), strict=True))
+        fields = named_fields(tile)
         values = np.empty((len(self.channels), tile.window.height, tile.window.width))
         for i, (what, index, _) in enumerate(self.channels):
             if what == "fill":

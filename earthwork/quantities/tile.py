@@ -28,7 +28,7 @@ class Tile:
         self.window = window
         self.arrays = arrays
         self.seam = seam
-        self.fields: np.ndarray | None = None  #: set by :func:`earthwork.quantities.fields.fields_of`
+        self.extras: dict[str, np.ndarray] | None = None  #: set by :func:`earthwork.quantities.fields.extra_fields`
 
     def core(self, name: str) -> np.ndarray:
         """A field without its rim, shape (height, width)."""
@@ -74,22 +74,26 @@ class Tile:
 
     @cached_property
     def weight(self) -> np.ndarray | None:
-        """Share of each cell inside the limits, (height, width); None where all of the grid counts."""
+        """Share of each cell inside the limits, (height, width); None where all of the tile counts."""
         if self.stack.limits is None:
             return None
-        return self.stack.coverage(self.stack.limits, self.window)
+        share = self.stack.coverage(self.stack.limits, self.window)
+        return None if share.min() >= 1.0 else share
 
     @cached_property
     def depth_sums(self) -> tuple[np.ndarray, float, float]:
         """Sums of the split cells, (8,) as of :func:`earthwork.quantities.split.split`, greatest and least depth [m]."""
+        return self._split(np.empty((4, 0, 0)))
+
+    def _split(self, cells: np.ndarray) -> tuple[np.ndarray, float, float]:
         sums = np.zeros(8)
-        return (sums, *split(self.depth, np.empty((4, 0, 0)), sums))
+        return (sums, *split(self.depth, cells, sums))
 
     @cached_property
     def cells(self) -> np.ndarray:
         """Cut, fill [mean m over the cell], cut share, fill share: (4, height, width), 0 where no data."""
         cells = np.empty((4, self.window.height, self.window.width))
-        split(self.depth, cells, np.zeros(8))
+        self.depth_sums = self._split(cells)
         return cells
 
     @property
@@ -108,6 +112,11 @@ class Tile:
         if not self.stack.excavations:
             return np.zeros((self.window.height, self.window.width))
         return np.minimum(self.stripped, self.subgrade) - self.removal_bottom
+
+    @property
+    def plainly_disturbed(self) -> bool:
+        """Whether a cell is disturbed just where its depth is not 0, as :attr:`depth_sums` counts it."""
+        return "disturbed" not in self.arrays and self.stack.disturbed is None
 
     @cached_property
     def disturbed(self) -> np.ndarray:

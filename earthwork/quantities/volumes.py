@@ -10,10 +10,11 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from earthwork.errors import GroundError, Warning
-from earthwork.quantities.coverage import polygon_share, touching
+from earthwork.quantities.coverage import clear_rounding, polygon_share, take_out, touching
 from earthwork.quantities.engine import Progress, Tally, walk
-from earthwork.quantities.fields import Sums, field_names, fields_of
+from earthwork.quantities.fields import Sums, field_names
 from earthwork.quantities.site_ground import SiteGround, open_site
+from earthwork.quantities.split import VALID
 from earthwork.quantities.survey_error import false_volume_m3, volume_error
 from earthwork.quantities.tile import Tile
 from earthwork.results import Result
@@ -35,11 +36,7 @@ class VolumesTally:
         self.missing_rows = (np.inf, -np.inf)
         self.missing_columns = (np.inf, -np.inf)
 
-    @property
-    def depth_only(self) -> bool:
-        """Engine: nothing but the sums of depth is asked for."""
-        stack = self.ground.stack
-        return not (stack.layered or stack.limits or stack.disturbed or self.ground.zone_names)
+    depth_only = True  #: engine: without layers, the surfaces themselves are not asked for
 
     @property
     def key(self) -> tuple[str, int]:
@@ -50,19 +47,12 @@ class VolumesTally:
         return VolumesTally(self.ground)
 
     def add(self, tile: Tile) -> None:
-        if self.depth_only:
-            before = self.total.values[0]
-            self.total.add_plain(tile)
-            if self.total.values[0] - before < tile.window.height * tile.window.width:
-                self._note_missing(tile)
-            return
         if tile.weight is not None and not tile.weight.any():
             return
-        fields = fields_of(tile)
-        self.total.add(tile, fields, tile.weight)
         if self.ground.zone_names:
-            self._add_zones(tile, fields)
-        if fields[0].sum() < tile.window.height * tile.window.width:
+            self._add_zones(tile)
+        self.total.add(tile, tile.weight)
+        if tile.depth_sums[0][VALID] < tile.window.height * tile.window.width:
             self._note_missing(tile)
 
     def merge(self, other: VolumesTally) -> None:
@@ -77,7 +67,7 @@ class VolumesTally:
         self.missing_rows = _hull(self.missing_rows, other.missing_rows)
         self.missing_columns = _hull(self.missing_columns, other.missing_columns)
 
-    def _add_zones(self, tile: Tile, fields: np.ndarray) -> None:
+    def _add_zones(self, tile: Tile) -> None:
         window = tile.window
         outside = np.ones((window.height, window.width)) if tile.weight is None else tile.weight.copy()
         rings = self.ground.zones
@@ -88,12 +78,11 @@ class VolumesTally:
                 continue
             part, share = found
             row, column = part.row - window.row, part.column - window.column
-            outside[row : row + part.height, column : column + part.width] -= share
+            take_out(outside, share, row, column)
             sums = self.zones.setdefault(zone, Sums.none(tile.stack))
-            sums.add(tile, fields, share, row, column)
-        # What subtraction leaves of a cell that zones cover whole is rounding.
-        outside[outside < 1e-9] = 0.0
-        self.outside.add(tile, fields, outside)
+            sums.add(tile, share, row, column)
+        if clear_rounding(outside):
+            self.outside.add(tile, outside)
 
     def _note_missing(self, tile: Tile) -> None:
         lost = ~np.isfinite(tile.depth[1:-1, 1:-1])
