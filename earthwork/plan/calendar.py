@@ -106,7 +106,8 @@ class WorkCalendar:
         if start is not None:
             windows = [(opens, opens + hours) for opens in self._openings(day, start)]
         return [
-            sum(max(0.0, min(end, i + length) - max(first, i)) for first, end in windows)
+            # windows overlap on a day of 23 hours that opens for longer: a supply is never open twice
+            min(length, sum(max(0.0, min(end, i + length) - max(first, i)) for first, end in windows))
             for i, length in enumerate(slots)
         ]
 

@@ -97,8 +97,9 @@ def schedule(
                 queue[at] = (index, volume - part)
         days.append(DayPieces(day, tuple(today.items())))
         if len(days) > _MOST_DAYS:
+            need = sum(volume for _, volume in pieces) / placing_m3_day
             raise PlanError(
-                f"water.placing_rate is {placing_m3_day:g} m³ a day: the fill takes more than {_MOST_DAYS} days; "
-                "check the rate and its unit"
+                f"water.placing_rate: the fill is {need:,.0f} times what it places in a day; it must be placed within "
+                f"{_MOST_DAYS:,} days, idle ones included. Check the rate and its unit"
             )
     return tuple(days)

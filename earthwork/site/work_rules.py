@@ -6,6 +6,7 @@ import difflib
 from collections.abc import Iterator
 
 from earthwork.site.model import SiteModel
+from earthwork.units import UnitSystem
 
 
 def work_faults(model: SiteModel) -> Iterator[str]:
@@ -70,7 +71,13 @@ def _drying(model: SiteModel) -> Iterator[str]:
         yield f'moisture.drying.mix_with = "{name}": there is no [material.{name}]; {hint}'
     spread = model.moisture.drying.spread
     if spread is not None and spread <= 0:
-        yield f"moisture.drying.spread = {spread:g} m: it must be more than 0"
+        yield f"moisture.drying.spread = {_shown(model, spread, 'length')}: it must be more than 0"
+
+
+def _shown(model: SiteModel, value: float, dimension: str) -> str:
+    """An SI value in the unit that the site file is written in."""
+    units = UnitSystem(model.site.units)
+    return f"{units.from_si(value, dimension):g} {units.label(dimension)}"
 
 
 def _plant(model: SiteModel) -> Iterator[str]:
@@ -81,8 +88,8 @@ def _plant(model: SiteModel) -> Iterator[str]:
             yield f'roller: the name "{roller.name}" is given {names.count(roller.name)} times'
         if lift is not None and roller.lift_limit is not None and lift > roller.lift_limit:
             yield (
-                f"fill.lift_thickness = {lift:g} m: the {roller.name} works lifts of at most "
-                f"{roller.lift_limit:g} m, compacted; thin the lift or take another roller"
+                f"fill.lift_thickness = {_shown(model, lift, 'length')}: the {roller.name} works lifts of at most "
+                f"{_shown(model, roller.lift_limit, 'length')}, compacted; thin the lift or take another roller"
             )
 
 
@@ -92,8 +99,8 @@ def _water(model: SiteModel) -> Iterator[str]:
         return
     if water.tank is not None and (water.tank.at_start or 0) > water.tank.volume:
         yield (
-            f"water.tank.at_start = {water.tank.at_start:g} L: it must be at most the tank's volume, "
-            f"{water.tank.volume:g} L"
+            f"water.tank.at_start = {_shown(model, water.tank.at_start or 0.0, 'water_volume')}: it must be at most the "
+            f"tank's volume, {_shown(model, water.tank.volume, 'water_volume')}"
         )
     if water.supply.flow <= 0 and water.tank is None:
         yield "water.supply.flow = 0: it must be more than 0 where there is no tank"

@@ -74,3 +74,10 @@ def test_supply_hours_follow_the_clock_when_it_changes():
     assert sum(shares) == pytest.approx(4.0)
     assert shares[:3] == [1.0, 1.0, 1.0]  # 07:00 to 10:00 of the window that opened at 06:00
     assert shares[22:] == [1.0]  # 06:00 to 07:00 next morning
+
+
+def test_a_supply_is_never_open_twice_where_its_hours_are_more_than_the_day_has():
+    # 23.5 hours from 04:00 on end at 04:30 where the clock has gone forward, half an hour into the next opening
+    calendar = WorkCalendar(start=D(2027, 3, 13), time_zone="America/Denver", shift_start=datetime.time(20))
+    shares = calendar.open_share(calendar.day(1), start=datetime.time(4), hours=23.5)
+    assert shares == [1.0] * 23

@@ -99,6 +99,17 @@ def test_textures_of_the_site_file_are_those_that_are_known():
         ),
         ({"water": {"supply": {"flow": 0}}}, r"water.supply.flow = 0: it must be more than 0 where"),
         ({"water": {"tank": {"volume": 9, "at_start": 10}}}, r"tank.at_start = 10 L: it must be at most"),
+        (
+            {"site": {"units": "us"}, "water": {"tank": {"volume": 900, "at_start": 1000}}},
+            r"tank.at_start = 1000 gal: it must be at most the tank's volume, 900 gal",
+        ),
+        (
+            {
+                "site": {"units": "us"}, "fill": {"lift_thickness": 2.0},
+                "roller": [{"width": 6, "speed": 3, "passes": 6, "efficiency": 0.8, "lift_limit": 1.5}],
+            },
+            r"fill.lift_thickness = 2 ft: the roller works lifts of at most 1.5 ft",
+        ),
         ({"water": {"evaporation": 60}}, r"water.evaporation = 60: it must be at most 30 mm/day"),
         (
             {"site": {"units": "us"}, "water": {"evaporation": 6}},
