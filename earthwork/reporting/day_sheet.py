@@ -98,7 +98,8 @@ def _lift_table(site: Site, pieces: Sequence[tuple[Lift, float]], most: int) -> 
         "required, %",
     ]  # fmt: skip
     plain_lifts = [piece for piece in pieces if not piece[0].flags]
-    shown, more = plain_lifts[:most], plain_lifts[most:]
+    fit = most if len(plain_lifts) > most + 1 else most + 1  # the row of the others holds one as well
+    shown, more = plain_lifts[:fit], plain_lifts[fit:]
     rows = [_lift_row(site, f"{lift.fill}, lift {lift.lift}", [(lift, volume)]) for lift, volume in shown]
     if more:
         rows.append(_lift_row(site, f"{len(more)} more lifts", more))
@@ -153,7 +154,7 @@ def _water_table(site: Site, result: WaterResult, day: WaterDay) -> str:
     rows.append(["the supply gives", "", show(day.supply_l, "water_volume", units)])
     if result.job.tank_l > 0:
         rows.append(["in the tank at the end", "", show(day.tank_end_l, "water_volume", units)])
-    loads = "" if day.truck_loads is None else f"{day.truck_loads} truck loads"
+    loads = "" if day.truck_loads is None else f"{day.truck_loads} truck load{'' if day.truck_loads == 1 else 's'}"
     total = ["in all", show(demand.total_l, "water_volume", units), loads]
     return _table("Water", ["", "wanted", "there is"], rows, total)
 

@@ -107,6 +107,16 @@ def test_day_sheets_tell_the_compaction_that_each_lift_has_to_reach(tmp_path):
     assert required == {f"fill 1, lift {n}": "98" if n < 3 else "95" for n in range(1, 6)}
 
 
+@pytest.mark.parametrize(("lifts", "shown"), [(10, 10), (11, 11), (12, 10)])
+def test_day_sheets_sum_up_no_single_lift(tmp_path, lifts, shown):
+    # 1 m of fill in a day; a page has room for ten lifts and a row of the others
+    changes = {"fill.lift_thickness": 1 / lifts, "water.placing_rate": 6000}
+    run_command("water", site(tmp_path, changes), out=tmp_path / "out")
+    text = (tmp_path / "out" / "water_day_sheets.html").read_text(encoding="utf-8")
+    assert len(re.findall(r"<td>fill 1, lift \d+</td>", text)) == shown
+    assert re.findall(r"<td>(\d+) more lifts</td>", text) == ([] if lifts == shown else ["2"])
+
+
 def test_pages_say_what_matters(lifts_run, water_run):
     lifts = " ".join(str(block) for block in lifts_run.page().blocks)
     assert "5" in lifts
