@@ -126,7 +126,7 @@ def _benches(
     areas = []
     for base, start, count in zip(bases, starts, counts, strict=False):
         own = slice(start, start + count)
-        cubic = (volumes[:, own] + np.cumsum(standing[:, own], axis=1)) * t * cell_m2
+        cubic = none_negative((volumes[:, own] + np.cumsum(standing[:, own], axis=1)) * t * cell_m2)
         # columns that have started less those that have ended below, each once though a depth row may part it
         footprint = np.cumsum(ends[0, own]) - np.concatenate([[0.0], np.cumsum(ends[1, own])[:-1]]) - ends[2, own]
         areas.append(
@@ -134,14 +134,36 @@ def _benches(
                 Bench(
                     bottom_m=base + t * j,
                     top_m=base + t * (j + 1),
-                    area_m2=float(footprint[j] * cell_m2),
+                    # ends that share a bin are parted by what they are like on the mean: a lift needs room all the same
+                    area_m2=float(max(footprint[j] * cell_m2, cubic[:, j].sum() / t)),
                     compacted_m3=float(cubic[:, j].sum()),
                     bands_m3=tuple(cubic[1:, j].tolist()),
                 )
-                for j in np.flatnonzero(footprint > 1e-9 * footprint.max()).tolist()
+                for j in np.flatnonzero((footprint > 1e-9 * footprint.max()) & cubic.any(axis=0)).tolist()
             )
         )
     return areas
+
+
+def none_negative(cubic: np.ndarray) -> np.ndarray:
+    """Volumes by kind and lift where no lift is under 0: what one owes is taken from the one below, or from above.
+
+    Bottoms and tops in one bin are parted by what each are like on the mean, so that the edge of a fill can end in a
+    lift with a little less than nothing.
+
+    >>> none_negative(np.array([[4.0, 3.0, -0.5]])).tolist()
+    [[4.0, 2.5, 0.0]]
+    >>> none_negative(np.array([[-1.0, 3.0, 2.0]])).tolist()
+    [[0.0, 2.0, 2.0]]
+    """
+    made = cubic.copy()
+    last = made.shape[1] - 1
+    for lifts, step in ((range(last, 0, -1), -1), (range(last), 1)):
+        for j in lifts:
+            if made[:, j].sum() < 0.0:
+                made[:, j + step] += made[:, j]
+                made[:, j] = 0.0
+    return made
 
 
 def _lift_sums(

@@ -375,3 +375,21 @@ def test_depth_rows_on_a_site_that_has_nothing_else(tmp_path):
     assert volumes.bands_m3 == pytest.approx((30 * 20 * 3.0,))
     assert volumes.fill_m3 == pytest.approx(30 * 20 * 8.0)
     assert [b.bands_m3[0] for b in area.benches] == pytest.approx([300.0] * 6 + [0.0] * 10)
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_no_lift_of_rough_ground_with_depth_rows_is_less_than_nothing_or_more_than_it_has_room_for(tmp_path, seed):
+    rng = np.random.default_rng(seed)
+    y, x = np.mgrid[0:150, 0:130]
+    existing = 1.5 * np.sin(x / 9) + 0.05 * y + rng.normal(0, 0.03, x.shape)
+    finished = np.where((abs(x - 32) < 20) | (abs(x - 97) < 23), rng.uniform(-1, 4), existing)
+    rows = [{"below": below, "measured_from": "finished", "relative_compaction": 98} for below in (0.5, 2.0)]
+    lift = (0.05, 0.2, 0.3048, 1.0)[seed]
+    fill = {"relative_compaction": 95, "by_depth": rows}
+    areas, volumes, _ = counted(tmp_path, existing, finished, cell=0.1, lift=lift, fill=fill)
+    assert total(areas) == pytest.approx(volumes.fill_m3, rel=1e-9)
+    for i, band in enumerate(volumes.bands_m3):
+        assert math.fsum(b.bands_m3[i] for a in areas for b in a.benches) == pytest.approx(band, rel=1e-9)
+    for area in areas:
+        for bench in () if area.is_small else area.benches:
+            assert 0 < bench.compacted_m3 <= bench.area_m2 * lift * (1 + 1e-9)
