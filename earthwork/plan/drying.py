@@ -90,7 +90,8 @@ def supplied(option: DryingOption, supply: MixSupply) -> DryingOption:
     available = supply.available_kg
     note = option.note
     if supply.missing_kg > 0:
-        note += f"; there is enough of {option.mix_with} for {100.0 * (available or 0.0) / supply.needed_kg:.0f} % of it"
+        share = f"enough for {100.0 * available / supply.needed_kg:.2g} %" if available else "nothing"
+        note += f"; of {option.mix_with} there is {share}"
     return replace(
         option,
         note=note,

@@ -43,10 +43,11 @@ def mix_supply(
 ) -> MixSupply:
     """Dry material that it takes to mix all wet soil of a fill.
 
-    What of the dry material goes into the fill anyhow is mixed first. Where that is not enough, more of it takes the
-    place of wet soil, volume for volume, so that the fill holds as much as before: of every wet material the share
-    ``f`` remains, ``f = min(1, (V_dry + Σ V) / Σ (m / ρ + r·m / ρ_dry))``, and ``Σ f·r·m`` is needed. That the parts
-    of a mix take the room that they take alone is an estimate, no single source.
+    What of the dry material goes into the fill anyhow is mixed first, shared out as the wet materials ask for it
+    (``P``). Where that is not enough, more of it takes the place of the wet soil that it is mixed with, volume for
+    volume, so that the fill holds as much as before: of a wet material the share
+    ``f = min(1, (m / ρ + P / ρ_dry) / (m / ρ + r·m / ρ_dry))`` remains, and takes ``f·r·m``. That the parts of a mix
+    take the room that they take alone is an estimate, no single source.
 
     Args:
         wet: the wet materials that are mixed with it.
@@ -55,18 +56,24 @@ def mix_supply(
         available_kg: of the dry material in all, what is in the fill included [kg]; None for no limit.
 
     >>> clay = WetSoil(dry_mass_kg=900.0, density_kg_m3=1500.0, ratio=0.5)
-    >>> mix_supply([clay], placed_kg=0.0, density_kg_m3=1500.0, available_kg=100.0)
-    MixSupply(needed_kg=300.0, available_kg=100.0, displaced_kg=300.0)
+    >>> supply = mix_supply([clay], placed_kg=0.0, density_kg_m3=1500.0, available_kg=100.0)
+    >>> round(supply.needed_kg, 6), round(supply.displaced_kg, 6), round(supply.missing_kg, 6)
+    (300.0, 300.0, 200.0)
     >>> mix_supply([clay], placed_kg=450.0, density_kg_m3=1500.0, available_kg=500.0).displaced_kg
     0.0
     """
     if not density_kg_m3 > 0:
         raise ValueError(f"fill dry density is {density_kg_m3:g} kg/m³; it must be more than 0")
     whole = math.fsum(w.ratio * w.dry_mass_kg for w in wet)
-    mixed_m3 = math.fsum(w.dry_mass_kg / w.density_kg_m3 for w in wet) + whole / density_kg_m3
-    room_m3 = math.fsum(w.dry_mass_kg / w.density_kg_m3 for w in wet) + placed_kg / density_kg_m3
-    kept = min(room_m3 / mixed_m3, 1.0) if mixed_m3 > 0 else 1.0
-    return MixSupply(kept * whole, available_kg, (1.0 - kept) * math.fsum(w.dry_mass_kg for w in wet))
+    there = placed_kg / whole if whole > 0 else 1.0
+    needed = displaced = 0.0
+    for soil in wet:
+        asked = soil.ratio * soil.dry_mass_kg
+        own_m3 = soil.dry_mass_kg / soil.density_kg_m3
+        kept = min((own_m3 + there * asked / density_kg_m3) / (own_m3 + asked / density_kg_m3), 1.0) if own_m3 > 0 else 1.0
+        needed += kept * asked
+        displaced += (1.0 - kept) * soil.dry_mass_kg
+    return MixSupply(needed, available_kg, displaced)
 
 
 def free_kg(ledger: Iterable[LedgerRow], here: Account, *, imported: bool) -> dict[str, float]:

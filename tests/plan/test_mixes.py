@@ -49,7 +49,7 @@ def test_a_pit_with_a_limit(tmp_path):
     (row,) = [row for block in page(site(tmp_path), result).blocks if hasattr(block, "rows")
               for row in block.rows if row[0] == "silt: mixing with sand"]  # fmt: skip
     assert "3,260 t of sand, 1,568 t are there: 1,692 t are missing" in row[2]
-    assert "there is enough of sand for 48 % of it" in row[2]
+    assert "of sand there is enough for 48 %" in row[2]
 
 
 @pytest.mark.parametrize("pits", [[{**PIT, "capacity": 2080}], [{**PIT, "capacity": 40}, {**PIT, "name": "other pit"}]])
@@ -91,11 +91,15 @@ def test_topsoil_dries_nothing(tmp_path):
 
 
 def test_two_wet_soils_share_the_dry_one():
-    # 2 m³ of each at 1500 kg/m³, ratios 1 and 0.5: 4500 kg of dry soil, 3 m³ more than there is room: 4/7 of it all
+    # 2 m³ of each at 1500 kg/m³, ratios 1 and 0.5: a half of the one and two thirds of the other stay
     wet = [WetSoil(3000.0, 1500.0, 1.0), WetSoil(3000.0, 1500.0, 0.5)]
     supply = mix_supply(wet, placed_kg=0.0, density_kg_m3=1500.0, available_kg=2000.0)
-    assert supply.needed_kg == pytest.approx(4 / 7 * 4500)
-    assert supply.displaced_kg == pytest.approx(3 / 7 * 6000)
-    assert supply.missing_kg == pytest.approx(4 / 7 * 4500 - 2000)
+    assert supply.needed_kg == pytest.approx(1500 + 1000)
+    assert supply.displaced_kg == pytest.approx(1500 + 1000)
+    assert supply.missing_kg == pytest.approx(500)
+    # 2250 kg of it in the fill already, 1500 and 750 of the 3000 and 1500 asked for: 3 m³ of 4, and 2.5 of 3 stay
+    more = mix_supply(wet, placed_kg=2250.0, density_kg_m3=1500.0, available_kg=None)
+    assert more.needed_kg == pytest.approx(3 / 4 * 3000 + 5 / 6 * 1500)
+    assert more.displaced_kg == pytest.approx(more.needed_kg - 2250)
     with pytest.raises(ValueError, match="fill dry density is 0 kg/m³; it must be more than 0"):
         mix_supply(wet, placed_kg=0.0, density_kg_m3=0.0, available_kg=None)
