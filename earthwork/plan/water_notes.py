@@ -83,7 +83,8 @@ def _wet(placed: LiftsResult) -> list[MixPart]:
 def drying_m3_day(site: Site, options: Sequence[DryingOption]) -> float | None:
     """Compacted volume of fill that the ground kept for drying allows in a day; None where it has no limit.
 
-    All wet materials share the ground, each by the fastest way that it has.
+    All wet materials share the ground, each by the fastest way that it has; what never dries when it is spread takes
+    none where there is enough to mix it with.
     """
     area, water = site.model.moisture.drying.area, site.model.water
     assert water is not None
@@ -91,10 +92,12 @@ def drying_m3_day(site: Site, options: Sequence[DryingOption]) -> float | None:
         return None
     needed = []
     for name in dict.fromkeys(option.material for option in options):
-        ways = [o.area_m2 for o in options if o.material == name and o.area_m2 is not None]
-        if not ways:
+        mine = [o for o in options if o.material == name]
+        ways = [o.area_m2 for o in mine if o.area_m2 is not None]
+        if ways:
+            needed.append(min(ways))
+        elif not any(o.possible and o.mix_missing_t == 0 for o in mine):
             return 0.0
-        needed.append(min(ways))
     return water.placing_rate * area / sum(needed) if sum(needed) > 0 else None
 
 

@@ -103,3 +103,10 @@ def test_two_wet_soils_share_the_dry_one():
     assert more.displaced_kg == pytest.approx(more.needed_kg - 2250)
     with pytest.raises(ValueError, match="fill dry density is 0 kg/m³; it must be more than 0"):
         mix_supply(wet, placed_kg=0.0, density_kg_m3=0.0, available_kg=None)
+
+
+@pytest.mark.parametrize(("capacity", "held"), [(2080, "placing rate"), (1000, "drying")])
+def test_what_never_dries_is_placed_where_there_is_enough_to_mix_it_with(tmp_path, capacity, held):
+    changes = {"water.evaporation": 0.0, "moisture.drying": {"area": 4000}, "borrow": [HILL, {**PIT, "capacity": capacity}]}
+    _, _, result = mixed(tmp_path, changes)
+    assert result.days[0].limited_by == held
