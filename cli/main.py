@@ -37,6 +37,9 @@ def run(arguments: Sequence[str] | None = None) -> None:
     # GDAL writes its own remarks to stderr; what matters of them stands in our message.
     os.environ.setdefault("CPL_LOG", os.devnull)
     signal.signal(signal.SIGTERM, _terminate)
+    # a terminal that is closed asks to end as well, unless the run is to outlive it (nohup)
+    if hasattr(signal, "SIGHUP") and signal.getsignal(signal.SIGHUP) == signal.SIG_DFL:
+        signal.signal(signal.SIGHUP, _terminate)
     code = main(arguments)
     with contextlib.suppress(OSError, ValueError):
         sys.stderr.flush()

@@ -22,6 +22,9 @@ ASIDE = ".unfinished-"
 #: What other programs leave beside a file and would take for facts about the new one.
 SIDECARS = (".aux.xml", ".ovr", "-wal", "-shm", "-journal")
 
+#: Signals that ask a process to end; not every system has the last.
+_ENDING = tuple(getattr(signal, name) for name in ("SIGINT", "SIGTERM", "SIGHUP") if hasattr(signal, name))
+
 
 class OutputFolder:
     """A folder that a command writes its files into, as a context manager.
@@ -62,9 +65,13 @@ class OutputFolder:
             raise OutputError(f"{self.directory}: is a file; --out takes a folder")
         if not self.overwrite:
             self.refuse_present()
-        with output_errors(self.directory):
-            self._make(self.directory)
-            self._aside = Path(tempfile.mkdtemp(prefix=ASIDE, dir=self.directory))
+        try:
+            with _interrupts_later(), output_errors(self.directory):
+                self._make(self.directory)
+                self._aside = Path(tempfile.mkdtemp(prefix=ASIDE, dir=self.directory))
+        except BaseException:
+            self._clean()
+            raise
         return self
 
     def __exit__(
@@ -75,7 +82,8 @@ class OutputFolder:
                 with _interrupts_later(), output_errors(self.directory):
                     self._publish()
         finally:
-            self._clean()
+            with _interrupts_later():
+                self._clean()
         if isinstance(error, OSError) and error.errno in _NO_ROOM:
             raise _output_error(error, self.directory) from error
 
@@ -157,18 +165,23 @@ def _output_error(error: OSError, place: Path) -> OutputError:
 
 @contextmanager
 def _interrupts_later() -> Iterator[None]:
-    """Hold Ctrl-C back while files are renamed, so that the set is never a mixture of two runs."""
+    """Hold requests to end back while files are renamed or removed, so that the set is never a mixture of two runs."""
     if threading.current_thread() is not threading.main_thread():
         yield
         return
     held: list[int] = []
-    before = signal.signal(signal.SIGINT, lambda number, frame: held.append(number))
+    before = {number: signal.getsignal(number) for number in _ENDING}
+    # one that is ignored stays so, and one that a program outside Python handles is its own affair
+    before = {number: handler for number, handler in before.items() if handler not in (signal.SIG_IGN, None)}
+    for number in before:
+        signal.signal(number, lambda number, frame: held.append(number))
     try:
         yield
     finally:
-        signal.signal(signal.SIGINT, before)
+        for number, handler in before.items():
+            signal.signal(number, handler)
     if held:
-        raise KeyboardInterrupt
+        signal.raise_signal(held[0])
 
 
 def safe_file_name(text: str, taken: Sequence[str] = ()) -> str:

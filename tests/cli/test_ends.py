@@ -1,7 +1,6 @@
 """How a run ends: exit codes, one message, nothing half written, whatever the terminal."""
 
 import os
-import signal
 import subprocess
 import sys
 
@@ -140,14 +139,16 @@ def test_no_room_for_the_result(starters):
 
 
 @pytest.mark.skipif(os.name != "posix", reason="signals")
-@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+@pytest.mark.parametrize("number", ["SIGINT", "SIGTERM", "SIGHUP"])
 def test_an_interrupt_leaves_nothing(starters, tmp_path, number):
     out = tmp_path / "out"
     code = f"""
 import os, signal
+signal.signal(signal.SIGINT, signal.default_int_handler)  # a job in the background ignores it
+signal.signal(signal.SIGHUP, signal.SIG_DFL)
 import earthwork.reporting.runner as runner
 def late(*a, **k):
-    os.kill(os.getpid(), {int(number)})
+    os.kill(os.getpid(), signal.{number})
     signal.pause()
 runner._write = late
 from earthwork_cli.main import run
@@ -158,6 +159,18 @@ run(["soil", {str(starters["metric"])!r}, "--out", {str(out)!r}])
     assert done.stderr.strip() == "interrupted; nothing was written"
     assert done.stdout == ""
     assert not out.exists()
+
+
+@pytest.mark.skipif(os.name != "posix", reason="signals")
+def test_a_run_that_is_to_outlive_its_terminal_does():
+    code = """
+import os, signal
+signal.signal(signal.SIGHUP, signal.SIG_IGN)  # as nohup does
+import earthwork_cli.main as main
+main.main = lambda arguments: os.kill(os.getpid(), signal.SIGHUP) or 7
+main.run([])
+"""
+    assert subprocess.run([sys.executable, "-c", code]).returncode == 7
 
 
 def test_a_folder_that_cannot_be_written(run, starters, tmp_path):

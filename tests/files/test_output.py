@@ -2,7 +2,9 @@
 
 import errno
 import os
+import shutil
 import signal
+import tempfile
 
 import pytest
 
@@ -97,13 +99,28 @@ def test_a_full_disk_is_one_message(tmp_path):
     assert not (tmp_path / "o").exists()
 
 
-def test_an_interrupt_waits_until_all_files_are_renamed(tmp_path, monkeypatch):
+@pytest.fixture
+def ends():
+    """Requests to end that reach the program, as the command line takes them."""
+
+    def end(number, frame):
+        raise KeyboardInterrupt
+
+    numbers = [n for n in ("SIGINT", "SIGTERM", "SIGHUP") if hasattr(signal, n)]
+    before = {n: signal.signal(getattr(signal, n), end) for n in numbers}
+    yield
+    for n, handler in before.items():
+        signal.signal(getattr(signal, n), handler)
+
+
+@pytest.mark.parametrize("number", ["SIGINT", "SIGTERM", "SIGHUP"])
+def test_an_interrupt_waits_until_all_files_are_renamed(tmp_path, monkeypatch, ends, number):
     replaced = []
     real = os.replace
 
     def slow(source, target):
         if not replaced:
-            signal.raise_signal(signal.SIGINT)
+            signal.raise_signal(getattr(signal, number))
         replaced.append(target)
         real(source, target)
 
@@ -111,6 +128,40 @@ def test_an_interrupt_waits_until_all_files_are_renamed(tmp_path, monkeypatch):
     with pytest.raises(KeyboardInterrupt, match=r"^$"), OutputFolder(tmp_path / "o") as folder:
         _write(folder, one="1", two="2")
     assert _names(tmp_path / "o") == ["one.csv", "two.csv"]
+
+
+@pytest.mark.parametrize("number", ["SIGINT", "SIGTERM", "SIGHUP"])
+def test_a_second_interrupt_waits_until_all_is_removed(tmp_path, monkeypatch, ends, number):
+    real = shutil.rmtree
+
+    def slow(place, **options):
+        signal.raise_signal(getattr(signal, number))
+        real(place, **options)
+
+    monkeypatch.setattr(shutil, "rmtree", slow)
+    with pytest.raises(KeyboardInterrupt, match=r"^$"):
+        _fail(tmp_path / "o", KeyboardInterrupt())
+    assert not (tmp_path / "o").exists()
+
+
+def test_what_is_ignored_stays_ignored(tmp_path, monkeypatch, ends):
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+    real = os.replace
+    monkeypatch.setattr(os, "replace", lambda a, b: (signal.raise_signal(signal.SIGINT), real(a, b)))
+    with OutputFolder(tmp_path) as folder:
+        _write(folder, one="1")
+    assert _names(tmp_path) == ["one.csv"]
+    assert signal.getsignal(signal.SIGINT) == signal.SIG_IGN
+
+
+def test_a_folder_that_was_made_in_vain_is_removed(tmp_path, monkeypatch):
+    def full(**options):
+        raise OSError(errno.ENOSPC, os.strerror(errno.ENOSPC))
+
+    monkeypatch.setattr(tempfile, "mkdtemp", full)
+    with pytest.raises(OutputError, match="the disk is full"), OutputFolder(tmp_path / "a" / "b"):
+        pass
+    assert _names(tmp_path) == []
 
 
 @pytest.mark.parametrize(
