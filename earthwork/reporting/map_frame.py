@@ -138,9 +138,10 @@ class Frame:
     def label_zones(self, axes: Axes, zones: Sequence[tuple[str, Any]], taken: list[Any]) -> None:
         """Write each zone's name inside it, the largest first, clear of the boxes taken (pixels).
 
-        A long name is shortened until it fits into its zone; one that finds no room is left out, for the tables have it.
+        A long name is shortened until it fits into its zone; one that finds no room is left out, for the tables have it,
+        and so is a zone without ground.
         """
-        for name, shape in sorted(zones, key=lambda z: -z[1].area):
+        for name, shape in sorted((z for z in zones if not z[1].is_empty), key=lambda z: -z[1].area):
             places = places_in(shape)
             for k, text in enumerate(shorter(name)):
                 label = axes.text(0.0, 0.0, text, **_ZONE_LABEL, path_effects=halo(2.6))

@@ -1,11 +1,12 @@
 """Surfaces and areas that do not lie on one grid, in one CRS, or in one format; names and paths of all kinds."""
 
+import geopandas
 import numpy as np
 import pyproj
 import pytest
 import shapely
 
-from tests.outside.conftest import write_polygons, write_raster, write_site
+from tests.outside.conftest import run_process, write_polygons, write_raster, write_site
 
 UTM = "EPSG:26914"
 CORNER = (512_000.0, 4_461_300.0)
@@ -124,3 +125,24 @@ def test_names_of_all_kinds_come_out_as_they_went_in(tmp_path, earthwork):
     assert "\n=1+1" not in table
     assert ",=1+1" not in table
     assert earthwork("volumes", folder / "site.toml").code == 0
+
+
+def test_a_zone_outside_the_limits_is_written_without_ground(tmp_path):
+    """One of two zones lies beyond the limits: its figures are zero, and the run ends well, map and shapes included."""
+    write_raster(tmp_path / "e.tif", np.zeros((40, 40)), crs=UTM, corner=CORNER)
+    write_raster(tmp_path / "f.tif", np.full((40, 40), 2.0), crs=UTM, corner=CORNER)
+    west, north = CORNER
+    write_polygons(tmp_path / "limits.gpkg", [shapely.box(west + 5, north - 35, west + 35, north - 5)], crs=UTM)
+    inside = shapely.box(west + 10, north - 20, west + 20, north - 10)
+    beyond = shapely.box(west + 1, north - 3, west + 2, north - 2)
+    write_polygons(tmp_path / "zones.gpkg", [inside, beyond], ["yard", "lane"], crs=UTM)
+    arguments = ["--existing", "e.tif", "--finished", "f.tif", "--limits", "limits.gpkg", "--zones", "zones.gpkg"]
+    ran = run_process("volumes", *arguments, "--zone-name", "name", "--out", "out", "--json", cwd=tmp_path)
+    scale = ran.result["grid"]["ground_scale"]
+    areas = {zone["zone"]: (zone["area_m2"], zone["fill_m3"]) for zone in ran.result["zones"]}
+    assert areas["yard"] == pytest.approx((100 * scale**2, 200 * scale**2), rel=1e-9)
+    assert areas["lane"] == (0, 0)
+    assert "zone-without-ground" in ran.warning_codes
+    written = geopandas.read_file(tmp_path / "out" / "volumes_zones.gpkg")
+    assert list(written.geometry.is_empty) == [False, True]
+    assert (tmp_path / "out" / "volumes_map.png").stat().st_size > 1000

@@ -148,3 +148,15 @@ def test_a_curve_with_and_without_a_balance(tmp_path, shift):
 def test_round_steps_and_short_names():
     assert [round_step(s, 4) for s in (0.9, 3.0, 8.0, 50.0)] == [0.2, 1.0, 2.0, 10.0]
     assert wrapped("a" * 100, 10, 2) == "aaaaaaaaaa\naaaaaaaaaa…"
+
+
+def test_a_zone_without_ground_has_no_name_on_the_map(tmp_path):
+    grid = Grid(60, 90, 500_000.0, 4_400_000.0, 2.0, 2.0)
+    zones = [("beyond", shapely.Polygon()), ("many", shapely.MultiPolygon()), ("here", shapely.box(*grid.bounds))]
+    frame = Frame.around(grid, METRIC)
+    axes = frame.map_axes(new_figure(*frame.size))
+    frame.label_zones(axes, zones, [])
+    assert [text.get_text() for text in axes.texts] == ["here"]
+    picture = DepthMap(np.full((60, 90), 1.5), grid)
+    draw_cut_fill_map(picture, tmp_path / "map.png", units=METRIC, title="Mill", zones=zones)
+    assert Image.open(tmp_path / "map.png").size[0] > 500

@@ -170,6 +170,8 @@ def outlines_of(parts: Parts) -> list[Outline]:
     units = parts.site.units
     zones = {zone.zone: zone for zone in parts.volumes.zones}
     for name, shape in zip(ground.zone_names, ground.zone_shapes, strict=True):
+        if shape.is_empty:  # no ground of the site lies in it
+            continue
         volumes = zones[name]
         note = f"cut {show(volumes.cut_m3, 'soil_volume', units)}, fill {show(volumes.fill_m3, 'soil_volume', units)}"
         found.append(Outline("zones", name, shape, note))
