@@ -137,7 +137,8 @@ def _read(
         raise FileError(f"{where}: {passed}; it must hold at least one. Check the file, its layer and the filter")
     attributes = [dict(zip(fields, row, strict=True)) for row in zip(*columns, strict=True)] or [{}] * len(shapes)
     names = [_name(attributes[i], name, int(fids[i]), where) for i in range(len(shapes))]
-    shapes = shapely.from_wkb(shapes)
+    with np.errstate(invalid="ignore"):  # a coordinate that is no number is refused below, with its feature
+        shapes = shapely.from_wkb(shapes)
     kept = _kept(shapes, names, where, kinds, kind, warnings)
     if not kept:
         raise FileError(f"{where}: no feature has a shape; it must hold at least one")

@@ -25,6 +25,12 @@ _EQUALLY_FINE = 0.01
 #: A cell size that is this close to a whole multiple (or part) of the raster's is that multiple.
 _WHOLE = 1e-6
 
+#: Least side of a stated cell, as a part of the raster's: finer ones hold no more ground, and run for days.
+_LEAST_CELL = 0.01
+
+#: Most cells of a grid that no raster gives: about a day's work.
+_MOST_CELLS = 1e11
+
 
 def leading_raster(found: Sequence[Candidate]) -> RasterCandidate | None:
     """The raster that gives the grid: the finer, or the first when equally fine; None without rasters."""
@@ -49,6 +55,9 @@ def lattice_of(lead: RasterCandidate, site: Site) -> Grid:
     """The whole grid of the leading raster, with the cell that the site asks for.
 
     A raster of nodes gives the patches between its nodes, so the grid ends at the outermost ones.
+
+    Raises:
+        GroundError: the cell is larger than the site, or far finer than the raster; a single row of nodes.
     """
     info = lead.info
     crs = horizontal(lead.crs) if lead.crs is not None else None
@@ -61,6 +70,12 @@ def lattice_of(lead: RasterCandidate, site: Site) -> Grid:
     if site.model.ground.cell is not None:
         side = site.model.ground.cell / unit
         cell_east, cell_north = _whole(side, info.cell_east), _whole(side, info.cell_north)
+        finest = min(info.cell_east, info.cell_north)
+        if side < _LEAST_CELL * (1.0 - _WHOLE) * finest:
+            raise GroundError(
+                f"ground.cell is {side:g} CRS units; it must be at least a hundredth of the {finest:g} of {lead.name}, "
+                "since smaller cells hold no more ground. Give a larger cell, or leave it out"
+            )
         tall, wide = rows * info.cell_north, columns * info.cell_east
         rows, columns = math.floor(tall / cell_north + _WHOLE), math.floor(wide / cell_east + _WHOLE)
         if rows < 1 or columns < 1:
@@ -85,7 +100,7 @@ def grid_of_limits(site: Site, crs: CRS | None, area: Any) -> Grid:
     """A grid for surfaces that have no extent: the box of the limits, in cells that the site states.
 
     Raises:
-        GroundError: no limits or no cell is given.
+        GroundError: no limits or no cell is given, or the cell makes more cells than can be counted.
     """
     side = site.model.ground.cell
     if area is None or side is None:
@@ -101,6 +116,11 @@ def grid_of_limits(site: Site, crs: CRS | None, area: Any) -> Grid:
     cell = side / unit
     rows = max(1, math.ceil((north - south) / cell - _WHOLE))
     columns = max(1, math.ceil((east - west) / cell - _WHOLE))
+    if rows * columns > _MOST_CELLS:
+        raise GroundError(
+            f"ground.cell is {cell:g} CRS units; the box around ground.limits would have {rows:,} × {columns:,} cells of "
+            f"it, and it must have at most {_MOST_CELLS:.0e}. Give a larger cell"
+        )
     return Grid(rows, columns, west, north, cell, cell, unit, 1.0, flat)
 
 

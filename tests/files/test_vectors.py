@@ -352,3 +352,12 @@ def test_the_beach_zone_from_the_neighbouring_zone():
     path = DATA / "pair_beach_leo/shoremasks.gpkg"
     (leo,) = polygons(path, crs=CRS("EPSG:32755"), name="location", where="location = 'leo'")
     assert leo.polygon.area == pytest.approx(139_015.067, rel=3e-6)
+
+
+def test_a_coordinate_that_is_no_number_is_one_message(tmp_path, recwarn):
+    corners = ", ".join(f"[{e}, {n}]" for e, n in ((E, N), ("NaN", N), (E, N + 9), (E, N)))
+    shape = f'{{"type": "Polygon", "coordinates": [[{corners}]]}}'
+    (tmp_path / "plan.geojson").write_text(f'{{"type": "Feature", "properties": {{}}, "geometry": {shape}}}')
+    with pytest.raises(GroundError, match="Invalid Coordinate"):
+        polygons(tmp_path / "plan.geojson")
+    assert [str(w.message) for w in recwarn if issubclass(w.category, RuntimeWarning)] == []

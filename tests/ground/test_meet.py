@@ -4,8 +4,10 @@ from __future__ import annotations
 
 from pathlib import Path
 
+import geopandas
 import numpy as np
 import pytest
+import shapely
 from pyproj import Transformer
 from rasterio.transform import Affine
 
@@ -127,6 +129,26 @@ def test_a_cell_larger_than_the_site(tmp_path):
         write_raster(tmp_path / f"{name}.tif", FLAT)
     with pytest.raises(GroundError, match=r"ground\.cell is 5 CRS units; it must be at most the site's 6 × 4"):
         ground_of(tmp_path, cell=5.0)
+
+
+def test_a_cell_far_finer_than_the_raster_is_refused(tmp_path):
+    """A slip of the unit, such as millimetres for metres, would otherwise run for days."""
+    write_raster(tmp_path / "existing.tif", FLAT, cell=1.0)
+    write_raster(tmp_path / "finished.tif", FLAT, cell=1.0)
+    assert ground_of(tmp_path, cell=0.01).grid.columns == 500  # 5 m between the outermost samples
+    with pytest.raises(
+        GroundError, match=r"ground\.cell is 0\.001 CRS units; it must be at least a hundredth of the 1 "
+    ):
+        ground_of(tmp_path, cell=0.001)
+
+
+def test_more_cells_than_can_be_counted_are_refused(tmp_path):
+    box = shapely.box(WEST, NORTH - 1000, WEST + 2000, NORTH)
+    geopandas.GeoDataFrame(geometry=[box], crs="EPSG:32611").to_file(tmp_path / "limits.gpkg")
+    more = {"existing": {"level": 3.0}, "finished": {"level": 4.0}, "limits": "limits.gpkg", "crs": "EPSG:32611"}
+    assert ground_of(tmp_path, cell=1.0, **more).grid.rows == 1000
+    with pytest.raises(GroundError, match=r"would have 1,000,000 × 2,000,000 cells.*at most 1e\+11"):
+        ground_of(tmp_path, cell=0.001, **more)
 
 
 # --- nodes ---------------------------------------------------------------------------------------------------------
