@@ -16,6 +16,7 @@ from earthwork.files.table_reader import Row, SourceTable, read_source_table
 
 _LISTED = 12
 _HOUR = datetime.timedelta(hours=1)
+_FAR_FROM_SUN = 3 * _HOUR  #: no legal time is further from the sun's
 
 
 @dataclass(frozen=True)
@@ -23,7 +24,7 @@ class WeatherTable:
     """Weather of consecutive days or hours, SI; arrays of shape (n,).
 
     ``times`` are days (as dates) or the starts of hours (in UTC). Humidity is the mean [%], or the highest and lowest
-    of the day. Radiation is that of the day or the hour [MJ/m²], rain likewise [mm].
+    of the day. Radiation is that of the day or the hour [MJ/m²], rain likewise [mm]. ``clock`` is the local time of hours.
     """
 
     path: Path
@@ -35,6 +36,7 @@ class WeatherTable:
     wind_m_s: np.ndarray
     solar_mj_m2: np.ndarray
     rain_mm: np.ndarray
+    clock: datetime.tzinfo = datetime.UTC
 
 
 @dataclass(frozen=True)
@@ -81,7 +83,8 @@ def read_weather(path: Path, *, zone: str | None = None, offset_hours: float = 0
     Args:
         path: columns as in docs/method-water.md.
         zone: IANA zone of clock times that carry no offset of their own; the clock may change.
-        offset_hours: their hours from UTC where no zone is given.
+        offset_hours: hours from UTC where no zone is given, by the sun: of clock times without an offset, and of the place
+            where the file's own offset is no local time there (such as a file in UTC).
 
     Raises:
         FileError: every fault with row and column; gaps and repeats with their times.
@@ -96,7 +99,8 @@ def read_weather(path: Path, *, zone: str | None = None, offset_hours: float = 0
     clock = [reader.when(row, "time" if hourly else "date", _time if hourly else _date) for row in table.rows]
     reader.needs(values, hourly)
     reader.finish()
-    times = _consecutive_hours(path, clock, zone, offset_hours) if hourly else _consecutive_days(path, clock)
+    local = _local(clock, zone, offset_hours) if hourly else datetime.UTC
+    times = _consecutive_hours(path, clock, local) if hourly else _consecutive_days(path, clock)
     there = {name: value for name, value in values.items() if value is not None}
     mean = there.get("temperature")
     highest, lowest = there.get("highest", mean), there.get("lowest", mean)
@@ -115,6 +119,7 @@ def read_weather(path: Path, *, zone: str | None = None, offset_hours: float = 0
         wind_m_s=there["wind"],
         solar_mj_m2=there["solar"],
         rain_mm=there.get("rain", np.zeros(len(times))),
+        clock=local,
     )
 
 
@@ -221,9 +226,17 @@ def _consecutive_days(path: Path, clock: list) -> tuple[datetime.date, ...]:
     return tuple(clock)
 
 
-def _consecutive_hours(path: Path, clock: list, zone: str | None, offset_hours: float) -> tuple[datetime.datetime, ...]:
+def _local(clock: list, zone: str | None, offset_hours: float) -> datetime.tzinfo:
+    """The local time of a file of hours: the zone, else the offset that its times carry, else that by the sun."""
+    if zone:
+        return zoneinfo.ZoneInfo(zone)
+    by_sun = datetime.timedelta(hours=offset_hours)
+    own = clock[0].utcoffset() if clock else None
+    return datetime.timezone(own if own is not None and abs(own - by_sun) <= _FAR_FROM_SUN else by_sun)
+
+
+def _consecutive_hours(path: Path, clock: list, local: datetime.tzinfo) -> tuple[datetime.datetime, ...]:
     """Starts of the hours in UTC, checked to follow each other; a clock that is set back may repeat one."""
-    local = zoneinfo.ZoneInfo(zone) if zone else datetime.timezone(datetime.timedelta(hours=offset_hours))
     times: list[datetime.datetime] = []
     for moment in clock:
         at = _in_utc(moment, local)

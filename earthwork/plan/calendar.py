@@ -37,10 +37,11 @@ class WorkCalendar:
     rain: frozenset[datetime.date | int] = frozenset()
     shift_start: datetime.time = datetime.time(7)
     time_zone: str | None = None
+    local_time: datetime.tzinfo = datetime.UTC  #: of the clock without a time zone, where hours of weather have one
 
     @cached_property
     def _zone(self) -> datetime.tzinfo:
-        return zoneinfo.ZoneInfo(self.time_zone) if self.time_zone else datetime.UTC
+        return zoneinfo.ZoneInfo(self.time_zone) if self.time_zone else self.local_time
 
     def day(self, number: int) -> CalendarDay:
         """The day of a number, from 1.

@@ -92,8 +92,20 @@ class DailyWeather:
 
     @property
     def first_day(self) -> datetime.date:
-        first = self.table.times[0]
-        return first.date() if isinstance(first, datetime.datetime) else first
+        return self._date(self.table.times[0])
+
+    @property
+    def last_day(self) -> datetime.date:
+        return self._date(self.table.times[-1])
+
+    def _date(self, time: datetime.date) -> datetime.date:
+        return time.astimezone(self.table.clock).date() if isinstance(time, datetime.datetime) else time
+
+    def first_shift(self, calendar: WorkCalendar) -> datetime.date:
+        """The first date whose shift begins with weather."""
+        first, date = self.table.times[0], self.first_day
+        late = isinstance(first, datetime.datetime) and calendar.shift_begins(date) < first
+        return date + datetime.timedelta(days=1) if late else date
 
     def open_ground(self, calendar: WorkCalendar, day: CalendarDay) -> OpenGround | None:
         """Evaporation of a day of the calendar; None after the end of the weather.
@@ -128,8 +140,10 @@ class DailyWeather:
 
     def _not_before(self, day: CalendarDay, before: bool) -> None:
         if before:
+            first = self.table.times[0]
+            at = f" at {first.astimezone(self.table.clock):%H:%M}" if isinstance(first, datetime.datetime) else ""
             raise PlanError(
-                f"{self.table.path}: the weather starts on {self.first_day}, the work on {day.date}; "
+                f"{self.table.path}: the weather starts on {self.first_day}{at}, the work on {day.date}; "
                 "give weather from the first day on, or a later calendar.start"
             )
 
@@ -148,11 +162,11 @@ class DailyWeather:
         whole = len(values) // 24 * 24
         return values[:whole].reshape(-1, 24).sum(axis=1) if whole else np.array([values.sum()])
 
-    def rain_days(self, least_mm: float, days_after: int, zone: datetime.tzinfo) -> frozenset[datetime.date]:
+    def rain_days(self, least_mm: float, days_after: int) -> frozenset[datetime.date]:
         """Dates with at least so much rain, and so many days after each."""
         rain: dict[datetime.date, float] = {}
         for time, depth in zip(self.table.times, self.table.rain_mm, strict=True):
-            date = time.astimezone(zone).date() if isinstance(time, datetime.datetime) else time
+            date = self._date(time)
             rain[date] = rain.get(date, 0.0) + float(depth)
         wet = [date for date, depth in rain.items() if depth >= least_mm]
         return frozenset(date + datetime.timedelta(days=k) for date in wet for k in range(days_after + 1))

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import datetime
-import zoneinfo
 from dataclasses import dataclass
 
 from earthwork.errors import PlanError, Warning
@@ -54,12 +53,10 @@ class WorkDays:
         last = self.calendar.day(days)
         if self.weather.open_ground(self.calendar, last) is not None:
             return None
-        end = self.weather.table.times[-1]
-        end = end.date() if isinstance(end, datetime.datetime) else end
         return Warning(
             "weather-ends",
-            f"{self.weather.table.path.name} ends on {end} and the work on {last.date}: days after it take the driest "
-            f"week of the file, {self.mean_mm_day:.1f} mm a day from open ground",
+            f"{self.weather.table.path.name} ends on {self.weather.last_day} and the work on {last.date}: days after it "
+            f"take the driest week of the file, {self.mean_mm_day:.1f} mm a day from open ground",
         )
 
 
@@ -79,10 +76,18 @@ def work_days(site: Site, grid: Grid, elevation_m: float) -> WorkDays:
     weather = _weather(site, grid, elevation_m) if model.weather else None
     start = model.calendar.start
     if start is None and weather is not None:
-        start = weather.first_day
+        start = weather.first_shift(_calendar(site, None, weather))
         warnings.append(
             Warning(
                 "start-assumed", f"calendar.start is not given: work starts on {start}, the first day of the weather"
+            )
+        )
+    if weather is not None and weather.table.hourly and model.calendar.time_zone is None:
+        warnings.append(
+            Warning(
+                "time-zone-assumed",
+                f"calendar.time_zone is not given: the clock of the work, and of hours of {weather.table.path.name} that "
+                f"carry no offset, is {weather.table.clock} all year",
             )
         )
     if weather is None and given is None and model.water is not None:
@@ -106,8 +111,7 @@ def _calendar(site: Site, start: datetime.date | None, weather: DailyWeather | N
     given, rules = site.model.calendar, site.model.weather
     rain = frozenset(given.rain_days)
     if weather is not None and rules is not None and rules.rain_day is not None:
-        zone = zoneinfo.ZoneInfo(given.time_zone) if given.time_zone else datetime.UTC
-        rain |= weather.rain_days(rules.rain_day, rules.days_after_rain, zone)
+        rain |= weather.rain_days(rules.rain_day, rules.days_after_rain)
     return WorkCalendar(
         start=start,
         working_days=given.working_days,
@@ -115,6 +119,7 @@ def _calendar(site: Site, start: datetime.date | None, weather: DailyWeather | N
         rain=rain,
         shift_start=given.shift_start,
         time_zone=given.time_zone,
+        local_time=weather.table.clock if weather is not None else datetime.UTC,
     )
 
 
