@@ -73,6 +73,9 @@ def _one_surface(value: Any) -> Any:
         return {"file": value}
     if not isinstance(value, dict | Section):
         raise ValueError("it must be a file name, or a table with file, level or plane")
+    given = [key for key in ("file", "level", "plane") if isinstance(value, dict) and key in value]
+    if len(given) > 1:
+        raise ValueError(f"give one of file, level and plane, not {' and '.join(given)}")
     return value
 
 
@@ -95,7 +98,12 @@ class AreaSpec(Section):
 
 
 def _area_table(value: Any) -> Any:
-    return {"file": value} if isinstance(value, str) else value
+    """Turn a file name into a table, and refuse at once what cannot be an area."""
+    if isinstance(value, str):
+        return {"file": value}
+    if not isinstance(value, dict | Section):
+        raise ValueError("it must be a file name, or a table with file")
+    return value
 
 
 Area = Annotated[AreaSpec, BeforeValidator(_area_table), OrFileName()]

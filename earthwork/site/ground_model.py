@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from itertools import pairwise
-from typing import Literal
+from typing import Annotated, Any, Literal
 
-from pydantic import Field, model_validator
+from pydantic import BeforeValidator, Field, model_validator
 
 from earthwork.site.base import Area, Section, SurfaceSpec
 from earthwork.site.values import (
@@ -47,6 +48,17 @@ class SurveyError(Section):
     bias: Distance = Field(default=0.0, description="common to the whole survey")
 
 
+def _ground_scale(value: Any) -> Any:
+    """Refuse in one go what is neither of the two that it may be."""
+    number = isinstance(value, int | float) and not isinstance(value, bool)
+    if value != "auto" and not (number and 0 < value < math.inf):
+        raise ValueError('it must be a number over 0, or "auto"')
+    return value
+
+
+GroundScale = Annotated[PositiveNumber | Literal["auto"], BeforeValidator(_ground_scale)]
+
+
 class Ground(Section):
     """The two surfaces and the ground between them that counts."""
 
@@ -69,7 +81,7 @@ class Ground(Section):
     survey_error: SurveyError | None = Field(
         default=None, description="error of the survey, which gives the error of the volumes"
     )
-    ground_scale: PositiveNumber | Literal["auto"] = Field(
+    ground_scale: GroundScale = Field(
         default="auto", description='ground length / map length; "auto": from the CRS and the mean elevation'
     )
 
