@@ -39,9 +39,23 @@ class LiftShapes:
 
     def widest_m(self, area: FillArea, bench: Bench) -> float:
         """Diameter of the largest circle in a lift [m], to a cell of the overview."""
-        from scipy import ndimage
+        return widest_cells(self.mask(area, bench)) * self.cell_m
 
-        mask = np.pad(self.mask(area, bench), 1)
-        if not mask.any():
-            return 0.0
-        return float((2.0 * ndimage.distance_transform_edt(mask).max() - 1.0) * self.cell_m)
+
+def widest_cells(mask: np.ndarray) -> float:
+    """Diameter of the largest circle about a middle or a corner of cells that lies in a shape of cells [cells].
+
+    A strip of an odd number of cells is widest about middles, one of an even number about corners.
+
+    >>> [widest_cells(np.ones((k, 20), bool)) for k in (1, 2, 3, 10)]
+    [1.0, 2.0, 3.0, 10.0]
+    """
+    from scipy import ndimage
+
+    cells = np.pad(mask, 1)
+    if not cells.any():
+        return 0.0
+    corners = cells[:-1, :-1] & cells[1:, :-1] & cells[:-1, 1:] & cells[1:, 1:]
+    about_middles = 2.0 * ndimage.distance_transform_edt(cells).max() - 1.0
+    about_corners = 2.0 * ndimage.distance_transform_edt(corners).max() if corners.any() else 0.0
+    return float(max(about_middles, about_corners))

@@ -12,6 +12,7 @@ from hypothesis import strategies as st
 from earthwork.errors import PlanError, SiteFileError
 from earthwork.plan.calendar import WorkCalendar
 from earthwork.plan.lift_materials import fitted_shares
+from earthwork.plan.lift_shapes import widest_cells
 from earthwork.plan.lifts import lifts
 from earthwork.plan.schedule import placing_order, schedule
 from earthwork.site import Site
@@ -237,3 +238,18 @@ def test_bank_tests_without_a_material_are_taken_by_their_place(tmp_path):
     )
     changes = {"material.silt.bank": {"tests": "bank.csv"}}
     assert lifts(site(tmp_path, changes)).to_dict()["total"]["bank_m3"] == pytest.approx(6840.0)
+
+
+@pytest.mark.parametrize("rows", [1, 2, 3, 8])
+def test_a_strip_is_as_wide_as_its_cells(rows):
+    strip = np.zeros((12, 30), bool)
+    strip[2 : 2 + rows, 4:28] = True
+    assert widest_cells(strip) == rows
+    assert widest_cells(strip.T) == rows
+    assert widest_cells(np.zeros((4, 4), bool)) == 0.0
+
+
+def test_a_disc_is_as_wide_as_it_is_drawn():
+    y, x = np.mgrid[0:81, 0:81]
+    assert widest_cells(np.hypot(x - 40, y - 40) < 20.5) == pytest.approx(41, abs=1.0)
+    assert widest_cells(np.hypot(x - 40.5, y - 40.5) < 20) == pytest.approx(40, abs=1.5)  # its ragged edge lies inside
