@@ -8,7 +8,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from earthwork.errors import PlanError
-from earthwork.quantities.volumes import AreaVolumes
+from earthwork.quantities.area_volumes import AreaVolumes
 from earthwork.site.model import SiteModel
 from earthwork.soils.card import SoilCard, State
 

@@ -12,10 +12,11 @@ from earthwork.plan.account import Account, MaterialAccount, account, unlayered_
 from earthwork.plan.grade_shift import Root, ShiftTally, find_shift, trial_shifts
 from earthwork.plan.keys import KeysResult, KeysTally, keys_result, with_keys
 from earthwork.plan.movements import LedgerRow, Movement, Settlement, settle
+from earthwork.quantities.area_volumes import AreaVolumes, area_volumes
 from earthwork.quantities.engine import Progress, Tally, walk
 from earthwork.quantities.placed_tests import site_cards
 from earthwork.quantities.site_ground import SiteGround, open_site
-from earthwork.quantities.volumes import AreaVolumes, VolumesResult, VolumesTally, area_volumes, volumes_result
+from earthwork.quantities.volumes import VolumesResult, VolumesTally, volumes_result
 from earthwork.results import Result
 from earthwork.site import Site, load_site
 from earthwork.site.model import SiteModel

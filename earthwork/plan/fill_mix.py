@@ -9,7 +9,7 @@ from dataclasses import dataclass
 from earthwork.plan.account import placed_density_kg_m3
 from earthwork.plan.moisture import WaterNeed, water_need
 from earthwork.plan.movements import LedgerRow
-from earthwork.quantities.volumes import AreaVolumes
+from earthwork.quantities.area_volumes import AreaVolumes
 from earthwork.site.model import HaulTruck
 from earthwork.soils.card import SoilCard
 

@@ -19,9 +19,9 @@ from earthwork.ground.grid import Grid, Window
 from earthwork.quantities.tile import Tile
 
 if TYPE_CHECKING:
+    from earthwork.quantities.area_volumes import AreaVolumes
     from earthwork.quantities.pad_ground import PadPlace
     from earthwork.quantities.site_ground import SiteGround
-    from earthwork.quantities.volumes import AreaVolumes
     from earthwork.site.model import Keys
     from earthwork.soils.card import SoilCard
     from earthwork.units import UnitSystem

@@ -12,7 +12,7 @@ from typing import Any
 
 from earthwork.errors import PlanError
 from earthwork.plan.account import Account, MaterialAccount, placed_density_kg_m3
-from earthwork.quantities.volumes import AreaVolumes
+from earthwork.quantities.area_volumes import AreaVolumes
 from earthwork.site.model import HaulTruck, SiteModel
 from earthwork.soils.card import SoilCard
 

@@ -13,9 +13,10 @@ from earthwork.errors import PlanError, Warning
 from earthwork.ground import areas
 from earthwork.plan.grade_solver import Balancing, Costs, Grades, PadCurve, StepLimit, cost_of, solve_grades
 from earthwork.plan.pad_looks import PadLooks
+from earthwork.quantities.area_volumes import AreaVolumes, area_volumes
 from earthwork.quantities.engine import walk
 from earthwork.quantities.site_ground import SiteGround
-from earthwork.quantities.volumes import AreaVolumes, VolumesTally, area_volumes
+from earthwork.quantities.volumes import VolumesTally
 from earthwork.site import Site
 from earthwork.soils.card import SoilCard
 

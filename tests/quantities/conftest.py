@@ -10,9 +10,10 @@ import pytest
 
 from earthwork.ground.grid import Grid
 from earthwork.ground.stack import Stack
+from earthwork.quantities.area_volumes import area_volumes
 from earthwork.quantities.coverage import area_share
 from earthwork.quantities.engine import walk
-from earthwork.quantities.volumes import VolumesTally, area_volumes
+from earthwork.quantities.volumes import VolumesTally
 
 
 @dataclass(frozen=True, eq=False)

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
-from earthwork.quantities.volumes import AreaVolumes
+from earthwork.quantities.area_volumes import AreaVolumes
 from earthwork.reporting.report.parts import Parts
 from earthwork.soils.card import SoilCard
 
