@@ -53,7 +53,7 @@ class ShiftTally:
         for shift, sums in self.sums.items():
             moved = part.shifted(shift)
             sums.values += rest
-            sums.add(moved, share)
+            sums.add(moved, share, fixed=before)
 
     def merge(self, other: ShiftTally) -> None:
         for shift, sums in other.sums.items():

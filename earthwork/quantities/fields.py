@@ -11,6 +11,7 @@ import numpy as np
 from numba import njit
 
 from earthwork.ground.stack import Stack
+from earthwork.quantities.by_stratum import split_by_stratum
 from earthwork.quantities.split import CUT, DISTURBED, split_part
 from earthwork.quantities.tile import Tile
 
@@ -38,7 +39,7 @@ def field_names(stack: Stack) -> list[str]:
 def extra_fields(tile: Tile) -> dict[str, np.ndarray]:
     """Fields beside those of cut and fill by name, each (height, width); worked out once however many tallies ask.
 
-    All of :func:`field_names` but the first eight; and but ``cut:0`` of a single stratum, which is the cut.
+    All of :func:`field_names` but the first eight and the cut by stratum.
     """
     if tile.extras is None:
         tile.extras = _extra_fields(tile)
@@ -60,8 +61,6 @@ def _extra_fields(tile: Tile) -> dict[str, np.ndarray]:
         at["scarify"] = np.where(valid, _scarified(tile), 0.0)
         for k in range(len(stack.strata)):
             at[f"scarify:{k}"] = at["scarify"] * (tile.stratum_at_bottom == k)
-    if len(stack.strata) > 1:
-        at.update({f"cut:{k}": part for k, part in enumerate(tile.cut_by_stratum)})
     _bands(tile, at, valid)
     if stack.moving:
         at["move"] = valid * tile.core("move")
@@ -71,8 +70,9 @@ def _extra_fields(tile: Tile) -> dict[str, np.ndarray]:
 def named_fields(tile: Tile) -> dict[str, np.ndarray]:
     """The fields that are placed, by name, each (height, width): cut, fill, and those of the layers."""
     fields = {"cut": tile.cut, "fill": tile.fill, **extra_fields(tile)}
-    if len(tile.stack.strata) == 1:
-        fields["cut:0"] = tile.cut
+    strata = len(tile.stack.strata)
+    cut = [tile.cut] if strata == 1 else tile.cut_by_stratum if strata else []
+    fields.update({f"cut:{k}": part for k, part in enumerate(cut)})
     return fields
 
 
@@ -128,34 +128,48 @@ class Sums:
         """Nothing counted."""
         return cls(np.zeros(len(field_names(stack))))
 
-    def add(self, tile: Tile, share: np.ndarray | None = None, row: int = 0, column: int = 0) -> None:
+    def add(
+        self, tile: Tile, share: np.ndarray | None = None, row: int = 0, column: int = 0, *, fixed: Sums | None = None
+    ) -> None:
         """Count the part of a tile that lies inside an area.
 
         Args:
             share: of each cell inside the area, starting at (row, column) of the tile; None: all of the tile.
+            fixed: sums of the same part before its grade was shifted: those of layers that lie as they did.
         """
+        stack = tile.stack
+        cut = None
+        if len(stack.strata) > 1:
+            arrays = tile.arrays
+            layers = (tile.depth, tile.stratum_bottoms, stack.stripped(arrays), stack.subgrade(arrays))
+            cut, all_sums, highest, lowest = split_by_stratum(*layers, share, row, column)
+            if share is None:
+                tile.depth_sums = (all_sums, highest, lowest)
         # The kernels' order is that of the base fields.
         base = np.zeros(len(_BASE))
-        names = field_names(tile.stack)[len(_BASE) :]
-        # first, for some need the cells one by one, and sums come with these
-        extras = extra_fields(tile) if names else {}
         if share is None:
             sums, high, low = tile.depth_sums
             base += sums
-            if not tile.plainly_disturbed:
+            if fixed is not None:
+                base[DISTURBED] = fixed.values[DISTURBED]
+            elif not tile.plainly_disturbed:
                 base[DISTURBED] = float(np.where(np.isnan(tile.depth[1:-1, 1:-1]), 0.0, tile.disturbed).sum())
         else:
             disturbed = None if tile.plainly_disturbed else tile.disturbed
             high, low = split_part(tile.depth, share, row, column, disturbed, base)
         self._widen(high, low)
         self.values[: len(_BASE)] += base
+        names = field_names(stack)[len(_BASE) :]
         for i, name in enumerate(names, len(_BASE)):
-            if name not in extras:
-                self.values[i] += base[CUT]  # all cut is of the single stratum
+            kind, _, stratum = name.partition(":")
+            if kind == "cut":
+                self.values[i] += base[CUT] if cut is None else cut[int(stratum)]
+            elif fixed is not None and name.startswith(("strip", "section", "move")):
+                self.values[i] += fixed.values[i]
             elif share is None:
-                self.values[i] += extras[name].sum()
+                self.values[i] += extra_fields(tile)[name].sum()
             else:
-                self.values[i] += _add_weighted(extras[name], share, row, column)
+                self.values[i] += _add_weighted(extra_fields(tile)[name], share, row, column)
 
     def merge(self, other: Sums) -> None:
         self.values += other.values

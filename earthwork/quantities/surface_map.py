@@ -112,7 +112,7 @@ class SurfaceMapTally:
 
     def _stratum(self, tile: Tile, weight: np.ndarray) -> np.ndarray:
         """Index of the stratum in the cut face or under the fill, −1 where nothing counts."""
-        bottoms = tile.stratum_bottoms()
+        bottoms = tile.stratum_bottoms
         lower = np.minimum(tile.stripped, tile.subgrade)
         found = (lower[None] < bottoms).sum(axis=0) if len(bottoms) else np.zeros(lower.shape, dtype=int)
         return np.where(weight > 0, found, -1)

@@ -5,10 +5,10 @@ from __future__ import annotations
 from functools import cached_property
 
 import numpy as np
-from numba import njit
 
 from earthwork.ground.grid import Window
 from earthwork.ground.stack import DISTURBED_OVER_M, Arrays, Stack
+from earthwork.quantities.by_stratum import by_stratum
 from earthwork.quantities.split import split
 
 
@@ -128,15 +128,18 @@ class Tile:
         return (np.abs(self.depth[1:-1, 1:-1]) > DISTURBED_OVER_M).astype(np.float64)
 
     def part(self, row: int, column: int, height: int, width: int) -> Tile:
-        """A part of the tile, with its own rim; row and column count from the tile's first cell."""
+        """A part of the tile, with its own rim, of its own memory; row and column count from the tile's first cell."""
         window = Window(self.window.row + row, self.window.column + column, height, width)
         rows, columns = slice(row, row + height + 2), slice(column, column + width + 2)
-        return Tile(self.stack, window, {name: a[rows, columns] for name, a in self.arrays.items()})
+        return Tile(self.stack, window, {name: a[rows, columns].copy() for name, a in self.arrays.items()})
 
     def shifted(self, shift_m: float) -> Tile:
         """The same tile with its grade raised where it may move."""
-        return Tile(self.stack, self.window, self.stack.shifted(self.arrays, shift_m))
+        tile = Tile(self.stack, self.window, self.stack.shifted(self.arrays, shift_m))
+        tile.stratum_bottoms = self.stratum_bottoms
+        return tile
 
+    @cached_property
     def stratum_bottoms(self) -> np.ndarray:
         """Bottoms of all strata but the last [m], (strata − 1, height, width)."""
         count = max(len(self.stack.strata) - 1, 0)
@@ -149,49 +152,15 @@ class Tile:
     def cut_by_stratum(self) -> np.ndarray:
         """Cut of each stratum, mean over the cell [m], (strata, height, width); they add up to the cut."""
         lower = np.minimum(self.stripped, self.subgrade)
-        return _by_stratum(self.stratum_bottoms(), self.stripped, lower, self.cut)
+        return by_stratum(self.stratum_bottoms, self.stripped, lower, self.cut)
 
     @cached_property
     def excavated_by_stratum(self) -> np.ndarray:
         """Over-excavation of each stratum, mean over the cell [m], (strata, height, width)."""
         lower = np.minimum(self.stripped, self.subgrade)
-        return _by_stratum(self.stratum_bottoms(), lower, self.removal_bottom, np.nan_to_num(self.refill))
+        return by_stratum(self.stratum_bottoms, lower, self.removal_bottom, np.nan_to_num(self.refill))
 
     @cached_property
     def stratum_at_bottom(self) -> np.ndarray:
         """Index of the stratum at the removal bottom, (height, width)."""
-        return (self.removal_bottom < self.stratum_bottoms()).sum(axis=0)
-
-
-@njit(cache=True, nogil=True, error_model="numpy")
-def _by_stratum(bottoms, top, low, amount):
-    """Share the amount of each cell out to the strata by how much of the column low..top lies in each.
-
-    A cell whose column is empty but whose amount is not (its plane crosses zero beside the centre) takes the stratum
-    that lies at the top of the column. The last stratum with thickness takes the rest, so the parts add up exactly.
-    """
-    strata = bottoms.shape[0] + 1
-    h, w = amount.shape
-    out = np.zeros((strata, h, w))
-    for i in range(h):
-        for j in range(w):
-            left = amount[i, j]
-            if not left > 0.0:
-                continue
-            column = top[i, j] - low[i, j]
-            here = top[i, j]
-            for k in range(strata):
-                if k == strata - 1:
-                    out[k, i, j] = left
-                    break
-                bottom = bottoms[k, i, j]
-                if here <= bottom:
-                    continue
-                if bottom <= low[i, j] or not column > 0.0:
-                    out[k, i, j] = left
-                    break
-                part = amount[i, j] * (here - bottom) / column
-                out[k, i, j] = part
-                left -= part
-                here = bottom
-    return out
+        return (self.removal_bottom < self.stratum_bottoms).sum(axis=0)
