@@ -6,6 +6,7 @@ import codecs
 import io
 import shutil
 import sys
+import textwrap
 import unicodedata
 from typing import TYPE_CHECKING, Any
 
@@ -107,6 +108,7 @@ def print_page(page: Page) -> None:
         markup=False,
         emoji=False,
     )
+    narrow = console.width
     console.print(Text(printable(page.title), style="bold"))
     for block in page.blocks:
         console.print()
@@ -115,7 +117,13 @@ def print_page(page: Page) -> None:
         if isinstance(block, Facts):
             console.print(_facts(block.rows))
         elif isinstance(block, Table):
-            console.print(_table(block))
+            # A number that is cut off is a wrong number: where there is no room for all, the line runs on.
+            headings = _headings(block, wrapped=False)
+            if _least_width(block, headings) > narrow:
+                headings = _headings(block, wrapped=True)
+            console.width = max(narrow, _least_width(block, headings))
+            console.print(_table(block, headings))
+            console.width = narrow
             if block.left_out:
                 console.print(Text(f"  … and {block.left_out:,} more rows: all are in --json and in --out DIR"))
         else:
@@ -151,16 +159,37 @@ def _notes(lines: tuple[str, ...]) -> Any:
     return grid
 
 
-def _table(block: Table) -> Any:
+def _headings(block: Table, *, wrapped: bool) -> list[str]:
+    """The headings of a table, those of numbers no wider than they must be where the room is scarce."""
+    headings = [printable(column) for column in block.columns]
+    if wrapped:
+        for i in range(block.text_columns, len(headings)):
+            width = max([len(word) for word in headings[i].split()] + [len(printable(row[i])) for row in block.rows])
+            headings[i] = textwrap.fill(headings[i], width, break_on_hyphens=False)
+    return headings
+
+
+def _least_width(block: Table, headings: list[str]) -> int:
+    """Width that a table must have: whole numbers and short names, and some letters of long names."""
+    width = 1
+    for i, heading in enumerate(headings):
+        longest = max([len(printable(row[i])) for row in block.rows], default=0)
+        words = max(len(word) for word in [*heading.split(), ""])
+        lines = max(len(line) for line in [*heading.splitlines(), ""])
+        width += 3 + (max(min(longest, _SHORT_NAME), words) if i < block.text_columns else max(longest, lines))
+    return width
+
+
+def _table(block: Table, headings: list[str]) -> Any:
     from rich import box
     from rich.table import Table as Grid
     from rich.text import Text
 
     grid = Grid(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=True, header_style="", padding=(0, 1))
-    for i, column in enumerate(block.columns):
+    for i, heading in enumerate(headings):
         name = i < block.text_columns
         grid.add_column(
-            Text(printable(column)),
+            Text(heading),
             justify="left" if name else "right",
             no_wrap=not name or max((len(row[i]) for row in block.rows), default=0) <= _SHORT_NAME,
             overflow="fold",

@@ -141,11 +141,18 @@ class Stack:
             arrays["subgrade"] = finished - laid
         arrays["depth"] = arrays["subgrade"] - arrays["stripped"]
 
-    def shifted(self, arrays: Arrays, shift_m: float) -> Arrays:
-        """The arrays with finished ground and subgrade raised where they may move."""
-        lift = arrays["move"] * shift_m
-        raised = {name: arrays[name] + lift for name in ("finished", "subgrade", "depth")}
-        return {**arrays, **raised}
+    def shifted(self, arrays: Arrays, shift_m: float, room: Arrays | None = None) -> Arrays:
+        """The arrays with finished ground and subgrade raised where they may move.
+
+        ``room`` keeps the memory of what is raised, to be raised again by another shift.
+        """
+        room = {} if room is None else room
+        for name in ("finished", "subgrade", "depth"):
+            if name not in room:
+                room[name] = np.empty(arrays[name].shape)
+            np.multiply(arrays["move"], shift_m, out=room[name])
+            room[name] += arrays[name]
+        return {**arrays, **room}
 
     def removal_bottom(self, arrays: Arrays) -> np.ndarray:
         """What the fill rests on [m]: min(stripped, subgrade) less over-excavation, the deepest where they overlap."""

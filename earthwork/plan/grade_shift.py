@@ -12,6 +12,7 @@ from itertools import pairwise
 
 import numpy as np
 
+from earthwork.ground.stack import Arrays
 from earthwork.quantities.fields import Sums
 from earthwork.quantities.tile import Tile
 
@@ -50,8 +51,9 @@ class ShiftTally:
         before = Sums.none(self.stack)
         before.add(part, share)
         rest = still.values - before.values
+        room: Arrays = {}
         for shift, sums in self.sums.items():
-            moved = part.shifted(shift)
+            moved = part.shifted(shift, room)
             sums.values += rest
             sums.add(moved, share, fixed=before)
 

@@ -133,9 +133,9 @@ class Tile:
         rows, columns = slice(row, row + height + 2), slice(column, column + width + 2)
         return Tile(self.stack, window, {name: a[rows, columns].copy() for name, a in self.arrays.items()})
 
-    def shifted(self, shift_m: float) -> Tile:
-        """The same tile with its grade raised where it may move."""
-        tile = Tile(self.stack, self.window, self.stack.shifted(self.arrays, shift_m))
+    def shifted(self, shift_m: float, room: Arrays | None = None) -> Tile:
+        """The same tile with its grade raised where it may move; see :meth:`earthwork.ground.stack.Stack.shifted`."""
+        tile = Tile(self.stack, self.window, self.stack.shifted(self.arrays, shift_m, room))
         tile.stratum_bottoms = self.stratum_bottoms
         return tile
 

@@ -191,3 +191,22 @@ def test_long_values_leave_the_labels_whole(capsys):
     assert "group of the soil" in text
     assert "…" not in text
     assert " ".join(text.split()).count("sheepsfoot") == 2
+
+
+@pytest.mark.parametrize("columns", [40, 79, 80, 100, 110, 113, 114, 200])
+def test_no_number_is_cut_off_however_narrow_the_terminal(capsys, monkeypatch, columns):
+    from earthwork_cli.terminal import print_page
+
+    from earthwork.reporting.page import Page, Table
+
+    headings = ("material", "use", "cut m³", "strip m³", "over-excavation m³", "dry mass t", "loss %", "compacted m³")
+    rows = (
+        ("silt", "fill", "122,376,580", "0", "0", "174,998,515", "2.0 (given)", "102,506,159"),
+        ("a long name of a material that must wrap", "rock", "−1", "2", "31,415,926,535", "3", "4.25", "5"),
+    )
+    monkeypatch.setenv("COLUMNS", str(columns))
+    print_page(Page("x", (Table(headings, rows),)))
+    lines = capsys.readouterr().out.splitlines()
+    for row in rows:
+        for number in row[2:]:
+            assert any(number in line.split() or f" {number} " in f" {line} " for line in lines), number
