@@ -142,12 +142,14 @@ class Stack:
         arrays["depth"] = arrays["subgrade"] - arrays["stripped"]
 
     def shifted(self, arrays: Arrays, shift_m: float, room: Arrays | None = None) -> Arrays:
-        """The arrays with finished ground and subgrade raised where they may move.
+        """The arrays with subgrade, depth and, where depth rows start from it, finished ground raised where they may move.
 
         ``room`` keeps the memory of what is raised, to be raised again by another shift.
         """
         room = {} if room is None else room
-        for name in ("finished", "subgrade", "depth"):
+        # of the sums by shift, only depth rows that are measured from it ask for finished ground
+        from_finished = any(start == "finished" for _, start in self.bands_below_m)
+        for name in ("subgrade", "depth", *(["finished"] if from_finished else [])):
             if name not in room:
                 room[name] = np.empty(arrays[name].shape)
             np.multiply(arrays["move"], shift_m, out=room[name])

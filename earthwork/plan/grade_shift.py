@@ -67,8 +67,10 @@ def _part(tile: Tile, moving: np.ndarray) -> tuple[Tile, np.ndarray | None]:
     rows, columns = np.flatnonzero(moving.any(axis=1)), np.flatnonzero(moving.any(axis=0))
     top, bottom = max(rows[0] - 1, 1), min(rows[-1] + 2, moving.shape[0] - 1)
     left, right = max(columns[0] - 1, 1), min(columns[-1] + 2, moving.shape[1] - 1)
-    part = tile.part(top - 1, left - 1, bottom - top, right - left)
     weight = tile.weight
+    if (bottom - top, right - left) == (tile.window.height, tile.window.width):
+        return tile, weight
+    part = tile.part(top - 1, left - 1, bottom - top, right - left)
     return part, None if weight is None else np.ascontiguousarray(weight[top - 1 : bottom - 1, left - 1 : right - 1])
 
 
