@@ -292,7 +292,8 @@ class RasterReader:
                 f"{self.source.what}: {info.name}: it holds the value {stored:.10g} at "
                 f"{self._place(window.row_off + row, window.col_off + column)}, which is no elevation; it looks like a "
                 f"marker of missing data that the file does not declare. State it: nodata = {stored:.10g} for this "
-                f"surface, or --nodata {stored:.10g} without a site file"
+                f"surface, or --nodata {stored:.10g} without a site file. If it is none, the data are damaged: copy the "
+                "file anew"
             )
 
     def _place(self, row: int, column: int) -> str:

@@ -32,7 +32,7 @@ from earthwork.ground.lattice import (
 from earthwork.ground.sampling import sampled_elevation
 from earthwork.ground.scale import ground_scale, scale_warnings
 from earthwork.ground.surfaces import Surface
-from earthwork.ground.vertical import VerticalFacts, refuse_other_datum
+from earthwork.ground.vertical import VerticalFacts, one_sided_datum, refuse_other_datum
 
 if TYPE_CHECKING:
     from earthwork.files.vectors import NamedPolygon
@@ -157,6 +157,7 @@ def _found(site: Site) -> tuple[list[Candidate], tuple[VerticalFacts, ...], list
             vertical.append(facts)
             doubts += more
     refuse_other_datum(vertical)
+    doubts += one_sided_datum(vertical)
     return found, tuple(vertical), doubts
 
 

@@ -23,6 +23,9 @@ ALIGNED_WITHIN = 1e-3
 _READ_AT_ONCE = 4_000_000
 
 
+#: Cells of the grid along a block of a file that is resampled: one of a coarse file would be wider than memory.
+_WIDEST_BLOCK = 1024
+
 #: What surfaces give that are computed, not read as they are.
 FLOAT64 = np.dtype(np.float64)
 
@@ -271,7 +274,8 @@ def raster_on_grid(source: RasterSource, grid: Grid, *, nodes: bool = False) -> 
     start_row = (grid.north - info.north) / info.cell_north
     start_column = (grid.west - info.west) / info.cell_east
     ratio = (grid.cell_north / info.cell_north, grid.cell_east / info.cell_east)
-    block = (max(1, round(info.block[0] / ratio[0])), max(1, round(info.block[1] / ratio[1])))
+    high, wide = (min(max(round(size / r), 1), _WIDEST_BLOCK) for size, r in zip(info.block, ratio, strict=True))
+    block = (high, wide)
     first = _block_start(info, round(start_row), round(start_column))
     block_start = (round(first[0] / ratio[0]) % block[0], round(first[1] / ratio[1]) % block[1])
     compiled = worth_compiling(grid.rows * grid.columns)

@@ -113,3 +113,17 @@ def refuse_other_datum(facts: Sequence[VerticalFacts]) -> None:
                 f"{other.datum!r}; they must be the same, since datums differ by decimetres to tens of metres. "
                 "Transform one of the two first"
             )
+
+
+def one_sided_datum(facts: Sequence[VerticalFacts]) -> list[Warning]:
+    """A warning where one surface names its vertical datum and another does not."""
+    named = [f for f in facts if f.datum is not None]
+    silent = [f for f in facts if f.datum is None]
+    if not named or not silent:
+        return []
+    message = (
+        f"{named[0].surface} is in the vertical datum {named[0].datum!r}, {silent[0].surface} names none and is taken "
+        "to be in the same; if it is not, all volumes are wrong by the whole difference. Name the datum in the file's "
+        "CRS, or transform one of the two"
+    )
+    return [Warning("vertical-datum", message)]

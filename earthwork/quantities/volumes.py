@@ -315,10 +315,22 @@ def _idle_warning(total: AreaVolumes) -> list[Warning]:
 def _missing_warning(site: Site, ground: SiteGround, tally: VolumesTally, missing_m2: float) -> list[Warning]:
     if missing_m2 <= 0:
         return []
-    text = f"{site.units.from_si(missing_m2, 'area'):,.0f} {site.units.label('area')} of the site have no data"
-    if tally.missing > 0:
-        grid = ground.stack.grid
+    grid, label = ground.stack.grid, site.units.label("area")
+
+    def area(square_metres: float) -> str:
+        return f"{site.units.from_si(square_metres, 'area'):,.0f} {label}"
+
+    text = f"{area(missing_m2)} of the site have no data"
+    inside_m2 = min(tally.missing * grid.cell_area_m2, missing_m2)
+    if inside_m2 > 0:
         west, north = grid.point(tally.missing_rows[0], tally.missing_columns[0])
         east, south = grid.point(tally.missing_rows[1], tally.missing_columns[1])
-        text += f", within easting {west:.2f} to {east:.2f}, northing {south:.2f} to {north:.2f}"
+        place = f"within easting {west:.2f} to {east:.2f}, northing {south:.2f} to {north:.2f}"
+        beyond_m2 = missing_m2 - inside_m2
+        if beyond_m2 > 1e-6 * missing_m2:
+            text += f": {area(inside_m2)} {place}, and {area(beyond_m2)} beyond what the surfaces cover"
+        else:
+            text += f", {place}"
+    else:
+        text += ": they lie beyond what the surfaces cover"
     return [Warning("missing-data", text + "; they count neither as cut nor as fill")]

@@ -7,7 +7,7 @@ from pyproj import CRS
 
 from earthwork.errors import GroundError
 from earthwork.files.rasters import raster_info
-from earthwork.ground.vertical import VerticalFacts, refuse_other_datum, vertical_facts
+from earthwork.ground.vertical import VerticalFacts, one_sided_datum, refuse_other_datum, vertical_facts
 from earthwork.site.model import RasterSurface
 from earthwork.units import FOOT_M, METRIC, US_SURVEY_FOOT_M, UnitSystem
 from tests.rasters import write_raster
@@ -92,3 +92,14 @@ def test_datums():
     refuse_other_datum([facts("a", "X"), facts("b", None), facts("c", "X")])
     with pytest.raises(GroundError, match="a is in the vertical datum 'X', c in 'Y'; they must be the same"):
         refuse_other_datum([facts("a", "X"), facts("b", None), facts("c", "Y")])
+
+
+def test_a_datum_that_only_one_surface_names_is_a_doubt():
+    def facts(name, datum):
+        return VerticalFacts(name, 1.0, "m", "band", datum)
+
+    (doubt,) = one_sided_datum([facts("a", None), facts("b", "X")])
+    assert doubt.code == "vertical-datum"
+    assert doubt.message.startswith("b is in the vertical datum 'X', a names none and is taken to be in the same")
+    assert one_sided_datum([facts("a", None), facts("b", None)]) == []
+    assert one_sided_datum([facts("a", "X"), facts("b", "X")]) == []
