@@ -80,7 +80,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 
 def _interrupted() -> int:
-    say("interrupted; nothing was written")
+    say("interrupted; nothing half written is left")
     return _INTERRUPTED
 
 

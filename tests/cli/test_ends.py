@@ -156,7 +156,7 @@ run(["soil", {str(starters["metric"])!r}, "--out", {str(out)!r}])
 """
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True)
     assert done.returncode == 130
-    assert done.stderr.strip() == "interrupted; nothing was written"
+    assert done.stderr.strip() == "interrupted; nothing half written is left"
     assert done.stdout == ""
     assert not out.exists()
 
