@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import copy
 import difflib
+import re
 import tomllib
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
@@ -94,7 +95,8 @@ def check_site(
     model, faults = _validate(document, units)
     if model is None and faults:
         repaired, _ = _validate(_without_faulty(document, units), units)
-        faults += list(cross_faults(repaired)) if repaired else []
+        more = cross_faults(repaired) if repaired else ()
+        faults += [fault for fault in more if not _follows(fault, faults)]
     elif model is not None:
         faults += list(cross_faults(model))
     if faults or model is None:
@@ -121,6 +123,12 @@ def _without_faulty(document: dict[str, Any], units: UnitSystem) -> dict[str, An
             if isinstance(parent, dict):
                 parent.pop(location[-1], None)
     return rest
+
+
+def _follows(fault: str, faults: list[str]) -> bool:
+    """Whether a fault only says that a key is missing which was taken out because it is faulty itself."""
+    table = re.split(r"[: ]", fault, maxsplit=1)[0]
+    return "missing" in fault and any(re.match(re.escape(table) + r"[.: =]", other) for other in faults)
 
 
 def _message(where: str, faults: list[str]) -> str:

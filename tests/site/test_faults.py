@@ -42,3 +42,23 @@ def test_an_area_is_a_file_or_a_table(tmp_path):
 def test_a_surface_is_one_of_three(tmp_path, surface, named):
     said = faults(tmp_path, existing=surface)
     assert said == [f"ground.existing: give one of file, level and plane, not {named}"]
+
+
+def test_a_faulty_key_is_not_said_to_be_missing_as_well(tmp_path):
+    assert faults(tmp_path, finished=5) == [
+        "ground.finished = 5: it must be a file name, or a table with file, level or plane"
+    ]
+
+
+def test_a_faulty_thickness_hides_no_other_fault(tmp_path):
+    strata = [{"material": "a", "thickness": -1}, {"material": "b"}, {"material": "c"}]
+    document = {
+        "site": {"name": "x", "units": "metric"},
+        "ground": {"existing": "a.tif", "finished": {"level": 3.0}},
+        "stratum": strata,
+    }
+    with pytest.raises(SiteFileError, match="2 faults") as refused:
+        check_site(document, tmp_path)
+    first, second = (line.strip() for line in str(refused.value).splitlines()[1:])
+    assert first == "stratum[1].thickness = -1: it must be at least 0 m"
+    assert second == "stratum[2] (b): bottom or thickness is missing; only the last has none"
