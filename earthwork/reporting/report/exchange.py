@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
@@ -17,7 +17,7 @@ from earthwork.files.glb import ModelSurface, write_glb
 from earthwork.files.landxml import Breakline, Triangles, write_landxml
 from earthwork.files.output import OutputFolder
 from earthwork.files.points import StakePoint, write_pnezd
-from earthwork.ground.thin_mesh import Mesh, thin_mesh
+from earthwork.ground.thin_mesh import thin_mesh
 from earthwork.quantities.surface_map import SurfaceMap
 from earthwork.reporting.cut_fill_map import COLORS
 from earthwork.reporting.display import plain
@@ -27,9 +27,11 @@ from earthwork.reporting.report.parts import Parts
 from earthwork.reporting.report.provenance import inputs_date
 from earthwork.units import UnitSystem
 
-#: Where thinning starts [m], and the triangles that a surface takes at most in a file and in the model.
+#: Where thinning starts [m], and the triangles that a surface takes at most: of LandXML, which is built from and takes
+#: 50 bytes a triangle; of DXF, where it is ten times as many; and of the model.
 TOLERANCE_M = 0.01
-MOST_TRIANGLES = 50_000
+LANDXML_TRIANGLES = 200_000
+DXF_TRIANGLES = 50_000
 MODEL_TRIANGLES = 60_000
 #: Worked ground is written with a margin of so many cells of the overview.
 _MARGIN_CELLS = 3
@@ -73,24 +75,21 @@ class Exchange:
             return np.isfinite(s.depth)
         return _widened(changed, _MARGIN_CELLS) & np.isfinite(s.depth)
 
-    @cached_property
-    def meshes(self) -> dict[str, Mesh]:
-        """Existing ground everywhere; the others where the ground is worked."""
-        s = self.surfaces
-        fields = {"existing": s.existing}
-        for name in ("removal_bottom", "subgrade", "finished"):
-            fields[name] = np.where(self.worked, getattr(s, name), np.nan)
-        return {name.replace("_", " "): thin_mesh(z, TOLERANCE_M, MOST_TRIANGLES) for name, z in fields.items()}
+    def triangles(self, names: Sequence[str], most: int) -> list[Triangles]:
+        """Surfaces in the coordinates of the site, of at most so many triangles each.
 
-    @cached_property
-    def triangles(self) -> list[Triangles]:
-        """The meshes in the coordinates of the site."""
+        Existing ground everywhere; the others where the ground is worked.
+        """
         found = []
-        for name, mesh in self.meshes.items():
+        for name in names:
+            heights = getattr(self.surfaces, name)
+            mesh = thin_mesh(
+                heights if name == "existing" else np.where(self.worked, heights, np.nan), TOLERANCE_M, most
+            )
             east, north = mesh.places(self.surfaces.grid)
             vertices = np.column_stack([east, north, mesh.heights / self.unit_m])
             note = f"thinned: no cell is farther than {_bound_text(mesh.tolerance_m, self.parts.site.units)} from it"
-            found.append(Triangles(name, vertices, mesh.triangles, note))
+            found.append(Triangles(name.replace("_", " "), vertices, mesh.triangles, note))
         return found
 
     @cached_property
@@ -202,7 +201,7 @@ def write_exchange(parts: Parts, folder: OutputFolder) -> None:
     authority = crs.to_authority() if crs is not None else None
     write_landxml(
         folder.path("surfaces.xml"),
-        made.triangles,
+        made.triangles(("existing", "removal_bottom", "subgrade", "finished"), LANDXML_TRIANGLES),
         made.breaklines,
         project=parts.site.name,
         program=f"earthwork {earthwork.__version__}",
@@ -212,7 +211,7 @@ def write_exchange(parts: Parts, folder: OutputFolder) -> None:
         epsg=authority[1] if authority and authority[0] == "EPSG" else None,
     )
     outlines = [(o.layer, o.name, o.shape) for o in made.outlines]
-    drawn = [t for t in made.triangles if t.name in ("existing", "subgrade")]
+    drawn = made.triangles(("existing", "subgrade"), DXF_TRIANGLES)
     write_dxf(folder.path("surfaces.dxf"), drawn, made.breaklines, outlines)
     write_pnezd(folder.path("stakeout.txt"), made.stakes())
     write_layers(made, folder.path("site.gpkg"))
