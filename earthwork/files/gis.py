@@ -6,7 +6,7 @@ import shutil
 import threading
 import warnings
 from collections.abc import Iterator, Sequence
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from math import ceil
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
@@ -168,8 +168,10 @@ class DepthRasterWriter:
                         raise cut_off(self._path)
 
     def abandon(self) -> None:
-        """Close the file unfinished; it is to be removed."""
-        with self._lock:
+        """Close the file unfinished; it is to be removed, so that it does not matter when the disk is full."""
+        from rasterio.errors import RasterioError
+
+        with self._lock, suppress(OSError, RasterioError):
             self._pending.clear()
             if not self._file.closed:
                 self._file.close()

@@ -11,7 +11,7 @@ import signal
 import tempfile
 import threading
 import unicodedata
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager, suppress
 from pathlib import Path
 from types import TracebackType
@@ -59,6 +59,7 @@ class OutputFolder:
         self.written: tuple[Path, ...] = ()
         self._aside: Path | None = None
         self._made: list[Path] = []
+        self._open: list[Callable[[], None]] = []
 
     def __enter__(self) -> OutputFolder:
         if self.directory.exists() and not self.directory.is_dir():
@@ -104,6 +105,10 @@ class OutputFolder:
             raise ValueError(f"{name} is not among the names announced: {', '.join(self.patterns)}")
         return self._aside / name
 
+    def close_with(self, close: Callable[[], None]) -> None:
+        """Call something at the end, before what is unfinished is removed: a file may still be open then."""
+        self._open.append(close)
+
     def announces(self, name: str) -> bool:
         """Whether a name is among those that the command may write."""
         plain_name = Path(name).name == name
@@ -135,6 +140,9 @@ class OutputFolder:
         self._made = []
 
     def _clean(self) -> None:
+        for close in self._open:
+            close()
+        self._open = []
         if self._aside is not None:
             shutil.rmtree(self._aside, ignore_errors=True)
             self._aside = None

@@ -69,6 +69,11 @@ class DepthRasterTally:
         if self._shared.writer is not None:
             self._shared.writer.finish()
 
+    def abandon(self) -> None:
+        """Close the file as it is; nothing to do once it is finished."""
+        if self._shared.writer is not None:
+            self._shared.writer.abandon()
+
 
 class ThicknessRasterTally(DepthRasterTally):
     """The same for the thickness of fill, the refill of over-excavation under it included."""

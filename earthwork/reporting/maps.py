@@ -20,7 +20,9 @@ if TYPE_CHECKING:
 
 def map_tallies(site: Site, folder: OutputFolder, command: str) -> tuple[DepthMapTally, DepthRasterTally]:
     """What gathers the maps of a command while the ground is walked."""
-    return DepthMapTally(), DepthRasterTally(folder.path(f"{command}_depth.tif"), site.units)
+    raster = DepthRasterTally(folder.path(f"{command}_depth.tif"), site.units)
+    folder.close_with(raster.abandon)
+    return DepthMapTally(), raster
 
 
 def write_maps(

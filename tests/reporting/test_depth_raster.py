@@ -8,9 +8,11 @@ from rasterio.features import geometry_mask
 from rasterio.transform import from_origin
 from shapely.geometry import Polygon
 
+from earthwork.files.output import OutputFolder
 from earthwork.quantities.site_ground import open_site
 from earthwork.quantities.volumes import count_volumes
 from earthwork.reporting.depth_raster import DepthRasterTally, ThicknessRasterTally
+from earthwork.reporting.maps import map_tallies
 from earthwork.site import check_site
 from earthwork.units import METRIC
 
@@ -71,3 +73,31 @@ def test_thickness_has_the_refill_of_what_is_dug_out(tmp_path, ground, walk):
     # what lies within 1 cm of the grade is not disturbed, and nothing is dug there
     thickness = np.maximum(depth, 0) + np.where(abs(depth) <= 0.01, 0.0, 0.5)
     np.testing.assert_allclose(found, thickness, atol=1e-5)
+
+
+def test_an_interrupted_run_closes_its_raster_and_leaves_nothing(tmp_path, ground):
+    site = site_of(tmp_path, ground)
+    rasters = []
+
+    class Stop:
+        depth_only = True
+
+        def empty(self):
+            return self
+
+        def add(self, tile):
+            raise KeyboardInterrupt
+
+        def merge(self, other):
+            pass
+
+    def run():
+        with OutputFolder(tmp_path / "out", patterns=("*.tif",), overwrite=False) as folder:
+            _, raster = map_tallies(site, folder, "volumes")
+            rasters.append(raster)
+            count_volumes(site, open_site(site), tallies=[raster, Stop()])
+
+    with pytest.raises(KeyboardInterrupt):
+        run()
+    assert rasters[0]._shared.writer._file.closed
+    assert not (tmp_path / "out").exists()

@@ -141,7 +141,9 @@ def _write(
 def _thickness_raster(site: Site, folder: ReportFolder) -> tuple[Any, ...]:
     from earthwork.reporting.depth_raster import ThicknessRasterTally
 
-    return (ThicknessRasterTally(folder.path("fill_thickness.tif"), site.units),)
+    raster = ThicknessRasterTally(folder.path("fill_thickness.tif"), site.units)
+    folder.close_with(raster.abandon)
+    return (raster,)
 
 
 def _write_tables(result: ReportResult, folder: ReportFolder, inputs: list[dict[str, Any]]) -> None:
