@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
+
+from earthwork.compiled import kernel
 
 
 # Not nnan: the kernel makes and meets NaN. Reassociation lets the count run in vectors; whole numbers stay exact.
-@njit(cache=True, nogil=True, error_model="numpy", fastmath={"reassoc", "nsz"})
+@kernel(fastmath={"reassoc", "nsz"})
 def blank(values, missing, low, high):
     """Set cells that hold ``missing``, or are infinite, to NaN, in place and in one pass; whether others lie far out.
 

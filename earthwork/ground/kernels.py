@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-import numba
 import numpy as np
 
+from earthwork.compiled import kernel
 
-@numba.njit(cache=True, nogil=True)
+
+@kernel(error_model="python")
 def weigh(
     values: np.ndarray,
     row_index: np.ndarray,
@@ -42,13 +43,13 @@ def weigh(
                 cells[j] += sums[index[j]] * weights[j]
 
 
-@numba.njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _snapped(place: float, snap: float) -> float:
     near = np.rint(place)
     return near if abs(place - near) < snap else place
 
 
-@numba.njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def add_between(
     values: np.ndarray,
     control: np.ndarray,

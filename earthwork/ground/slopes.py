@@ -9,7 +9,8 @@ For a level edge that is the plane through the edge; around a corner it is a con
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
+
+from earthwork.compiled import kernel
 
 #: Columns of an edge table: start (x, y, z), direction (x, y), length, rise per metre, lowest and highest
 #: end, index of the edge that follows in the ring (−1: none), and
@@ -22,7 +23,7 @@ SHARPEST_MITRE = 0.38
 _BLOCK = 16
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _height_at(run, gradient, bench_height, bench_width):
     """Height of a slope at a distance ``run`` from its edge, with benches every ``bench_height`` (0:
     none).
@@ -34,7 +35,7 @@ def _height_at(run, gradient, bench_height, bench_width):
     return benches * bench_height + min(gradient * (run - benches * period), bench_height)
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _skew(rise, gradient):
     """How far along an edge the steepest line runs, per metre beside it; and its length per metre beside the
     edge.
@@ -46,7 +47,7 @@ def _skew(rise, gradient):
     return rise / root, gradient / root
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _foot(edge, px, py, gradient, sign):
     """How far along an edge the steepest line to a place starts [m]."""
     along = (px - edge[0]) * edge[3] + (py - edge[1]) * edge[4]
@@ -55,7 +56,7 @@ def _foot(edge, px, py, gradient, sign):
     return min(max(along - sign * abs(beside) * skew, 0.0), edge[5])
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _plane(edge, px, py, gradient, bench_height, bench_width, sign):
     """Height of the face through a whole (endless) edge; ``sign`` −1 for fill, +1 for cut."""
     along = (px - edge[0]) * edge[3] + (py - edge[1]) * edge[4]
@@ -67,7 +68,7 @@ def _plane(edge, px, py, gradient, bench_height, bench_width, sign):
     )
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _face(edge, px, py, gradient, bench_height, bench_width, sign, rounded):
     """Height of the face of one edge at a point, NaN where a mitred edge has none (beside its ends)."""
     along = (px - edge[0]) * edge[3] + (py - edge[1]) * edge[4]
@@ -79,13 +80,13 @@ def _face(edge, px, py, gradient, bench_height, bench_width, sign, rounded):
     return edge[2] + edge[6] * foot + sign * _height_at(run, gradient, bench_height, bench_width)
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _gap(low, high, start, stop):
     """Distance between two intervals."""
     return max(max(start - high, low - stop), 0.0)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def slope_faces(ground, x0, y0, dx, dy, edges, slopes, mitred, fill, cut):
     """Lowest grade that the fill slopes of one element hold, and highest that its cut slopes allow.
 
@@ -158,7 +159,7 @@ def slope_faces(ground, x0, y0, dx, dy, edges, slopes, mitred, fill, cut):
                                     cut[i, j] = min(cut[i, j], max(a, b))
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _square_distance(edges, px, py):
     best = np.inf
     for e in range(edges.shape[0]):
@@ -170,7 +171,7 @@ def _square_distance(edges, px, py):
     return best
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def stop_at_walls(x0, y0, dx, dy, edges, walls, fill, cut):
     """Take the slopes away where a retaining edge is the nearest; at an equal distance (a shared corner) it
     counts.
@@ -187,7 +188,7 @@ def stop_at_walls(x0, y0, dx, dy, edges, walls, fill, cut):
                 cut[i, j] = np.inf
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def near_edges(x0, y0, dx, dy, edges, distance, near):
     """Mark the cells (h, w) whose centre lies within a distance [m] of an edge."""
     rows, columns = near.shape
@@ -205,7 +206,7 @@ def near_edges(x0, y0, dx, dy, edges, distance, near):
                     near[i, j] = square <= distance * distance
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def inside_rings(x0, y0, dx, dy, xs, ys, offsets, inside):
     """Mark the cells (h, w) whose centre lies inside closed rings (even-odd); neighbours never share a
     centre.
@@ -228,7 +229,7 @@ def inside_rings(x0, y0, dx, dy, xs, ys, offsets, inside):
                 inside[i, j] = True
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def triangle_heights(x0, y0, dx, dy, triangles, inside, heights):
     """Heights of a triangulated grade at the cells that are inside; the nearest triangle where rounding
     misses all.
@@ -258,7 +259,7 @@ def triangle_heights(x0, y0, dx, dy, triangles, inside, heights):
                         break
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def spread(codes, stack_rows, stack_columns):
     """Let what is reached spread in place through active cells of its own kind, over all eight neighbours.
 
@@ -287,7 +288,7 @@ def spread(codes, stack_rows, stack_columns):
                     count += 1
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def faces_at(xs, ys, edges, slopes, mitred, fill, cut, fill_edge, cut_edge):
     """Faces of one element at single places (n,), exact everywhere; and the grade of the edge that each
     belongs to.

@@ -5,8 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.plan.trucks import Drive
 
 Array = np.ndarray
@@ -65,7 +65,7 @@ class Relief:
         return out
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _elevation(x, y, elevations, east, north):
     """Bilinear height at a place; squares without a height leave their weight to the others of the four."""
     rows, columns = elevations.shape
@@ -87,13 +87,13 @@ def _elevation(x, y, elevations, east, north):
     return total / weight if weight > 0.0 else np.nan
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _elevations(points, elevations, east, north, out):
     for k in range(len(points)):
         out[k] = _elevation(points[k, 0], points[k, 1], elevations, east, north)
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _rise_and_fall(points, elevations, east, north, step):
     rise = 0.0
     fall = 0.0
@@ -115,7 +115,7 @@ def _rise_and_fall(points, elevations, east, north, step):
     return rise, fall, unknown
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _minutes(start, end, limit, speeds, elevations, east, north, step, out):
     per_percent = (len(speeds) - 1) / (2.0 * _STEEPEST)
     for k in range(len(start)):

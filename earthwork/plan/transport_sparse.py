@@ -11,9 +11,9 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-import numba as nb
 import numpy as np
 
+from earthwork.compiled import kernel
 from earthwork.errors import PlanError
 from earthwork.plan.transport import solve_dense
 from earthwork.plan.transport_costs import Array, Costs
@@ -159,7 +159,7 @@ def _dealt(i: Array, j: Array, flow: Array, rows: Array, columns: Array, supply:
     )
 
 
-@nb.njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _deal(pair_i, pair_j, flow, order_r, start_r, order_c, start_c, supply, need, columns):
     size = len(supply) + len(need) + 2 * len(flow)
     out = np.empty(size, np.int64)
@@ -228,7 +228,7 @@ def _kernel_arguments(costs: Costs) -> tuple:
     )
 
 
-@nb.njit(inline="always")
+@kernel(error_model="python", inline="always")
 def _cost(a, b, distance, rate, way, table, row_class, column_class, i, j):
     fixed = table[row_class[i], column_class[j]]
     if len(a):
@@ -241,7 +241,7 @@ def _cost(a, b, distance, rate, way, table, row_class, column_class, i, j):
     return rate[i] * way[j] * distance[i, j] + fixed
 
 
-@nb.njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _lowest(a, b, distance, rate, way, table, row_class, column_class, v):
     """min_j cost(i, j) − v(j) for each row; 0 where nothing is allowed."""
     out = np.empty(len(rate))
@@ -253,7 +253,7 @@ def _lowest(a, b, distance, rate, way, table, row_class, column_class, v):
     return out
 
 
-@nb.njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _least(a, b, distance, rate, way, table, row_class, column_class, u, v, count, below):
     """The columns of least reduced cost of each row, those under a bound only; −1 where there are fewer."""
     out = np.full((len(rate), count), -1, np.int64)

@@ -6,7 +6,8 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-from numba import njit
+
+from earthwork.compiled import kernel
 
 Array = np.ndarray
 
@@ -54,7 +55,7 @@ def walls_of(edges: Array) -> Walls:
     return Walls(edges, starts, items, *geometry)
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _bin_edges(edges, west, south, side, rows, columns, counts, items):
     """Count the edges of each bin, or with ``items`` fill them in from the position in ``counts`` on."""
     for k in range(len(edges)):
@@ -77,13 +78,13 @@ def _bin_edges(edges, west, south, side, rows, columns, counts, items):
                 counts[row * columns + column] += 1
 
 
-@njit(cache=True, nogil=True, inline="always")
+@kernel(error_model="python", inline="always")
 def _side(ax, ay, bx, by, px, py):
     """Twice the signed area of the triangle a, b, p: > 0 where p lies left of a → b."""
     return (bx - ax) * (py - ay) - (by - ay) * (px - ax)
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def _meets(x1, y1, x2, y2, edge):
     """Whether a segment touches an edge."""
     a = _side(x1, y1, x2, y2, edge[0], edge[1])
@@ -102,7 +103,7 @@ def _meets(x1, y1, x2, y2, edge):
     return True
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def is_free(x1, y1, x2, y2, edges, starts, items, west, south, side, rows, columns):
     """Whether the segment meets no edge; it walks the bins that it passes, row by row."""
     low_row = int(np.floor((min(y1, y2) - south) / side - 1e-9))
@@ -126,7 +127,7 @@ def is_free(x1, y1, x2, y2, edges, starts, items, west, south, side, rows, colum
     return True
 
 
-@njit(cache=True, nogil=True, inline="always")
+@kernel(error_model="python", inline="always")
 def _is_taut(px, py, corner):
     """Whether a path that comes from p may bend at a corner: both walls lie on one side of the line p → corner.
 
@@ -142,7 +143,7 @@ def _is_taut(px, py, corner):
     return (before >= -slack and after >= -slack) or (before <= slack and after <= slack)
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def visible_corners(points, corners, walls, out_point, out_corner):
     """Pairs (point, corner) that see each other along a line that may bend there; returns their number.
 
@@ -161,7 +162,7 @@ def visible_corners(points, corners, walls, out_point, out_corner):
     return count
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def visible_among_corners(corners, start, stop, walls, out_from, out_to):
     """Pairs (i, j > i) of corners, i from start to stop, that see each other and may bend at both ends."""
     count = 0
@@ -179,7 +180,7 @@ def visible_among_corners(corners, start, stop, walls, out_from, out_to):
     return count
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def free_lengths(points, others, walls, out):
     """Straight distance of each point to each other one where the line between them is free, else ``inf``."""
     for i in range(len(points)):
@@ -189,7 +190,7 @@ def free_lengths(points, others, walls, out):
             out[i, j] = np.sqrt(dx * dx + dy * dy) if free else np.inf
 
 
-@njit(cache=True, nogil=True)
+@kernel(error_model="python")
 def shorten(cost, far, edges, node, last_effort, last_length, effort, length):
     """Replace efforts (n, m) and lengths of ways, in place, where one through a node is less.
 

@@ -11,8 +11,8 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.ground.areas import Rings
 from earthwork.ground.stack import Stack
 from earthwork.quantities.coverage import polygon_share, touching
@@ -216,7 +216,7 @@ def _band_heights(tile: Tile, height_of) -> list[tuple[np.ndarray, np.ndarray]]:
     return found
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _gather(values, share, row, column, block_columns, sums):
     """Add values × share and their first moments to ``sums`` (blocks, channels, 3), one block for so many columns."""
     channels, height, width = values.shape

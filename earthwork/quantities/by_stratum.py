@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.quantities.split import CUT_AREA, SplitRoom, add_crossed, flat_row, widen
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _share_out(bottoms, i, j, top, low, amount, weight, sums):
     """Add an amount [mean m] × weight to the sums of the strata, of the column from low to top [m].
 
@@ -32,7 +32,7 @@ def _share_out(bottoms, i, j, top, low, amount, weight, sums):
     sums[k] += left * weight
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def by_stratum(bottoms, top, low, amount):
     """Amounts of each stratum, mean over the cell [m], (strata, height, width); they add up to the amount.
 
@@ -76,7 +76,7 @@ def split_by_stratum(
     return (cut, sums, *room.extremes(high, low))
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath={"reassoc", "nsz", "contract"})
+@kernel(fastmath={"reassoc", "nsz", "contract"})
 def _add_row(flat, top, bottom, parts, above):
     """Cut of one stratum in the cells of a row that the zero line does not cross, each by its part.
 
@@ -94,7 +94,7 @@ def _add_row(flat, top, bottom, parts, above):
     return total
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath={"reassoc", "nsz", "contract"})
+@kernel(fastmath={"reassoc", "nsz", "contract"})
 def _add_rest(flat, parts, above):
     """Cut of the last stratum, likewise."""
     total = 0.0
@@ -103,7 +103,7 @@ def _add_rest(flat, parts, above):
     return total
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _split_by_stratum(
     depth, bottoms, stripped, subgrade, share, row0, column0, height, sums, flat, bits, mixed, extreme_bits, above, cut
 ):  # fmt: skip

@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.ground.areas import Rings
 from earthwork.ground.grid import Window
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _add_edge(acc, xa, ya, xb, yb):
     """Add the signed area to the right of one edge to ``acc``; its running sum along a row is then the coverage.
 
@@ -42,7 +42,7 @@ def _add_edge(acc, xa, ya, xb, yb):
         i += 1
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _add_in_row(row, x, x_next, height, columns):
     """The part of an edge inside one row of cells; what lies beside the window is clamped to its sides."""
     low = min(x, x_next)
@@ -71,7 +71,7 @@ def _add_in_row(row, x, x_next, height, columns):
         j += 1
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _polygon_shares(xs, ys, ring_offsets, first, last, row, column, acc, out):
     """Coverage of the rings first..last in ``out`` (rows, columns), whose first cell is (row, column).
 
@@ -110,7 +110,7 @@ def polygon_share(rings: Rings, polygon: int, window: Window) -> tuple[Window, n
     return Window(row, column, stop_row - row, stop_column - column), share
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def take_out(rest, share, row, column):
     """Take the shares of an area, which start at (row, column), off what is left of the cells."""
     for i in range(share.shape[0]):
@@ -119,7 +119,7 @@ def take_out(rest, share, row, column):
             line[column + j] -= share[i, j]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def clear_rounding(rest):
     """Set what subtraction leaves of a cell that areas cover whole to 0; whether anything is left."""
     left = False

@@ -8,8 +8,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.ground.stack import Stack
 from earthwork.quantities.by_stratum import split_by_stratum
 from earthwork.quantities.split import CUT, DISTURBED, split_part
@@ -102,7 +102,7 @@ def _bands(tile: Tile, at: dict[str, np.ndarray], valid: np.ndarray) -> None:
         deeper = np.maximum(deeper, under)
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _add_weighted(field, share, row, column):
     """Sum of a field × share of one area, (height, width), which starts at (row, column) of the field."""
     height, width = share.shape

@@ -9,8 +9,8 @@ it. That is a fixed handful of additions a cell, however many lifts there are.
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.quantities.split import _half_slope, _plane_above_zero
 
 LOW, HIGH = 0, 1  #: ends of a column
@@ -18,13 +18,13 @@ CODE, BIN, LENGTH = range(3)  #: of a run: coarse cell, kind and end in one numb
 VOLUME, FOOTPRINT, GROUND, LOWEST, HIGHEST = range(5)  #: what is kept of each coarse cell
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def kinds_of(bands):
     """Kinds of column that are told apart: what lies in no ``by_depth`` row, in each row, and their inner edges."""
     return bands + 2 if bands else 1
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _end(scratch, kind, end, z, area, first, lift, reach):
     """Count one end of a column: its area, and the moments of its place in the bin.
 
@@ -41,7 +41,7 @@ def _end(scratch, kind, end, z, area, first, lift, reach):
     reach[1] = max(reach[1], k)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _bands(scratch, low, top, density, weight, finished, below, from_finished, order, first, lift, reach):
     """Count the parts of a column that lie in ``by_depth`` rows; returns where the part above them starts.
 
@@ -64,13 +64,13 @@ def _bands(scratch, low, top, density, weight, finished, below, from_finished, o
     return reached
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def code_of(coarse, kinds, kind, end):
     """What a run is of: a coarse cell, a kind of column, and its lower or upper ends."""
     return (coarse * kinds + kind) * 2 + end
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def record(runs, moments, counts, code, k, area, first_moment, second_moment):
     """Append the ends in bin ``k``: to the last run where that goes on there, else to a new one.
 
@@ -92,7 +92,7 @@ def record(runs, moments, counts, code, k, area, first_moment, second_moment):
     counts[1] = row + 1
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _flush(scratch, reach, coarse, first, runs, moments, counts):
     """Move what the scratch holds of one coarse cell into the records, and clear it."""
     kinds = scratch.shape[0]
@@ -108,7 +108,7 @@ def _flush(scratch, reach, coarse, first, runs, moments, counts):
     reach[1] = -1
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def count_columns(
     depth, top, bottom, weight, finished, below, from_finished, order,
     row0, column0, side, coarse_columns, lift, first, bins, cells, runs, moments, counts,

@@ -7,8 +7,8 @@ Cut and fill of the tile come of the same rows, so they are counted as well: not
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGH, HIGHEST, LOW, LOWEST, VOLUME, code_of, record
 from earthwork.quantities.split import FILL_AREA, VALID, add_crossed, flat_row, widen
 
@@ -35,7 +35,7 @@ def packing(side: int) -> tuple[int, int] | None:
     return (places, most.bit_length()) if side >= LARGE_SIDE and places >= LEAST_PLACE_BITS else None
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FINITE)
+@kernel(fastmath=_FINITE)
 def _levels(top, depth, i, j0, scale, origin, height, flat, lows, tops):
     """Ends of the columns of a row above the lowest bin; of no meaning for cells that are not all fill.
 
@@ -61,7 +61,7 @@ def _levels(top, depth, i, j0, scale, origin, height, flat, lows, tops):
     return outside > 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _any(values, start, stop):
     """Whether any of a stretch of values is over 0."""
     count = values.dtype.type(0)
@@ -72,7 +72,7 @@ def _any(values, start, stop):
     return count > zero
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _scatter(tables, flat, lows, tops, edges, ranges):
     """Count the ends of the columns of a row into the tables of their coarse cells, and widen their ranges."""
     one = np.uint64(1)
@@ -111,7 +111,7 @@ def _scatter(tables, flat, lows, tops, edges, ranges):
         ranges[b, HIGH, 1] = highest
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _scatter_packed(packed, flat, lows, tops, edges, ranges, place_bits, count_bits):
     """As :func:`_scatter` of levels in units of a lift's 2 to the power of ``place_bits``, without the second moment.
 
@@ -146,7 +146,7 @@ def _scatter_packed(packed, flat, lows, tops, edges, ranges, place_bits, count_b
         ranges[b, HIGH, 1] = max(ranges[b, HIGH, 1], highest * unit)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _crossings(up, row, down, top, mixed, edges, crossings, first, bins, lift, reach, places, sums, spread):
     """Count the cells of a row that the zero line crosses: the part with fill, as thick as its fill is on the mean.
 
@@ -191,7 +191,7 @@ def _crossings(up, row, down, top, mixed, edges, crossings, first, bins, lift, r
     return outside
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _collect(
     tables, packed, crossings, reach, coarse, first, lift, place, runs, moments, counts, place_bits, count_bits
 ):  # fmt: skip
@@ -237,7 +237,7 @@ def _collect(
             place[FOOTPRINT] += total
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def count_plain(
     depth, top, row0, column0, side, coarse_columns, lift, first, bins, tables, packed, place_bits, count_bits,
     crossings, cells, runs, moments, counts, sums, flat, bits, mixed, extreme_bits, spread,
@@ -330,7 +330,7 @@ def count_plain(
     return True
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _edges(chunk, blocks, side, column0, width):
     """Columns of a tile where its coarse cells begin, and where the last one ends."""
     edges = np.empty(blocks + 1, np.int64)
@@ -339,7 +339,7 @@ def _edges(chunk, blocks, side, column0, width):
     return edges
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _ground(row, whole, edges, places):
     """Count the cells with data of a row."""
     for b in range(edges.size - 1):

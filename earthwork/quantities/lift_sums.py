@@ -3,15 +3,15 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.quantities.lift_kernel import BIN, CODE, LENGTH, LOW, kinds_of, record
 
 #: Ends within this share of a lift of each other, or of a lift's edge, are taken to be at one height.
 _LEVEL = 2e-3
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _reach(runs, order, n):
     """Of the runs of one code, the first of which is the n-th: where they end, lowest bin, and the one over the highest."""
     code = runs[order[n], CODE]
@@ -24,7 +24,7 @@ def _reach(runs, order, n):
     return n, low, high
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _add_runs(runs, moments, order, starts, n, stop, low, sums):
     """Add up the moments of some runs by bin, in ``sums`` (bins from the lowest one, 3), which holds zeros."""
     for i in range(n, stop):
@@ -36,7 +36,7 @@ def _add_runs(runs, moments, order, starts, n, stop, low, sums):
             sums[at + k, 2] += moments[start + k, 2]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def merge_runs(runs, moments, order, starts, merged_runs, merged, counts):
     """Add up the records of one code and bin, which the tiles of a coarse cell have made.
 
@@ -62,7 +62,7 @@ def merge_runs(runs, moments, order, starts, merged_runs, merged, counts):
         n = stop
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def bench_sums(
     runs, moments, order, starts, bands, area_of_cell, origins, offsets, first_lift, volumes, standing, ends
 ):  # fmt: skip
@@ -105,7 +105,7 @@ def bench_sums(
         n = stop
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _add_bin(
     whole, first_moment, second_moment, kind, end, bands, bin_at, offset, start, volumes, standing, ends
 ):  # fmt: skip
@@ -137,7 +137,7 @@ def _add_bin(
             ends[2, start + at] += a
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _add_end(volumes, standing, ends, kind, end, start, at, area, place, bin_at):
     """Add ends of columns at ``bin_at + place`` lifts to lift ``at`` of an area."""
     signed = area if end == LOW else -area

@@ -10,8 +10,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.ground.stack import DISTURBED_OVER_M
 
 # Not nnan: missing cells are NaN, and the kernels test for them.
@@ -21,7 +21,7 @@ _FAST = {"reassoc", "nsz", "contract", "arcp"}
 VALID, CUT, FILL, CUT_AREA, FILL_AREA, PLAIN_CUT, PLAIN_FILL, DISTURBED = range(8)
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _half_slope(before, here, after):
     """Half the slope of a cell's plane along one axis [m per half cell], signless; NaN neighbours are holes."""
     left = here - before
@@ -35,7 +35,7 @@ def _half_slope(before, here, after):
     return 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def _plane_above_zero(h, a, b):
     """Mean fill depth and fill share of a square cell with the plane h + a·u + b·v, u and v from −1 to 1.
 
@@ -58,7 +58,7 @@ def _plane_above_zero(h, a, b):
     return max(depth, max(h, 0.0)), min(max(share, 0.0), 1.0)
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def flat_row(up, row, down, flat, mixed, sums):
     """One row of cells: depths of those that the zero line does not cross, and marks of those that it may.
 
@@ -109,7 +109,7 @@ def flat_row(up, row, down, flat, mixed, sums):
     return marks > zero
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _extremes(bits):
     """Greatest and least of a row of depths without NaN, as the integers of their bits: these compare in vectors.
 
@@ -127,7 +127,7 @@ def _extremes(bits):
     return high, low
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _keep_row(flat, cells, i):
     """Store the cells of a row that the zero line does not cross."""
     for j in range(flat.size):
@@ -138,7 +138,7 @@ def _keep_row(flat, cells, i):
         cells[3, i, j] = 1.0 if x > 0.0 else 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy", inline="always")
+@kernel(inline="always")
 def add_crossed(up, row, down, j, sums):
     """Count a cell that the zero line may cross, the j-th of a row.
 
@@ -196,7 +196,7 @@ class SplitRoom:
         return max(high, float(self.extreme[0])), min(low, float(self.extreme[1]))
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def widen(bits, extreme_bits):
     """Widen the greatest and least depth, kept as the integers of their bits, by a row; (0, 0) before the first."""
     lowest = np.iinfo(bits.dtype).min
@@ -207,7 +207,7 @@ def widen(bits, extreme_bits):
         extreme_bits[1] = low if extreme_bits[1] == 0 else max(extreme_bits[1], low)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _split(depth, cells, sums, flat, bits, mixed, extreme_bits):
     h = depth.shape[0] - 2
     w = depth.shape[1] - 2
@@ -260,7 +260,7 @@ def split_part(
     return room.extremes(high, low)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _split_part(depth, share, row0, column0, disturbed, sums, whole, flat, bits, mixed, extreme_bits):
     high = 0.0
     low = 0.0
@@ -295,7 +295,7 @@ def _split_part(depth, share, row0, column0, disturbed, sums, whole, flat, bits,
     return high, low
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _add_row(row, flat, parts, sums):
     """Add the cells of a row that the zero line does not cross, each by its part."""
     area = 0.0
@@ -320,7 +320,7 @@ def _add_row(row, flat, parts, sums):
     sums[PLAIN_FILL] += fill
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _differing_row(row, parts):
     """Area of a row whose finished and existing ground differ [cells]."""
     area = 0.0
@@ -329,7 +329,7 @@ def _differing_row(row, parts):
     return area
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _disturbed_row(row, disturbed, parts):
     """Area of a row that is disturbed and has data [cells]."""
     area = 0.0
@@ -338,7 +338,7 @@ def _disturbed_row(row, disturbed, parts):
     return area
 
 
-@njit(cache=True, nogil=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _blank_outside(flat, parts):
     """Set the depths of cells that have no part to 0."""
     for j in range(flat.size):

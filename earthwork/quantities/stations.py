@@ -6,8 +6,8 @@ from dataclasses import dataclass
 
 import numpy as np
 import shapely
-from numba import njit
 
+from earthwork.compiled import kernel
 from earthwork.ground.stack import Stack
 from earthwork.quantities.blocks import Channel, channels_of
 from earthwork.quantities.fields import named_fields
@@ -105,7 +105,7 @@ def _near_segments(points: np.ndarray, box: tuple[float, float, float, float]) -
     return np.flatnonzero(best <= worst.max(axis=0).min() * (1 + 1e-9))
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _by_station(values, row, column, east, north, points, near, starts, edges, width, sums, beyond, outside):
     channels, height, wide = values.shape
     intervals = len(edges) - 1
