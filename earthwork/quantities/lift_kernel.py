@@ -11,7 +11,7 @@ from __future__ import annotations
 import numpy as np
 
 from earthwork.compiled import kernel
-from earthwork.quantities.split import _half_slope, _plane_above_zero
+from earthwork.quantities.split import half_slope, plane_above_zero
 
 LOW, HIGH = 0, 1  #: ends of a column
 CODE, BIN, LENGTH = range(3)  #: of a run: coarse cell, kind and end in one number; its lowest bin; its bins
@@ -159,8 +159,8 @@ def count_columns(
                     if not share > 0.0:
                         continue
                     ground += share
-                    a = _half_slope(np.float64(depth[i + 1, j]), x, np.float64(depth[i + 1, j + 2]))
-                    b = _half_slope(np.float64(depth[i, j + 1]), x, np.float64(depth[i + 2, j + 1]))
+                    a = half_slope(np.float64(depth[i + 1, j]), x, np.float64(depth[i + 1, j + 2]))
+                    b = half_slope(np.float64(depth[i, j + 1]), x, np.float64(depth[i + 2, j + 1]))
                     z = np.float64(top[i, j])
                     lower = min(z - x, z)
                     low = np.float64(bottom[i, j]) if dug else lower
@@ -169,7 +169,7 @@ def count_columns(
                         fill = max(x, 0.0)
                         part = 1.0 if x > 0.0 else 0.0
                     else:
-                        fill, part = _plane_above_zero(x, a, b)
+                        fill, part = plane_above_zero(x, a, b)
                     amount = fill + refill
                     if not amount > 0.0:
                         continue

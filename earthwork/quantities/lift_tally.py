@@ -30,7 +30,8 @@ from earthwork.quantities.tile import Tile
 _COARSE_M = 5.0  #: side of the cells on which fill areas are told apart, where the site is small enough
 _COARSE_CELLS = 128  #: at most along a side
 _LOOSE = 3_000_000  #: records that are kept before those of one code and bin are added up
-_MOST_BINS = 1 << 21  #: above or below elevation 0: what lies further is no ground
+_FURTHEST_BIN = 1 << 21  #: above or below elevation 0: what lies further is no ground
+_MOST_BINS = 500_000  #: of a tile; with those to spare, places of packed bins stay within 63 bits
 _STRETCH = 1 << 20  #: records that room is made for at one time
 _CHUNK = 2048  #: cells across that are counted at one time
 _OVERVIEW_CELLS = 1024  #: of the map that lift outlines are drawn on, at most along a side
@@ -245,9 +246,7 @@ class LiftTally:
         # further parts may add half as much again before the next time
         self._loose = -len(whole.moments) // 2
 
-    def _bins(
-        self, low: np.ndarray, top: np.ndarray, depth: np.ndarray, *, sampled: bool = False
-    ) -> tuple[int, int]:
+    def _bins(self, low: np.ndarray, top: np.ndarray, depth: np.ndarray, *, sampled: bool = False) -> tuple[int, int]:
         """Lowest bin and number of bins between two surfaces; (0, 0) where there is no data.
 
         Of a sample, with bins to spare for what lies between its cells; else, for the fill of cells that the zero line
@@ -258,17 +257,18 @@ class LiftTally:
         if not least <= most:
             return 0, 0
         first, last = math.floor(least / self.lift_m), math.floor(most / self.lift_m)
-        if max(abs(first), abs(last)) >= _MOST_BINS or last - first > 1_000_000:
+        deepest = 0.0 if sampled else float(np.fmax.reduce(np.abs(depth), axis=None, initial=0.0))
+        hanging = math.ceil(3 * deepest / self.lift_m) + 1
+        if max(abs(first), abs(last)) >= _FURTHEST_BIN or last - first + hanging > _MOST_BINS:
             raise GroundError(
-                f"elevations from {least:g} to {most:g} m make {last - first:,} lifts of {self.lift_m:g} m; "
-                "check the nodata values, or give a thicker lift"
+                f"elevations from {least:g} to {most:g} m"
+                + (f" and surfaces up to {deepest:g} m apart" if deepest else "")
+                + f" are too much for lifts of {self.lift_m:g} m; check the nodata values, or give a thicker lift"
             )
         if sampled:
             spare = 8 + (last - first) // 4
             return first - spare, last - first + 2 + 2 * spare
-        deepest = float(np.fmax.reduce(np.abs(depth), axis=None, initial=0.0))
-        spare = math.ceil(3 * deepest / self.lift_m) + 1
-        return first - spare, last - first + 2 + spare
+        return first - hanging, last - first + 2 + hanging
 
     # --- what was counted -------------------------------------------------------------------------------------------
 

@@ -22,7 +22,7 @@ VALID, CUT, FILL, CUT_AREA, FILL_AREA, PLAIN_CUT, PLAIN_FILL, DISTURBED = range(
 
 
 @kernel(inline="always")
-def _half_slope(before, here, after):
+def half_slope(before, here, after):
     """Half the slope of a cell's plane along one axis [m per half cell], signless; NaN neighbours are holes."""
     left = here - before
     right = after - here
@@ -36,7 +36,7 @@ def _half_slope(before, here, after):
 
 
 @kernel(inline="always")
-def _plane_above_zero(h, a, b):
+def plane_above_zero(h, a, b):
     """Mean fill depth and fill share of a square cell with the plane h + a·u + b·v, u and v from −1 to 1.
 
     Third (second) powers of the positive parts at the four corners, alternating: the double (single) integral of the
@@ -47,7 +47,9 @@ def _plane_above_zero(h, a, b):
     if a + b <= abs(h):
         return max(h, 0.0), 1.0 if h > 0.0 else 0.0
     if b < 1e-7 * a:
-        return (h + a) * (h + a) / (4.0 * a), (h + a) / (2.0 * a)
+        # Taken as level along the other axis, it may lie beside the zero line by a hair.
+        reach = min(max(h + a, 0.0), 2.0 * a)
+        return max(reach * reach / (4.0 * a), max(h, 0.0)), reach / (2.0 * a)
     p1 = max(h + a + b, 0.0)
     p2 = max(h + a - b, 0.0)
     p3 = max(h - a + b, 0.0)
@@ -146,9 +148,9 @@ def add_crossed(up, row, down, j, sums):
         Its depth, fill [mean m over the cell], cut share and fill share.
     """
     x = np.float64(row[j + 1])
-    a = _half_slope(np.float64(row[j]), x, np.float64(row[j + 2]))
-    b = _half_slope(np.float64(up[j + 1]), x, np.float64(down[j + 1]))
-    fill, fill_share = _plane_above_zero(x, a, b)
+    a = half_slope(np.float64(row[j]), x, np.float64(row[j + 2]))
+    b = half_slope(np.float64(up[j + 1]), x, np.float64(down[j + 1]))
+    fill, fill_share = plane_above_zero(x, a, b)
     cut_share = 1.0 - fill_share if a + b > abs(x) else (1.0 if x < 0.0 else 0.0)
     sums[CUT] += fill - x
     sums[FILL] += fill

@@ -10,10 +10,13 @@ from rasterio.transform import from_origin
 
 from earthwork.errors import GroundError
 from earthwork.plan.fill_areas import fill_areas, label_fills
-from earthwork.quantities.lift_tally import CoarseGrid, LiftTally
+from earthwork.quantities import lift_tally
+from earthwork.quantities.engine import walk
+from earthwork.quantities.lift_tally import CoarseGrid, LiftTally, Records
 from earthwork.quantities.site_ground import open_site
 from earthwork.quantities.volumes import count_volumes
 from earthwork.site import check_site
+from tests.quantities.conftest import stack_of
 
 
 def write(path: Path, array: np.ndarray, cell: float = 1.0, dtype: str = "float64") -> None:
@@ -311,7 +314,7 @@ def test_impossible_lifts_are_refused(tmp_path):
     ground, grade = rolling()
     with pytest.raises(GroundError, match=r"lift thickness is 0 m; it must be more than 0"):
         counted(tmp_path, ground, grade, lift=0.0)
-    with pytest.raises(GroundError, match=r"make .* lifts of 1e-06 m; check the nodata values"):
+    with pytest.raises(GroundError, match=r"too much for lifts of 1e-06 m; check the nodata values"):
         counted(tmp_path, ground, grade, lift=1e-6)
 
 
@@ -393,3 +396,72 @@ def test_no_lift_of_rough_ground_with_depth_rows_is_less_than_nothing_or_more_th
     for area in areas:
         for bench in () if area.is_small else area.benches:
             assert 0 < bench.compacted_m3 <= bench.area_m2 * lift * (1 + 1e-9)
+
+
+# --- records that are added up on the way -------------------------------------------------------------------------
+
+
+def by_code_and_bin(records):
+    """The moments of each code and bin, added up one by one."""
+    sums, at = {}, 0
+    for code, first, length in records.runs.tolist():
+        for k in range(length):
+            key = (code, first + k)
+            sums[key] = sums.get(key, 0.0) + records.moments[at + k]
+        at += length
+    assert at == len(records.moments)
+    return sums
+
+
+def test_merged_records_are_the_sums_of_their_codes_and_bins():
+    random = np.random.default_rng(4)
+    lengths = random.integers(1, 90, 300)
+    runs = np.c_[random.integers(0, 12, 300), random.integers(-400, 400, 300), lengths]
+    runs[50:60, 0] = 99  # a code of its own, and one bin of it taken back to nothing
+    records = Records(runs.astype(np.int64), random.uniform(0.1, 1, (lengths.sum(), 3)))
+    merged = records.merged()
+    expected, made = by_code_and_bin(records), by_code_and_bin(merged)
+    assert made.keys() == expected.keys()
+    assert len(made) == len(merged.moments)  # each once
+    assert list(made) == sorted(made)
+    for key, sums in expected.items():
+        assert made[key] == pytest.approx(sums, rel=1e-13)
+
+
+@pytest.mark.parametrize("layered", [False, True])
+def test_records_that_are_merged_on_the_way_change_no_lift(tmp_path, monkeypatch, layered):
+    ground, grade = rolling()
+    grade = grade + np.random.default_rng(9).normal(0, 0.4, grade.shape)  # rough, so that bins come in many runs
+    tables = {"over_excavation": [{"name": "all", "depth": 0.7}]} if layered else {}
+    walk = {"tile_cells": 10, "band_rows": 3}  # several tiles to a coarse cell
+    monkeypatch.setattr(lift_tally, "_LOOSE", 10**9)
+    kept, volumes, loose = counted(tmp_path, ground, grade, walk={**walk, "threads": 1}, **tables)
+    expected = by_code_and_bin(loose.records)
+    assert len(loose.records.moments) > 2 * len(expected)
+    monkeypatch.setattr(lift_tally, "_LOOSE", 2000)
+    for threads in (1, 3):
+        areas, _, tally = counted(tmp_path, ground, grade, walk={**walk, "threads": threads}, **tables)
+        made = by_code_and_bin(tally.records)
+        assert made.keys() == expected.keys()
+        assert max(abs(made[key] - expected[key]).max() for key in expected) < 1e-9
+        assert len(tally.records.moments) < 1.6 * len(expected) + 2000
+        assert total(areas) == pytest.approx(volumes.refill_and_fill_m3, rel=1e-10)
+        for ours, theirs in zip(areas, kept, strict=True):
+            assert [b.compacted_m3 for b in ours.benches] == pytest.approx(
+                [b.compacted_m3 for b in theirs.benches], rel=1e-9, abs=1e-9
+            )
+
+
+@pytest.mark.parametrize("height", [2e6, 1e30])
+def test_cut_through_what_is_no_ground(height):
+    existing = np.full((40, 40), 100.0)
+    existing[20, 20] = height
+    finished = np.full((40, 40), 101.0)
+    # plain ground has bins for its fill alone
+    stack = stack_of(existing, finished)
+    tally = LiftTally(stack, 0.2)
+    walk(stack, [tally])
+    assert total(fill_areas(tally)) == pytest.approx(40 * 40 - 1, rel=1e-12)
+    stack = stack_of(existing, finished, bands_below_m=((1.0, "subgrade"),))
+    with pytest.raises(GroundError, match=r"m apart are too much for lifts of 0\.2 m; check the nodata values"):
+        walk(stack, [LiftTally(stack, 0.2)])
