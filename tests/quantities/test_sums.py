@@ -4,6 +4,8 @@ Cut and fill are metres deep and change in steps of two cells at least, so that 
 volume is a sum over cells that can be written down in a line.
 """
 
+from types import SimpleNamespace
+
 import numpy as np
 import pytest
 import shapely
@@ -14,6 +16,7 @@ from earthwork.ground.stack import ExcavationLayer, ScarifyLayer, SectionLayer, 
 from earthwork.plan.grade_shift import ShiftTally
 from earthwork.quantities.engine import walk
 from earthwork.quantities.fields import field_names
+from earthwork.quantities.volumes import VolumesTally
 from earthwork.reporting.depth_raster import DepthRasterTally
 from earthwork.units import METRIC
 from tests.quantities.conftest import count_arrays, stack_of
@@ -74,13 +77,18 @@ def overlap(low, high, bottom, top):
     return np.maximum(np.minimum(high, top) - np.maximum(low, bottom), 0.0)
 
 
-def expected(existing, finished, shift=0.0, without="") -> dict[str, float]:
-    """All sums, each written down as its definition says; of a site without one of the layers those of the others."""
+def expected(existing, finished, shift=0.0, without="", counted=None) -> dict[str, float]:
+    """All sums, each written down as its definition says; of a site without one of the layers those of the others.
+
+    ``counted`` is the share of each cell that counts: by default inside the limits.
+    """
     move = shares(MOVED)
     disturbed = shares(DISTURBED)
     if without == "disturbed":
         disturbed = np.maximum(abs(finished - existing) > 0.01, shares(PAVED))
-    weight = np.where(np.isnan(existing + finished), 0.0, 1.0 if without == "limits" else shares(LIMITS))
+    if counted is None:
+        counted = 1.0 if without == "limits" else shares(LIMITS)
+    weight = np.where(np.isnan(existing + finished), 0.0, counted)
     existing, finished = np.nan_to_num(existing, nan=100.0), np.nan_to_num(finished, nan=100.0) + shift * move
     strips = 0.3 * shares(STRIPPED), 0.2 * disturbed
     court = 0.45 * shares(PAVED)
@@ -148,6 +156,28 @@ def test_a_shift_carries_nothing_where_no_cell_moves():
     tally = ShiftTally(stack, (0.0, 2.0))
     walk(stack, [tally])
     assert tally.sums[2.0].values.tolist() == tally.sums[0.0].values.tolist()
+
+
+@pytest.mark.parametrize("walking", [{}, {"tile_cells": 90, "band_rows": 3, "threads": 2}, {"tile_cells": 260}])
+def test_sums_of_zones_and_of_what_is_outside(walking):
+    existing, finished = ground()
+    layers = {name: layer for name, layer in LAYERS.items() if name != "limits"}
+    stack = stack_of(existing, finished, **layers)
+    zones = [PAVED, DUG.difference(PAVED), shapely.box(46.5, 2.25, 51.0, 35.5).difference(DUG)]
+    site = SimpleNamespace(stack=stack, zone_names=("a", "b", "c"), zones=rings_on(GRID, zones))
+    tally = VolumesTally(site)
+    walk(stack, [tally], **walking)
+    parts = [(tally.zones[i], shares(zone)) for i, zone in enumerate(zones)]
+    parts += [(tally.total, 1.0), (tally.outside, 1.0 - sum(shares(zone) for zone in zones))]
+    for sums, counted in parts:
+        known = expected(existing, finished, counted=counted)
+        ours = dict(zip(field_names(stack), sums.values, strict=True))
+        assert ours == pytest.approx({name: known[name] for name in ours}, rel=1e-9, abs=1e-8)
+    lost = np.isnan(existing + finished)
+    assert tally.missing == lost.sum()
+    rows, columns = np.nonzero(lost)
+    assert tally.missing_rows == (rows.min(), rows.max() + 1)
+    assert tally.missing_columns == (columns.min(), columns.max() + 1)
 
 
 # --- one stratum, limits -----------------------------------------------------------------------------------------
