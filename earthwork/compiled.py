@@ -21,5 +21,8 @@ def _kept() -> bool:
     return True
 
 
+#: Freedom to reorder sums, so that they run in vectors. Not nnan: no data is NaN, and the loops meet and test for it.
+FAST = {"reassoc", "nsz", "contract", "arcp"}
+
 #: ``numba.njit`` of loops that release the lock and divide as numpy does: ``@kernel``, or ``@kernel(fastmath=…)``.
 kernel: Any = partial(njit, cache=_kept(), nogil=True, error_model="numpy")

@@ -4,11 +4,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from earthwork.compiled import kernel
+from earthwork.compiled import FAST, kernel
 
 
-# Not nnan: the kernel makes and meets NaN. Reassociation lets the count run in vectors; whole numbers stay exact.
-@kernel(fastmath={"reassoc", "nsz"})
+@kernel(fastmath=FAST)
 def blank(values, missing, low, high):
     """Set cells that hold ``missing``, or are infinite, to NaN, in place and in one pass; whether others lie far out.
 

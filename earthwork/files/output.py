@@ -85,7 +85,7 @@ class OutputFolder:
         finally:
             with _interrupts_later():
                 self._clean()
-        if isinstance(error, OSError) and error.errno in _NO_ROOM:
+        if isinstance(error, OSError) and error.errno in _UNWRITABLE:
             raise _output_error(error, self.directory) from error
 
     def refuse_present(self) -> None:
@@ -152,7 +152,7 @@ class OutputFolder:
         self._made = []
 
 
-_NO_ROOM = (errno.ENOSPC, errno.EDQUOT, errno.EFBIG, errno.EROFS, errno.EACCES, errno.EPERM)
+_UNWRITABLE = (errno.ENOSPC, errno.EDQUOT, errno.EFBIG, errno.EROFS, errno.EACCES, errno.EPERM)
 
 
 @contextmanager

@@ -18,7 +18,7 @@ from earthwork.ground.surfaces import AlignedReader, Surface, SurfaceReader
 #: Fields of a window by name, each (height, width); elevations and depths in m, shares in [0, 1], NaN = no data.
 #: ``depth`` (subgrade − stripped), ``existing``, ``finished``; with layers also ``stripped``, ``subgrade``,
 #: ``disturbed``, ``move``, and numbered ``strip0`` (depth), ``section0`` (thickness), ``excavation0`` (share),
-#: ``scarify0`` (depth), ``stratum0`` (bottom).
+#: ``scarify0`` (depth), ``stratum0`` (bottom). Where nobody asks for more, ``depth`` alone.
 Arrays = dict[str, np.ndarray]
 
 #: Finished and existing ground that differ by more than this are disturbed [m].

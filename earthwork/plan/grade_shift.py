@@ -25,7 +25,7 @@ Evaluate = Callable[[Sequence[float]], dict[float, float]]
 
 
 class ShiftTally:
-    """Sums over the site for a list of trial shifts of the grade [m]."""
+    """Sums over the site for a list of trial shifts of the grade [m]; their greatest depths are not kept."""
 
     def __init__(self, stack, shifts: Sequence[float]) -> None:
         self.stack = stack

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from earthwork.compiled import kernel
+from earthwork.compiled import FAST, kernel
 from earthwork.quantities.split import CUT_AREA, SplitRoom, add_crossed, flat_row, widen
 
 
@@ -67,7 +67,7 @@ def split_by_stratum(
     """
     height, width = (depth.shape[0] - 2, depth.shape[1] - 2) if share is None else share.shape
     room = SplitRoom(width, depth.dtype)
-    parts = np.ones((1, width)) if share is None else share
+    parts = np.ones((1, width)) if share is None else share  # the last row serves all that follow
     cut, sums = np.zeros(len(bottoms) + 1), np.zeros(8)
     high, low = _split_by_stratum(
         depth, bottoms, stripped, subgrade, parts, row, column, height, sums,
@@ -76,7 +76,7 @@ def split_by_stratum(
     return (cut, sums, *room.extremes(high, low))
 
 
-@kernel(fastmath={"reassoc", "nsz", "contract"})
+@kernel(fastmath=FAST)
 def _add_row(flat, top, bottom, parts, above):
     """Cut of one stratum in the cells of a row that the zero line does not cross, each by its part.
 
@@ -94,7 +94,7 @@ def _add_row(flat, top, bottom, parts, above):
     return total
 
 
-@kernel(fastmath={"reassoc", "nsz", "contract"})
+@kernel(fastmath=FAST)
 def _add_rest(flat, parts, above):
     """Cut of the last stratum, likewise."""
     total = 0.0

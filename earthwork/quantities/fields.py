@@ -9,13 +9,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from earthwork.compiled import kernel
+from earthwork.compiled import FAST, kernel
 from earthwork.ground.stack import Stack
 from earthwork.quantities.by_stratum import split_by_stratum
 from earthwork.quantities.split import CUT, DISTURBED, split_part
 from earthwork.quantities.tile import Tile
 
-_FAST = {"reassoc", "nsz", "contract", "arcp"}
 _BASE = ("area", "cut", "fill", "cut_area", "fill_area", "plain_cut", "plain_fill", "disturbed")
 
 
@@ -102,7 +101,7 @@ def _bands(tile: Tile, at: dict[str, np.ndarray], valid: np.ndarray) -> None:
         deeper = np.maximum(deeper, under)
 
 
-@kernel(fastmath=_FAST)
+@kernel(fastmath=FAST)
 def _add_weighted(field, share, row, column):
     """Sum of a field × share of one area, (height, width), which starts at (row, column) of the field."""
     height, width = share.shape
@@ -137,30 +136,10 @@ class Sums:
             share: of each cell inside the area, starting at (row, column) of the tile; None: all of the tile.
             fixed: sums of the same part before its grade was shifted: those of layers that lie as they did.
         """
-        stack = tile.stack
-        cut = None
-        if len(stack.strata) > 1:
-            arrays = tile.arrays
-            layers = (tile.depth, tile.stratum_bottoms, stack.stripped(arrays), stack.subgrade(arrays))
-            cut, all_sums, highest, lowest = split_by_stratum(*layers, share, row, column)
-            if share is None:
-                tile.depth_sums = (all_sums, highest, lowest)
-        # The kernels' order is that of the base fields.
-        base = np.zeros(len(_BASE))
-        if share is None:
-            sums, high, low = tile.depth_sums
-            base += sums
-            if fixed is not None:
-                base[DISTURBED] = fixed.values[DISTURBED]
-            elif not tile.plainly_disturbed:
-                base[DISTURBED] = float(np.where(np.isnan(tile.depth[1:-1, 1:-1]), 0.0, tile.disturbed).sum())
-        else:
-            disturbed = None if tile.plainly_disturbed else tile.disturbed
-            high, low = split_part(tile.depth, share, row, column, disturbed, base)
-        self._widen(high, low)
+        cut = self._cut_by_stratum(tile, share, row, column) if len(tile.stack.strata) > 1 else None
+        base = self._base(tile, share, row, column, fixed)
         self.values[: len(_BASE)] += base
-        names = field_names(stack)[len(_BASE) :]
-        for i, name in enumerate(names, len(_BASE)):
+        for i, name in enumerate(field_names(tile.stack)[len(_BASE) :], len(_BASE)):
             kind, _, stratum = name.partition(":")
             if kind == "cut":
                 self.values[i] += base[CUT] if cut is None else cut[int(stratum)]
@@ -170,6 +149,33 @@ class Sums:
                 self.values[i] += extra_fields(tile)[name].sum()
             else:
                 self.values[i] += _add_weighted(extra_fields(tile)[name], share, row, column)
+
+    def _cut_by_stratum(self, tile: Tile, share: np.ndarray | None, row: int, column: int) -> np.ndarray:
+        """Cut of each stratum (strata,) [cell·m]; the tile keeps what the split of all of it gives beside."""
+        stripped, subgrade = tile.stack.stripped(tile.arrays), tile.stack.subgrade(tile.arrays)
+        layers = (tile.depth, tile.stratum_bottoms, stripped, subgrade)
+        cut, sums, high, low = split_by_stratum(*layers, share, row, column)
+        if share is None:
+            tile.depth_sums = (sums, high, low)
+        return cut
+
+    def _base(
+        self, tile: Tile, share: np.ndarray | None, row: int, column: int, fixed: Sums | None
+    ) -> np.ndarray:
+        """Sums of the base fields, which are those of the split in its order; widens the greatest depths."""
+        base = np.zeros(len(_BASE))
+        if share is not None:
+            disturbed = None if tile.plainly_disturbed else tile.disturbed
+            self._widen(*split_part(tile.depth, share, row, column, disturbed, base))
+            return base
+        sums, high, low = tile.depth_sums
+        self._widen(high, low)
+        base += sums
+        if fixed is not None:
+            base[DISTURBED] = fixed.values[DISTURBED]
+        elif not tile.plainly_disturbed:
+            base[DISTURBED] = float(np.where(np.isnan(tile.depth[1:-1, 1:-1]), 0.0, tile.disturbed).sum())
+        return base
 
     def merge(self, other: Sums) -> None:
         self.values += other.values

@@ -113,7 +113,7 @@ def count_columns(
     depth, top, bottom, weight, finished, below, from_finished, order,
     row0, column0, side, coarse_columns, lift, first, bins, cells, runs, moments, counts,
 ):  # fmt: skip
-    """Count the fill columns of a tile.
+    """Count the fill columns of a tile, in one long loop: parted into functions it takes a quarter longer.
 
     Args:
         depth: (h + 2, w + 2) subgrade − stripped with a one-cell rim [m]; NaN = no data.

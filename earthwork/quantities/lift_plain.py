@@ -8,14 +8,13 @@ from __future__ import annotations
 
 import numpy as np
 
-from earthwork.compiled import kernel
+from earthwork.compiled import FAST, kernel
 from earthwork.quantities.lift_kernel import FOOTPRINT, GROUND, HIGH, HIGHEST, LOW, LOWEST, VOLUME, code_of, record
 from earthwork.quantities.split import FILL_AREA, VALID, add_crossed, flat_row, widen
 
-_FAST = {"reassoc", "nsz", "contract", "arcp"}
-_FINITE = {*_FAST, "nnan", "ninf"}
+_FINITE = {*FAST, "nnan", "ninf"}  #: where what comes of NaN is not used
 _PAD = 4  #: numbers kept for a bin, a power of two
-_FAR = 1e300
+_FAR = 1e300  #: beyond every level, for the least and the greatest of none
 LARGE_SIDE = 32  #: coarse cells of so many cells along are counted with the second moments of a sample
 SAMPLED_ROWS = 4  #: of so many rows one is counted with second moments where the others are packed
 LEAST_PLACE_BITS = 32  #: a level fill of one lift then adds up to 2⁻³² of it, 2.3·10⁻¹⁰, at the worst
@@ -61,7 +60,7 @@ def _levels(top, depth, i, j0, scale, origin, height, flat, lows, tops):
     return outside > 0.0
 
 
-@kernel(fastmath=_FAST)
+@kernel(fastmath=FAST)
 def _any(values, start, stop):
     """Whether any of a stretch of values is over 0."""
     count = values.dtype.type(0)
@@ -192,6 +191,18 @@ def _crossings(up, row, down, top, mixed, edges, crossings, first, bins, lift, r
 
 
 @kernel
+def _widen(ranges, reach, first, lift, place):
+    """Widen the elevations of a coarse cell, and the bins that have ends, by the ranges of its whole columns."""
+    if ranges[LOW, 0] == _FAR:
+        return
+    place[LOWEST] = min(place[LOWEST], (ranges[LOW, 0] + first) * lift)
+    place[HIGHEST] = max(place[HIGHEST], (ranges[HIGH, 1] + first) * lift)
+    for end in range(2):
+        reach[end, 0] = min(reach[end, 0], np.int64(ranges[end, 0]))
+        reach[end, 1] = max(reach[end, 1], np.int64(ranges[end, 1]))
+
+
+@kernel
 def _collect(
     tables, packed, crossings, reach, coarse, first, lift, place, runs, moments, counts, place_bits, count_bits
 ):  # fmt: skip
@@ -315,17 +326,10 @@ def count_plain(
                 ):  # fmt: skip
                     return False
             for b in range(edges.size - 1):
-                place = places[b]
-                if ranges[b, LOW, 0] < _FAR:
-                    place[LOWEST] = min(place[LOWEST], (ranges[b, LOW, 0] + first) * lift)
-                    place[HIGHEST] = max(place[HIGHEST], (ranges[b, HIGH, 1] + first) * lift)
-                    for end in range(2):
-                        reach[b, end, 0] = min(reach[b, end, 0], np.int64(ranges[b, end, 0]))
-                        reach[b, end, 1] = max(reach[b, end, 1], np.int64(ranges[b, end, 1]))
-                coarse = big_row * coarse_columns + chunk + b
+                _widen(ranges[b], reach[b], first, lift, places[b])
                 _collect(
-                    tables[b], packed[b], crossings[b], reach[b], coarse, first, lift, place, runs, moments, counts,
-                    place_bits, count_bits,
+                    tables[b], packed[b], crossings[b], reach[b], big_row * coarse_columns + chunk + b, first, lift,
+                    places[b], runs, moments, counts, place_bits, count_bits,
                 )  # fmt: skip
     return True
 

@@ -11,13 +11,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from earthwork.compiled import kernel
+from earthwork.compiled import FAST, kernel
 from earthwork.ground.stack import DISTURBED_OVER_M
 
-# Not nnan: missing cells are NaN, and the kernels test for them.
-_FAST = {"reassoc", "nsz", "contract", "arcp"}
-
-
+#: Sums over cells: with data, cut and fill, their areas, cut and fill without the split, disturbed [cells, cell·m].
 VALID, CUT, FILL, CUT_AREA, FILL_AREA, PLAIN_CUT, PLAIN_FILL, DISTURBED = range(8)
 
 
@@ -60,7 +57,7 @@ def plane_above_zero(h, a, b):
     return max(depth, max(h, 0.0)), min(max(share, 0.0), 1.0)
 
 
-@kernel(fastmath=_FAST)
+@kernel(fastmath=FAST)
 def flat_row(up, row, down, flat, mixed, sums):
     """One row of cells: depths of those that the zero line does not cross, and marks of those that it may.
 
@@ -129,7 +126,7 @@ def _extremes(bits):
     return high, low
 
 
-@kernel(fastmath=_FAST)
+@kernel(fastmath=FAST)
 def _keep_row(flat, cells, i):
     """Store the cells of a row that the zero line does not cross."""
     for j in range(flat.size):
@@ -248,7 +245,7 @@ def split_part(
     Args:
         depth: (h + 2, w + 2) depths of a tile with a one-cell rim [m], + fill; NaN = no data.
         share: of each cell inside the area, (height, width), starting at (row, column) of the tile without its rim.
-        disturbed: (h, w) share of each cell that is disturbed; None: all of those that differ.
+        disturbed: (h, w) share of each cell that is disturbed; None: all of those whose depth is over DISTURBED_OVER_M.
         sums: as for :func:`split`.
 
     Returns:
@@ -297,7 +294,7 @@ def _split_part(depth, share, row0, column0, disturbed, sums, whole, flat, bits,
     return high, low
 
 
-@kernel(fastmath=_FAST)
+@kernel(fastmath=FAST)
 def _add_row(row, flat, parts, sums):
     """Add the cells of a row that the zero line does not cross, each by its part."""
     area = 0.0
@@ -322,16 +319,16 @@ def _add_row(row, flat, parts, sums):
     sums[PLAIN_FILL] += fill
 
 
-@kernel(fastmath=_FAST)
+@kernel(fastmath=FAST)
 def _differing_row(row, parts):
-    """Area of a row whose finished and existing ground differ [cells]."""
+    """Area of a row whose depth is not 0, of ground without layers [cells]."""
     area = 0.0
     for j in range(parts.size):
         area += parts[j] if abs(row[j + 1]) > DISTURBED_OVER_M else 0.0
     return area
 
 
-@kernel(fastmath=_FAST)
+@kernel(fastmath=FAST)
 def _disturbed_row(row, disturbed, parts):
     """Area of a row that is disturbed and has data [cells]."""
     area = 0.0
@@ -340,7 +337,7 @@ def _disturbed_row(row, disturbed, parts):
     return area
 
 
-@kernel(fastmath=_FAST)
+@kernel(fastmath=FAST)
 def _blank_outside(flat, parts):
     """Set the depths of cells that have no part to 0."""
     for j in range(flat.size):

@@ -115,7 +115,7 @@ class Tile:
 
     @property
     def plainly_disturbed(self) -> bool:
-        """Whether a cell is disturbed just where its depth is not 0, as :attr:`depth_sums` counts it."""
+        """Whether a cell is disturbed just where its depth is over DISTURBED_OVER_M, as :attr:`depth_sums` counts it."""
         return "disturbed" not in self.arrays and self.stack.disturbed is None
 
     @cached_property

@@ -265,7 +265,7 @@ def count_volumes(
 def volumes_result(site: Site, ground: SiteGround, tally: VolumesTally) -> VolumesResult:
     """The result of a tally that has seen all of the ground."""
     cell = ground.stack.grid.cell_area_m2
-    counted = float(tally.total.values[0]) * cell
+    counted = float(tally.total.values[VALID]) * cell
     if counted == 0.0:
         raise GroundError(
             f"{site.name}: no cell has data in all surfaces"
@@ -295,7 +295,7 @@ def volumes_result(site: Site, ground: SiteGround, tally: VolumesTally) -> Volum
 def _zone_lost(ground: SiteGround, tally: VolumesTally, zone: int) -> float:
     """Ground of the site in a zone that has no data [m²]."""
     area = ground.zone_areas_m2[zone]
-    counted = float(tally.zones[zone].values[0]) * ground.stack.grid.cell_area_m2 if zone in tally.zones else 0.0
+    counted = float(tally.zones[zone].values[VALID]) * ground.stack.grid.cell_area_m2 if zone in tally.zones else 0.0
     lost = area - counted
     return lost if lost > 1e-9 * max(area, 1.0) else 0.0
 

@@ -1,4 +1,4 @@
-"""The depth raster: written tile by tile while the ground is walked, so that it is never whole in memory."""
+"""The depth raster: written while the ground is walked, so that it is never whole in memory."""
 
 from __future__ import annotations
 
@@ -15,16 +15,14 @@ if TYPE_CHECKING:
     from earthwork.ground.stack import Arrays, Stack
     from earthwork.quantities.tile import Tile
 
-DESCRIPTION = "depth: subgrade - stripped ground; + fill, - cut"
-
 
 class DepthRasterTally:
-    """Hands every tile's depths to one file, in the site's unit of length; :meth:`finish` closes it.
+    """Hands the depths of every band to one file, in the site's unit of length; :meth:`finish` closes it.
 
     Cells outside the limits are no data.
     """
 
-    description = DESCRIPTION
+    description = "depth: subgrade - stripped ground; + fill, - cut"
 
     depth_only = True  #: engine: the surfaces themselves are not asked for
     portable = False  #: all instances write into one file, so they stay on one machine
