@@ -2,6 +2,7 @@
 
 import math
 from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -14,7 +15,8 @@ from earthwork.quantities import lift_tally
 from earthwork.quantities.engine import walk
 from earthwork.quantities.lift_tally import CoarseGrid, LiftTally, Records
 from earthwork.quantities.site_ground import open_site
-from earthwork.quantities.volumes import count_volumes
+from earthwork.quantities.split import CUT, FILL, VALID
+from earthwork.quantities.volumes import VolumesTally, count_volumes
 from earthwork.site import check_site
 from tests.quantities.conftest import stack_of
 
@@ -465,3 +467,34 @@ def test_cut_through_what_is_no_ground(height):
     stack = stack_of(existing, finished, bands_below_m=((1.0, "subgrade"),))
     with pytest.raises(GroundError, match=r"m apart are too much for lifts of 0\.2 m; check the nodata values"):
         walk(stack, [LiftTally(stack, 0.2)])
+
+
+@pytest.mark.parametrize("seed", range(24))
+def test_lifts_and_volumes_of_any_plain_ground(seed):
+    """Any cell, lift, level, roughness, holes, type and tiles: sums and ends are numpy's, and lifts add up to the fill."""
+    random = np.random.default_rng(seed)
+    rows, columns = random.integers(40, 220, 2)
+    y, x = np.mgrid[0:rows, 0:columns]
+    level, waves = random.choice([-3.0, 0.0, 100.0, 2500.0]), random.uniform(3, 40, 2)
+    existing = level + random.uniform(0, 3) * np.sin(x / waves[0]) * np.cos(y / waves[1])
+    existing += random.normal(0, random.choice([1e-9, 0.01, 0.3]), x.shape)
+    finished = np.where((x // random.integers(5, 60)) % 2 == 0, level + random.uniform(-1, 3), existing)
+    existing[random.random(x.shape) < random.choice([0, 0.02])] = np.nan
+    dtype, cell = random.choice([np.float32, np.float64]), random.choice([0.05, 0.1, 0.3, 1.0, 3.0])
+    existing, finished = existing.astype(dtype), finished.astype(dtype)
+    lift = random.choice([0.01, 0.1, 0.2, 0.3048, 1.0])
+
+    stack = stack_of(existing, finished, cell=cell)
+    lifts, volumes = LiftTally(stack, lift), VolumesTally(SimpleNamespace(stack=stack, zone_names=(), zones=None))
+    tiles = {"tile_cells": int(random.integers(30, 9000)), "band_rows": int(random.integers(3, 90))}
+    walk(stack, [lifts, volumes], threads=2, **tiles)
+    sums, depth = volumes.total, (finished - existing).astype(np.float64)
+    assert sums.values[VALID] == np.isfinite(depth).sum()
+    assert sums.values[FILL] - sums.values[CUT] == pytest.approx(np.nansum(depth), abs=1e-9 * np.nansum(abs(depth)))
+    assert (sums.high_m, sums.low_m) == (max(np.nanmax(depth), 0.0), min(np.nanmin(depth), 0.0))
+    areas = fill_areas(lifts)
+    assert total(areas) == pytest.approx(sums.values[FILL] * cell**2, rel=1e-9)
+    for area in areas:
+        for bench in area.benches:
+            assert bench.compacted_m3 > 0
+            assert area.is_small or bench.compacted_m3 <= bench.area_m2 * lift * (1 + 1e-9)

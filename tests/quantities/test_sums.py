@@ -149,6 +149,31 @@ def test_sums_of_shifted_grades_without_a_layer(without):
         assert sums == pytest.approx({name: known[name] for name in sums}, rel=1e-9, abs=1e-9), shift
 
 
+@pytest.mark.parametrize("seed", range(6))
+def test_shifted_grades_where_the_zero_line_crosses(seed):
+    """Rough ground: cut − fill is the plain sum of the depths, and all else is that of the site built so."""
+    random = np.random.default_rng(seed)
+    existing = 100 + random.normal(0, 0.3, (ROWS, COLUMNS))
+    finished = np.where(random.random((ROWS, COLUMNS)) < 0.02, np.nan, 100.05)
+    layers = {name: LAYERS[name] for name in ("limits", "disturbed", "strata", "sections")}
+    stack = stack_of(existing, finished, **layers).with_move(rings(MOVED))
+    tally = ShiftTally(stack, SHIFTS)
+    walk(stack, [tally], band_rows=int(random.integers(3, 20)), tile_cells=int(random.integers(10, 600)))
+    for shift in SHIFTS:
+        sums = dict(zip(field_names(stack), tally.sums[shift].values, strict=True))
+        moved = finished + shift * shares(MOVED)
+        depth = moved - 0.45 * shares(PAVED) - existing
+        assert sums["fill"] - sums["cut"] == pytest.approx(np.nansum(depth * shares(LIMITS)), abs=1e-9)
+        plain = np.nansum(np.maximum(depth, 0) * shares(LIMITS))
+        assert sums["plain_fill"] == pytest.approx(plain, rel=1e-9)
+        assert sums["fill"] > plain * 1.001  # what the split adds
+        built = count_arrays(existing, moved, **layers)
+        assert sums["fill"] == pytest.approx(built.fill_m3, rel=1e-9)
+        assert sums["cut_area"] == pytest.approx(built.cut_area_m2, rel=1e-9)
+        by_stratum = [built.cut_by_material[material] for material in ("clay", "till", "rock")]
+        assert [sums[f"cut:{k}"] for k in range(3)] == pytest.approx(by_stratum, rel=1e-9, abs=1e-9)
+
+
 def test_a_shift_carries_nothing_where_no_cell_moves():
     existing, finished = ground()
     away = rings(shapely.box(-20, -20, -10, -10))
