@@ -6,7 +6,6 @@ import codecs
 import io
 import shutil
 import sys
-import textwrap
 import unicodedata
 from typing import TYPE_CHECKING, Any
 
@@ -20,6 +19,10 @@ _PIPE_WIDTH = 110
 _LONGEST_VALUE = 24
 #: Names that are no longer than this stay on one line of a table [characters].
 _SHORT_NAME = 14
+#: Room that notes have at least [characters].
+_LEAST_NOTE = 16
+#: Soft hyphen, (non-)joiners, marks of direction: terminals disagree on their width.
+_UNSEEN = "\u00ad\u200b\u200c\u200d\u200e\u200f\u2060\ufeff"
 _PLAIN = {
     "²": "2", "³": "3", "−": "-", "–": "-", "—": "-", "×": "x", "·": "*", "±": "+/-", "≥": ">=", "≤": "<=",
     "→": "->", "…": "...", "°": " deg", "½": "1/2", "“": '"', "”": '"', "‘": "'", "’": "'", "─": "-",
@@ -50,11 +53,15 @@ def prepare_streams() -> None:
 def printable(text: str) -> str:
     """Text without the control characters by which a name could steer a terminal.
 
-    >>> printable("lot\\x1b[2J 7")
-    'lot?[2J 7'
+    Those that only say how letters join or may be parted take no room and are left out.
+
+    >>> printable("lot\\x1b[2J 7"), printable("east\\u00adern")
+    ('lot?[2J 7', 'eastern')
     """
     return "".join(
-        c if c == "\n" or unicodedata.category(c) not in ("Cc", "Cf", "Cs", "Zl", "Zp") else "?" for c in text
+        c if c == "\n" or unicodedata.category(c) not in ("Cc", "Cf", "Cs", "Zl", "Zp") else "?"
+        for c in text
+        if c not in _UNSEEN
     )
 
 
@@ -115,7 +122,8 @@ def print_page(page: Page) -> None:
         if block.heading:
             console.print(Text(printable(block.heading), style="bold"))
         if isinstance(block, Facts):
-            console.print(_facts(block.rows))
+            if block.rows:
+                console.print(_facts(block.rows, narrow))
         elif isinstance(block, Table):
             # A number that is cut off is a wrong number: where there is no room for all, the line runs on.
             headings = _headings(block, wrapped=False)
@@ -132,19 +140,36 @@ def print_page(page: Page) -> None:
     sys.stdout.write("\n".join(lines) + "\n")
 
 
-def _facts(rows: tuple[tuple[str, str, str], ...]) -> Any:
+def _facts(rows: tuple[tuple[str, str, str], ...], narrow: int) -> Any:
+    """Labels, values and notes: a value is never cut; long labels and notes run over several lines."""
+    from rich.cells import cell_len
+    from rich.console import Group
+    from rich.padding import Padding
     from rich.table import Table as Grid
     from rich.text import Text
 
-    grid = Grid.grid(padding=(0, 2))
-    grid.add_column(no_wrap=True)
-    grid.add_column(justify="right", no_wrap=True)
-    grid.add_column()
+    shown = []
     for label, value, note in rows:
-        if len(value) > _LONGEST_VALUE:
+        if cell_len(value) > _LONGEST_VALUE:
             value, note = "", f"{value}; {note}" if note else value
-        grid.add_row(Text("  " + printable(label)), Text(printable(value)), Text(printable(note)))
-    return grid
+        shown.append((printable(label), printable(value), printable(note)))
+    labels, values, notes = (max(cell_len(row[i]) for row in shown) for i in range(3))
+    beside = narrow - values - 6
+    # What the notes do not need is for the labels; both share what is scarce.
+    labels = min(labels, max(beside - notes, beside // 2, _SHORT_NAME))
+    below = min(notes, _LEAST_NOTE) > beside - labels
+    lines: list[Any] = []
+    for label, value, note in shown:
+        line = Grid.grid(padding=(0, 2, 0, 0))
+        line.add_column(width=0)
+        line.add_column(width=labels, overflow="fold")
+        line.add_column(width=values, justify="right", no_wrap=True)
+        line.add_column(overflow="fold")
+        line.add_row("", Text(label), Text(value), Text("" if below else note))
+        lines.append(line)
+        if below and note:
+            lines.append(Padding(Text(note, overflow="fold"), (0, 0, 0, 4)))
+    return Group(*lines)
 
 
 def _notes(lines: tuple[str, ...]) -> Any:
@@ -153,45 +178,66 @@ def _notes(lines: tuple[str, ...]) -> Any:
 
     grid = Grid.grid(padding=(0, 1))
     grid.add_column(no_wrap=True)
-    grid.add_column()
+    grid.add_column(overflow="fold")
     for line in lines:
         grid.add_row(Text("  -"), Text(printable(line)))
     return grid
 
 
 def _headings(block: Table, *, wrapped: bool) -> list[str]:
-    """The headings of a table, those of numbers no wider than they must be where the room is scarce."""
+    """The headings of a table, no wider than they must be where the room is scarce."""
+    from rich.cells import cell_len
+
     headings = [printable(column) for column in block.columns]
-    if wrapped:
-        for i in range(block.text_columns, len(headings)):
-            width = max([len(word) for word in headings[i].split()] + [len(printable(row[i])) for row in block.rows])
-            headings[i] = textwrap.fill(headings[i], width, break_on_hyphens=False)
+    if not wrapped:
+        return headings
+    for i, heading in enumerate(headings):
+        cells = max([cell_len(printable(row[i])) for row in block.rows], default=0)
+        if i < block.text_columns:
+            cells = min(cells, _SHORT_NAME)
+        words = max([cell_len(word) for word in heading.split()], default=0)
+        # A name for a heading is set wider before it stands as a tower of words.
+        tower = _SHORT_NAME if cell_len(heading) > 5 * max(cells, words) else 0
+        headings[i] = _broken(heading, max(cells, min(words, _LONGEST_VALUE), tower))
     return headings
 
 
+def _broken(text: str, width: int) -> str:
+    """A text on lines of at most so many cells, broken between words where they are not too long."""
+    from rich.console import Console
+    from rich.text import Text
+
+    lines = Text(text).wrap(Console(file=io.StringIO(), width=width), width, overflow="fold")
+    return "\n".join(line.plain.rstrip() for line in lines)
+
+
 def _least_width(block: Table, headings: list[str]) -> int:
-    """Width that a table must have: whole numbers and short names, and some letters of long names."""
+    """Width that a table must have: whole numbers and short names, and some letters of long names [cells]."""
+    from rich.cells import cell_len
+
     width = 1
     for i, heading in enumerate(headings):
-        longest = max([len(printable(row[i])) for row in block.rows], default=0)
-        words = max(len(word) for word in [*heading.split(), ""])
-        lines = max(len(line) for line in [*heading.splitlines(), ""])
-        width += 3 + (max(min(longest, _SHORT_NAME), words) if i < block.text_columns else max(longest, lines))
+        longest = max([cell_len(printable(row[i])) for row in block.rows], default=0)
+        if i < block.text_columns:
+            longest = min(longest, _SHORT_NAME)
+        width += 3 + max([longest, *(cell_len(line) for line in heading.splitlines())])
     return width
 
 
 def _table(block: Table, headings: list[str]) -> Any:
     from rich import box
+    from rich.cells import cell_len
     from rich.table import Table as Grid
     from rich.text import Text
 
     grid = Grid(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=True, header_style="", padding=(0, 1))
     for i, heading in enumerate(headings):
         name = i < block.text_columns
+        longest = max((cell_len(printable(row[i])) for row in block.rows), default=0)
         grid.add_column(
             Text(heading),
             justify="left" if name else "right",
-            no_wrap=not name or max((len(row[i]) for row in block.rows), default=0) <= _SHORT_NAME,
+            no_wrap=not name or longest <= _SHORT_NAME,
             overflow="fold",
             vertical="bottom",
         )

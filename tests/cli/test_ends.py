@@ -210,3 +210,46 @@ def test_no_number_is_cut_off_however_narrow_the_terminal(capsys, monkeypatch, c
     for row in rows:
         for number in row[2:]:
             assert any(number in line.split() or f" {number} " in f" {line} " for line in lines), number
+
+
+#: One letter, 40, 200, wide, right to left, combining, with spaces.
+_NAMES = ("A", "N" * 40, "W" * 200, "粘" * 50, "مبنى السكن الجامعي الشرقي", "e\u0301" * 30, "one long name " * 14)
+
+
+@pytest.mark.parametrize("columns", [40, 60, 80, 110, 200])
+def test_no_value_or_name_is_cut_off_by_a_long_name(capsys, monkeypatch, columns):
+    from earthwork_cli.terminal import print_page
+
+    from earthwork.reporting.page import Facts, Notes, Page
+
+    notes = Notes(lines=_NAMES)
+    monkeypatch.setenv("COLUMNS", str(columns))
+    print_page(Page("x", (Facts(tuple((name, "1,234,567,890 m³", "dug and refilled") for name in _NAMES)), notes)))
+    text = capsys.readouterr().out
+    assert "…" not in text
+    assert text.count("1,234,567,890 m³") == len(_NAMES)
+    letters = "".join(text.split())
+    for letter in "NW粘\u0301":
+        assert letters.count(letter) == 2 * sum(name.count(letter) for name in _NAMES), letter
+    assert letters.count("refilled") == len(_NAMES)
+
+
+@pytest.mark.parametrize("columns", [40, 80, 110, 200])
+def test_tables_line_up_under_whole_headings(capsys, monkeypatch, columns):
+    from earthwork_cli.terminal import print_page
+    from rich.cells import cell_len
+
+    from earthwork.reporting.page import Page, Table
+
+    headings = ("pad", "natural ground", "of its max.\n%", "difference\nm", "over\nm", "distortion\n1 in", "粘" * 9)
+    rows = tuple((name, "loess", "81.2", "12,345,678.90", "0.55", "4,612,113,249", "5") for name in _NAMES)
+    monkeypatch.setenv("COLUMNS", str(columns))
+    print_page(Page("x", (Table(headings, rows, text_columns=2),)))
+    text = capsys.readouterr().out
+    assert text.count("粘") == 9 + 50
+    for word in ("natural", "ground", "difference", "distortion", "81.2", "12,345,678.90", "4,612,113,249"):
+        assert word in text.split(), word
+    ends = {cell_len(line[: line.index("81.2")]) for line in text.splitlines() if "81.2" in line}
+    assert len(ends) == 1
+    # A heading stands in lines, not as one word over the other where names are short.
+    assert len(text[: text.index("───")].splitlines()) < 8
