@@ -31,6 +31,8 @@ if TYPE_CHECKING:
 
 #: Percentile of the thickness that makes a fill deep.
 _DEEP_PART = 0.95
+#: A slope under this is level: half a millimetre in fifty metres lies under what surfaces are stored with.
+_LEVEL = 1e-5
 
 
 @dataclass(frozen=True)
@@ -286,7 +288,7 @@ class _Judge:
             settlement_low_m=None if settlement[0] is None else float(settlement[0]),
             settlement_high_m=None if settlement[1] is None else float(settlement[1]),
             settlement_index=max(p95 / self.table.deep_fill, (high - low) / self.table.differential_fill),
-            max_distortion=1 / slope if slope > 0 else None,
+            max_distortion=1 / slope if slope > _LEVEL else None,
             distortion_limits=limits_exceeded(slope),
             steepest_change=steepest(thickness, thickness.thickness, gauge, self.grid),
             undercut=self._undercut(asked, thickness, natural) if "transition" in before and not mended else None,
@@ -319,4 +321,3 @@ class _Judge:
                 f"{units.from_si(missing, 'area'):,.1f} {units.label('area')} of it; it is judged on the rest"
             )
             self.warnings.append(Warning("pad-missing-ground", message))
-

@@ -7,8 +7,17 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from earthwork.reporting import colors
-from earthwork.reporting.display import show
-from earthwork.reporting.figures import halo, new_figure, number, plain_axes, round_step, save_figure
+from earthwork.reporting.display import plain, show
+from earthwork.reporting.figures import (
+    halo,
+    head_chart,
+    make_room,
+    new_figure,
+    number,
+    plain_axes,
+    round_step,
+    save_figure,
+)
 from earthwork.units import UnitSystem
 
 if TYPE_CHECKING:
@@ -63,11 +72,11 @@ def draw_balance_curve(
     axes.set_ylabel(f"surplus of compacted fill, {units.label('soil_volume')}")
     for axis, values in ((axes.xaxis, x), (axes.yaxis, y)):
         axis.set_major_formatter(_plain_numbers(round_step(max(values) - min(values) or 1.0, 6)))
-    figure.text(0.13, 0.94, title, fontsize=12, fontweight="bold")
     note = "Surplus after shrink and loss" + (
         f"; dotted: ± {show(sd_m3, 'soil_volume', units)}, one standard deviation from the soil tests" if sd_m3 else ""
     )
-    figure.text(0.13, 0.895, note, fontsize=8.5, color=colors.FAINT)
+    head_chart(figure, 0.13, title, note, (0.94, 0.895))
+    make_room(figure, axes)
     save_figure(figure, path)
 
 
@@ -102,9 +111,9 @@ def _mark(
         return
     value = float(np.interp(at, x, y))
     axes.plot([at], [value], marker="o", markersize=5.5, color=colors.INK, markerfacecolor=colors.PAPER, zorder=6)
-    text = f"{word}: {number(at, 0.01).replace('-', '−')} {units.label('length')}"
+    text = f"{word}: {plain(at, 2)} {units.label('length')}"
     if word != "balanced":
-        text = f"{word}: {number(value, 1.0).replace('-', '−')} {units.label('soil_volume')}"
+        text = f"{word}: {show(value * units.factor('soil_volume'), 'soil_volume', units)}"
     axes.annotate(
         text,
         (at, value),

@@ -6,7 +6,7 @@ from typing import Any
 
 from earthwork.files.output import OutputFolder
 from earthwork.reporting.basis import basis
-from earthwork.reporting.display import display_key, plain, show
+from earthwork.reporting.display import decimals, display_key, plain, show
 from earthwork.reporting.page import Block, Column, Facts, Notes, Page, table_of
 from earthwork.results import Result
 from earthwork.site import Site
@@ -131,12 +131,9 @@ _NEEDS = {
 
 def _needs(required: dict[str, float], units: UnitSystem) -> str:
     """What the site needs compacted soil for, each with its volume."""
-    parts = [
-        f"{name} {plain(units.from_si(required[key], 'soil_volume'), 0)}"
-        for key, name in _NEEDS.items()
-        if required[key]
-    ]
-    return ", ".join(parts) or "nothing"
+    shown = {name: units.from_si(required[key], "soil_volume") for key, name in _NEEDS.items() if required[key]}
+    places = decimals(shown.values(), "soil_volume")
+    return ", ".join(f"{name} {plain(volume, places)}" for name, volume in shown.items()) or "nothing"
 
 
 def _remedies(site: Site, balance: dict[str, Any]) -> tuple[tuple[str, str, str], ...]:
@@ -182,7 +179,8 @@ def _per_step(shift: dict[str, Any], site: Site) -> tuple[str, str]:
     name, factor = display_key(key, site.units)
     label = "one centimetre of grade" if name == key else "a tenth of a foot of grade"
     unit = site.units.label("soil_volume")
-    return label, f"{plain(shift[key] * factor, 0, sign=True)} {unit}"
+    worth = shift[key] * factor
+    return label, f"{plain(worth, decimals([worth], 'soil_volume'), sign=True)} {unit}"
 
 
 def title_of(result: Result) -> str:

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from earthwork.reporting import colors
 from earthwork.reporting.display import show
-from earthwork.reporting.figures import halo, new_figure, number, plain_axes, round_step, save_figure, wrapped
+from earthwork.reporting.figures import halo, head_chart, new_figure, number, plain_axes, round_step, save_figure
 from earthwork.soils import oversize, phase
 from earthwork.units import UnitSystem
 
@@ -172,8 +172,7 @@ def draw_compaction_chart(content: ChartContent, path: Path, *, units: UnitSyste
     axes.set_ylabel(f"dry density, {units.label('density')}")
     step = round_step((limits[1][1] - limits[1][0]) / factor, 6)
     axes.yaxis.set_major_formatter(lambda value, _: number(value, step))
-    figure.text(0.11, 0.945, wrapped(content.title, 56, 1), fontsize=12, fontweight="bold")
-    figure.text(0.11, 0.905, wrapped(content.note, 110, 1), fontsize=8.5, color=colors.FAINT)
+    head_chart(figure, 0.11, content.title, content.note, (0.945, 0.905))
     handles, labels = axes.get_legend_handles_labels()
     figure.legend(
         handles, labels, loc="lower left", bbox_to_anchor=(0.1, 0.005), ncols=4, frameon=False, fontsize=8,

@@ -15,7 +15,7 @@ import numpy as np
 from earthwork.plan.haul import HaulResult
 from earthwork.reporting import colors
 from earthwork.reporting.display import show
-from earthwork.reporting.figures import drawable, halo, new_figure, save_figure, wrapped
+from earthwork.reporting.figures import halo, new_figure, save_figure, shorten_to, wrapped
 from earthwork.reporting.haul_flows import Flow, bundled, flows_of, grid_around, heaviest, stays_in_block
 from earthwork.reporting.map_frame import Frame, legend_line, legend_panel, legend_swatch
 from earthwork.site import Site
@@ -30,6 +30,8 @@ _NUMBERED = 12
 _WIDEST, _THINNEST = 5.0, 0.5
 #: Inches of a line of the legend, and of a move in it.
 _LINE, _ENTRY = 0.2, 0.295
+#: Length of the name of a numbered move.
+_LABEL_INCHES = 2.6
 #: By whether a move stays on the site, comes or leaves: name, colour, dash.
 _KINDS: dict[str, tuple[str, str, Any]] = {
     "on site": ("on the site", colors.INK, "solid"),
@@ -290,7 +292,8 @@ def _list_moves(panel: Axes, result: HaulResult, numbered: Sequence[Flow], flows
         panel.text(0.0, y, f"{number}", va="top", fontweight="bold", fontsize=7.5, color=color)
         mass = show(flow.mass_t, "mass", site.units, si=1000.0)
         far = site.units.from_si(flow.length_m, "length")
-        panel.text(0.2, y, _shortened(flow.label, 36), va="top", fontsize=7.5)
+        label = panel.text(0.2, y, wrapped(flow.label, 80, 1), va="top", fontsize=7.5)
+        shorten_to(label, _LABEL_INCHES * panel.get_figure().dpi, 7.0)
         told = f"{mass} over {far:,.0f} {site.units.label('length')}"
         panel.text(0.2, y - 0.135, told, va="top", fontsize=7, color=colors.FAINT)
         y -= _ENTRY
@@ -345,8 +348,3 @@ def _notes(result: HaulResult, site: Site) -> list[str]:
     if result.loads is not None:
         notes.append(f"in {result.loads:,} truck loads")
     return notes
-
-
-def _shortened(text: str, length: int) -> str:
-    clean = drawable(text)
-    return clean if len(clean) <= length else clean[: length - 1] + "…"

@@ -138,8 +138,16 @@ def _trucks(site: Site, result: HaulResult) -> list[Block]:
     fleet = result.fleet
     assert fleet is not None
     rows = [
-        ("hours of the loader", plain(fleet.hours, _places(fleet.hours)), "one loader serves the moves one after the other"),
-        ("truck hours", plain(fleet.truck_hours, _places(fleet.truck_hours)), f"at most {fleet.most_trucks} trucks at a time"),
+        (
+            "hours of the loader",
+            plain(fleet.hours, _places(fleet.hours)),
+            "one loader serves the moves one after the other",
+        ),
+        (
+            "truck hours",
+            plain(fleet.truck_hours, _places(fleet.truck_hours)),
+            f"at most {fleet.most_trucks} trucks at a time",
+        ),
     ]
     if fleet.cost is not None:
         rows.append(("trucks and loader", plain(fleet.cost, 0), "money, by their hours"))
@@ -205,7 +213,7 @@ def _proof(result: HaulResult) -> tuple[str, ...]:
     proof = result.certificate
     lines = [
         f"No plan is cheaper: prices of {proof.moves_checked:,} possible moves bound the cost to within "
-        f"{proof.relative_gap:.0e} of it ({proof.method}).",
+        f"{_gap(proof.relative_gap)} of it ({proof.method}).",
         "Flow is counted in compacted-equivalent volume, so that soils with different shrink are compared fairly.",
     ]
     if result.ties:
@@ -214,6 +222,15 @@ def _proof(result: HaulResult) -> tuple[str, ...]:
             f"{count:,} other move{'' if count == 1 else 's'} could be part of a plan of the same cost; they are in the JSON."
         )
     return tuple(lines)
+
+
+def _gap(relative: float) -> str:
+    """How far a bound may lie from the cost; what is less than a billionth is rounding, and says no more.
+
+    >>> _gap(4e-15), _gap(0.00031)
+    ('1e-09', '3e-04')
+    """
+    return f"{max(relative, 1e-9):.0e}"
 
 
 def tallies(site: Site, folder: OutputFolder) -> tuple[Any, ...]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from itertools import pairwise
 from pathlib import Path
@@ -10,7 +11,7 @@ from typing import TYPE_CHECKING, Any
 from earthwork.plan.fill_areas import FillArea
 from earthwork.plan.lifts import LiftsResult
 from earthwork.reporting import colors
-from earthwork.reporting.figures import new_figure, number, plain_axes, round_step, save_figure
+from earthwork.reporting.figures import head_chart, make_room, new_figure, number, plain_axes, save_figure, tick_step
 from earthwork.reporting.lifts_page import thickness
 from earthwork.units import UnitSystem
 
@@ -33,7 +34,7 @@ def draw_lift_chart(result: LiftsResult, path: Path, *, units: UnitSystem, title
 
     figure = new_figure(9.2, 5.4)
     left, right = figure.add_axes((0.09, 0.12, 0.41, 0.72)), figure.add_axes((0.57, 0.12, 0.4, 0.72))
-    fills = [area for area in result.areas if not area.is_small]
+    fills = [area for area in result.areas if not area.is_small] or list(result.areas)
     for axes in (left, right):
         plain_axes(axes)
     for k, area in reversed(list(enumerate(fills))):
@@ -43,7 +44,7 @@ def draw_lift_chart(result: LiftsResult, path: Path, *, units: UnitSystem, title
         axes.set_xlim(left=0)
         for axis in (axes.xaxis, axes.yaxis):
             low, high = axis.get_view_interval()
-            step = round_step(max(high - low, 1e-9), 5)
+            step = tick_step(low, high, 3.7 if axis is axes.xaxis else math.inf)
             axis.set_major_locator(MultipleLocator(step))
             axis.set_major_formatter(_numbers(step))
         axes.set_ylabel(f"elevation, {units.label('length')}")
@@ -51,12 +52,13 @@ def draw_lift_chart(result: LiftsResult, path: Path, *, units: UnitSystem, title
     right.legend(handles[::-1], names[::-1], loc="lower right", frameon=False, handlelength=1.2)
     left.set_xlabel(f"area of a lift, {units.label('area')}")
     right.set_xlabel(f"compacted volume placed up to there, {units.label('soil_volume')}")
-    figure.text(0.09, 0.945, title, fontsize=12, fontweight="bold")
     thick = thickness(result.lift_m, units)
     note = f"Lifts of {thick} compacted, level; each fill from its lowest removal bottom up"
     if len(fills) > _SHOWN:
         note += f"; the {_SHOWN} largest fills are named"
-    figure.text(0.09, 0.9, note, fontsize=8.5, color=colors.FAINT)
+    head_chart(figure, 0.09, title, note, (0.945, 0.9))
+    make_room(figure, left)
+    make_room(figure, right)
     save_figure(figure, path)
 
 

@@ -96,7 +96,7 @@ def _answer(site: Site, result: LiftsResult) -> tuple[tuple[str, str, str], ...]
     units, total = site.units, result.total
     loose = ", ".join(f"{name} {thickness(thick, units)}" for name, thick in result.loose_lift_m.items())
     rows = [
-        ("lifts", f"{len(result.lifts)}", "in 1 fill" if len(result.areas) == 1 else f"in {len(result.areas)} fills"),
+        ("lifts", f"{len(result.lifts):,}", "in 1 fill" if len(result.areas) == 1 else f"in {len(result.areas)} fills"),
         ("compacted thickness", thickness(result.lift_m, units), f"spread loose: {loose}" if loose else ""),
         ("compacted volume", show(total["compacted_m3"], "soil_volume", units), "fill and over-excavation refill"),
     ]

@@ -10,7 +10,7 @@ import numpy as np
 
 from earthwork.ground.grid import Grid
 from earthwork.reporting import colors
-from earthwork.reporting.figures import halo, number, round_step, wrapped
+from earthwork.reporting.figures import halo, number, round_step, shorten_to, wrapped
 from earthwork.units import UnitSystem
 
 if TYPE_CHECKING:
@@ -103,7 +103,7 @@ class Frame:
     def draw_titles(self, figure: Figure, title: str, subtitle: str) -> None:
         """A heading over the map, and the unit of the coordinates under it."""
         width, height = self.size
-        heading = figure.text(_LEFT / width, 1 - 0.26 / height, wrapped(title, 90, 1), fontsize=13, fontweight="bold")
+        heading = figure.text(_LEFT / width, 1 - 0.26 / height, wrapped(title, 1000, 1), fontsize=13, fontweight="bold")
         shorten_to(heading, (width - _LEFT - _RIGHT) * figure.dpi)
         if subtitle:
             figure.text(_LEFT / width, 1 - 0.5 / height, subtitle, fontsize=9, color=colors.FAINT)
@@ -213,15 +213,6 @@ class Frame:
             arrowprops={"arrowstyle": "-|>", "color": colors.INK, "lw": 1.2},
         )
         axes.text(east, bottom + 0.52, "N", ha="center", fontweight="bold")
-
-
-def shorten_to(text: Any, pixels: float, least_size: float = 9.0) -> None:
-    """Make one line of text fit into a width: smaller letters first, then fewer of them."""
-    while text.get_window_extent().width > pixels:
-        if text.get_fontsize() > least_size:
-            text.set_fontsize(text.get_fontsize() - 1.0)
-        else:
-            text.set_text(text.get_text()[:-2].rstrip() + "…")
 
 
 _ZONE_LABEL: dict[str, Any] = {

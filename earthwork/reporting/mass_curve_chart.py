@@ -12,8 +12,16 @@ import numpy as np
 from earthwork.plan.line_haul import LineHaul
 from earthwork.reporting import colors
 from earthwork.reporting.display import show
-from earthwork.reporting.figures import halo, new_figure, number, plain_axes, round_step, save_figure, wrapped
-from earthwork.reporting.map_frame import shorten_to
+from earthwork.reporting.figures import (
+    halo,
+    head_chart,
+    make_room,
+    new_figure,
+    number,
+    plain_axes,
+    round_step,
+    save_figure,
+)
 from earthwork.units import UnitSystem
 
 if TYPE_CHECKING:
@@ -40,9 +48,8 @@ def draw_mass_curve(line: LineHaul, path: Path, *, units: UnitSystem, title: str
     below.set_xlabel(f"station, {unit}")
     for axis, values in ((above.yaxis, ordinates), (below.xaxis, stations)):
         axis.set_major_formatter(_plain_numbers(round_step(float(np.ptp(values)) or 1.0, 6)))
-    heading = figure.text(0.115, 0.955, wrapped(title, 90, 1), fontsize=12, fontweight="bold")
-    shorten_to(heading, 0.86 * figure.get_figwidth() * figure.dpi)
-    figure.text(0.115, 0.915, _told(line, units), fontsize=8.5, color=colors.FAINT)
+    head_chart(figure, 0.115, title, _told(line, units), (0.955, 0.915))
+    make_room(figure, above, below)
     save_figure(figure, path)
 
 

@@ -15,7 +15,7 @@ from earthwork.plan.pads import PadReport, PadsResult
 from earthwork.quantities.pad_ground import PadPlace
 from earthwork.reporting import colors
 from earthwork.reporting.display import show
-from earthwork.reporting.figures import new_figure, plain_axes, save_figure, wrapped
+from earthwork.reporting.figures import new_figure, plain_axes, save_figure, shorten_to, wrapped
 from earthwork.site import Site
 
 if TYPE_CHECKING:
@@ -129,12 +129,11 @@ def draw_pad_sections(site: Site, result: PadsResult, path: Path) -> None:
     height = 1.1 + rows * 2.5
     width = 5.6 * columns + 0.3
     figure = new_figure(width, height)
-    figure.text(
-        0.05, 1 - 0.27 / height, wrapped(f"{site.name}: sections through flagged pads", 90, 1),
-        fontsize=13, fontweight="bold",
-    )  # fmt: skip
+    heading = wrapped(f"{site.name}: sections through flagged pads", 1000, 1)
+    room = (width - 0.05 * width - 0.15) * figure.dpi
+    shorten_to(figure.text(0.05, 1 - 0.27 / height, heading, fontsize=13, fontweight="bold"), room)
     subtitle = "Along the steepest change of fill thickness, which the bar shows; heights are drawn larger than lengths"
-    figure.text(0.05, 1 - 0.5 / height, subtitle, fontsize=9, color=colors.FAINT)
+    shorten_to(figure.text(0.05, 1 - 0.5 / height, subtitle, fontsize=9, color=colors.FAINT), room, 6.0)
     for k, section in enumerate(sections):
         left = (0.62 + 5.6 * (k % 2)) / width
         bottom = 1 - (0.75 + 2.5 * (k // 2) + 2.02) / height
@@ -207,9 +206,11 @@ def _title(axes: Axes, section: PadSection, site: Site) -> None:
     report, change = section.report, section.report.steepest_change
     assert change is not None
     flags = ", ".join(flag for flag in report.flags if flag in _CALLS)
-    axes.set_title(f"{wrapped(report.pad, 50, 1)}", loc="left", fontsize=8.5, fontweight="bold", pad=14)
+    title = axes.set_title(wrapped(report.pad, 80, 1), loc="left", fontsize=8.5, fontweight="bold", pad=14)
+    shorten_to(title, axes.get_window_extent().width, 8.5)
     note = f"{flags}; changes by {show(change.change, 'length', site.units)} in "
     note += show(change.length_m, "length", site.units)
     if report.max_distortion is not None:
-        note += f"; 1 in {report.max_distortion:.0f}"
-    axes.text(0, 1.03, wrapped(note, 96, 1), transform=axes.transAxes, fontsize=7, color=colors.FAINT)
+        note += f"; 1 in {report.max_distortion:,.0f}"
+    told = axes.text(0, 1.03, wrapped(note, 160, 1), transform=axes.transAxes, fontsize=7, color=colors.FAINT)
+    shorten_to(told, axes.get_window_extent().width, 5.0)

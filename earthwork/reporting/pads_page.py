@@ -122,6 +122,8 @@ def _settles(pad: dict[str, Any], site: Site) -> str | None:
     if pad["settlement_high_m"] is None:
         return None
     unit, factor, places = ("mm", 1000.0, 0) if site.units.name == "metric" else ("in", 1 / UNITS["length"]["in"], 1)
+    if pad["settlement_high_m"] * factor < 0.5 * 10**-places:
+        return f"under {10**-places:g} {unit}"
     low, high = (plain(pad[f"settlement_{end}_m"] * factor, places) for end in ("low", "high"))
     return f"{low} to {high} {unit}"
 
@@ -133,7 +135,7 @@ def _flag_line(pad: dict[str, Any], site: Site) -> str:
     said += flagged_ground(pad["natural_ground"])
     if pad["distortion_limits"]:
         worst = pad["distortion_limits"][-1]
-        said.append(f"distortion of 1 in {pad['max_distortion']:.0f} ({worst['means']}: 1 in {worst['one_in']:g})")
+        said.append(f"distortion of 1 in {pad['max_distortion']:,.0f} ({worst['means']}: 1 in {worst['one_in']:g})")
     if pad["wait_days"]:
         said.append(f"wait {pad['wait_days']:,.0f} days from half-placed fill before building")
     return f"{pad['pad']}: {'; '.join(said)}." if said else ""

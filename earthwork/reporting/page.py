@@ -66,7 +66,7 @@ def dimension_of(key: str) -> str | None:
     suffix = suffix_of(key)
     if suffix is not None:
         return suffix.dimension if suffix.over is None and suffix.times is None else "water_volume"
-    return "percent" if "percent" in key else "factor"
+    return "percent" if "percent" in key or key.endswith("_per_hour") else "factor"
 
 
 def unit_label(key: str, units: UnitSystem) -> str:

@@ -8,7 +8,17 @@ from earthwork.plan.water import WaterResult
 from earthwork.plan.water_days import WaterDay
 from earthwork.reporting import colors
 from earthwork.reporting.display import show
-from earthwork.reporting.figures import halo, new_figure, number, plain_axes, round_step, save_figure
+from earthwork.reporting.figures import (
+    halo,
+    head_chart,
+    make_room,
+    new_figure,
+    number,
+    plain_axes,
+    round_step,
+    save_figure,
+)
+from earthwork.reporting.water_page import tank_figure
 from earthwork.units import UnitSystem
 
 #: Parts of the water: key, name, colour, hatch (each is told by its hatch as well).
@@ -74,11 +84,11 @@ def draw_water_days(result: WaterResult, path: Path, *, units: UnitSystem, title
         axes.set_xlabel("r: rain day   ·: idle day")
     _litres_axis(axes, 1.12 * (top - min(dry, default=0.0)), f"water in a day, {units.label('water_volume')}")
     axes.legend(ncols=6, loc="upper left", bbox_to_anchor=(0.0, -0.16), frameon=False, fontsize=8.5, handlelength=1.8)
-    figure.text(0.1, 0.93, title, fontsize=12, fontweight="bold")
     peak = show(result.peak_day_l, "water_volume", units)
     note = f"Peak day {peak}" + ("; outlined: what is missing" if short else "")
     note += "; under the line: what must dry out of the soil of the day" if any(dry) else ""
-    figure.text(0.1, 0.875, note, fontsize=8.5, color=colors.FAINT)
+    head_chart(figure, 0.1, title, note, (0.93, 0.875))
+    make_room(figure, axes)
     save_figure(figure, path)
 
 
@@ -111,27 +121,30 @@ def draw_tank(result: WaterResult, path: Path, *, units: UnitSystem, title: str)
     dry = [p for p, short in zip(x[1:], job.run.shortfall, strict=True) if short > 0]
     if dry:
         axes.plot(dry, [0.0] * len(dry), marker="v", linestyle="none", markersize=5, color=colors.EXPORT, clip_on=False)
+        side = "left" if dry[0] < (x[0] + x[-1]) / 2 else "right"
         axes.annotate("runs dry", (dry[0], 0.0), xytext=(-4, 7), textcoords="offset points", color=colors.EXPORT,
-                      fontweight="bold", ha="right", va="bottom", path_effects=halo(3))  # fmt: skip
+                      fontweight="bold", ha=side, va="bottom", path_effects=halo(3))  # fmt: skip
     axes.set_xlim(x[0], x[-1])
     axes.set_ylim(0, 1.15 * max(full, 1e-9))
     _day_axis(axes, result)
     _litres_axis(axes, 1.15 * full, f"in the tank, {units.label('water_volume')}")
-    figure.text(0.1, 0.91, title, fontsize=12, fontweight="bold")
     needed = result.tank_needed_l
     text = (
         "no tank bridges this job"
         if needed is None
-        else f"a tank that bridges it: {show(needed, 'water_volume', units)}"
+        else f"a tank that bridges it: {tank_figure(needed, units)}"
     )
-    figure.text(0.1, 0.845, f"Hour by hour; {text}", fontsize=8.5, color=colors.FAINT)
+    head_chart(figure, 0.1, title, f"Hour by hour; {text}", (0.91, 0.845))
+    make_room(figure, axes)
     save_figure(figure, path)
 
 
 def _name_short(axes, day: WaterDay, factor: float, units: UnitSystem) -> None:
     text = f"short by {show(day.shortfall_l, 'water_volume', units)}"
+    low, high = axes.get_xlim()
+    side = "left" if day.demand.day.day < (low + high) / 2 else "right"
     axes.annotate(
-        text, (day.demand.day.day, day.demand.total_l / factor), xytext=(0, 7), textcoords="offset points", ha="right",
+        text, (day.demand.day.day, day.demand.total_l / factor), xytext=(0, 7), textcoords="offset points", ha=side,
         va="bottom", color=colors.EXPORT, fontweight="bold", path_effects=halo(), zorder=8,
     )  # fmt: skip
 

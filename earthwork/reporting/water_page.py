@@ -68,8 +68,9 @@ def _answer(site: Site, result: WaterResult) -> tuple[tuple[str, str, str], ...]
     units, days = site.units, result.days
     total = sum(day.demand.total_l for day in days)
     working = sum(1 for day in days if day.demand.compacted_m3 > 0)
+    placing = "in 1 day that places fill" if working == 1 else f"in {working:,} days that place fill"
     rows = [
-        ("over the job", show(total, "water_volume", units), f"in {working} days that place fill"),
+        ("over the job", show(total, "water_volume", units), placing),
         ("on the peak day", show(result.peak_day_l, "water_volume", units), ""),
         ("the supply gives", show(max((d.supply_l for d in days), default=0.0), "water_volume", units), "a day"),
     ]
@@ -84,9 +85,9 @@ def _answer(site: Site, result: WaterResult) -> tuple[tuple[str, str, str], ...]
         rows.append(("tank that bridges it", tank_figure(needed, units), "full at the start"))
     if result.trucks is not None:
         cycle, trips = result.trucks.cycle_min, result.trucks.trips_per_truck
-        note = f"{plain(cycle, 1)} min a trip, {trips} trips a day; fill point used "
+        note = f"{plain(cycle, 1)} min a trip, {trips} trip{'' if trips == 1 else 's'} a day; fill point used "
         rows.append(
-            ("water trucks", f"{result.trucks.trucks}", note + f"{plain(result.trucks.fill_point_use_percent, 0)} %")
+            ("water trucks", f"{result.trucks.trucks:,}", note + f"{plain(result.trucks.fill_point_use_percent, 0)} %")
         )
     return tuple(rows)
 

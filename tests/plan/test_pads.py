@@ -166,6 +166,8 @@ def test_deep_and_differential_fill(site):
     assert steep.max_distortion == pytest.approx(500)
     assert "distortion" not in steep.flags  # at the limit, not over it
     assert [limit.x for limit in steep.distortion_limits] == [750, 600, 500]
+    # 1 % of a thickness that changes by 1 in 20,000 is 1 in 2,000,000: noise of the surfaces, and no slope.
+    assert earthwork.pads(site(existing=lambda e, n: 90 + 0.00005 * e))["A"].max_distortion is None
     over = earthwork.pads(site(existing=lambda e, n: 84 + 0.25 * e))["A"]
     assert over.max_distortion == pytest.approx(400)
     assert "distortion" in over.flags

@@ -120,3 +120,29 @@ def test_any_result_has_a_page(tmp_path):
     facts, table = page.blocks
     assert facts.rows[0][0] == "total"
     assert table.columns == ("day", "total\nL")
+
+
+def test_small_volumes_are_not_told_as_nothing():
+    from earthwork.reporting.balance_page import _needs, _per_step
+
+    required = {"fill_m3": 0.18, "over_excavation_refill_m3": 0.0, "scarify_m3": 0.02, "allowance_m3": 0.0, "section_m3": 0.0}
+    assert _needs(required, METRIC) == "fill 0.18, scarifying 0.02"
+    assert _needs({**required, "fill_m3": 1807821680.4}, METRIC) == "fill 1,807,821,680, scarifying 0"
+    site = type("Site", (), {"units": METRIC})
+    assert _per_step({"surplus_change_per_cm_m3": -0.018}, site)[1] == "−0.02 m³"
+    assert _per_step({"surplus_change_per_cm_m3": -1690257.2}, site)[1] == "−1,690,257 m³"
+
+
+def test_loads_an_hour_have_no_thousandths():
+    assert column_texts("loads_per_hour", [14.2291, 3.0], METRIC) == ["14.2", "3.0"]
+
+
+@pytest.mark.parametrize(
+    ("high_m", "text"),
+    [(0.0004, "under 1 mm"), (0.104, "21 to 104 mm")],
+)
+def test_settlement_under_a_unit_is_said_so(high_m, text):
+    from earthwork.reporting.pads_page import _settles
+
+    site = type("Site", (), {"units": METRIC})
+    assert _settles({"settlement_low_m": high_m / 5, "settlement_high_m": high_m}, site) == text
