@@ -35,10 +35,15 @@ def _plain_characters(error: UnicodeError) -> tuple[str, int]:
     if not isinstance(error, UnicodeEncodeError):
         raise error
     text = error.object[error.start : error.end]
-    plain = "".join(
-        _PLAIN.get(c) or unicodedata.normalize("NFKD", c).encode("ascii", "ignore").decode() or "?" for c in text
-    )
-    return plain, error.end
+    return "".join(_plain(c) for c in text), error.end
+
+
+def _plain(character: str) -> str:
+    """A character in ASCII: its neighbour, its letter without accents, nothing for a lone accent, else "?"."""
+    if unicodedata.combining(character):
+        return ""
+    letters = unicodedata.normalize("NFKD", character).encode("ascii", "ignore").decode()
+    return _PLAIN.get(character) or letters or "?"
 
 
 def prepare_streams() -> None:
@@ -97,6 +102,13 @@ def _escaped(character: str) -> str:
     return f"\\u{0xD800 + (code >> 10):04x}\\u{0xDC00 + (code & 0x3FF):04x}"
 
 
+def _spelled(text: str) -> str:
+    """A text as stdout will show it: what its encoding lacks is spelled before columns are measured."""
+    encoding = getattr(sys.stdout, "encoding", None) or "utf-8"
+    codecs.register_error("plain-characters", _plain_characters)
+    return printable(text).encode(encoding, "plain-characters").decode(encoding)
+
+
 def print_page(page: Page) -> None:
     """A page on stdout."""
     from rich.console import Console
@@ -116,11 +128,11 @@ def print_page(page: Page) -> None:
         emoji=False,
     )
     narrow = console.width
-    console.print(Text(printable(page.title), style="bold"))
+    console.print(Text(_spelled(page.title), style="bold"))
     for block in page.blocks:
         console.print()
         if block.heading:
-            console.print(Text(printable(block.heading), style="bold"))
+            console.print(Text(_spelled(block.heading), style="bold"))
         if isinstance(block, Facts):
             if block.rows:
                 console.print(_facts(block.rows, narrow))
@@ -152,7 +164,7 @@ def _facts(rows: tuple[tuple[str, str, str], ...], narrow: int) -> Any:
     for label, value, note in rows:
         if cell_len(value) > _LONGEST_VALUE:
             value, note = "", f"{value}; {note}" if note else value
-        shown.append((printable(label), printable(value), printable(note)))
+        shown.append((_spelled(label), _spelled(value), _spelled(note)))
     labels, values, notes = (max(cell_len(row[i]) for row in shown) for i in range(3))
     beside = narrow - values - 6
     # What the notes do not need is for the labels; both share what is scarce.
@@ -180,7 +192,7 @@ def _notes(lines: tuple[str, ...]) -> Any:
     grid.add_column(no_wrap=True)
     grid.add_column(overflow="fold")
     for line in lines:
-        grid.add_row(Text("  -"), Text(printable(line)))
+        grid.add_row(Text("  -"), Text(_spelled(line)))
     return grid
 
 
@@ -188,11 +200,11 @@ def _headings(block: Table, *, wrapped: bool) -> list[str]:
     """The headings of a table, no wider than they must be where the room is scarce."""
     from rich.cells import cell_len
 
-    headings = [printable(column) for column in block.columns]
+    headings = [_spelled(column) for column in block.columns]
     if not wrapped:
         return headings
     for i, heading in enumerate(headings):
-        cells = max([cell_len(printable(row[i])) for row in block.rows], default=0)
+        cells = max([cell_len(_spelled(row[i])) for row in block.rows], default=0)
         if i < block.text_columns:
             cells = min(cells, _SHORT_NAME)
         words = max([cell_len(word) for word in heading.split()], default=0)
@@ -217,7 +229,7 @@ def _least_width(block: Table, headings: list[str]) -> int:
 
     width = 1
     for i, heading in enumerate(headings):
-        longest = max([cell_len(printable(row[i])) for row in block.rows], default=0)
+        longest = max([cell_len(_spelled(row[i])) for row in block.rows], default=0)
         if i < block.text_columns:
             longest = min(longest, _SHORT_NAME)
         width += 3 + max([longest, *(cell_len(line) for line in heading.splitlines())])
@@ -233,7 +245,7 @@ def _table(block: Table, headings: list[str]) -> Any:
     grid = Grid(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=True, header_style="", padding=(0, 1))
     for i, heading in enumerate(headings):
         name = i < block.text_columns
-        longest = max((cell_len(printable(row[i])) for row in block.rows), default=0)
+        longest = max((cell_len(_spelled(row[i])) for row in block.rows), default=0)
         grid.add_column(
             Text(heading),
             justify="left" if name else "right",
@@ -243,5 +255,5 @@ def _table(block: Table, headings: list[str]) -> Any:
         )
     for i, row in enumerate(block.rows):
         last = i == len(block.rows) - block.totals - 1
-        grid.add_row(*(Text(printable(cell)) for cell in row), end_section=last and block.totals > 0)
+        grid.add_row(*(Text(_spelled(cell)) for cell in row), end_section=last and block.totals > 0)
     return grid

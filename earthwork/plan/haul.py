@@ -147,13 +147,17 @@ class HaulResult(Result):
         columns = [name for name in order["to"] if name in wide.columns]
         return wide.reindex(index=rows, columns=columns).reset_index().rename_axis(columns=None)
 
+    def _matrix_with_units(self) -> pandas.DataFrame:
+        """The matrix with its unit in each heading, by which it is shown in the units of the site."""
+        return self.matrix().rename(columns=lambda name: name if name == "from" else f"{name}_t")
+
     def tables(self) -> dict[str, pandas.DataFrame]:
         import pandas as pd
 
         tables = {
             "haul": pd.DataFrame([move.to_dict() for move in self.moves]),
             "blocks": pd.DataFrame([block.to_dict() for block in self.blocks]),
-            "matrix": self.matrix(),
+            "matrix": self._matrix_with_units(),
         }
         if self.loads_by_destination is not None:
             tables["loads"] = pd.DataFrame(list(self.loads_by_destination))

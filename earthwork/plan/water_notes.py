@@ -236,7 +236,7 @@ def _trucks(site: Site, result: WaterResult) -> list[Warning]:
         found.append(
             Warning(
                 "fill-point-short",
-                f"the fill point fills {plan.fill_point_loads} trucks a day and the peak day needs {plan.loads}, however "
+                f"the fill point fills {plan.fill_point_loads:,} trucks a day and the peak day needs {plan.loads:,}, however "
                 "many trucks there are: add a bay, or fill faster",
             )
         )

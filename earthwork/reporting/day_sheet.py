@@ -102,7 +102,7 @@ def _lift_table(site: Site, pieces: Sequence[tuple[Lift, float]], most: int) -> 
     shown, more = plain_lifts[:fit], plain_lifts[fit:]
     rows = [_lift_row(site, f"{lift.fill}, lift {lift.lift}", [(lift, volume)]) for lift, volume in shown]
     if more:
-        rows.append(_lift_row(site, f"{len(more)} more lifts", more))
+        rows.append(_lift_row(site, f"{len(more):,} more lifts", more))
     small = [piece for piece in pieces if piece[0].flags]
     if small:
         rows.append(_lift_row(site, f"{len(small)} too small or narrow for the plant", small))
@@ -154,7 +154,7 @@ def _water_table(site: Site, result: WaterResult, day: WaterDay) -> str:
     rows.append(["the supply gives", "", show(day.supply_l, "water_volume", units)])
     if result.job.tank_l > 0:
         rows.append(["in the tank at the end", "", show(day.tank_end_l, "water_volume", units)])
-    loads = "" if day.truck_loads is None else f"{day.truck_loads} truck load{'' if day.truck_loads == 1 else 's'}"
+    loads = "" if day.truck_loads is None else f"{day.truck_loads:,} truck load{'' if day.truck_loads == 1 else 's'}"
     total = ["in all", show(demand.total_l, "water_volume", units), loads]
     return _table("Water", ["", "wanted", "there is"], rows, total)
 
@@ -195,7 +195,7 @@ def _plant(site: Site, result: WaterResult, day: WaterDay, pieces: Sequence[tupl
     if hours:
         lines.append(f"Rolling {plain(math.fsum(hours), 1)} h with all rollers.")
     if result.trucks is not None:
-        lines.append(f"Water trucks: {result.trucks.trucks}, a trip each {plain(result.trucks.cycle_min, 0)} min.")
+        lines.append(f"Water trucks: {result.trucks.trucks:,}, a trip each {plain(result.trucks.cycle_min, 0)} min.")
     name, volume = first_limit(day.limits)
     if name and volume is not None:
         lines.append(

@@ -253,3 +253,25 @@ def test_tables_line_up_under_whole_headings(capsys, monkeypatch, columns):
     assert len(ends) == 1
     # A heading stands in lines, not as one word over the other where names are short.
     assert len(text[: text.index("───")].splitlines()) < 8
+
+
+def test_columns_line_up_where_the_encoding_lacks_letters(capsys, monkeypatch):
+    import io
+    import sys
+
+    from earthwork_cli.terminal import prepare_streams, print_page
+
+    from earthwork.reporting.page import Facts, Page, Table
+
+    names = ("± deviation", "粘土 e\u0301", "A", "sum → whole …")
+    raw = io.BytesIO()
+    monkeypatch.setattr(sys, "stdout", io.TextIOWrapper(raw, encoding="ascii"))
+    prepare_streams()
+    rows = tuple((name, "1,234.5") for name in names)
+    print_page(Page("x", (Table(("row", "cut\nm³"), rows), Facts(tuple((*row, "") for row in rows)))))
+    sys.stdout.flush()
+    lines = [line for line in raw.getvalue().decode("ascii").splitlines() if "1,234.5" in line]
+    assert len({line.index("1,234.5") for line in lines[:4]}) == 1
+    assert len({line.index("1,234.5") for line in lines[4:]}) == 1
+    assert lines[1].split() == ["??", "e", "1,234.5"]
+    assert lines[0].split()[0] == "+/-"

@@ -85,7 +85,17 @@ def test_matrix_rows_are_the_cut_and_columns_what_arrives(run):
     matrix = pandas.read_csv(path, index_col=0)
     assert matrix.to_numpy().sum() == pytest.approx(320)
     assert matrix.loc["A1 loess"].sum() == pytest.approx(160)
-    assert matrix["D1 fill"].sum() == pytest.approx(90)
+    assert matrix["D1 fill_t"].sum() == pytest.approx(90)
+
+
+def test_the_matrix_is_in_the_units_of_its_site(run):
+    from earthwork.reporting.display import display_table
+    from earthwork.units import US
+
+    # 320 t in tons of 2000 pounds of 0.45359237 kg: the unit is in each heading.
+    matrix = display_table(run.result.tables()["matrix"], US).set_index("from")
+    assert all(name.endswith("_ton") for name in matrix.columns)
+    assert matrix.to_numpy().sum() == pytest.approx(320 / 0.90718474)
 
 
 def test_json_is_the_contract_and_page_has_units(run):

@@ -6,6 +6,7 @@ formula carries the program's figure as its stored value: a viewer that does not
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import datetime
@@ -25,6 +26,10 @@ _NUMBERS = {
 _PLAIN_KINDS = ("percent", "factor", "count", "decimal", "money", "price")
 #: The program's tonnes are thousands of its kilograms.
 TONNE = 1000.0
+#: Width of a column that was given none [characters].
+_WIDTH = 8.43
+#: Names wider than this are cut at their neighbour [characters].
+_WIDEST_TEXT = 44.0
 
 
 @dataclass(frozen=True)
@@ -132,6 +137,7 @@ class Sheet:
         self.name = name
         self._sheet = sheet
         self.row = 0  #: the next free row
+        self._widths: dict[int, float] = {}
         self.text(0, 0, title, "title")
         if note:
             self.text(1, 0, note, "note")
@@ -160,7 +166,7 @@ class Sheet:
         self.row += 2
         if freeze is not None:
             for i, column in enumerate(columns):
-                self._sheet.set_column(i, i, column.width)
+                self._widen(i, column.width)
             self._sheet.freeze_panes(self.row, freeze)
             self._sheet.repeat_rows(self.row - 2, self.row - 1)
         return self.row
@@ -168,10 +174,27 @@ class Sheet:
     def widths(self, *widths: float) -> None:
         """Widths of the columns from the left, in characters."""
         for i, width in enumerate(widths):
-            self._sheet.set_column(i, i, width)
+            self._widen(i, width)
+
+    def _widen(self, column: int, width: float) -> None:
+        """Give a column at least a width, in characters."""
+        self._widths[column] = max(width, self._widths.get(column, 0.0))
+        self._sheet.set_column(column, column, self._widths[column])
+
+    def _hold(self, column: int, shown: float, kind: str) -> None:
+        """Widen a column for a number: spreadsheets show no number that is wider than its cell."""
+        _, _, decimals = _NUMBERS[kind].partition(".")
+        # Totals are bold, and what is changed by hand may grow by a digit.
+        need = len(f"{shown:,.{len(decimals)}f}") * 1.1 + 2.5
+        if need > self._widths.get(column, _WIDTH):
+            self._widen(column, math.ceil(need))
 
     def text(self, row: int, column: int, text: str, style: str = "text") -> None:
         """A text, whatever it begins with."""
+        if style == "text" and column in self._widths:
+            need = min(1.1 * len(text) + 1, _WIDEST_TEXT)
+            if need > self._widths[column]:
+                self._widen(column, math.ceil(need))
         self._sheet.write_string(row, column, text, self.book.format("", style))
 
     def number(
@@ -182,7 +205,9 @@ class Sheet:
         if value is None:
             self._sheet.write_blank(row, column, None, form)
         else:
-            self._sheet.write_number(row, column, self.book.shown(value, kind, si), form)
+            shown = self.book.shown(value, kind, si)
+            self._hold(column, shown, kind)
+            self._sheet.write_number(row, column, shown, form)
         return at(row, column)
 
     def formula(
@@ -198,6 +223,8 @@ class Sheet:
     ) -> str:
         """A formula with the program's figure (SI) as its stored value; the address of the cell."""
         stored = "" if value is None else self.book.shown(value, kind, si)
+        if value is not None and math.isfinite(value):
+            self._hold(column, float(stored), kind)
         self._sheet.write_formula(row, column, "=" + formula, self.book.format(kind, style), stored)
         return at(row, column)
 
