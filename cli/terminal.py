@@ -170,6 +170,8 @@ def _facts(rows: tuple[tuple[str, str, str], ...], narrow: int) -> Any:
     # What the notes do not need is for the labels; both share what is scarce.
     labels = min(labels, max(beside - notes, beside // 2, _SHORT_NAME))
     below = min(notes, _LEAST_NOTE) > beside - labels
+    if below:
+        labels = min(max(cell_len(row[0]) for row in shown), max(narrow - values - 6, _SHORT_NAME))
     lines: list[Any] = []
     for label, value, note in shown:
         line = Grid.grid(padding=(0, 2, 0, 0))

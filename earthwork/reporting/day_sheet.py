@@ -26,6 +26,7 @@ _STYLE = """
 @page { size: PAPER; margin: 11mm 15mm; }
 body { font: 9pt/1.25 "DejaVu Sans", Arial, sans-serif; color: #1F1F1F; margin: 0; }
 section { page-break-after: always; break-after: page; max-width: 180mm; margin: 0 auto 12mm; }
+p, li, h1, td:first-child, .look { overflow-wrap: anywhere; }
 section:last-child { page-break-after: auto; break-after: auto; }
 h1 { font-size: 15pt; margin: 0; } h2 { font-size: 10pt; margin: 3mm 0 1mm; border-bottom: 1.2pt solid #237872; }
 p.what { margin: 0.5mm 0 3mm; color: #55554F; }

@@ -10,7 +10,7 @@ import numpy as np
 
 from earthwork.ground.grid import Grid
 from earthwork.reporting import colors
-from earthwork.reporting.figures import halo, number, round_step, shorten_to, wrapped
+from earthwork.reporting.figures import halo, number, round_step, shorten_to, slant, wrapped
 from earthwork.units import UnitSystem
 
 if TYPE_CHECKING:
@@ -144,7 +144,7 @@ class Frame:
         for name, shape in sorted((z for z in zones if not z[1].is_empty), key=lambda z: -z[1].area):
             places = places_in(shape)
             for k, text in enumerate(shorter(name)):
-                label = axes.text(0.0, 0.0, text, **_ZONE_LABEL, path_effects=halo(2.6))
+                label = axes.text(0.0, 0.0, text, fontstyle=slant(text), **_ZONE_LABEL, path_effects=halo(2.6))
                 box = self._place(axes, label, shape, places, taken, within=k < len(shorter(name)) - 1)
                 if box is not None:
                     taken.append(box)
@@ -216,7 +216,7 @@ class Frame:
 
 
 _ZONE_LABEL: dict[str, Any] = {
-    "fontsize": 7.5, "fontstyle": "italic", "ha": "center", "va": "center", "zorder": 8, "linespacing": 1.05
+    "fontsize": 7.5, "ha": "center", "va": "center", "zorder": 8, "linespacing": 1.05
 }  # fmt: skip
 
 

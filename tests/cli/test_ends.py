@@ -275,3 +275,14 @@ def test_columns_line_up_where_the_encoding_lacks_letters(capsys, monkeypatch):
     assert len({line.index("1,234.5") for line in lines[4:]}) == 1
     assert lines[1].split() == ["??", "e", "1,234.5"]
     assert lines[0].split()[0] == "+/-"
+
+
+def test_labels_stay_on_one_line_where_notes_stand_below(capsys, monkeypatch):
+    from earthwork_cli.terminal import print_page
+
+    from earthwork.reporting.page import Facts, Page
+
+    monkeypatch.setenv("COLUMNS", "40")
+    print_page(Page("x", (Facts((("tank that bridges it", "566,947 L", "full at the start, with a lid"),)),)))
+    lines = capsys.readouterr().out.splitlines()
+    assert lines[2:] == ["  tank that bridges it  566,947 L", "    full at the start, with a lid"]

@@ -133,3 +133,9 @@ def test_a_site_without_fill_writes_tables_only(tmp_path):
         run = run_command(command, given, out=tmp_path / "out")
         assert run.page().title
         assert not [p for p in run.written if p.suffix in (".png", ".gpkg", ".html")]
+
+
+def test_a_long_word_breaks_on_a_day_sheet(water_run):
+    # A word wider than the sheet makes a browser print everything smaller.
+    (path,) = [p for p in water_run.written if p.name == "water_day_sheets.html"]
+    assert re.search(r"p, [^{}]*td:first-child[^{}]*\{ overflow-wrap: anywhere; \}", path.read_text("utf-8"))

@@ -160,3 +160,11 @@ def test_a_zone_without_ground_has_no_name_on_the_map(tmp_path):
     picture = DepthMap(np.full((60, 90), 1.5), grid)
     draw_cut_fill_map(picture, tmp_path / "map.png", units=METRIC, title="Mill", zones=zones)
     assert Image.open(tmp_path / "map.png").size[0] > 500
+
+
+def test_a_name_that_the_slanted_font_lacks_stands_upright():
+    from earthwork.reporting.figures import slant
+
+    assert slant("Nord-Süd 3\nyard") == "italic"
+    # Letters that the upright font has and the slanted one does not would be boxes.
+    assert slant("مبنى") == "normal"
