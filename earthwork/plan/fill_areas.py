@@ -12,7 +12,7 @@ import numpy as np
 from earthwork.quantities.engine import thread_count
 from earthwork.quantities.lift_kernel import CODE, FOOTPRINT, GROUND, HIGHEST, LOWEST, VOLUME
 from earthwork.quantities.lift_sums import bench_sums
-from earthwork.quantities.lift_tally import LiftTally, Records
+from earthwork.quantities.lift_tally import LiftTally, SortedRecords
 
 #: Mean fill over a coarse cell that makes it part of a fill area: a quarter of a lift, at most this [m]. Survey noise
 #: of 5 cm makes 2 cm of false fill.
@@ -23,8 +23,8 @@ _COVERED = 0.9
 #: Areas of less volume than this, and than this share of all fill, are summed as small fills [m³].
 _SMALL_M3 = 50.0
 _SMALL_SHARE = 0.005
-#: Records of fewer bins than this are added up by one processor; more in so many parts.
-_WORTH_SHARING = 100_000
+#: Fewer runs of records than this are added up by one processor; more in so many parts.
+_WORTH_SHARING = 5_000
 _PARTS = 8
 
 
@@ -72,7 +72,7 @@ def fill_areas(tally: LiftTally) -> tuple[FillArea, ...]:
         rank[i] = k
     bases = [float(cells[labels == i][:, LOWEST].min()) for i in order]
     highest = [float(cells[labels == i][:, HIGHEST].max()) for i in order]
-    records = tally.records
+    records = tally.sorted_records()
     benches = _benches(tally, records, rank[labels], bases, highest)
     areas = [FillArea(f"fill {k + 1}", benches[k], labels == i) for k, i in enumerate(order)]
     loose = (labels == 0) & (cells[..., VOLUME] > 0)
@@ -108,7 +108,7 @@ def label_fills(cells: np.ndarray, lift_m: float) -> np.ndarray:
 
 
 def _benches(
-    tally: LiftTally, records: Records, area_of_cell: np.ndarray, bases: list[float], highest: list[float]
+    tally: LiftTally, records: SortedRecords, area_of_cell: np.ndarray, bases: list[float], highest: list[float]
 ) -> list[tuple[Bench, ...]]:
     """Benches of each area, of one lift each, from its lowest removal bottom to its last fill."""
     if not bases:
@@ -167,14 +167,14 @@ def none_negative(cubic: np.ndarray) -> np.ndarray:
 
 
 def _lift_sums(
-    tally: LiftTally, records: Records, area_of_cell: np.ndarray, origins: np.ndarray, offsets: np.ndarray,
+    tally: LiftTally, records: SortedRecords, area_of_cell: np.ndarray, origins: np.ndarray, offsets: np.ndarray,
     first_lift: np.ndarray, lifts: int,
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray]:  # fmt: skip
     """Volumes, standing areas and ends by lift, see :func:`bench_sums`; the processors share the coarse cells.
 
     They are shared out in as many parts on any machine, and added up in their order, so that the digits are the same.
     """
-    runs, moments, order, starts = records.sorted()
+    runs, moments, order, starts = records
     codes = runs[order, CODE]
     cuts = [0, *(int(np.searchsorted(codes, codes[len(codes) * k // _PARTS])) for k in range(1, _PARTS)), len(codes)]
     bands = len(tally.below)
@@ -186,14 +186,14 @@ def _lift_sums(
         )  # fmt: skip
         return sums
 
-    if len(moments) < _WORTH_SHARING:
+    if len(runs) < _WORTH_SHARING:
         return count((0, len(codes)))
     with ThreadPoolExecutor(thread_count(None)) as pool:
         parts = list(pool.map(count, pairwise(cuts)))
     return tuple(sum(which[1:], which[0]) for which in zip(*parts, strict=True))  # type: ignore[return-value]
 
 
-def _whole(tally: LiftTally, records: Records, cells: np.ndarray, span: tuple[float, float]) -> Bench:
+def _whole(tally: LiftTally, records: SortedRecords, cells: np.ndarray, span: tuple[float, float]) -> Bench:
     """All fill of some coarse cells as one bench."""
     inside = np.where(cells.ravel(), 0, -1).astype(np.int64)
     origin = math.floor(span[1] / tally.lift_m) + 2  # above everything, so that all of it falls into one lift

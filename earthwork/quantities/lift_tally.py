@@ -32,7 +32,8 @@ _COARSE_CELLS = 128  #: at most along a side
 _LOOSE = 3_000_000  #: records that are kept before those of one code and bin are added up
 _FURTHEST_BIN = 1 << 21  #: above or below elevation 0: what lies further is no ground
 _MOST_BINS = 500_000  #: of a tile; with those to spare, places of packed bins stay within 63 bits
-_STRETCH = 1 << 20  #: records that room is made for at one time
+_ARENA = 1 << 22  #: records that memory is set aside for at one time; what is not written costs nothing
+_STRETCH = 1 << 17  #: records that a thread takes of it at one time
 _CHUNK = 2048  #: cells across that are counted at one time
 _OVERVIEW_CELLS = 1024  #: of the map that lift outlines are drawn on, at most along a side
 
@@ -93,16 +94,42 @@ class Records:
             return cls.room(0)
         return cls(np.concatenate([part.runs for part in parts]), np.concatenate([part.moments for part in parts]))
 
-    def sorted(self) -> tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]:
-        """Runs, moments, the order of the runs by code, and where the moments of each run start."""
-        order = np.argsort(self.runs[:, CODE], kind="stable")
-        return self.runs, self.moments, order, np.cumsum(self.runs[:, LENGTH]) - self.runs[:, LENGTH]
+    def sorted(self) -> SortedRecords:
+        """In the order of the codes."""
+        return sorted_records([self])
 
     def merged(self) -> Records:
         """The same with each code and bin once, in their order."""
         room, counts = Records.room(len(self.moments)), np.zeros(2, np.int64)
         merge_runs(*self.sorted(), room.runs, room.moments, counts)
         return Records(room.runs[: counts[0]].copy(), room.moments[: counts[1]].copy())
+
+
+#: Runs, moments, the order of the runs by code, and where the moments of each run start.
+SortedRecords = tuple[np.ndarray, np.ndarray, np.ndarray, np.ndarray]
+
+
+def sorted_records(parts: list[Records]) -> SortedRecords:
+    """The records of all parts in the order of the codes; a code and bin may come again.
+
+    Moments that lie in one arena are left there: copying them would cost as much as adding them up.
+    """
+    if not parts:
+        parts = [Records.room(0)]
+    runs = np.concatenate([part.runs for part in parts])
+    arena = parts[0].moments.base
+    if arena is not None and all(part.moments.base is arena for part in parts):
+        first = [(_address(part.moments) - _address(arena)) // arena.strides[0] for part in parts]
+        moments = arena
+    else:
+        first = np.cumsum([0, *(len(part.moments) for part in parts[:-1])]).tolist()
+        moments = np.concatenate([part.moments for part in parts])
+    starts = [at + np.cumsum(part.runs[:, LENGTH]) - part.runs[:, LENGTH] for at, part in zip(first, parts, strict=True)]
+    return runs, moments, np.argsort(runs[:, CODE], kind="stable"), np.concatenate(starts)
+
+
+def _address(array: np.ndarray) -> int:
+    return array.__array_interface__["data"][0]
 
 
 class LiftTally:
@@ -129,6 +156,7 @@ class LiftTally:
         self.order = np.array(sorted(range(len(below)), key=lambda i: -below[i]), dtype=np.int64)
         self._cells: list[tuple[int, int, np.ndarray]] = []  #: coarse row, column, cells from there on
         self._overview: list[tuple[int, int, np.ndarray, np.ndarray]] = []  #: row, column, bottoms, tops
+        self._arena = _Arena()
         self._parts: list[Records] = []
         self._loose = 0
 
@@ -141,7 +169,9 @@ class LiftTally:
         return ("lifts", self.lift_m, self.overview_wanted)
 
     def empty(self) -> LiftTally:
-        return LiftTally(self.stack, self.lift_m, overview=self.overview_wanted)
+        other = LiftTally(self.stack, self.lift_m, overview=self.overview_wanted)
+        other._arena = self._arena
+        return other
 
     def add(self, tile: Tile) -> None:
         weight = tile.weight
@@ -213,7 +243,7 @@ class LiftTally:
         """Room for as many records as a tile can make, and how many there are of runs and of moments: none."""
         kinds = 2 * kinds_of(len(self.below))
         most = min(cells.shape[0] * cells.shape[1] * kinds * bins, tile.window.height * tile.window.width * (2 + kinds))
-        return _TABLES.records(most), np.zeros(2, np.int64)
+        return _TABLES.records(self._arena, most), np.zeros(2, np.int64)
 
     def _sample(self, tile: Tile, weight: np.ndarray | None) -> None:
         """Keep bottom and top of the fill at the middle of each overview cell."""
@@ -277,6 +307,10 @@ class LiftTally:
         """All column ends; a code and bin comes once for each tile that has ends there."""
         return Records.joined(self._parts)
 
+    def sorted_records(self) -> SortedRecords:
+        """All column ends in the order of their codes."""
+        return sorted_records(self._parts)
+
     @property
     def cells(self) -> np.ndarray:
         """(coarse rows, coarse columns, 5): VOLUME [cell·m], FOOTPRINT, GROUND [cells], LOWEST, HIGHEST [m]."""
@@ -300,10 +334,32 @@ class LiftTally:
         return whole
 
 
+class _Arena:
+    """Memory for the records of a walk, of which its threads take stretches."""
+
+    def __init__(self) -> None:
+        self._lock = threading.Lock()
+        self._left = Records.room(0)
+
+    def __reduce__(self) -> tuple[type[_Arena], tuple[()]]:
+        return (_Arena, ())  # on another machine there is other memory
+
+    def stretch(self, most: int) -> Records:
+        """Room for so many records at least."""
+        size = max(most, _STRETCH)
+        with self._lock:
+            if len(self._left.moments) < size:
+                self._left = Records.room(max(size, _ARENA))
+            runs, moments = self._left.runs, self._left.moments
+            self._left = Records(runs[size:], moments[size:])
+        return Records(runs[:size], moments[:size])
+
+
 class _Tables(threading.local):
     """Room that each thread counts in: tables that every count leaves as zeros, and records before they are kept."""
 
     def __init__(self) -> None:
+        self.arena: _Arena | None = None
         self.room = Records.room(0)
         self.clear()
 
@@ -324,11 +380,10 @@ class _Tables(threading.local):
             self.crossings = np.zeros((blocks, 2, bins, 3))
         return self.tables, self.packed, self.crossings
 
-    def records(self, most: int) -> Records:
+    def records(self, arena: _Arena, most: int) -> Records:
         """Room for so many records, until they are kept."""
-        if min(len(self.room.moments), len(self.room.runs)) < most:
-            # a large stretch, whose pages come into being as they are used, so that nothing need be copied
-            self.room = Records.room(max(most, _STRETCH))
+        if arena is not self.arena or min(len(self.room.moments), len(self.room.runs)) < most:
+            self.arena, self.room = arena, arena.stretch(most)
         return self.room
 
     def keep(self, counts: np.ndarray) -> Records:
