@@ -15,7 +15,7 @@ import numpy as np
 from earthwork.plan.haul import HaulResult
 from earthwork.reporting import colors
 from earthwork.reporting.display import show
-from earthwork.reporting.figures import halo, new_figure, save_figure, shorten_to, slant, wrapped
+from earthwork.reporting.figures import DPI, halo, new_figure, save_figure, shorten_to, slant, wrapped
 from earthwork.reporting.haul_flows import Flow, bundled, flows_of, grid_around, heaviest, stays_in_block
 from earthwork.reporting.map_frame import Frame, legend_line, legend_panel, legend_swatch
 from earthwork.site import Site
@@ -293,7 +293,7 @@ def _list_moves(panel: Axes, result: HaulResult, numbered: Sequence[Flow], flows
         mass = show(flow.mass_t, "mass", site.units, si=1000.0)
         far = site.units.from_si(flow.length_m, "length")
         label = panel.text(0.2, y, wrapped(flow.label, 1000, 1), va="top", fontsize=7.5)
-        shorten_to(label, _LABEL_INCHES * panel.get_figure().dpi, 7.0)
+        shorten_to(label, _LABEL_INCHES * DPI, 7.0)
         told = f"{mass} over {far:,.0f} {site.units.label('length')}"
         panel.text(0.2, y - 0.135, told, va="top", fontsize=7, color=colors.FAINT)
         y -= _ENTRY
