@@ -61,14 +61,20 @@ def _levels(top, depth, i, j0, scale, origin, height, flat, lows, tops):
 
 
 @kernel(fastmath=FAST)
-def _any(values, start, stop):
-    """Whether any of a stretch of values is over 0."""
+def _over_zero(values, start, stop):
+    """How many of a stretch of values are over 0."""
     count = values.dtype.type(0)
     one = values.dtype.type(1)
     zero = values.dtype.type(0)
     for value in values[start:stop]:
         count += one if value > zero else zero
-    return count > zero
+    return count
+
+
+@kernel
+def _any(values, start, stop):
+    """Whether any of a stretch of values is over 0."""
+    return _over_zero(values, start, stop) > 0
 
 
 @kernel
@@ -121,8 +127,10 @@ def _scatter_packed(packed, flat, lows, tops, edges, ranges, place_bits, count_b
     one = np.int64(1) << (place_bits + count_bits)
     far = np.int64(1 << 62)
     for b in range(edges.size - 1):
-        if not _any(flat, edges[b], edges[b + 1]):
+        filled = _over_zero(flat, edges[b], edges[b + 1])
+        if filled == 0:
             continue
+        whole = filled == edges[b + 1] - edges[b]  # one test for all cells is foreseen, one a cell is not
         low_bins = packed[b, LOW]
         top_bins = packed[b, HIGH]
         lowest = far
@@ -130,7 +138,7 @@ def _scatter_packed(packed, flat, lows, tops, edges, ranges, place_bits, count_b
         top_least = far
         highest = -far
         for j in range(edges[b], edges[b + 1]):
-            if flat[j] > 0:
+            if whole or flat[j] > 0:
                 level = lows[j]
                 lowest = min(lowest, level)
                 low_most = max(low_most, level)
