@@ -118,7 +118,7 @@ def sorted_records(parts: list[Records]) -> SortedRecords:
         parts = [Records.room(0)]
     runs = np.concatenate([part.runs for part in parts])
     arena = parts[0].moments.base
-    if arena is not None and all(part.moments.base is arena for part in parts):
+    if isinstance(arena, np.ndarray) and all(_lies_in(part.moments, arena) for part in parts):
         first = [(_address(part.moments) - _address(arena)) // arena.strides[0] for part in parts]
         moments = arena
     else:
@@ -126,6 +126,11 @@ def sorted_records(parts: list[Records]) -> SortedRecords:
         moments = np.concatenate([part.moments for part in parts])
     starts = [at + np.cumsum(part.runs[:, LENGTH]) - part.runs[:, LENGTH] for at, part in zip(first, parts, strict=True)]
     return runs, moments, np.argsort(runs[:, CODE], kind="stable"), np.concatenate(starts)
+
+
+def _lies_in(rows: np.ndarray, arena: np.ndarray) -> bool:
+    """Whether rows are rows of an arena; what came from another machine lies in memory of other kinds."""
+    return rows.base is arena and rows.shape[1:] == arena.shape[1:] and rows.strides == arena.strides
 
 
 def _address(array: np.ndarray) -> int:

@@ -498,3 +498,13 @@ def test_lifts_and_volumes_of_any_plain_ground(seed):
         for bench in area.benches:
             assert bench.compacted_m3 > 0
             assert area.is_small or bench.compacted_m3 <= bench.area_m2 * lift * (1 + 1e-9)
+
+
+@pytest.mark.parametrize("keeps", [lambda a: np.frombuffer(a.tobytes()).reshape(-1, 3), lambda a: a.T.copy().T, np.copy])
+def test_records_from_another_machine_are_merged_wherever_they_lie(keeps):
+    # bins 4 and 5 of one code, then bin 5 of it once more
+    runs = np.array([[2, 4, 2], [2, 5, 1]])
+    moments = np.array([[1.0, 0.5, 0.25], [2.0, 1.0, 0.5], [4.0, 2.0, 1.0]])
+    merged = Records(runs, keeps(moments)).merged()
+    assert merged.runs.tolist() == [[2, 4, 2]]
+    assert merged.moments.tolist() == [[1.0, 0.5, 0.25], [6.0, 3.0, 1.5]]
