@@ -6,7 +6,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 
 from earthwork.errors import EarthworkError, FileError
-from earthwork.files.table_reader import Row, SourceTable
+from earthwork.files.table_reader import MOST_FAULTS, Row, SourceTable
 from earthwork.soils import in_place
 from earthwork.units import FOOT_M, POUND_KG, parse_quantity
 
@@ -35,7 +35,6 @@ METHOD_COLUMNS = ("method", "effort", "compaction_effort")
 #: A density outside this range [kg/m³] is a slip of unit.
 _BELIEVED_KG_M3 = (500.0, 3500.0)
 #: Faults of a file that are listed; the rest is counted.
-_LISTED = 12
 
 
 @dataclass
@@ -220,7 +219,8 @@ class SoilRows:
             elif names and text.lower() not in names:
                 lost.append(f"{row.number} ({text})")
         if lost:
-            listed = ", ".join(lost[:_LISTED]) + (f" and {len(lost) - _LISTED} more" if len(lost) > _LISTED else "")
+            more = f" and {len(lost) - MOST_FAULTS} more" if len(lost) > MOST_FAULTS else ""
+            listed = ", ".join(lost[:MOST_FAULTS]) + more
             self.notes.append(
                 ("rows-of-no-material", f"{self.table.path}: of no material of the site, and left out: row {listed}")
             )
@@ -231,10 +231,4 @@ class SoilRows:
             self.notes.append(("rows-without-values", f"{self.table.path}: no {what} in row {numbers}; left out"))
 
     def finish(self) -> None:
-        if not self.faults:
-            return
-        count = "1 fault" if len(self.faults) == 1 else f"{len(self.faults)} faults"
-        lines = [f"  {fault}" for fault in self.faults[:_LISTED]]
-        if len(self.faults) > _LISTED:
-            lines.append(f"  and {len(self.faults) - _LISTED} more like these")
-        raise FileError(f"{self.table.path}: {count}\n" + "\n".join(lines))
+        self.table.refuse(self.faults)

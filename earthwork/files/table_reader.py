@@ -33,6 +33,10 @@ _UNIT_SUFFIX = {
 _UNITLESS = frozenset({"", "-", "–", "—", "1", "text", "name", "no", "no.", "#", "[-]"})
 
 
+#: Faults of a file that one message lists.
+MOST_FAULTS = 12
+
+
 @dataclass(frozen=True)
 class Row:
     """A row of a table: its number in the file (the header is usually row 1) and its cells by column name."""
@@ -68,6 +72,17 @@ class SourceTable:
         if isinstance(value, float):
             return value
         raise FileError(f"{self.path}: row {row.number}, column {column}: {cell!r} {value}")
+
+
+    def refuse(self, faults: Sequence[str]) -> None:
+        """Raise a FileError that lists the faults of the file, where there are any."""
+        if not faults:
+            return
+        count = "1 fault" if len(faults) == 1 else f"{len(faults)} faults"
+        lines = [f"  {fault}" for fault in faults[:MOST_FAULTS]]
+        if len(faults) > MOST_FAULTS:
+            lines.append(f"  and {len(faults) - MOST_FAULTS} more like these")
+        raise FileError(f"{self.path}: {count}\n" + "\n".join(lines))
 
 
 def read_source_table(path: Path) -> SourceTable:

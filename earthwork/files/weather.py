@@ -12,9 +12,8 @@ from pathlib import Path
 import numpy as np
 
 from earthwork.errors import FileError
-from earthwork.files.table_reader import Row, SourceTable, read_source_table
+from earthwork.files.table_reader import MOST_FAULTS, Row, SourceTable, read_source_table
 
-_LISTED = 12
 _HOUR = datetime.timedelta(hours=1)
 _FAR_FROM_SUN = 3 * _HOUR  #: no legal time is further from the sun's
 
@@ -189,13 +188,7 @@ class _Reader:
         self.faults += [f"column {name}: missing; evaporation needs it" for name in wanted]
 
     def finish(self) -> None:
-        if not self.faults:
-            return
-        count = "1 fault" if len(self.faults) == 1 else f"{len(self.faults)} faults"
-        lines = [f"  {fault}" for fault in self.faults[:_LISTED]]
-        if len(self.faults) > _LISTED:
-            lines.append(f"  and {len(self.faults) - _LISTED} more like these")
-        raise FileError(f"{self.table.path}: {count}\n" + "\n".join(lines))
+        self.table.refuse(self.faults)
 
 
 def _date(text: str) -> datetime.date:
@@ -281,8 +274,8 @@ def _in_utc(moment: datetime.datetime, local: datetime.tzinfo) -> datetime.datet
 
 def _refuse(path: Path, faults: list[str], what: str) -> None:
     if faults:
-        more = f"\n  and {len(faults) - _LISTED} more like these" if len(faults) > _LISTED else ""
+        more = f"\n  and {len(faults) - MOST_FAULTS} more like these" if len(faults) > MOST_FAULTS else ""
         raise FileError(
             f"{path}: the weather has gaps or repeats; each {what} must be there once. Fill them in from a "
-            "neighbouring station, or cut the file short\n  " + "\n  ".join(faults[:_LISTED]) + more
+            "neighbouring station, or cut the file short\n  " + "\n  ".join(faults[:MOST_FAULTS]) + more
         )
