@@ -34,7 +34,6 @@ MATERIAL_COLUMNS = ("material", "soil")
 METHOD_COLUMNS = ("method", "effort", "compaction_effort")
 #: A density outside this range [kg/m³] is a slip of unit.
 _BELIEVED_KG_M3 = (500.0, 3500.0)
-#: Faults of a file that are listed; the rest is counted.
 
 
 @dataclass
